@@ -1,0 +1,119 @@
+//! The flattened gate graph: one node per bit, frozen fan-in and fan-out, and tables beside the nodes for names, places
+//! and instances. It knows no Verilog.
+
+mod builder;
+mod node;
+mod rows;
+
+pub use builder::{GraphBuilder, Site};
+pub use node::{
+    BlackBox, Cell, CellId, CellKind, Control, Edge, GateKind, Instance, InstanceId, Net, NetId, NodeId, NodeKind,
+    Operator, OperatorId, Port, PortDirection, SourceKind, Symbol, Table, TableId,
+};
+use rows::Rows;
+
+use crate::source::Span;
+
+/// The net a wire is a bit of, and what follows the net's name.
+#[derive(Clone, PartialEq, Eq, Debug)]
+pub struct NodeName {
+    pub net: NetId,
+    pub suffix: Box<str>,
+}
+
+/// See the module documentation. Built by [`GraphBuilder::freeze`]; immutable.
+#[derive(Debug)]
+pub struct Graph {
+    kinds: Vec<NodeKind>,
+    fanin: Rows,
+    fanout: Rows,
+    sites: Vec<Site>,
+    names: Vec<Option<NodeName>>,
+    pub instances: Vec<Instance>,
+    pub nets: Vec<Net>,
+    pub tables: Vec<Table>,
+    pub operators: Vec<Operator>,
+    pub cells: Vec<Cell>,
+    pub ports: Vec<Port>,
+    pub black_boxes: Vec<BlackBox>,
+}
+
+impl Graph {
+    #[allow(clippy::too_many_arguments, reason = "called once, by the builder, which owns the same tables")]
+    fn new(
+        kinds: Vec<NodeKind>,
+        fanins: Vec<Vec<NodeId>>,
+        sites: Vec<Site>,
+        names: Vec<Option<NodeName>>,
+        instances: Vec<Instance>,
+        nets: Vec<Net>,
+        tables: Vec<Table>,
+        operators: Vec<Operator>,
+        cells: Vec<Cell>,
+        ports: Vec<Port>,
+        black_boxes: Vec<BlackBox>,
+    ) -> Self {
+        let fanin = Rows::new(&fanins);
+        let fanout = fanin.transposed();
+        Self { kinds, fanin, fanout, sites, names, instances, nets, tables, operators, cells, ports, black_boxes }
+    }
+
+    /// The number of nodes; ids run from 0 to this.
+    pub fn len(&self) -> usize {
+        self.kinds.len()
+    }
+
+    pub fn is_empty(&self) -> bool {
+        self.kinds.is_empty()
+    }
+
+    pub fn nodes(&self) -> impl Iterator<Item = NodeId> + use<> {
+        (0..self.kinds.len()).map(NodeId::new)
+    }
+
+    pub fn kind(&self, node: NodeId) -> NodeKind {
+        self.kinds[node.index()]
+    }
+
+    /// In pin order.
+    pub fn fanin(&self, node: NodeId) -> &[NodeId] {
+        self.fanin.row(node)
+    }
+
+    /// Once per pin, in order of node id.
+    pub fn fanout(&self, node: NodeId) -> &[NodeId] {
+        self.fanout.row(node)
+    }
+
+    pub fn site(&self, node: NodeId) -> Site {
+        self.sites[node.index()]
+    }
+
+    pub fn span(&self, node: NodeId) -> Option<Span> {
+        self.sites[node.index()].span
+    }
+
+    pub fn node_name(&self, node: NodeId) -> Option<&NodeName> {
+        self.names[node.index()].as_ref()
+    }
+
+    /// `top.u_core.en[3]` for a wire, `None` for an anonymous node.
+    pub fn name(&self, node: NodeId) -> Option<String> {
+        let name = self.names[node.index()].as_ref()?;
+        let net = &self.nets[name.net.index()];
+        Some(format!("{}.{}{}", self.instances[net.instance.index()].path, net.name, name.suffix))
+    }
+
+    /// Follows wires down to the node that drives them: two nets with the same root are one net.
+    pub fn root(&self, mut node: NodeId) -> NodeId {
+        let mut steps = 0;
+        while self.kinds[node.index()] == NodeKind::Wire {
+            match self.fanin(node) {
+                [driver] if steps <= self.kinds.len() => node = *driver,
+                _ => break,
+            }
+            steps += 1;
+        }
+        node
+    }
+}

@@ -1,0 +1,10 @@
+//! The hazard decision: for a net and every source that reaches it, whether a change of that source alone can show a
+//! static-0, static-1 or dynamic hazard there, for arbitrary gate and wire delays.
+
+mod loops;
+mod options;
+mod verdict;
+
+pub use loops::{Behaviour, BehaviourKind, LoopVerdict, StateLoss};
+pub use options::Options;
+pub use verdict::{Cover, HazardKind, Pair, Path, PathStep, Paths, TargetVerdict, Undecided, Witness};

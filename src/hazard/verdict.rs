@@ -1,0 +1,115 @@
+//! What a decision says, in terms of the graph: no names, no spans, no words.
+
+use crate::graph::NodeId;
+
+/// The three ways to glitch. `i` and `f` are the target's initial and final values.
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug)]
+pub enum HazardKind {
+    /// 0 .. 1 .. 0
+    Static0,
+    /// 1 .. 0 .. 1
+    Static1,
+    /// More than one change between two different values.
+    Dynamic,
+}
+
+impl HazardKind {
+    /// The word used in every output.
+    pub fn name(self) -> &'static str {
+        match self {
+            HazardKind::Static0 => "static-0",
+            HazardKind::Static1 => "static-1",
+            HazardKind::Dynamic => "dynamic",
+        }
+    }
+}
+
+/// One transition that shows the hazard. Only what matters is listed: every source not in `holds` may have any value.
+#[derive(Clone, PartialEq, Eq, Debug)]
+pub struct Witness {
+    /// The sources that change, with their value before (the value after is its complement). One under single-input
+    /// changes. Sorted by node.
+    pub changes: Vec<(NodeId, bool)>,
+    /// The sources (and unknown constants) that hold still, with their value. Sorted by node.
+    pub holds: Vec<(NodeId, bool)>,
+    /// The target before and after.
+    pub target: (bool, bool),
+}
+
+/// Why a question stayed open.
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug)]
+pub enum Undecided {
+    /// The solver used up its conflicts.
+    Budget,
+    /// The change reaches the target through a combinational loop.
+    Loop,
+}
+
+/// All that is known about one source against one target. Kinds in neither list are proven clean.
+#[derive(Clone, PartialEq, Eq, Debug)]
+pub struct Pair {
+    pub source: NodeId,
+    /// Sorted by kind.
+    pub hazards: Vec<(HazardKind, Witness)>,
+    /// Sorted by kind.
+    pub undecided: Vec<(HazardKind, Undecided)>,
+}
+
+/// The verdict on one target.
+#[derive(Clone, PartialEq, Eq, Debug)]
+pub struct TargetVerdict {
+    pub target: NodeId,
+    /// How many sources reach the target; each gives three questions.
+    pub sources: usize,
+    /// The pairs that are not clean, sorted by source.
+    pub pairs: Vec<Pair>,
+}
+
+impl TargetVerdict {
+    /// Every question answered, none with a hazard.
+    pub fn is_clean(&self) -> bool {
+        self.pairs.is_empty()
+    }
+}
+
+/// One node on the way of a change.
+#[derive(Clone, Copy, PartialEq, Eq, Debug)]
+pub struct PathStep {
+    pub node: NodeId,
+}
+
+/// A way from the stem to the gate where the paths meet: wires and gates in order, both ends included.
+#[derive(Clone, PartialEq, Eq, Debug)]
+pub struct Path {
+    pub steps: Vec<PathStep>,
+    /// Gates strictly after the stem and strictly before the meeting gate; wires do not count, an operator counts as one.
+    pub gates: usize,
+    /// Inverting gates among them.
+    pub inversions: usize,
+}
+
+/// How a witness does its harm.
+#[derive(Clone, PartialEq, Eq, Debug)]
+pub struct Paths {
+    /// The last node common to both ways: where the change splits.
+    pub stem: NodeId,
+    /// The gate where a rising and a falling change meet (or, inside an operator, the operator's exit).
+    pub meet: NodeId,
+    /// Two ways from `stem` to `meet`; one only when the hazard arises inside an arithmetic operator.
+    pub ways: Vec<Path>,
+    /// From `meet` to the target, both included.
+    pub tail: Vec<NodeId>,
+}
+
+/// Terms that remove the logic hazards of a target.
+#[derive(Clone, PartialEq, Eq, Debug)]
+pub struct Cover {
+    /// Product terms to OR to the target, or (with `sums`) sum terms to AND: literals as (node, positive).
+    pub products: Vec<Vec<(NodeId, bool)>>,
+    /// Sum terms to AND to the target, after the products were added.
+    pub sums: Vec<Vec<(NodeId, bool)>>,
+    /// When true the products replace the whole logic of the target instead of being added to it.
+    pub replaces: bool,
+    /// The decision was run again with the terms added and found nothing.
+    pub proven: bool,
+}

@@ -1,0 +1,184 @@
+//! A finding as plain data: everything that the report formats need and nothing about how they look. The fields mirror
+//! the JSON of the design's section 3.
+
+use crate::source::Span;
+
+/// The lowest severity is first, so that `max` is the worst.
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug)]
+pub enum Severity {
+    Note,
+    Warning,
+    Error,
+}
+
+impl Severity {
+    pub fn name(self) -> &'static str {
+        match self {
+            Severity::Note => "note",
+            Severity::Warning => "warning",
+            Severity::Error => "error",
+        }
+    }
+}
+
+/// Every rule there is, each with a page `rules/<name>.md`.
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug)]
+pub enum Rule {
+    CombinationalLoop,
+    ReconvergentInversion,
+    SetResetHazard,
+    ClockHazard,
+    LatchEnableHazard,
+    SignoffInvalid,
+    SignoffStale,
+    SignoffExpired,
+    UnsupportedConstruct,
+}
+
+impl Rule {
+    pub const ALL: [Rule; 9] = [
+        Rule::CombinationalLoop,
+        Rule::ReconvergentInversion,
+        Rule::SetResetHazard,
+        Rule::ClockHazard,
+        Rule::LatchEnableHazard,
+        Rule::SignoffInvalid,
+        Rule::SignoffStale,
+        Rule::SignoffExpired,
+        Rule::UnsupportedConstruct,
+    ];
+
+    pub fn name(self) -> &'static str {
+        match self {
+            Rule::CombinationalLoop => "combinational-loop",
+            Rule::ReconvergentInversion => "reconvergent-inversion",
+            Rule::SetResetHazard => "set-reset-hazard",
+            Rule::ClockHazard => "clock-hazard",
+            Rule::LatchEnableHazard => "latch-enable-hazard",
+            Rule::SignoffInvalid => "signoff-invalid",
+            Rule::SignoffStale => "signoff-stale",
+            Rule::SignoffExpired => "signoff-expired",
+            Rule::UnsupportedConstruct => "unsupported-construct",
+        }
+    }
+
+    pub fn from_name(name: &str) -> Option<Rule> {
+        Rule::ALL.into_iter().find(|rule| rule.name() == name)
+    }
+}
+
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug)]
+pub enum Verdict {
+    Proven,
+    Undecided,
+}
+
+/// A numbered place on the way of the change, or another place worth showing.
+#[derive(Clone, PartialEq, Eq, Debug)]
+pub struct TraceStep {
+    pub at: Option<Span>,
+    pub text: String,
+}
+
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug)]
+pub enum PinKind {
+    Clock,
+    Set,
+    Reset,
+    Load,
+    LatchEnable,
+    Watch,
+    Output,
+}
+
+impl PinKind {
+    pub fn name(self) -> &'static str {
+        match self {
+            PinKind::Clock => "clock",
+            PinKind::Set => "set",
+            PinKind::Reset => "reset",
+            PinKind::Load => "load",
+            PinKind::LatchEnable => "latch-enable",
+            PinKind::Watch => "watch",
+            PinKind::Output => "output",
+        }
+    }
+}
+
+#[derive(Clone, PartialEq, Eq, Debug)]
+pub struct Pin {
+    pub kind: PinKind,
+    /// Active level of a set, reset, load or latch enable.
+    pub active: Option<bool>,
+    /// `posedge` or `negedge` of a clock.
+    pub edge: Option<&'static str>,
+    /// Up to 20 of the cells on the net, by full name, sorted.
+    pub cells: Vec<String>,
+    /// All of them.
+    pub count: usize,
+}
+
+/// One (changing source, kind) pair with its witness.
+#[derive(Clone, PartialEq, Eq, Debug)]
+pub struct Hazard {
+    /// `static-0`, `static-1`, `dynamic`.
+    pub kind: &'static str,
+    /// `logic` or `function`.
+    pub cause: &'static str,
+    pub changes: Vec<String>,
+    /// What it does to the cells on this pin, in words.
+    pub harm: String,
+    /// Every source that matters, sorted by name, with its value.
+    pub before: Vec<(String, bool)>,
+    pub after: Vec<(String, bool)>,
+    /// What the pin shows: its value before and after.
+    pub pin: (bool, bool),
+}
+
+#[derive(Clone, PartialEq, Eq, Debug)]
+pub struct CoverText {
+    /// Each term as Verilog over the design's own names.
+    pub terms: Vec<String>,
+    /// The whole replacement or addition as Verilog.
+    pub verilog: String,
+    pub proven: bool,
+}
+
+#[derive(Clone, PartialEq, Eq, Debug)]
+pub struct LoopText {
+    pub nets: Vec<String>,
+    /// Of `oscillates`, `stores`, `settles`, `delay-dependent`, `undecided`.
+    pub behaviour: Vec<&'static str>,
+}
+
+#[derive(Clone, PartialEq, Eq, Debug)]
+pub struct Signoff {
+    pub reason: String,
+    pub by: Option<String>,
+    /// `YYYY-MM-DD`
+    pub until: Option<String>,
+}
+
+#[derive(Clone, PartialEq, Eq, Debug)]
+pub struct Finding {
+    pub rule: Rule,
+    pub severity: Severity,
+    pub verdict: Verdict,
+    /// Stands alone: what happens on the wire and what it does.
+    pub message: String,
+    pub at: Option<Span>,
+    pub trace: Vec<TraceStep>,
+    pub instance: String,
+    pub net: String,
+    /// `[lowest, highest]` hazardous bits of a finding on a whole port.
+    pub bits: Option<(i64, i64)>,
+    pub pin: Option<Pin>,
+    pub hazards: Vec<Hazard>,
+    pub cover: Option<CoverText>,
+    pub loop_: Option<LoopText>,
+    /// Further sentences printed below the source excerpt: what to do, why a cover was withheld.
+    pub notes: Vec<String>,
+    /// 32 hexadecimal digits over the rule, the hierarchical names and the structure of the cone.
+    pub fingerprint: String,
+    pub signoff: Option<Signoff>,
+}

@@ -1,0 +1,3 @@
+//! The owned syntax tree and the one converter that builds it from the parser's concrete tree.
+
+pub mod ast;

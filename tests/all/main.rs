@@ -1,0 +1,1 @@
+//! The one integration binary: fixtures, end-to-end runs and checks against outside references.
