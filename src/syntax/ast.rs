@@ -255,6 +255,7 @@ pub struct Declarator {
 }
 
 #[derive(Clone, Debug)]
+#[allow(clippy::large_enum_variant, reason = "items are few and short-lived; boxing would only blur the table")]
 pub enum ItemKind {
     /// Directions of non-ANSI ports. `net` is `None` when a variable type or nothing was written.
     PortDecl {
