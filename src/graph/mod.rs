@@ -2,6 +2,7 @@
 //! and instances. It knows no Verilog.
 
 mod builder;
+pub mod cycles;
 mod node;
 mod rows;
 
