@@ -1,1 +1,5 @@
 //! (in work)
+
+pub mod blast;
+pub mod udp;
+pub mod value;

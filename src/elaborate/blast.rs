@@ -1,0 +1,394 @@
+//! Exact gate forms of the arithmetic operators: additions, comparisons, shifts and the rest become ordinary gates, so that a
+//! proof can use their function bit by bit. No implementation of them is fixed before synthesis; every call therefore
+//! stands between [`GraphBuilder::op_in`] and [`GraphBuilder::op_out`], which make the waveform algebra answer "hazard
+//! as soon as an input changes and the result is not forced". The structure chosen here is the plainest one and
+//! carries no meaning of its own.
+//!
+//! Operands are least significant bit first. Literal constants fold by the builder's rules; what folds to pure wiring (a
+//! shift by a constant) is wiring and no operator. Nothing here panics: a missing bit counts as 0.
+
+use crate::graph::{GateKind, GraphBuilder, NodeId, OperatorId, Site};
+
+/// The gates of one `**` with a variable exponent beyond which [`pow`] gives up.
+const POWER_GATES: usize = 1 << 20;
+
+/// The operator under construction: where its gates go and what marks its border.
+struct Blaster<'a> {
+    builder: &'a mut GraphBuilder,
+    operator: OperatorId,
+    site: Site,
+}
+
+impl<'a> Blaster<'a> {
+    fn new(builder: &'a mut GraphBuilder, what: &'static str, site: Site) -> Self {
+        let operator = builder.operator(what, site.span);
+        Self { builder, operator, site }
+    }
+
+    /// An operand inside the border, at `width` bits: extended by 0, or by its top bit when `signed`.
+    fn enter(&mut self, operand: &[NodeId], width: usize, signed: bool) -> Vec<NodeId> {
+        let mut bits: Vec<NodeId> =
+            operand.iter().take(width).map(|&bit| self.builder.op_in(self.operator, bit, self.site)).collect();
+        let pad = match bits.last() {
+            Some(&top) if signed => top,
+            _ => self.builder.constant(false),
+        };
+        bits.resize(width, pad);
+        bits
+    }
+
+    fn leave(&mut self, result: &[NodeId]) -> Vec<NodeId> {
+        result.iter().map(|&bit| self.builder.op_out(self.operator, bit, self.site)).collect()
+    }
+
+    fn constant(&mut self, value: bool) -> NodeId {
+        self.builder.constant(value)
+    }
+
+    fn not(&mut self, input: NodeId) -> NodeId {
+        self.builder.not(input, self.site)
+    }
+
+    fn and(&mut self, a: NodeId, b: NodeId) -> NodeId {
+        self.builder.and(&[a, b], self.site)
+    }
+
+    fn or(&mut self, inputs: &[NodeId]) -> NodeId {
+        self.builder.or(inputs, self.site)
+    }
+
+    fn xor(&mut self, inputs: &[NodeId]) -> NodeId {
+        self.builder.xor(inputs, self.site)
+    }
+
+    fn invert(&mut self, bits: &[NodeId]) -> Vec<NodeId> {
+        bits.iter().map(|&bit| self.not(bit)).collect()
+    }
+
+    fn select(&mut self, select: NodeId, then: &[NodeId], otherwise: &[NodeId]) -> Vec<NodeId> {
+        then.iter().zip(otherwise).map(|(&a, &b)| self.builder.select(select, a, b, self.site)).collect()
+    }
+
+    /// Sum and carry of three bits: an XOR and the majority as an AND-OR.
+    fn full_adder(&mut self, a: NodeId, b: NodeId, carry: NodeId) -> (NodeId, NodeId) {
+        let sum = self.xor(&[a, b, carry]);
+        let terms = [self.and(a, b), self.and(a, carry), self.and(b, carry)];
+        (sum, self.or(&terms))
+    }
+
+    /// Ripple-carry sum and the carry out.
+    fn sum(&mut self, a: &[NodeId], b: &[NodeId], mut carry: NodeId) -> (Vec<NodeId>, NodeId) {
+        let mut sum = Vec::with_capacity(a.len());
+        for (&a, &b) in a.iter().zip(b) {
+            let (bit, next) = self.full_adder(a, b, carry);
+            sum.push(bit);
+            carry = next;
+        }
+        (sum, carry)
+    }
+
+    /// `a - b` and whether `a >= b` as unsigned numbers (no borrow).
+    fn difference(&mut self, a: &[NodeId], b: &[NodeId]) -> (Vec<NodeId>, NodeId) {
+        let inverted = self.invert(b);
+        let one = self.constant(true);
+        self.sum(a, &inverted, one)
+    }
+
+    fn negated(&mut self, a: &[NodeId]) -> Vec<NodeId> {
+        let zero = vec![self.constant(false); a.len()];
+        self.difference(&zero, a).0
+    }
+
+    /// `a` when `negate` is 0, else `-a`.
+    fn negated_if(&mut self, negate: NodeId, a: &[NodeId]) -> Vec<NodeId> {
+        let negative = self.negated(a);
+        self.select(negate, &negative, a)
+    }
+
+    /// The product cut to the operands' width: rows of partial products, each added by a ripple-carry adder.
+    fn product(&mut self, a: &[NodeId], b: &[NodeId]) -> Vec<NodeId> {
+        let width = a.len();
+        let zero = self.constant(false);
+        let mut total = vec![zero; width];
+        for (shift, &digit) in b.iter().enumerate() {
+            if self.builder.as_constant(digit) == Some(false) {
+                continue;
+            }
+            let row: Vec<NodeId> = a[..width - shift].iter().map(|&bit| self.and(bit, digit)).collect();
+            let (upper, _) = self.sum(&total[shift..], &row, zero);
+            total.splice(shift.., upper);
+        }
+        total
+    }
+
+    /// Quotient and remainder of unsigned numbers by restoring division, one subtraction a quotient bit.
+    fn divided(&mut self, a: &[NodeId], b: &[NodeId]) -> (Vec<NodeId>, Vec<NodeId>) {
+        let zero = self.constant(false);
+        let mut divisor = b.to_vec();
+        divisor.push(zero);
+        let mut quotient = vec![zero; a.len()];
+        let mut remainder = vec![zero; a.len()];
+        for index in (0..a.len()).rev() {
+            let mut trial = vec![a[index]];
+            trial.extend_from_slice(&remainder);
+            let (reduced, fits) = self.difference(&trial, &divisor);
+            quotient[index] = fits;
+            remainder = self.select(fits, &reduced[..a.len()], &trial[..a.len()]);
+        }
+        (quotient, remainder)
+    }
+
+    fn equals(&mut self, a: &[NodeId], b: &[NodeId]) -> NodeId {
+        let same: Vec<NodeId> =
+            a.iter().zip(b).map(|(&a, &b)| self.builder.gate(GateKind::Xnor, &[a, b], self.site)).collect();
+        self.builder.and(&same, self.site)
+    }
+}
+
+/// Which way a shift goes and what comes in.
+#[derive(Clone, Copy, PartialEq, Eq)]
+enum Shift {
+    Left,
+    Right,
+    Arithmetic,
+}
+
+/// `a + b`: a ripple-carry adder; the carry out is dropped.
+pub fn add(builder: &mut GraphBuilder, a: &[NodeId], b: &[NodeId], site: Site) -> Vec<NodeId> {
+    let mut blaster = Blaster::new(builder, "adder", site);
+    let width = a.len().max(b.len());
+    let (a, b) = (blaster.enter(a, width, false), blaster.enter(b, width, false));
+    let zero = blaster.constant(false);
+    let (sum, _) = blaster.sum(&a, &b, zero);
+    blaster.leave(&sum)
+}
+
+/// `a - b`: a ripple-carry adder of `a`, NOT `b` and a carry in of 1.
+pub fn sub(builder: &mut GraphBuilder, a: &[NodeId], b: &[NodeId], site: Site) -> Vec<NodeId> {
+    let mut blaster = Blaster::new(builder, "subtractor", site);
+    let width = a.len().max(b.len());
+    let (a, b) = (blaster.enter(a, width, false), blaster.enter(b, width, false));
+    let (difference, _) = blaster.difference(&a, &b);
+    blaster.leave(&difference)
+}
+
+/// `-a` in two's complement, as `0 - a`.
+pub fn neg(builder: &mut GraphBuilder, a: &[NodeId], site: Site) -> Vec<NodeId> {
+    let mut blaster = Blaster::new(builder, "negation", site);
+    let a = blaster.enter(a, a.len(), false);
+    let negated = blaster.negated(&a);
+    blaster.leave(&negated)
+}
+
+/// `a * b` cut to the operands' width, the same for signed and unsigned: an array of AND gates and ripple-carry rows.
+pub fn mul(builder: &mut GraphBuilder, a: &[NodeId], b: &[NodeId], site: Site) -> Vec<NodeId> {
+    let mut blaster = Blaster::new(builder, "multiplier", site);
+    let width = a.len().max(b.len());
+    let (a, b) = (blaster.enter(a, width, false), blaster.enter(b, width, false));
+    let product = blaster.product(&a, &b);
+    blaster.leave(&product)
+}
+
+/// Quotient or remainder: restoring division of the magnitudes, then the sign of the standard (quotient negative when the
+/// signs differ, remainder with the sign of the dividend). A divisor of 0 gives unknown bits: each result bit
+/// is then selected from a fresh [`GraphBuilder::unknown`].
+fn divide(
+    builder: &mut GraphBuilder,
+    a: &[NodeId],
+    b: &[NodeId],
+    signed: bool,
+    want_quotient: bool,
+    site: Site,
+) -> Vec<NodeId> {
+    let what = if want_quotient { "divider" } else { "remainder" };
+    let mut blaster = Blaster::new(builder, what, site);
+    let width = a.len().max(b.len());
+    let (a, b) = (blaster.enter(a, width, signed), blaster.enter(b, width, signed));
+    let zero = blaster.constant(false);
+    let top = |bits: &[NodeId]| if signed { bits.last().copied().unwrap_or(zero) } else { zero };
+    let (a_negative, b_negative) = (top(&a), top(&b));
+    let (a_size, b_size) = (blaster.negated_if(a_negative, &a), blaster.negated_if(b_negative, &b));
+    let (quotient, remainder) = blaster.divided(&a_size, &b_size);
+    let result = if want_quotient {
+        let negative = blaster.xor(&[a_negative, b_negative]);
+        blaster.negated_if(negative, &quotient)
+    } else {
+        blaster.negated_if(a_negative, &remainder)
+    };
+    let nonzero = blaster.or(&b);
+    let result = match blaster.builder.as_constant(nonzero) {
+        Some(true) => result,
+        _ => {
+            let unknown: Vec<NodeId> = (0..width).map(|_| blaster.builder.unknown(site)).collect();
+            blaster.select(nonzero, &result, &unknown)
+        }
+    };
+    blaster.leave(&result)
+}
+
+/// `a / b`, truncated towards zero: a restoring divider. Division by zero gives unknown bits.
+pub fn div(builder: &mut GraphBuilder, a: &[NodeId], b: &[NodeId], signed: bool, site: Site) -> Vec<NodeId> {
+    divide(builder, a, b, signed, true, site)
+}
+
+/// `a % b` with the sign of `a`: a restoring divider. Division by zero gives unknown bits.
+pub fn rem(builder: &mut GraphBuilder, a: &[NodeId], b: &[NodeId], signed: bool, site: Site) -> Vec<NodeId> {
+    divide(builder, a, b, signed, false, site)
+}
+
+/// `base ** exponent` at the width of the base, by squaring: one selected multiplication per bit of the exponent that is
+/// not a literal 0. `exponent` may have any width. A negative exponent (when `exponent_signed`) follows IEEE 1364-2005
+/// table 5-6, with unknown bits for a base of 0. `None` when it would take an unreasonable number of gates.
+pub fn pow(
+    builder: &mut GraphBuilder,
+    base: &[NodeId],
+    exponent: &[NodeId],
+    base_signed: bool,
+    exponent_signed: bool,
+    site: Site,
+) -> Option<Vec<NodeId>> {
+    let width = base.len();
+    let digits = exponent.iter().rposition(|&bit| builder.as_constant(bit) != Some(false)).map_or(0, |top| top + 1);
+    if width.checked_mul(width)?.checked_mul(digits)?.checked_mul(12)? > POWER_GATES {
+        return None;
+    }
+    let mut blaster = Blaster::new(builder, "power", site);
+    let base = blaster.enter(base, width, false);
+    let exponent = blaster.enter(exponent, exponent.len(), false);
+    let zero = blaster.constant(false);
+    let mut one = vec![zero; width];
+    if let Some(lowest) = one.first_mut() {
+        *lowest = blaster.constant(true);
+    }
+    let mut result = one.clone();
+    let mut square = base.clone();
+    for (index, &digit) in exponent[..digits].iter().enumerate() {
+        if index > 0 {
+            square = blaster.product(&square, &square);
+        }
+        let longer = blaster.product(&result, &square);
+        result = blaster.select(digit, &longer, &result);
+    }
+    let negative = if exponent_signed { exponent.last().copied().unwrap_or(zero) } else { zero };
+    if blaster.builder.as_constant(negative) != Some(false) {
+        let ones = vec![blaster.constant(true); width];
+        let is_one = blaster.equals(&base, &one);
+        let is_zero = {
+            let any = blaster.or(&base);
+            blaster.not(any)
+        };
+        let is_minus_one = if base_signed { blaster.equals(&base, &ones) } else { zero };
+        let odd = exponent.first().copied().unwrap_or(zero);
+        let unknown: Vec<NodeId> = (0..width).map(|_| blaster.builder.unknown(site)).collect();
+        let sign = blaster.select(odd, &ones, &one);
+        let mut fraction = blaster.select(is_zero, &unknown, &vec![zero; width]);
+        fraction = blaster.select(is_minus_one, &sign, &fraction);
+        fraction = blaster.select(is_one, &one, &fraction);
+        result = blaster.select(negative, &fraction, &result);
+    }
+    Some(blaster.leave(&result))
+}
+
+/// The borrow of `a - b`, signs swapped in by inverting the top bits: 1 when `a < b`.
+fn compare(builder: &mut GraphBuilder, a: &[NodeId], b: &[NodeId], signed: bool, or_equal: bool, site: Site) -> NodeId {
+    let mut blaster = Blaster::new(builder, "comparison", site);
+    let width = a.len().max(b.len());
+    let (mut a, mut b) = (blaster.enter(a, width, signed), blaster.enter(b, width, signed));
+    if signed {
+        for side in [&mut a, &mut b] {
+            if let Some(top) = side.last_mut() {
+                *top = blaster.not(*top);
+            }
+        }
+    }
+    // a <= b is the carry of b - a; a < b is the missing carry of a - b.
+    let result = if or_equal {
+        blaster.difference(&b, &a).1
+    } else {
+        let not_less = blaster.difference(&a, &b).1;
+        blaster.not(not_less)
+    };
+    let operator = blaster.operator;
+    builder.op_out(operator, result, site)
+}
+
+/// `a < b`: the borrow chain of a ripple subtractor.
+pub fn less_than(builder: &mut GraphBuilder, a: &[NodeId], b: &[NodeId], signed: bool, site: Site) -> NodeId {
+    compare(builder, a, b, signed, false, site)
+}
+
+/// `a <= b`: the carry chain of a ripple subtractor.
+pub fn less_equal(builder: &mut GraphBuilder, a: &[NodeId], b: &[NodeId], signed: bool, site: Site) -> NodeId {
+    compare(builder, a, b, signed, true, site)
+}
+
+/// `bits` moved by `distance`, which is at most their number.
+fn moved(bits: &[NodeId], distance: usize, fill: NodeId, kind: Shift) -> Vec<NodeId> {
+    let kept = bits.len() - distance;
+    let mut result = vec![fill; bits.len()];
+    if kind == Shift::Left {
+        result[distance..].copy_from_slice(&bits[..kept]);
+    } else {
+        result[..kept].copy_from_slice(&bits[distance..]);
+    }
+    result
+}
+
+/// A barrel shifter: one row of AND-OR selectors for each bit of the amount that can matter, then, when any higher bit of
+/// the amount is set, everything replaced by the fill. A constant amount is wiring.
+fn shift(builder: &mut GraphBuilder, a: &[NodeId], amount: &[NodeId], kind: Shift, site: Site) -> Vec<NodeId> {
+    let zero = builder.constant(false);
+    let width = a.len();
+    let fill = |bits: &[NodeId]| match bits.last() {
+        Some(&top) if kind == Shift::Arithmetic => top,
+        _ => zero,
+    };
+    if let Some(digits) = amount.iter().map(|&bit| builder.as_constant(bit)).collect::<Option<Vec<bool>>>() {
+        let distance = digits.iter().rev().fold(0usize, |sum, &bit| sum.saturating_mul(2).saturating_add(bit.into()));
+        return moved(a, distance.min(width), fill(a), kind);
+    }
+    let mut blaster = Blaster::new(builder, "shift", site);
+    let mut bits = blaster.enter(a, width, false);
+    let amount = blaster.enter(amount, amount.len(), false);
+    let fill = fill(&bits);
+    let rows = (0..amount.len().min(31)).take_while(|&row| 1 << row < width).count();
+    for (row, &digit) in amount[..rows].iter().enumerate() {
+        let further = moved(&bits, 1 << row, fill, kind);
+        bits = blaster.select(digit, &further, &bits);
+    }
+    let beyond = blaster.or(&amount[rows..]);
+    bits = blaster.select(beyond, &vec![fill; width], &bits);
+    blaster.leave(&bits)
+}
+
+/// `a << amount`; the amount is unsigned and of any width.
+pub fn shift_left(builder: &mut GraphBuilder, a: &[NodeId], amount: &[NodeId], site: Site) -> Vec<NodeId> {
+    shift(builder, a, amount, Shift::Left, site)
+}
+
+/// `a >> amount`; the amount is unsigned and of any width.
+pub fn shift_right(builder: &mut GraphBuilder, a: &[NodeId], amount: &[NodeId], site: Site) -> Vec<NodeId> {
+    shift(builder, a, amount, Shift::Right, site)
+}
+
+/// `a >>> amount` of a signed `a`: the top bit comes in; the amount is unsigned and of any width.
+pub fn shift_arith(builder: &mut GraphBuilder, a: &[NodeId], amount: &[NodeId], site: Site) -> Vec<NodeId> {
+    shift(builder, a, amount, Shift::Arithmetic, site)
+}
+
+/// The number of ones (`$countones`), in just as many bits as the largest count needs: a chain of adders.
+pub fn count_ones(builder: &mut GraphBuilder, a: &[NodeId], site: Site) -> Vec<NodeId> {
+    let mut blaster = Blaster::new(builder, "population count", site);
+    let width = (usize::BITS - a.len().leading_zeros()) as usize;
+    let a = blaster.enter(a, a.len(), false);
+    let zero = blaster.constant(false);
+    let mut count = vec![zero; width];
+    for bit in a {
+        let mut one = vec![zero; width];
+        if let Some(lowest) = one.first_mut() {
+            *lowest = bit;
+        }
+        count = blaster.sum(&count, &one, zero).0;
+    }
+    blaster.leave(&count)
+}
