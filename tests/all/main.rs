@@ -1,1 +1,4 @@
 //! The one integration binary: fixtures, end-to-end runs and checks against outside references.
+
+mod explorer;
+mod outside;
