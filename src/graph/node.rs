@@ -31,7 +31,9 @@ pub enum NodeKind {
     Gate(GateKind),
     /// A user-defined primitive. Write `c` for the cube spanned by the inputs: a constant where an input is a clean
     /// constant, free elsewhere. `h` is 0 when some row resolves `c` to 0 or 1 (then `i = f`), or when exactly one
-    /// input changes, cleanly, all others are clean constants and `i != f`; otherwise 1.
+    /// input changes, cleanly, all others are clean constants and `i != f`; otherwise 1. An `x` entry of a row counts as
+    /// `?` here, and a row counts only if the table gives its result for every combination of 0 and 1 that fits it.
+    /// Combinations without a row have the value 0 and promise nothing.
     Table(TableId),
     /// Entry of the blasted form of an arithmetic operator: `i`, `f` pass, `h' = h or i != f`. Behind it ordinary gates give
     /// the exact function, and their algebra then yields "hazard as soon as the result is not forced by clean
