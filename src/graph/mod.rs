@@ -2,11 +2,15 @@
 //! and instances. It knows no Verilog.
 
 mod builder;
+mod check;
+pub mod cone;
 pub mod cycles;
 mod node;
 mod rows;
+pub mod text;
 
 pub use builder::{GraphBuilder, Site};
+pub use check::check;
 pub use node::{
     BlackBox, Cell, CellId, CellKind, Control, Edge, GateKind, Instance, InstanceId, Net, NetId, NodeId, NodeKind,
     Operator, OperatorId, Port, PortDirection, SourceKind, Symbol, Table, TableId,

@@ -2,3 +2,4 @@
 
 mod explorer;
 mod outside;
+mod graph;
