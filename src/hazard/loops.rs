@@ -1,6 +1,7 @@
 //! What a combinational loop does: see [`LoopVerdict`].
 
-use crate::graph::NodeId;
+use super::Options;
+use crate::graph::{Graph, NodeId, cycles};
 
 /// One strongly connected component without a flip-flop or latch.
 #[derive(Clone, PartialEq, Eq, Debug)]
@@ -11,8 +12,10 @@ pub struct LoopVerdict {
     pub inputs: Vec<NodeId>,
     pub behaviours: Vec<Behaviour>,
     /// Whether a single input change can lose the stored state through a hazard of the next-state function; `None`
-    /// when it does not store or this was not decided.
+    /// when it does not store, when it cannot, or when this was not decided.
     pub loses_state: Option<StateLoss>,
+    /// False when it stores and whether the state can be lost stayed open: never to be read as "cannot".
+    pub loss_decided: bool,
 }
 
 /// One behaviour with the input values that show it.
@@ -54,4 +57,20 @@ pub struct StateLoss {
     pub source: NodeId,
     pub witness: super::Witness,
     pub cover: Option<super::Cover>,
+}
+
+/// The verdict on every combinational loop, in order of the smallest node.
+pub fn loops(graph: &Graph, options: &Options) -> Vec<LoopVerdict> {
+    let _ = options;
+    let undecided = Behaviour { kind: BehaviourKind::Undecided, inputs: Vec::new(), states: Vec::new() };
+    cycles::components(graph)
+        .iter()
+        .map(|nodes| LoopVerdict {
+            nodes: nodes.to_vec(),
+            inputs: Vec::new(),
+            behaviours: vec![undecided.clone()],
+            loses_state: None,
+            loss_decided: false,
+        })
+        .collect()
 }

@@ -1,6 +1,7 @@
 //! The hazard decision: for a net and every source that reaches it, whether a change of that source alone can show a
 //! static-0, static-1 or dynamic hazard there, for arbitrary gate and wire delays.
 
+mod cover;
 mod decide;
 mod loops;
 mod options;
@@ -10,8 +11,9 @@ mod tables;
 mod verdict;
 mod wave;
 
+pub use cover::{Withheld, cover};
 pub use decide::decide;
-pub use loops::{Behaviour, BehaviourKind, LoopVerdict, StateLoss};
+pub use loops::{Behaviour, BehaviourKind, LoopVerdict, StateLoss, loops};
 pub use options::Options;
 pub use paths::paths;
 pub use verdict::{Cover, HazardKind, Pair, Path, PathStep, Paths, TargetVerdict, Undecided, Witness};

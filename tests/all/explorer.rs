@@ -328,8 +328,10 @@ fn moving_gates(circuit: &Circuit, target: usize, source: usize, vector: u32, be
             Pin::Gate(driver) => moving[driver],
             Pin::Constant(_) => false,
         };
-        let held =
-            gate.pins.iter().any(|&pin| !pin_moves(pin) && Some(pin_value(pin, vector, before)) == gate.op.controlling());
+        let held = gate
+            .pins
+            .iter()
+            .any(|&pin| !pin_moves(pin) && Some(pin_value(pin, vector, before)) == gate.op.controlling());
         moving[index] = !held && gate.pins.iter().any(|&pin| pin_moves(pin));
     }
     moving

@@ -1,5 +1,5 @@
 //! The one integration binary: fixtures, end-to-end runs and checks against outside references.
 
 mod explorer;
-mod outside;
 mod graph;
+mod outside;
