@@ -2,4 +2,8 @@
 
 mod explorer;
 mod graph;
+mod formula;
 mod outside;
+mod pipeline;
+mod published;
+mod random_circuits;

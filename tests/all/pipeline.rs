@@ -1,0 +1,103 @@
+//! Runs the program as a user does, on Verilog text, and reads its machine-readable output. Tests built on this see only
+//! what other programs see.
+
+use std::collections::{BTreeMap, BTreeSet};
+use std::path::Path;
+use std::process::Command;
+
+use serde_json::Value;
+
+/// What a run of `stillwire scan` left behind.
+pub struct Scan {
+    pub exit: i32,
+    pub json: Value,
+    /// Diagnostics, for messages of failing tests.
+    pub text: String,
+}
+
+/// Scans `paths` with further arguments.
+#[track_caller]
+pub fn scan(paths: &[&Path], arguments: &[&str]) -> Scan {
+    let output = Command::new(env!("CARGO_BIN_EXE_stillwire"))
+        .arg("scan")
+        .args(paths)
+        .args(["--write", "json:-"])
+        .args(arguments)
+        .output()
+        .expect("the program starts");
+    let text = String::from_utf8_lossy(&output.stderr).into_owned();
+    let exit = output.status.code().unwrap_or_else(|| panic!("ended by a signal: {text}"));
+    match serde_json::from_slice(&output.stdout) {
+        Ok(json) => Scan { exit, json, text },
+        Err(error) => panic!("exit {exit}, no JSON ({error}): {text}"),
+    }
+}
+
+/// Scans one file with this text and requires a complete analysis.
+#[track_caller]
+pub fn scan_text(verilog: &str) -> Scan {
+    let folder = tempfile::tempdir().expect("a temporary folder");
+    let file = folder.path().join("design.v");
+    std::fs::write(&file, verilog).expect("the file is written");
+    let scan = scan(&[&file], &[]);
+    assert_eq!(scan.json["complete"], true, "{}\n{verilog}", scan.text);
+    scan
+}
+
+/// One entry of a finding's `hazards`.
+#[derive(Clone, PartialEq, Eq, PartialOrd, Ord, Debug)]
+pub struct Hazard {
+    /// The changing sources by their names within the instance.
+    pub changes: Vec<String>,
+    pub kind: String,
+    pub cause: String,
+    pub before: BTreeMap<String, bool>,
+    pub after: BTreeMap<String, bool>,
+}
+
+impl Scan {
+    pub fn findings(&self) -> &[Value] {
+        self.json["findings"].as_array().map_or(&[], Vec::as_slice)
+    }
+
+    /// The findings in one instance.
+    pub fn findings_in(&self, instance: &str) -> Vec<&Value> {
+        self.findings().iter().filter(|finding| finding["instance"] == instance).collect()
+    }
+
+    /// A count of `coverage.pins`.
+    pub fn pins(&self, kind: &str, count: &str) -> u64 {
+        let value = &self.json["coverage"]["pins"][kind][count];
+        value.as_u64().unwrap_or_else(|| panic!("no coverage.pins.{kind}.{count}"))
+    }
+}
+
+/// The hazards of a finding, names relative to `instance`.
+pub fn hazards(finding: &Value, instance: &str) -> Vec<Hazard> {
+    let prefix = format!("{instance}.");
+    let short = |name: &str| name.strip_prefix(&prefix).unwrap_or(name).to_string();
+    let values = |object: &Value| -> BTreeMap<String, bool> {
+        let object = object.as_object().expect("an object of source values");
+        object.iter().map(|(name, value)| (short(name), value.as_u64() == Some(1))).collect()
+    };
+    let list = finding["hazards"].as_array().expect("a list of hazards");
+    list.iter()
+        .map(|hazard| Hazard {
+            changes: hazard["changes"]
+                .as_array()
+                .expect("a list of sources")
+                .iter()
+                .map(|name| short(name.as_str().expect("a name")))
+                .collect(),
+            kind: hazard["kind"].as_str().expect("a kind").to_string(),
+            cause: hazard["cause"].as_str().expect("a cause").to_string(),
+            before: values(&hazard["before"]),
+            after: values(&hazard["after"]),
+        })
+        .collect()
+}
+
+/// The (changing source, kind) pairs of a list of hazards.
+pub fn pairs(hazards: &[Hazard]) -> BTreeSet<(String, String)> {
+    hazards.iter().map(|hazard| (hazard.changes.join("+"), hazard.kind.clone())).collect()
+}
