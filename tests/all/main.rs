@@ -1,8 +1,9 @@
 //! The one integration binary: fixtures, end-to-end runs and checks against outside references.
 
+mod decision;
 mod explorer;
-mod graph;
 mod formula;
+mod graph;
 mod outside;
 mod pipeline;
 mod published;

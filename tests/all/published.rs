@@ -275,9 +275,9 @@ fn e19_static_one_decides_a_sum_of_products() {
             .collect();
         let covers = |vector: u32, &(care, values): &(u32, u32)| vector & care == values;
         let is_one = |vector: u32| terms.iter().any(|term| covers(vector, term));
-        let uncovered = (0..16u32).flat_map(|vector| (0..4).map(move |at| (vector, vector ^ 1 << at))).any(|(a, b)| {
-            is_one(a) && is_one(b) && !terms.iter().any(|term| covers(a, term) && covers(b, term))
-        });
+        let uncovered = (0..16u32)
+            .flat_map(|vector| (0..4).map(move |at| (vector, vector ^ 1 << at)))
+            .any(|(a, b)| is_one(a) && is_one(b) && !terms.iter().any(|term| covers(a, term) && covers(b, term)));
         hazardous.push(uncovered);
         text += &Published::new(&ABCD, &[&sum_of_products(&terms, &ABCD)]).verilog(&format!("t{number}"));
     }
