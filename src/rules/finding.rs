@@ -92,6 +92,17 @@ pub enum PinKind {
 }
 
 impl PinKind {
+    /// In the order of the report.
+    pub const ALL: [PinKind; 7] = [
+        PinKind::Clock,
+        PinKind::Set,
+        PinKind::Reset,
+        PinKind::Load,
+        PinKind::LatchEnable,
+        PinKind::Watch,
+        PinKind::Output,
+    ];
+
     pub fn name(self) -> &'static str {
         match self {
             PinKind::Clock => "clock",
@@ -167,6 +178,8 @@ pub struct Finding {
     /// Stands alone: what happens on the wire and what it does.
     pub message: String,
     pub at: Option<Span>,
+    /// The declaration of the net, where a sign-off may stand as well.
+    pub declared: Option<Span>,
     pub trace: Vec<TraceStep>,
     pub instance: String,
     pub net: String,

@@ -1,5 +1,135 @@
-//! The rules: what each looks at and what it says. One file per rule.
+//! The rules: what each looks at and what it says. [`run`] decides every pin, watched net and output once, in bulk, and
+//! hands the verdicts to one file per rule, which puts them into words. No output format is known here: a [`Finding`] is
+//! plain data. Nothing that was asked is dropped: each net is counted as clean, hazardous or undecided.
 
+mod about_text;
+mod clock_hazard;
+mod combinational_loop;
+mod coverage;
+mod cover_text;
+mod evidence;
 mod finding;
+mod fingerprint;
+mod latch_enable_hazard;
+mod names;
+mod pages;
+mod pins;
+mod reconvergent_inversion;
+mod set_reset_hazard;
+mod words;
 
+use std::cmp::Reverse;
+use std::collections::BTreeSet;
+
+use rayon::prelude::*;
+
+use crate::graph::{Graph, NetId, NodeId, PortDirection};
+use crate::hazard::{self, Options, TargetVerdict};
+use crate::source::Span;
+
+pub(crate) use about_text::bookkeeping;
+pub use about_text::{Said, say};
+pub use coverage::{NetCount, PinCoverage};
 pub use finding::{CoverText, Finding, Hazard, LoopText, Pin, PinKind, Rule, Severity, Signoff, TraceStep, Verdict};
+pub use pages::page;
+
+/// A net that the designer marked with `// stillwire: watch`.
+#[derive(Clone, PartialEq, Eq, Debug)]
+pub struct Watch {
+    pub net: NetId,
+    pub reason: String,
+}
+
+/// What the rules found and how much they looked at.
+#[derive(Clone, PartialEq, Eq, Debug, Default)]
+pub struct Outcome {
+    /// By rule and place in the graph; [`sort`] puts them into the order of the report.
+    pub findings: Vec<Finding>,
+    pub pins: PinCoverage,
+    /// Combinational loops found.
+    pub loops: usize,
+}
+
+/// Looks at everything every rule asks about. `options` bound the effort; their scope is set per rule.
+pub fn run(graph: &Graph, watches: &[Watch], options: &Options) -> Outcome {
+    let listing = Options { ignore_operators: false, one_per_kind: false, ..*options };
+    let outside = Options { ignore_operators: true, one_per_kind: true, ..*options };
+    let pins = pins::collect(graph);
+    let watched: Vec<(&Watch, NodeId)> = watches
+        .iter()
+        .flat_map(|watch| graph.nets[watch.net.index()].bits.iter().map(move |&bit| (watch, graph.root(bit))))
+        .collect();
+    let outputs: Vec<_> = graph.ports.iter().filter(|port| port.direction != PortDirection::Input).collect();
+
+    let pin_roots = [&pins.controls, &pins.clocks, &pins.enables].into_iter().flat_map(|nets| nets.keys().copied());
+    let verdicts = decided(graph, pin_roots.chain(watched.iter().map(|&(_, root)| root)), &listing);
+    let bits = outputs.iter().flat_map(|port| &graph.nets[port.net.index()].bits);
+    let outside_verdicts = decided(graph, bits.map(|&bit| graph.root(bit)), &outside);
+    let loops = hazard::loops(graph, options);
+
+    let mut coverage = PinCoverage::default();
+    for (root, uses) in [&pins.controls, &pins.clocks, &pins.enables].into_iter().flatten() {
+        coverage.count(pins::kind(uses), [verdicts.get(root)]);
+    }
+    // A net with two watches on it, or two bits with one driver, is still one net.
+    let mut seen = BTreeSet::new();
+    let watched: Vec<_> = watched.into_iter().filter(|&(_, root)| seen.insert(root)).collect();
+    for (_, root) in &watched {
+        coverage.count(PinKind::Watch, [verdicts.get(root)]);
+    }
+    for port in &outputs {
+        let bits = &graph.nets[port.net.index()].bits;
+        coverage.count(PinKind::Output, bits.iter().map(|&bit| outside_verdicts.get(&graph.root(bit))));
+    }
+    for verdict in verdicts.values().chain(outside_verdicts.values()) {
+        coverage.open_questions += verdict.pairs.iter().map(|pair| pair.undecided.len()).sum::<usize>();
+    }
+
+    // Paths and covers are worked out per finding, which is where the time goes; the order is that of the tasks.
+    let mut tasks: Vec<Task<'_>> = Vec::new();
+    for (nets, rule) in [
+        (&pins.controls, set_reset_hazard::finding as PinRule),
+        (&pins.clocks, clock_hazard::finding),
+        (&pins.enables, latch_enable_hazard::finding),
+    ] {
+        for (root, uses) in nets {
+            let Some(verdict) = verdicts.get(root) else { continue };
+            let listing = &listing;
+            tasks.push(Box::new(move || rule(graph, verdict, uses, listing)));
+        }
+    }
+    for &(watch, root) in &watched {
+        let Some(verdict) = verdicts.get(&root) else { continue };
+        let listing = &listing;
+        tasks.push(Box::new(move || reconvergent_inversion::watched(graph, verdict, watch, listing)));
+    }
+    for port in &outputs {
+        let (verdicts, outside) = (&outside_verdicts, &outside);
+        tasks.push(Box::new(move || reconvergent_inversion::output(graph, port, verdicts, outside)));
+    }
+    for verdict in &loops {
+        tasks.push(Box::new(move || combinational_loop::finding(graph, verdict)));
+    }
+    let found: Vec<Option<Finding>> = tasks.par_iter().map(|task| task()).collect();
+    Outcome { findings: found.into_iter().flatten().collect(), pins: coverage, loops: loops.len() }
+}
+
+type PinRule = fn(&Graph, &TargetVerdict, &[pins::Use], &Options) -> Option<Finding>;
+type Task<'a> = Box<dyn Fn() -> Option<Finding> + Send + Sync + 'a>;
+
+/// Decides each root that logic drives once.
+fn decided(graph: &Graph, roots: impl Iterator<Item = NodeId>, options: &Options) -> pins::Verdicts {
+    let roots: BTreeSet<NodeId> = roots.filter(|&root| pins::is_driven_by_logic(graph, root)).collect();
+    let roots: Vec<NodeId> = roots.into_iter().collect();
+    let verdicts = hazard::decide(graph, &roots, options);
+    verdicts.into_iter().map(|verdict| (verdict.target, verdict)).collect()
+}
+
+/// Puts findings into the order of every output: the worst first, then by file, line and net. `position` gives the file
+/// name and the line of a place.
+pub fn sort(findings: &mut [Finding], position: impl Fn(Span) -> (String, usize)) {
+    findings.sort_by_cached_key(|finding| {
+        let place = finding.at.map(&position);
+        (Reverse(finding.severity), place, finding.rule, finding.net.clone(), finding.at, finding.message.clone())
+    });
+}

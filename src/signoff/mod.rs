@@ -1,1 +1,15 @@
-//! (in work)
+//! Sign-off: what the designer says in comments about findings. `// stillwire: signoff RULE[, RULE] "reason" [by NAME]
+//! [until YYYY-MM-DD]` accepts findings, `// stillwire: watch "reason"` marks a net that must not glitch. Comments are
+//! found in the original texts by a scanner that knows strings and block comments, so that neither a string nor
+//! commented-out code can suppress anything.
+//!
+//! Invariant: a comment that is not understood suppresses nothing and is an error; one that matches nothing is reported.
+
+mod apply;
+mod comments;
+mod pragma;
+mod watch;
+
+pub use apply::{Applied, apply};
+pub use pragma::{Collected, SignoffPragma, WatchPragma, collect};
+pub use watch::watches;

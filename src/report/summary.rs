@@ -1,0 +1,128 @@
+//! The last lines of the text: what was looked at, what was not, and whether the run passes. Nothing that was left out
+//! is ever silent.
+
+use std::fmt::Write;
+
+use super::Report;
+use super::text::Style;
+use crate::rules::{PinKind, Severity};
+
+/// The most names listed of black boxes, benches and the like.
+const SHOWN_NAMES: usize = 8;
+
+const CAUTION: &str = "Delays, metastability, analogue effects and timing sign-off are out of scope; the responsible engineer decides.";
+
+pub(super) fn render(report: &Report, style: &Style) -> String {
+    let mut text = String::new();
+    let coverage = &report.coverage;
+    let _ = writeln!(text, "{}", findings(report, style));
+    pins(report, &mut text);
+    if coverage.loops > 0 {
+        let _ = writeln!(text, "  combinational loops found: {}", coverage.loops);
+    }
+    let _ = writeln!(
+        text,
+        "  read: {}, {} failed; modules: {} elaborated, {} failed; unsupported constructs: {}",
+        number(coverage.files_read, "file"),
+        coverage.files_failed,
+        coverage.modules_elaborated,
+        coverage.modules_failed,
+        coverage.unsupported.len()
+    );
+    let boxes: Vec<String> =
+        coverage.black_boxes.iter().map(|(module, count)| format!("{module} ({count}x)")).collect();
+    list("black boxes, outputs taken as clean and free", &boxes, &mut text);
+    let left_out = &coverage.left_out;
+    list("benches left out", &left_out.benches, &mut text);
+    list("memories too large to flatten", &left_out.opaque_memories, &mut text);
+    let skipped: Vec<String> = left_out.skipped.iter().map(|(kind, count)| format!("{kind} ({count}x)")).collect();
+    list("for simulation only, left out", &skipped, &mut text);
+    if !left_out.regions.is_empty() {
+        let _ = writeln!(text, "  translate_off regions left out: {}", left_out.regions.len());
+    }
+    let _ = writeln!(text, "{}", result(report, style));
+    let _ = writeln!(text, "{CAUTION}");
+    text
+}
+
+/// "1 error, 2 warnings; not shown: 3 notes; signed off: 1".
+fn findings(report: &Report, style: &Style) -> String {
+    let open = |severity: Severity| {
+        report.findings.iter().filter(|finding| finding.signoff.is_none() && finding.severity == severity).count()
+    };
+    let messages = |severity: Severity| report.messages.iter().filter(|message| message.severity == severity).count();
+    let mut shown = Vec::new();
+    let mut hidden = Vec::new();
+    for severity in [Severity::Error, Severity::Warning, Severity::Note] {
+        let found = open(severity) + messages(severity);
+        let text = number(found, severity.name());
+        if severity >= style.show {
+            shown.push(text);
+        } else if found > 0 {
+            hidden.push(text);
+        }
+    }
+    let mut line = format!("stillwire: {}", shown.join(", "));
+    if !hidden.is_empty() {
+        let _ = write!(line, "; not shown: {} (see --show)", hidden.join(", "));
+    }
+    let signed_off = report.findings.iter().filter(|finding| finding.signoff.is_some()).count();
+    if signed_off > 0 {
+        let _ = write!(line, "; signed off: {signed_off}");
+    }
+    line
+}
+
+/// One line per kind of net that occurs.
+fn pins(report: &Report, text: &mut String) {
+    let pins = &report.coverage.pins;
+    if pins.total().nets == 0 {
+        text.push_str("  nets checked: none; there are no clocks, asynchronous pins, latch enables, watched nets or outputs\n");
+        return;
+    }
+    let _ = writeln!(text, "  {:<14}{:>8}{:>8}{:>8}{:>11}", "nets checked", "all", "clean", "hazard", "undecided");
+    let mut line = |name: &str, count: crate::rules::NetCount| {
+        let _ = writeln!(
+            text,
+            "  {name:<14}{:>8}{:>8}{:>8}{:>11}",
+            count.nets, count.clean, count.hazard, count.undecided
+        );
+    };
+    for kind in PinKind::ALL {
+        if pins.get(kind).nets > 0 {
+            line(kind.name(), pins.get(kind));
+        }
+    }
+    line("together", pins.total());
+}
+
+/// Whether the run passes, and why not.
+fn result(report: &Report, style: &Style) -> String {
+    let gate = style.gate.name();
+    let failing = report.findings.iter().filter(|finding| finding.signoff.is_none() && finding.severity >= style.gate);
+    let failing = failing.count();
+    let mut text = match failing {
+        0 => format!("result: nothing at or above `{gate}`"),
+        _ => format!("result: FAILS, {} at or above `{gate}`", number(failing, "finding")),
+    };
+    if !report.complete() {
+        text.push_str("; INCOMPLETE: part of the input was not analysed or not decided, so this is no pass");
+    }
+    text
+}
+
+fn list(what: &str, names: &[String], text: &mut String) {
+    if names.is_empty() {
+        return;
+    }
+    let shown = names.iter().take(SHOWN_NAMES).map(String::as_str).collect::<Vec<_>>().join(", ");
+    let more = match names.len().saturating_sub(SHOWN_NAMES) {
+        0 => String::new(),
+        more => format!(" and {more} more"),
+    };
+    let _ = writeln!(text, "  {what}: {shown}{more}");
+}
+
+fn number(count: usize, noun: &str) -> String {
+    if count == 1 { format!("1 {noun}") } else { format!("{count} {noun}s") }
+}

@@ -1,0 +1,186 @@
+//! The text that people read. Each finding stands on its own: what happens, where the two ways of the change run, the
+//! witness as a small waveform, what it does to the cells, the cure. Colours are the caller's choice. Everything that
+//! is shortened says by how much; the whole is in the JSON.
+
+use codespan_reporting::diagnostic::{Diagnostic, Label, Severity as Level};
+use codespan_reporting::files::{Error, Files};
+use codespan_reporting::term::termcolor::Buffer;
+use codespan_reporting::term::{self, Config};
+
+use super::{Message, Report, summary, waveform};
+use crate::rules::{Finding, Severity};
+use crate::source::{FileId, SourceSet, Span};
+
+/// How the text is to look.
+#[derive(Clone, Copy, PartialEq, Eq, Debug)]
+pub struct Style {
+    /// The lowest severity shown; the rest is counted.
+    pub show: Severity,
+    /// The lowest severity that fails the run, for the last line.
+    pub gate: Severity,
+    /// Colours by escape sequences.
+    pub colours: bool,
+}
+
+impl Default for Style {
+    fn default() -> Self {
+        Self { show: Severity::Warning, gate: Severity::Error, colours: false }
+    }
+}
+
+/// Findings beyond the first of one net are one line each; so many of them.
+const SHOWN_HAZARDS: usize = 6;
+
+/// Source lines longer than this are generated text and are not shown.
+const LONGEST_LINE: usize = 400;
+
+/// The whole report: findings, messages, summary.
+pub fn render(report: &Report, sources: &SourceSet, style: &Style) -> String {
+    let mut buffer = if style.colours { Buffer::ansi() } else { Buffer::no_color() };
+    let config = Config { before_label_lines: 0, after_label_lines: 0, ..Config::default() };
+    let files = Excerpts { sources };
+    let shown = report.findings.iter().filter(|finding| finding.signoff.is_none() && finding.severity >= style.show);
+    let findings = shown.map(|finding| of_finding(sources, finding));
+    let messages = report.messages.iter().filter(|message| message.severity >= style.show);
+    let messages = messages.map(|message| of_message(sources, message));
+    for diagnostic in findings.chain(messages) {
+        // Writing to memory cannot fail, and every label was checked against its text.
+        let _ = term::emit(&mut buffer, &config, &files, &diagnostic);
+    }
+    let mut text = String::from_utf8_lossy(buffer.as_slice()).into_owned();
+    text.push_str(&summary::render(report, style));
+    text
+}
+
+fn level(severity: Severity) -> Level {
+    match severity {
+        Severity::Error => Level::Error,
+        Severity::Warning => Level::Warning,
+        Severity::Note => Level::Note,
+    }
+}
+
+fn of_finding(sources: &SourceSet, finding: &Finding) -> Diagnostic<FileId> {
+    let mut labels = Vec::new();
+    let mut notes = Vec::new();
+    // The last step of a trace at the finding's own place says what happens there.
+    let own = finding.trace.iter().rposition(|step| step.at == finding.at && step.at.is_some());
+    if let Some(at) = finding.at {
+        let text = own.map_or("", |index| finding.trace[index].text.as_str());
+        place(sources, at, text, true, &mut labels, &mut notes);
+    }
+    for (index, step) in finding.trace.iter().enumerate() {
+        match step.at {
+            _ if Some(index) == own => {}
+            Some(at) => place(sources, at, &step.text, false, &mut labels, &mut notes),
+            None => notes.push(step.text.clone()),
+        }
+    }
+    if let Some(lead) = finding.hazards.first() {
+        notes.push(waveform::render(lead, &finding.net));
+        notes.push(format!("effect: {}", lead.harm));
+    }
+    if finding.hazards.len() > 1 {
+        notes.push(others(finding));
+    }
+    if let Some(cover) = &finding.cover {
+        let proven = if cover.proven { "proven: with it, no change of one signal can glitch this net" } else { "not proven" };
+        notes.push(format!("cover ({proven}):\n  {}", cover.verilog));
+    }
+    notes.extend(finding.notes.iter().cloned());
+    Diagnostic::new(level(finding.severity))
+        .with_code(finding.rule.name())
+        .with_message(&finding.message)
+        .with_labels(labels)
+        .with_notes(notes)
+}
+
+/// The hazards behind the lead, one line each, by what they do.
+fn others(finding: &Finding) -> String {
+    let rest = &finding.hazards[1..];
+    let mut lines = vec!["the same net, by other changes:".to_string()];
+    for hazard in rest.iter().take(SHOWN_HAZARDS) {
+        lines.push(format!("  {} by {}: {}", hazard.kind, hazard.changes.join(", "), held(hazard)));
+    }
+    if rest.len() > SHOWN_HAZARDS {
+        lines.push(format!("  and {} more, all in the JSON output", rest.len() - SHOWN_HAZARDS));
+    }
+    lines.join("\n")
+}
+
+/// "while a = 1, b = 0".
+fn held(hazard: &crate::rules::Hazard) -> String {
+    let held: Vec<String> = (hazard.before.iter())
+        .filter(|(name, _)| !hazard.changes.contains(name))
+        .map(|(name, value)| format!("{name} = {}", u8::from(*value)))
+        .collect();
+    if held.is_empty() { "whatever the others do".to_string() } else { format!("while {}", held.join(", ")) }
+}
+
+fn of_message(sources: &SourceSet, message: &Message) -> Diagnostic<FileId> {
+    let mut labels = Vec::new();
+    let mut notes = Vec::new();
+    if let Some(at) = message.at {
+        place(sources, at, "", true, &mut labels, &mut notes);
+    }
+    for (at, text) in &message.also {
+        place(sources, *at, text, false, &mut labels, &mut notes);
+    }
+    notes.extend(message.help.iter().map(|help| format!("to do: {help}")));
+    Diagnostic::new(level(message.severity)).with_message(&message.text).with_labels(labels).with_notes(notes)
+}
+
+/// Shows a place as a label on its first line, or as a note when the line is too long to be shown.
+fn place(
+    sources: &SourceSet,
+    at: Span,
+    text: &str,
+    primary: bool,
+    labels: &mut Vec<Label<FileId>>,
+    notes: &mut Vec<String>,
+) {
+    let file = sources.file(at.file);
+    let line = file.line_range(file.line_column(at.start).0);
+    let start = at.start as usize;
+    let end = (at.end as usize).min(line.end).max(start);
+    let fits = line.len() <= LONGEST_LINE && file.text.is_char_boundary(start) && file.text.is_char_boundary(end);
+    if fits {
+        let label = if primary { Label::primary(at.file, start..end) } else { Label::secondary(at.file, start..end) };
+        labels.push(label.with_message(text));
+    } else {
+        let position = sources.position(at);
+        let text = if text.is_empty() { "here" } else { text };
+        notes.push(format!("{}:{}:{}: {text}", position.file, position.line, position.column));
+    }
+}
+
+/// The texts as the renderer wants them.
+struct Excerpts<'a> {
+    sources: &'a SourceSet,
+}
+
+impl<'a> Files<'a> for Excerpts<'_> {
+    type FileId = FileId;
+    type Name = String;
+    type Source = &'a str;
+
+    fn name(&'a self, id: FileId) -> Result<String, Error> {
+        Ok(self.sources.file(id).name())
+    }
+
+    fn source(&'a self, id: FileId) -> Result<&'a str, Error> {
+        Ok(&self.sources.file(id).text)
+    }
+
+    fn line_index(&'a self, id: FileId, byte_index: usize) -> Result<usize, Error> {
+        Ok(self.sources.file(id).line_column(byte_index as u32).0 - 1)
+    }
+
+    fn line_range(&'a self, id: FileId, line_index: usize) -> Result<std::ops::Range<usize>, Error> {
+        let file = self.sources.file(id);
+        if line_index >= file.lines() {
+            return Err(Error::LineTooLarge { given: line_index, max: file.lines() });
+        }
+        Ok(file.line_range(line_index + 1))
+    }
+}

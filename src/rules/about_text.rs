@@ -1,0 +1,82 @@
+//! Findings that are about a text and not about a net: `unsupported-construct`, the bookkeeping rules, and what else the front end has to say. A limit of ours looks like any other finding: it has
+//! a rule, a place and a cure, and it is never silent, because whatever lies behind it was not analysed.
+
+use super::finding::{Finding, Rule, Severity, TraceStep, Verdict};
+use super::fingerprint;
+use crate::diagnostic::{Diagnostic, Kind};
+use crate::report::Message;
+use crate::source::Span;
+
+/// A diagnostic as the report shows it.
+#[derive(Clone, PartialEq, Eq, Debug)]
+pub enum Said {
+    Finding(Box<Finding>),
+    Message(Message),
+}
+
+/// Sorts a front-end diagnostic: what was lost is a finding, the rest a message. A construct that is not supported is a
+/// note; input that could not be read or elaborated is a warning, so that it shows without being asked for.
+pub fn say(diagnostic: &Diagnostic) -> Said {
+    let (rule, severity) = match diagnostic.kind {
+        Kind::Note => {
+            return Said::Message(Message {
+                severity: Severity::Note,
+                text: diagnostic.message.clone(),
+                at: diagnostic.at,
+                also: diagnostic.also.clone(),
+                help: diagnostic.help.clone(),
+            });
+        }
+        Kind::Unsupported => (Rule::UnsupportedConstruct, Severity::Note),
+        Kind::Incomplete => (Rule::UnsupportedConstruct, Severity::Warning),
+        Kind::SignoffInvalid => (Rule::SignoffInvalid, Severity::Error),
+    };
+    let mut notes: Vec<String> = diagnostic.help.iter().map(|help| format!("to do: {help}")).collect();
+    if rule == Rule::UnsupportedConstruct {
+        notes.push("what depends on it was not analysed; the run is incomplete".to_string());
+    }
+    let trace = diagnostic.also.iter().map(|(at, text)| TraceStep { at: Some(*at), text: text.clone() }).collect();
+    let fingerprint = fingerprint::of_text(rule, &[&diagnostic.construct, &diagnostic.message]);
+    let mut finding = plain(rule, severity, diagnostic.message.clone(), diagnostic.at, fingerprint);
+    finding.trace = trace;
+    finding.notes = notes;
+    Said::Finding(Box::new(finding))
+}
+
+/// A finding about the sign-off comments themselves.
+pub(crate) fn bookkeeping(
+    rule: Rule,
+    severity: Severity,
+    message: String,
+    at: Span,
+    cure: &str,
+    reason: &str,
+) -> Finding {
+    let fingerprint = fingerprint::of_text(rule, &[&message, reason]);
+    let mut finding = plain(rule, severity, message, Some(at), fingerprint);
+    finding.notes.push(format!("to do: {cure}"));
+    finding
+}
+
+/// A finding that is about a text and not about a net.
+fn plain(rule: Rule, severity: Severity, message: String, at: Option<Span>, fingerprint: String) -> Finding {
+    Finding {
+        rule,
+        severity,
+        verdict: Verdict::Proven,
+        message,
+        at,
+        declared: None,
+        trace: Vec::new(),
+        instance: String::new(),
+        net: String::new(),
+        bits: None,
+        pin: None,
+        hazards: Vec::new(),
+        cover: None,
+        loop_: None,
+        notes: Vec::new(),
+        fingerprint,
+        signoff: None,
+    }
+}

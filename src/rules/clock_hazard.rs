@@ -1,0 +1,31 @@
+//! `clock-hazard`: clock pins of flip-flops. Every pulse on a clock holds a rising and a falling edge, so each of the
+//! three kinds of hazard clocks the cells once more than intended, whatever edge they use.
+
+use super::evidence::{self, Subject};
+use super::finding::{Finding, Rule, Severity};
+use super::pins::{self, Use};
+use super::words;
+use crate::graph::Graph;
+use crate::hazard::{HazardKind, Options, TargetVerdict};
+
+const CURE: &str = "to do: gate the clock with a latch that is transparent while the clock is inactive, so that the \
+                    enable holds still during the other phase, or use a clock enable in front of the data input";
+
+pub(super) fn finding(graph: &Graph, verdict: &TargetVerdict, uses: &[Use], options: &Options) -> Option<Finding> {
+    let pin = pins::pin(graph, uses);
+    let cells = words::cells(graph, uses);
+    let net = super::names::name(graph, verdict.target);
+    let what = format!("the clock `{net}` of {cells}");
+    let judge = |kind| judge(&cells, kind);
+    evidence::finding(graph, verdict, &Subject { rule: Rule::ClockHazard, pin, what, judge: &judge, cure: CURE }, options)
+}
+
+fn judge(cells: &str, kind: HazardKind) -> (Severity, String) {
+    let harm = match kind {
+        HazardKind::Static0 | HazardKind::Static1 => {
+            format!("clocks {cells} although no edge was due; a short pulse may clock some of them and miss others")
+        }
+        HazardKind::Dynamic => format!("clocks {cells} more than once where one edge was due"),
+    };
+    (Severity::Error, harm)
+}

@@ -1,0 +1,46 @@
+//! A cover as Verilog over the design's own names, or the reason why none is proposed. The text declares a new net made
+//! of the old one and the terms, so that it can be pasted behind the present logic whatever that looks like.
+
+use super::finding::CoverText;
+use super::names;
+use crate::graph::{Graph, InstanceId, NodeId};
+use crate::hazard::Cover;
+
+/// `None` when a literal has no name in the design.
+pub(super) fn of(graph: &Graph, target: NodeId, cover: &Cover) -> Option<CoverText> {
+    let scope = names::instance(graph, target);
+    let term = |literals: &Vec<(NodeId, bool)>, operator: &str| -> Option<String> {
+        let literals: Option<Vec<String>> =
+            literals.iter().map(|&(node, positive)| literal(graph, node, positive, scope)).collect();
+        Some(literals?.join(operator))
+    };
+    let products: Option<Vec<String>> = cover.products.iter().map(|literals| term(literals, " & ")).collect();
+    let sums: Option<Vec<String>> = cover.sums.iter().map(|literals| term(literals, " | ")).collect();
+    let (products, sums) = (products?, sums?);
+    let old = names::verilog(graph, target, scope)?;
+    let mut alternatives: Vec<String> = Vec::new();
+    if !cover.replaces {
+        alternatives.push(old.clone());
+    }
+    alternatives.extend(products.iter().map(|product| parenthesised(product, " & ")));
+    let mut whole = alternatives.join(" | ");
+    if !sums.is_empty() {
+        whole = parenthesised(&whole, " | ");
+        for sum in &sums {
+            whole.push_str(&format!(" & {}", parenthesised(sum, " | ")));
+        }
+    }
+    let name: String = old.chars().map(|c| if c.is_ascii_alphanumeric() { c } else { '_' }).collect();
+    let name = name.trim_end_matches('_');
+    let verilog = format!("wire {name}_covered = {whole};");
+    Some(CoverText { terms: products.into_iter().chain(sums).collect(), verilog, proven: cover.proven })
+}
+
+fn parenthesised(text: &str, operator: &str) -> String {
+    if text.contains(operator) { format!("({text})") } else { text.to_string() }
+}
+
+fn literal(graph: &Graph, node: NodeId, positive: bool, scope: InstanceId) -> Option<String> {
+    let name = names::verilog(graph, node, scope)?;
+    Some(if positive { name } else { format!("~{name}") })
+}

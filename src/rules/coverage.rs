@@ -1,0 +1,65 @@
+//! How many nets were looked at, by kind of pin. Each net that was asked about falls into exactly one of the three
+//! verdicts, so the three always add up to the number of nets: an undecided net can never pass as a clean one.
+
+use super::PinKind;
+use crate::hazard::TargetVerdict;
+
+/// The verdicts on the nets of one kind of pin.
+#[derive(Clone, Copy, PartialEq, Eq, Debug, Default)]
+pub struct NetCount {
+    pub nets: usize,
+    pub clean: usize,
+    /// At least one proven hazard, whatever else stayed open.
+    pub hazard: usize,
+    /// No proven hazard, but at least one open question.
+    pub undecided: usize,
+}
+
+/// One [`NetCount`] per [`PinKind`].
+#[derive(Clone, PartialEq, Eq, Debug, Default)]
+pub struct PinCoverage {
+    counts: [NetCount; PinKind::ALL.len()],
+    /// Questions (source against net, per kind of hazard) that nobody answered, also on nets with a proven hazard.
+    pub open_questions: usize,
+}
+
+impl PinCoverage {
+    pub fn get(&self, kind: PinKind) -> NetCount {
+        self.counts[kind as usize]
+    }
+
+    /// The counts in the order of [`PinKind::ALL`].
+    pub fn values(&self) -> impl Iterator<Item = NetCount> + '_ {
+        self.counts.iter().copied()
+    }
+
+    /// Everything together.
+    pub fn total(&self) -> NetCount {
+        self.values().fold(NetCount::default(), |sum, count| NetCount {
+            nets: sum.nets + count.nets,
+            clean: sum.clean + count.clean,
+            hazard: sum.hazard + count.hazard,
+            undecided: sum.undecided + count.undecided,
+        })
+    }
+
+    /// Counts one net of this kind. `None` stands for a net that cannot change by itself: a constant, an undriven net or
+    /// a source, which is clean by definition.
+    pub(super) fn count<'a>(&mut self, kind: PinKind, verdicts: impl IntoIterator<Item = Option<&'a TargetVerdict>>) {
+        let count = &mut self.counts[kind as usize];
+        count.nets += 1;
+        let mut hazard = false;
+        let mut undecided = false;
+        for pair in verdicts.into_iter().flatten().flat_map(|verdict| &verdict.pairs) {
+            hazard |= !pair.hazards.is_empty();
+            undecided |= !pair.undecided.is_empty();
+        }
+        if hazard {
+            count.hazard += 1;
+        } else if undecided {
+            count.undecided += 1;
+        } else {
+            count.clean += 1;
+        }
+    }
+}

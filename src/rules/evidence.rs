@@ -1,0 +1,339 @@
+//! Puts a verdict into words: the list of hazards with their witnesses, the places on the two ways of the change, and
+//! the cover. What a hazard means is the rule's business and is passed in as a judge.
+//!
+//! The first of the hazards is the lead, the one that the message and the trace are about: the worst, and among equals
+//! the one that needs the fewest other signals to hold, because it is the easiest to follow.
+
+use std::collections::BTreeSet;
+
+use super::cover_text;
+use super::finding::{CoverText, Finding, Hazard, Pin, Rule, Severity, TraceStep, Verdict};
+use super::{fingerprint, names, words};
+use crate::graph::{Graph, InstanceId, NodeId, NodeKind};
+use crate::hazard::{self, HazardKind, Options, Path, Paths, TargetVerdict, Undecided, Witness};
+use crate::source::Span;
+
+/// What a hazard of a kind does to this pin: how bad it is, and in words.
+pub(super) type Judge<'a> = dyn Fn(HazardKind) -> (Severity, String) + Sync + 'a;
+
+/// What a rule knows about a net before it looks at the verdict.
+pub(super) struct Subject<'a> {
+    pub rule: Rule,
+    pub pin: Pin,
+    /// "the asynchronous reset `top.rst_n` of 17 flip-flops".
+    pub what: String,
+    pub judge: &'a Judge<'a>,
+    /// What to do about it, besides the cover.
+    pub cure: &'a str,
+}
+
+/// The finding on one net, or `None` when the net is clean.
+pub(super) fn finding(
+    graph: &Graph,
+    verdict: &TargetVerdict,
+    subject: &Subject<'_>,
+    options: &Options,
+) -> Option<Finding> {
+    if verdict.is_clean() {
+        return None;
+    }
+    let root = verdict.target;
+    let net = names::name(graph, root);
+    let hazards = ranked(graph, verdict, subject.judge);
+    let sources: BTreeSet<NodeId> = hazards.iter().map(|ranked| ranked.source).collect();
+    let mut finding = Finding {
+        rule: subject.rule,
+        severity: Severity::Warning,
+        verdict: Verdict::Undecided,
+        message: String::new(),
+        at: place(graph, root),
+        declared: names::declaration(graph, root),
+        trace: Vec::new(),
+        instance: graph.instances[names::instance(graph, root).index()].path.clone(),
+        net: net.clone(),
+        bits: None,
+        pin: Some(subject.pin.clone()),
+        hazards: hazards.iter().map(|ranked| ranked.hazard(graph)).collect(),
+        cover: None,
+        loop_: None,
+        notes: Vec::new(),
+        fingerprint: fingerprint::of_cone(graph, subject.rule, &net, &[root]),
+        signoff: None,
+    };
+    if let Some(lead) = hazards.first() {
+        finding.severity = lead.severity;
+        finding.verdict = Verdict::Proven;
+        let who = words::who(&names::name(graph, lead.source), sources.len());
+        finding.message = format!("{who} {}", words::can(lead.kind, &subject.what));
+        let paths = hazard::paths(graph, root, lead.witness);
+        finding.trace = trace(graph, root, &paths, finding.at);
+        let (cover, note) = cover(graph, verdict, options);
+        finding.cover = cover;
+        finding.notes.extend(note);
+    } else {
+        finding.message = format!("not decided: whether {} can glitch", subject.what);
+        finding.trace.push(TraceStep { at: finding.at, text: format!("`{net}` is driven here") });
+    }
+    finding.notes.extend(undecided(graph, verdict, options));
+    finding.notes.push(subject.cure.to_string());
+    Some(finding)
+}
+
+/// The cover of a target in words, or why there is none.
+fn cover(graph: &Graph, verdict: &TargetVerdict, options: &Options) -> (Option<CoverText>, Option<String>) {
+    match hazard::cover(graph, verdict, options) {
+        Ok(cover) => match cover_text::of(graph, verdict.target, &cover) {
+            Some(text) => (Some(text), None),
+            None => (None, Some("a cover exists, but it needs signals that have no name; name them to see it".to_string())),
+        },
+        Err(withheld) => (None, Some(format!("no cover is offered because {}", withheld.words()))),
+    }
+}
+
+/// Where a node was written: the node itself, else the wire it drives.
+pub(super) fn place(graph: &Graph, node: NodeId) -> Option<Span> {
+    graph.span(node).or_else(|| names::wire_of(graph, node).and_then(|wire| graph.span(wire)))
+}
+
+/// One hazard with what the rule thinks of it.
+struct Ranked<'a> {
+    source: NodeId,
+    kind: HazardKind,
+    witness: &'a Witness,
+    severity: Severity,
+    harm: String,
+}
+
+/// All hazards of a target, the lead first, the others by source and kind.
+fn ranked<'a>(graph: &Graph, verdict: &'a TargetVerdict, judge: &Judge<'_>) -> Vec<Ranked<'a>> {
+    let mut all: Vec<Ranked<'a>> = Vec::new();
+    for pair in &verdict.pairs {
+        for (kind, witness) in &pair.hazards {
+            let (severity, harm) = judge(*kind);
+            all.push(Ranked { source: pair.source, kind: *kind, witness, severity, harm });
+        }
+    }
+    all.sort_by_cached_key(|ranked| (names::name(graph, ranked.source), ranked.kind));
+    let lead = (0..all.len()).min_by_key(|&index| {
+        let ranked = &all[index];
+        (std::cmp::Reverse(ranked.severity), ranked.kind, ranked.witness.holds.len(), index)
+    });
+    if let Some(lead) = lead {
+        all[..=lead].rotate_right(1);
+    }
+    all
+}
+
+/// All hazards of a target in words, the lead first.
+pub(super) fn hazards(graph: &Graph, verdict: &TargetVerdict, judge: &Judge<'_>) -> Vec<Hazard> {
+    ranked(graph, verdict, judge).iter().map(|ranked| ranked.hazard(graph)).collect()
+}
+
+impl Ranked<'_> {
+    fn hazard(&self, graph: &Graph) -> Hazard {
+        hazard_text(graph, self.kind, self.witness, self.harm.clone())
+    }
+}
+
+/// A witness in names. Under a change of one source alone every hazard is a logic hazard: there is no third value
+/// between the two endpoints that the function could pass through.
+pub(super) fn hazard_text(graph: &Graph, kind: HazardKind, witness: &Witness, harm: String) -> Hazard {
+    let mut before: Vec<(String, bool)> = Vec::new();
+    let mut after: Vec<(String, bool)> = Vec::new();
+    for &(node, value) in &witness.changes {
+        before.push((names::name(graph, node), value));
+        after.push((names::name(graph, node), !value));
+    }
+    for &(node, value) in &witness.holds {
+        before.push((names::name(graph, node), value));
+        after.push((names::name(graph, node), value));
+    }
+    before.sort();
+    after.sort();
+    let mut changes: Vec<String> = witness.changes.iter().map(|&(node, _)| names::name(graph, node)).collect();
+    changes.sort();
+    Hazard { kind: kind.name(), cause: "logic", changes, harm, before, after, pin: witness.target }
+}
+
+/// One sentence per reason why questions about this target stayed open.
+fn undecided(graph: &Graph, verdict: &TargetVerdict, options: &Options) -> Vec<String> {
+    let mut notes = Vec::new();
+    for reason in [Undecided::Budget, Undecided::Loop] {
+        let open = |why: &(HazardKind, Undecided)| why.1 == reason;
+        let pairs: Vec<_> = verdict.pairs.iter().filter(|pair| pair.undecided.iter().any(open)).collect();
+        let Some(first) = pairs.first() else { continue };
+        let first = names::name(graph, first.source);
+        let who = match pairs.len() {
+            1 => format!("a change of `{first}`"),
+            more => format!("a change of `{first}` or of {}", words::count(more - 1, "other signal")),
+        };
+        notes.push(match reason {
+            Undecided::Budget => format!(
+                "undecided for {who}: no proof within {} solver conflicts; this is not a pass. Drive the pin from a \
+                 flip-flop, or split the logic in front of it",
+                options.conflicts
+            ),
+            Undecided::Loop => format!(
+                "undecided for {who}: the change passes a combinational loop, behind which nothing can be proven; this \
+                 is not a pass. Break the loop first (rule combinational-loop)"
+            ),
+        });
+    }
+    notes
+}
+
+/// The most labels shown for one way; what is left out is said in the last.
+const SHOWN_HOPS: usize = 8;
+
+/// The places of a hazard in the order in which the change meets them: the stem, both ways, where they meet, the target.
+pub(super) fn trace(graph: &Graph, target: NodeId, paths: &Paths, at: Option<Span>) -> Vec<TraceStep> {
+    let mut steps = Vec::new();
+    let stem = names::name(graph, paths.stem);
+    let several = paths.ways.len() > 1;
+    let split = if several { "splits here into paths 1 and 2" } else { "changes" };
+    let stem_place = names::wire_of(graph, paths.stem).and_then(|wire| graph.span(wire)).or_else(|| place(graph, paths.stem));
+    steps.push(TraceStep { at: stem_place, text: format!("`{stem}` {split}") });
+    for (number, way) in paths.ways.iter().enumerate() {
+        let hops = hops(graph, paths, way);
+        for (letter, hop) in hops.into_iter().enumerate() {
+            let letter = char::from(b'a' + (letter % 26) as u8);
+            steps.push(TraceStep { at: hop.at, text: format!("{}{letter}: {}", number + 1, hop.text) });
+        }
+    }
+    let meet = words::gate(graph, paths.meet);
+    let lengths: Vec<String> = (paths.ways.iter().enumerate())
+        .map(|(number, way)| {
+            format!("{} ({}, {})", number + 1, words::count(way.gates, "gate"), words::count(way.inversions, "inversion"))
+        })
+        .collect();
+    let joined = match graph.kind(paths.meet) {
+        NodeKind::OpOut(_) | NodeKind::OpIn(_) => format!(
+            "{} inside {meet}: no implementation is fixed before synthesis, so any change of its result may glitch",
+            if several { format!("paths {} meet", lengths.join(" and ")) } else { "the change passes".to_string() }
+        ),
+        _ => format!("paths {} meet in {meet}", lengths.join(" and ")),
+    };
+    let target_name = names::name(graph, target);
+    let between = paths.tail.iter().filter(|&&node| node != paths.meet && counts_as_gate(graph, node)).count();
+    let meet_place = place(graph, paths.meet);
+    if between == 0 && meet_place == at {
+        steps.push(TraceStep { at, text: format!("{joined}, which drives `{target_name}`") });
+    } else {
+        steps.push(TraceStep { at: meet_place, text: joined });
+        let way = match between {
+            0 => "the pulse reaches".to_string(),
+            _ => format!("{} further, the pulse reaches", words::count(between, "gate")),
+        };
+        steps.push(TraceStep { at, text: format!("{way} `{target_name}`") });
+    }
+    steps
+}
+
+/// A gate to the reader: wires do not count, an operator counts once, at its exit.
+fn counts_as_gate(graph: &Graph, node: NodeId) -> bool {
+    matches!(graph.kind(node), NodeKind::Gate(_) | NodeKind::Table(_) | NodeKind::OpOut(_))
+}
+
+/// A stretch of a way that one label covers: gates written at one place, or a step through a port.
+struct Hop {
+    at: Option<Span>,
+    text: String,
+}
+
+/// The gates of one place while they are being collected.
+#[derive(Default)]
+struct Stretch {
+    first: Option<NodeId>,
+    at: Option<Span>,
+    gates: usize,
+    inversions: usize,
+}
+
+/// The labels between the stem and the meeting gate, both left out.
+fn hops(graph: &Graph, paths: &Paths, way: &Path) -> Vec<Hop> {
+    let mut hops: Vec<Hop> = Vec::new();
+    let mut stretch = Stretch::default();
+    let mut gates_in: Vec<usize> = Vec::new();
+    let mut scope: InstanceId = names::instance(graph, paths.stem);
+    let mut inside = None;
+    for step in &way.steps {
+        let node = step.node;
+        if node == paths.stem || node == paths.meet {
+            continue;
+        }
+        match graph.kind(node) {
+            NodeKind::OpIn(operator) => inside = Some(operator),
+            NodeKind::OpOut(_) => inside = None,
+            _ if inside.is_some() => continue,
+            _ => {}
+        }
+        if graph.kind(node) == NodeKind::Wire {
+            let Some(name) = graph.node_name(node) else { continue };
+            let net = &graph.nets[name.net.index()];
+            let enters = net.instance != scope;
+            if let Some(hop) = stretch.finish(graph, Some(node)) {
+                gates_in.push(stretch.gates);
+                hops.push(hop);
+            } else if enters {
+                let path = &graph.instances[net.instance.index()].path;
+                gates_in.push(0);
+                hops.push(Hop { at: Some(net.span), text: format!("passes `{path}.{}{}`", net.name, name.suffix) });
+            }
+            scope = net.instance;
+            stretch = Stretch::default();
+        } else {
+            let at = graph.span(node);
+            if stretch.first.is_some() && stretch.at != at {
+                if let Some(hop) = stretch.finish(graph, None) {
+                    gates_in.push(stretch.gates);
+                    hops.push(hop);
+                }
+                stretch = Stretch::default();
+            }
+            stretch.first.get_or_insert(node);
+            stretch.at = at;
+            if counts_as_gate(graph, node) {
+                stretch.gates += 1;
+            }
+            if let NodeKind::Gate(kind) = graph.kind(node) {
+                stretch.inversions += usize::from(kind.inverts());
+            }
+        }
+    }
+    if let Some(hop) = stretch.finish(graph, None) {
+        gates_in.push(stretch.gates);
+        hops.push(hop);
+    }
+    if hops.len() > SHOWN_HOPS {
+        let left_out: usize = gates_in[SHOWN_HOPS - 1..].iter().sum();
+        hops.truncate(SHOWN_HOPS);
+        if let Some(last) = hops.last_mut() {
+            last.text = format!("from here {} more to where the paths meet, not shown", words::count(left_out, "gate"));
+        }
+    }
+    hops
+}
+
+impl Stretch {
+    /// The label of this stretch, and the net it drives if the next step is one.
+    fn finish(&self, graph: &Graph, drives: Option<NodeId>) -> Option<Hop> {
+        let first = self.first?;
+        let mut text = match (self.gates, graph.kind(first)) {
+            (0 | 1, NodeKind::OpIn(operator) | NodeKind::OpOut(operator)) => {
+                format!("through {}", words::with_article(graph.operators[operator.index()].what))
+            }
+            (0 | 1, NodeKind::Gate(kind)) if kind.inverts() && self.inversions == 1 => {
+                let inverts = if graph.fanin(first).len() > 1 { ", inverts" } else { "" };
+                format!("{}{inverts}", words::gate(graph, first))
+            }
+            (0 | 1, _) => words::gate(graph, first),
+            (gates, _) => {
+                format!("{}, {}", words::count(gates, "gate"), words::count(self.inversions, "inversion"))
+            }
+        };
+        if let Some(name) = drives.and_then(|wire| graph.name(wire)) {
+            text.push_str(&format!(", drives `{name}`"));
+        }
+        Some(Hop { at: self.at, text })
+    }
+}

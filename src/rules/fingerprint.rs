@@ -1,0 +1,135 @@
+//! A name for a finding that survives edits elsewhere: 32 hexadecimal digits over the rule, the hierarchical name of the
+//! net and the structure of its cone (kinds and connections in pin order, names of the sources). Lines, files, names of
+//! inner nets and the cells behind the net do not enter, so that moving code keeps the ledger valid while a change of
+//! the logic makes the finding a new one.
+
+use std::collections::HashMap;
+
+use super::Rule;
+use super::names;
+use crate::graph::{Graph, NodeId, NodeKind, SourceKind, Symbol};
+
+/// FNV-1a with 128 bits (Fowler, Noll, Vo; parameters of RFC 9923): small, stable and without a key.
+#[derive(Clone, Copy)]
+struct Fnv(u128);
+
+impl Fnv {
+    const OFFSET: u128 = 0x6c62_272e_07bb_0142_62b8_2175_6295_c58d;
+    const PRIME: u128 = 0x0000_0000_0100_0000_0000_0000_0000_013b;
+
+    fn new() -> Self {
+        Self(Self::OFFSET)
+    }
+
+    fn bytes(mut self, bytes: &[u8]) -> Self {
+        for &byte in bytes {
+            self.0 = (self.0 ^ u128::from(byte)).wrapping_mul(Self::PRIME);
+        }
+        self
+    }
+
+    /// Text with its length, so that two neighbouring texts cannot run into each other.
+    fn text(self, text: &str) -> Self {
+        self.bytes(&(text.len() as u64).to_le_bytes()).bytes(text.as_bytes())
+    }
+
+    fn number(self, number: u128) -> Self {
+        self.bytes(&number.to_le_bytes())
+    }
+
+    fn hex(self) -> String {
+        format!("{:032x}", self.0)
+    }
+}
+
+/// The fingerprint of a finding on the nets driven by `roots`, called `net`.
+pub(super) fn of_cone(graph: &Graph, rule: Rule, net: &str, roots: &[NodeId]) -> String {
+    let mut memo = HashMap::new();
+    let mut hash = Fnv::new().text(rule.name()).text(net);
+    for &root in roots {
+        hash = hash.number(cone(graph, root, &mut memo));
+    }
+    hash.hex()
+}
+
+/// The fingerprint of a finding that is about a text and not about a net.
+pub(crate) fn of_text(rule: Rule, texts: &[&str]) -> String {
+    texts.iter().fold(Fnv::new().text(rule.name()), |hash, text| hash.text(text)).hex()
+}
+
+/// The hash of the cone of `root`: each node's from those of its fan-in. `memo` keeps `None` for a node whose fan-in is
+/// still being hashed; meeting such a node again means a loop, which enters as a mark of its own.
+fn cone(graph: &Graph, root: NodeId, memo: &mut HashMap<NodeId, Option<u128>>) -> u128 {
+    let root = graph.root(root);
+    let mut stack = vec![(root, false)];
+    while let Some((node, ready)) = stack.pop() {
+        if ready {
+            let mut hash = own(graph, node);
+            for &input in graph.fanin(node) {
+                let input = memo.get(&graph.root(input)).copied().flatten();
+                hash = hash.number(input.unwrap_or(u128::MAX));
+            }
+            memo.insert(node, Some(hash.0));
+        } else if !memo.contains_key(&node) {
+            memo.insert(node, None);
+            stack.push((node, true));
+            let inputs = graph.fanin(node).iter().rev().map(|&input| graph.root(input));
+            stack.extend(inputs.filter(|input| !memo.contains_key(input)).map(|input| (input, false)));
+        }
+    }
+    memo.get(&root).copied().flatten().unwrap_or(u128::MAX)
+}
+
+/// The hash of what a node is, without its fan-in.
+fn own(graph: &Graph, node: NodeId) -> Fnv {
+    let hash = Fnv::new();
+    match graph.kind(node) {
+        NodeKind::Const(value) => hash.text(if value { "1" } else { "0" }),
+        NodeKind::Unknown => hash.text("unknown"),
+        // A wire that is its own root is undriven, or part of a ring of wires.
+        NodeKind::Wire => hash.text("undriven"),
+        NodeKind::Source(kind) => {
+            let kind = match kind {
+                SourceKind::Input => "input",
+                SourceKind::FlipFlop => "flip-flop",
+                SourceKind::Latch => "latch",
+                SourceKind::BlackBox => "black box",
+                SourceKind::Memory => "memory",
+            };
+            hash.text(kind).text(&names::name(graph, node))
+        }
+        NodeKind::Gate(gate) => hash.text(gate.name()),
+        NodeKind::Table(table) => {
+            let mut hash = hash.text("table");
+            for (inputs, output) in &graph.tables[table.index()].rows {
+                let row: Vec<u8> = inputs.iter().chain([output]).map(|&symbol| letter(symbol)).collect();
+                hash = hash.number(row.len() as u128).bytes(&row);
+            }
+            hash
+        }
+        NodeKind::OpIn(_) => hash.text("operator in"),
+        NodeKind::OpOut(_) => hash.text("operator out"),
+    }
+}
+
+fn letter(symbol: Symbol) -> u8 {
+    match symbol {
+        Symbol::Zero => b'0',
+        Symbol::One => b'1',
+        Symbol::X => b'x',
+        Symbol::Any => b'?',
+        Symbol::Binary => b'b',
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    /// Test vectors for FNV-1a 128 of "" and "foobar": RFC 9923, and the authors' reference page.
+    #[test]
+    fn fnv_matches_published_vectors() {
+        assert_eq!(Fnv::new().hex(), "6c62272e07bb014262b821756295c58d");
+        assert_eq!(Fnv::new().bytes(b"foobar").hex(), "343e1662793c64bf6f0d3597ba446f18");
+    }
+}

@@ -1,0 +1,18 @@
+//! The page of each rule, compiled into the binary so that `explain` always speaks about this very version.
+
+use super::Rule;
+
+/// The page of a rule as Markdown. Every example in it is tested in both directions.
+pub fn page(rule: Rule) -> &'static str {
+    match rule {
+        Rule::CombinationalLoop => include_str!("../../rules/combinational-loop.md"),
+        Rule::ReconvergentInversion => include_str!("../../rules/reconvergent-inversion.md"),
+        Rule::SetResetHazard => include_str!("../../rules/set-reset-hazard.md"),
+        Rule::ClockHazard => include_str!("../../rules/clock-hazard.md"),
+        Rule::LatchEnableHazard => include_str!("../../rules/latch-enable-hazard.md"),
+        Rule::SignoffInvalid => include_str!("../../rules/signoff-invalid.md"),
+        Rule::SignoffStale => include_str!("../../rules/signoff-stale.md"),
+        Rule::SignoffExpired => include_str!("../../rules/signoff-expired.md"),
+        Rule::UnsupportedConstruct => include_str!("../../rules/unsupported-construct.md"),
+    }
+}

@@ -1,0 +1,81 @@
+//! `reconvergent-inversion`: two ways of one change that meet with opposite inversions, on nets that have no cell behind
+//! them to judge by: nets under `// stillwire: watch` (error, every pair listed), and combinational outputs of a top
+//! module (warning, one finding per port; a hazard that only an arithmetic operator causes is no finding there, since
+//! every implementation has it).
+
+use super::evidence::{self, Subject};
+use super::finding::{Finding, Pin, PinKind, Rule, Severity};
+use super::pins::Verdicts;
+use super::{Watch, fingerprint, names, words};
+use crate::graph::{Graph, NodeId, Port};
+use crate::hazard::{HazardKind, Options, TargetVerdict};
+
+const CURE_WATCH: &str = "to do: register the net, or make its logic hazard-free by its cover";
+const CURE_OUTPUT: &str = "to do: register the output if its reader acts on edges or levels at once; harmless if it is \
+                           sampled by a clock, then sign it off with that reason";
+
+/// The finding on one bit of a watched net.
+pub(super) fn watched(graph: &Graph, verdict: &TargetVerdict, watch: &Watch, options: &Options) -> Option<Finding> {
+    let net = names::name(graph, verdict.target);
+    let what = format!("the watched net `{net}`");
+    let judge = |_: HazardKind| {
+        (Severity::Error, format!("the net was to hold still: {}", watch.reason))
+    };
+    let pin = pin(PinKind::Watch);
+    let subject = Subject { rule: Rule::ReconvergentInversion, pin, what, judge: &judge, cure: CURE_WATCH };
+    evidence::finding(graph, verdict, &subject, options)
+}
+
+/// The finding on a whole output port: its worst bit shown, its hazardous bits named.
+pub(super) fn output(graph: &Graph, port: &Port, verdicts: &Verdicts, options: &Options) -> Option<Finding> {
+    let net = &graph.nets[port.net.index()];
+    let path = &graph.instances[port.instance.index()].path;
+    let of_bit = |bit: NodeId| verdicts.get(&graph.root(bit)).filter(|verdict| !verdict.is_clean());
+    let proven = |verdict: &&TargetVerdict| verdict.pairs.iter().any(|pair| !pair.hazards.is_empty());
+    let bits: Vec<usize> =
+        (0..net.bits.len()).filter(|&bit| of_bit(net.bits[bit]).as_ref().is_some_and(proven)).collect();
+    let shown = match bits.first() {
+        Some(&first) => of_bit(net.bits[first])?,
+        None => net.bits.iter().find_map(|&bit| of_bit(bit))?,
+    };
+    let name = format!("{path}.{}", net.name);
+    let what = match (net.bits.iter().position(|&bit| graph.root(bit) == shown.target), port.range) {
+        (Some(bit), Some(range)) => format!("bit {} of the combinational output `{name}`", index(range, bit)),
+        _ => format!("the combinational output `{name}`"),
+    };
+    let judge = |_: HazardKind| {
+        (Severity::Warning, "whatever reads the output outside sees the pulse".to_string())
+    };
+    let pin = pin(PinKind::Output);
+    let subject = Subject { rule: Rule::ReconvergentInversion, pin, what, judge: &judge, cure: CURE_OUTPUT };
+    let mut finding = evidence::finding(graph, shown, &subject, options)?;
+    if let (Some(&low), Some(&high), Some(range)) = (bits.first(), bits.last(), port.range) {
+        let ends = [index(range, low), index(range, high)];
+        finding.bits = Some((ends[0].min(ends[1]), ends[0].max(ends[1])));
+    }
+    let roots: Vec<NodeId> = net.bits.iter().map(|&bit| graph.root(bit)).collect();
+    finding.fingerprint = fingerprint::of_cone(graph, Rule::ReconvergentInversion, &name, &roots);
+    finding.instance = path.clone();
+    finding.net = name;
+    for verdict in bits.iter().filter_map(|&bit| of_bit(net.bits[bit])) {
+        for hazard in evidence::hazards(graph, verdict, &judge) {
+            if finding.hazards.iter().all(|known| known.kind != hazard.kind) {
+                finding.hazards.push(hazard);
+            }
+        }
+    }
+    if bits.len() > 1 {
+        let all = words::count(net.bits.len(), "bit");
+        finding.notes.insert(0, format!("{} of {all} of this port can glitch; one is shown", bits.len()));
+    }
+    Some(finding)
+}
+
+/// The declared index of a bit, counted from the least significant one.
+fn index((left, right): (i64, i64), bit: usize) -> i64 {
+    if left >= right { right + bit as i64 } else { right - bit as i64 }
+}
+
+fn pin(kind: PinKind) -> Pin {
+    Pin { kind, active: None, edge: None, cells: Vec::new(), count: 0 }
+}
