@@ -392,3 +392,219 @@ pub fn count_ones(builder: &mut GraphBuilder, a: &[NodeId], site: Site) -> Vec<N
     }
     blaster.leave(&count)
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::graph::{Graph, NodeKind, SourceKind};
+
+    /// Operands as sources or as literal constants, and the builder they live in.
+    struct Bench {
+        builder: GraphBuilder,
+        site: Site,
+        inputs: Vec<NodeId>,
+        seed: u64,
+    }
+
+    impl Bench {
+        fn new(seed: u64) -> Self {
+            let mut builder = GraphBuilder::new();
+            let instance = builder.instance(None, "t", "t", None);
+            Self { builder, site: Site { instance, span: None }, inputs: Vec::new(), seed: seed * 2 + 1 }
+        }
+
+        fn random(&mut self) -> u64 {
+            self.seed ^= self.seed << 13;
+            self.seed ^= self.seed >> 7;
+            self.seed ^= self.seed << 17;
+            self.seed >> 8
+        }
+
+        fn operand(&mut self, width: usize) -> Vec<NodeId> {
+            let bits: Vec<NodeId> = (0..width).map(|_| self.builder.source(SourceKind::Input, self.site)).collect();
+            self.inputs.extend(&bits);
+            bits
+        }
+
+        fn literal(&mut self, number: u64, width: usize) -> Vec<NodeId> {
+            (0..width).map(|bit| self.builder.constant(number >> bit & 1 == 1)).collect()
+        }
+    }
+
+    /// Evaluates the whole graph for one assignment of `inputs`; `None` is unknown. Nodes are built after their fan-in, so
+    /// one pass in order of ids suffices.
+    fn evaluate(graph: &Graph, inputs: &[NodeId], bits: &[bool]) -> Vec<Option<bool>> {
+        let mut values: Vec<Option<bool>> = vec![None; graph.len()];
+        for node in graph.nodes() {
+            let fanin: Vec<Option<bool>> = graph.fanin(node).iter().map(|input| values[input.index()]).collect();
+            values[node.index()] = match graph.kind(node) {
+                NodeKind::Const(value) => Some(value),
+                NodeKind::Source(_) => inputs.iter().position(|&input| input == node).map(|at| bits[at]),
+                NodeKind::Gate(gate) => {
+                    let plain = match gate {
+                        GateKind::And | GateKind::Nand if fanin.contains(&Some(false)) => Some(false),
+                        GateKind::Or | GateKind::Nor if fanin.contains(&Some(true)) => Some(true),
+                        _ if fanin.contains(&None) => None,
+                        GateKind::And | GateKind::Nand => Some(true),
+                        GateKind::Or | GateKind::Nor => Some(false),
+                        GateKind::Xor | GateKind::Xnor | GateKind::Not | GateKind::Buf => {
+                            Some(fanin.iter().filter(|bit| **bit == Some(true)).count() % 2 == 1)
+                        }
+                    };
+                    plain.map(|bit| bit != gate.inverts())
+                }
+                _ => fanin.first().copied().flatten(),
+            };
+        }
+        values
+    }
+
+    fn unsigned(values: &[Option<bool>], bits: &[NodeId]) -> Option<u64> {
+        bits.iter().rev().try_fold(0, |sum, bit| Some(sum << 1 | u64::from(values[bit.index()]?)))
+    }
+
+    fn mask(width: usize) -> u64 {
+        (1 << width) - 1
+    }
+
+    fn sign_extended(number: u64, width: usize) -> i64 {
+        ((number << (64 - width)) as i64) >> (64 - width)
+    }
+
+    type Form = fn(&mut GraphBuilder, &[NodeId], &[NodeId], Site) -> Vec<NodeId>;
+
+    /// Compares the gates of `form` with `expected` on random values: both operands variable, then the right one, then the
+    /// left one literal. `expected` gets both operands and the width, and returns `None` for unknown.
+    #[track_caller]
+    fn check(form: Form, right_width: usize, expected: fn(u64, u64, usize) -> Option<u64>) {
+        for width in [1, 2, 3, 5, 8] {
+            let right_width = if right_width == 0 { width } else { right_width };
+            for round in 0..12 {
+                let mut bench = Bench::new(round + 77);
+                let fixed = bench.random();
+                let a = if round % 3 == 2 { bench.literal(fixed, width) } else { bench.operand(width) };
+                let b = if round % 3 == 1 { bench.literal(fixed, right_width) } else { bench.operand(right_width) };
+                let result = form(&mut bench.builder, &a, &b, bench.site);
+                let samples: Vec<u64> = (0..40).map(|_| bench.random()).collect();
+                let graph = bench.builder.freeze();
+                for sample in samples {
+                    let bits: Vec<bool> = (0..bench.inputs.len()).map(|at| sample >> at & 1 == 1).collect();
+                    let values = evaluate(&graph, &bench.inputs, &bits);
+                    let (a, b) = (unsigned(&values, &a).unwrap_or(0), unsigned(&values, &b).unwrap_or(0));
+                    let want = expected(a, b, width).map(|number| number & mask(result.len()));
+                    assert_eq!(unsigned(&values, &result), want, "{a} and {b} at {width} bits");
+                }
+            }
+        }
+    }
+
+    #[test]
+    fn sums_differences_and_products() {
+        check(add, 0, |a, b, _| Some(a.wrapping_add(b)));
+        check(sub, 0, |a, b, _| Some(a.wrapping_sub(b)));
+        check(mul, 0, |a, b, _| Some(a.wrapping_mul(b)));
+        check(|builder, a, _, site| neg(builder, a, site), 0, |a, _, _| Some(a.wrapping_neg()));
+    }
+
+    #[test]
+    fn quotients_and_remainders() {
+        check(|builder, a, b, site| div(builder, a, b, false, site), 0, |a, b, _| a.checked_div(b));
+        check(|builder, a, b, site| rem(builder, a, b, false, site), 0, |a, b, _| a.checked_rem(b));
+        check(
+            |builder, a, b, site| div(builder, a, b, true, site),
+            0,
+            |a, b, width| sign_extended(a, width).checked_div(sign_extended(b, width)).map(|result| result as u64),
+        );
+        check(
+            |builder, a, b, site| rem(builder, a, b, true, site),
+            0,
+            |a, b, width| sign_extended(a, width).checked_rem(sign_extended(b, width)).map(|result| result as u64),
+        );
+    }
+
+    #[test]
+    fn comparisons() {
+        check(|builder, a, b, site| vec![less_than(builder, a, b, false, site)], 0, |a, b, _| Some(u64::from(a < b)));
+        check(|builder, a, b, site| vec![less_equal(builder, a, b, false, site)], 0, |a, b, _| Some(u64::from(a <= b)));
+        check(
+            |builder, a, b, site| vec![less_than(builder, a, b, true, site)],
+            0,
+            |a, b, width| Some(u64::from(sign_extended(a, width) < sign_extended(b, width))),
+        );
+        check(
+            |builder, a, b, site| vec![less_equal(builder, a, b, true, site)],
+            0,
+            |a, b, width| Some(u64::from(sign_extended(a, width) <= sign_extended(b, width))),
+        );
+    }
+
+    #[test]
+    fn shifts() {
+        for amount_width in [1, 2, 4, 7] {
+            check(shift_left, amount_width, |a, b, _| Some(a.checked_shl(b as u32).unwrap_or(0)));
+            check(shift_right, amount_width, |a, b, _| Some(a.checked_shr(b as u32).unwrap_or(0)));
+            check(shift_arith, amount_width, |a, b, width| Some((sign_extended(a, width) >> b.min(63)) as u64));
+        }
+    }
+
+    #[test]
+    fn powers() {
+        let power: Form = |builder, a, b, site| pow(builder, a, b, false, false, site).unwrap_or_default();
+        check(power, 3, |a, b, _| Some(a.wrapping_pow(b as u32)));
+        check(
+            |builder, a, b, site| pow(builder, a, b, true, true, site).unwrap_or_default(),
+            3,
+            |a, b, width| match (sign_extended(a, width), sign_extended(b, 3)) {
+                (a, b) if b >= 0 => Some(a.wrapping_pow(b as u32) as u64),
+                (0, _) => None,
+                (1, _) => Some(1),
+                (-1, b) => Some(if b % 2 == 0 { 1 } else { u64::MAX }),
+                _ => Some(0),
+            },
+        );
+    }
+
+    #[test]
+    fn population_count() {
+        check(|builder, a, _, site| count_ones(builder, a, site), 0, |a, _, _| Some(u64::from(a.count_ones())));
+    }
+
+    #[test]
+    fn a_constant_shift_is_wiring() {
+        let mut bench = Bench::new(1);
+        let a = bench.operand(4);
+        let amount = bench.literal(1, 3);
+        let shifted = shift_right(&mut bench.builder, &a, &amount, bench.site);
+        assert_eq!(shifted[..3], a[1..]);
+        assert_eq!(bench.builder.as_constant(shifted[3]), Some(false));
+        assert!(bench.builder.freeze().operators.is_empty());
+    }
+
+    #[test]
+    fn literal_operands_fold() {
+        let mut bench = Bench::new(1);
+        let (a, b) = (bench.literal(13, 8), bench.literal(9, 8));
+        let product = mul(&mut bench.builder, &a, &b, bench.site);
+        let bits: Option<Vec<bool>> = product.iter().map(|&bit| bench.builder.as_constant(bit)).collect();
+        assert_eq!(bits, Some((0..8).map(|bit| 117 >> bit & 1 == 1).collect()));
+    }
+
+    #[test]
+    fn every_variable_operand_passes_the_border() {
+        let mut bench = Bench::new(1);
+        let (a, b) = (bench.operand(6), bench.operand(6));
+        let product = mul(&mut bench.builder, &a, &b, bench.site);
+        assert!(product.iter().all(|&bit| matches!(bench.builder.kind(bit), NodeKind::OpOut(_))));
+        let graph = bench.builder.freeze();
+        for &input in &bench.inputs {
+            assert!(graph.fanout(input).iter().all(|&reader| matches!(graph.kind(reader), NodeKind::OpIn(_))));
+        }
+    }
+
+    #[test]
+    fn an_absurd_power_is_refused() {
+        let mut bench = Bench::new(1);
+        let (a, b) = (bench.operand(500), bench.operand(64));
+        assert_eq!(pow(&mut bench.builder, &a, &b, false, false, bench.site), None);
+    }
+}

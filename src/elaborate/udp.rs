@@ -349,3 +349,134 @@ fn next_state(rows: &[UdpRow], change: Change) -> Option<bool> {
         _ => None,
     }
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::source::{FileId, Span};
+    use crate::syntax::ast::Ident;
+
+    /// A sequential primitive from rows such as `1 r 0 : ? : 1`; edges are written `(01)` or by their letter.
+    fn udp(inputs: &[&str], rows: &[&str]) -> Udp {
+        let span = Span { file: FileId::new(0), start: 0, end: 0 };
+        let ident = |name: &str| Ident { name: name.to_string(), span };
+        let symbol = |text: &str| match text.chars().collect::<Vec<char>>()[..] {
+            ['(', from, to, ')'] => UdpSymbol::Edge(from, to),
+            [letter @ ('r' | 'f' | 'p' | 'n' | '*')] => UdpSymbol::EdgeLetter(letter),
+            [level] => UdpSymbol::Level(level),
+            _ => panic!("{text}"),
+        };
+        let row = |text: &&str| {
+            let parts: Vec<&str> = text.split(':').map(str::trim).collect();
+            let inputs = parts[0].split_whitespace().map(symbol).collect();
+            let single = |text: &str| text.chars().next();
+            let state = if parts.len() == 3 { single(parts[1]) } else { None };
+            UdpRow { inputs, state, output: single(parts[parts.len() - 1]).unwrap_or('x'), span }
+        };
+        Udp {
+            name: ident("p"),
+            span,
+            output: ident("q"),
+            inputs: inputs.iter().map(|name| ident(name)).collect(),
+            sequential: true,
+            initial: None,
+            rows: rows.iter().map(row).collect(),
+        }
+    }
+
+    #[track_caller]
+    fn storage(inputs: &[&str], rows: &[&str]) -> Storage {
+        match UdpModel::declare(&udp(inputs, rows), &mut GraphBuilder::new()) {
+            Ok(UdpModel::Sequential(storage)) => storage,
+            other => panic!("{other:?}"),
+        }
+    }
+
+    fn set_reset(input: usize, active: bool, value: bool) -> SetReset {
+        SetReset { input, active, value }
+    }
+
+    #[test]
+    fn a_flip_flop_with_asynchronous_reset_and_set() {
+        let rows = [
+            "? ? 0 1 : ? : 0",
+            "? ? ? 0 : ? : 1",
+            "0 (01) 1 1 : ? : 0",
+            "1 (01) 1 1 : ? : 1",
+            "? n ? 1 : ? : -",
+            "* ? ? 1 : ? : -",
+            "? ? (?1) 1 : ? : -",
+            "? ? ? (?1) : ? : -",
+        ];
+        let found = storage(&["d", "clk", "rn", "sn"], &rows);
+        assert_eq!(found.load, Load::Clock { input: 1, edge: Edge::Posedge });
+        assert_eq!(found.data, [Cube { care: 1, value: 1 | 4 | 8 }]);
+        // The set row of the table wins when both are active, so it is the stronger.
+        assert_eq!(found.controls, [set_reset(3, false, true), set_reset(2, false, false)]);
+    }
+
+    #[test]
+    fn a_transparent_latch() {
+        let found = storage(&["g", "d"], &["1 0 : ? : 0", "1 1 : ? : 1", "0 ? : ? : -"]);
+        assert_eq!(found.load, Load::Enable { input: 0, active: true });
+        assert_eq!(found.data.iter().map(|cube| cube.care).collect::<Vec<u32>>(), [2]);
+        assert!(found.controls.is_empty());
+    }
+
+    #[test]
+    fn a_latch_open_at_zero_with_a_clear() {
+        let found = storage(&["d", "gn", "clr"], &["? ? 1 : ? : 0", "0 0 0 : ? : 0", "1 0 0 : ? : 1", "? 1 0 : ? : -"]);
+        assert_eq!(found.load, Load::Enable { input: 1, active: false });
+        assert_eq!(found.controls, [set_reset(2, true, false)]);
+    }
+
+    #[test]
+    fn a_set_reset_latch_has_no_enable() {
+        let found = storage(&["s", "r"], &["1 0 : ? : 1", "? 1 : ? : 0", "0 0 : ? : -"]);
+        assert_eq!(found.load, Load::Never);
+        assert_eq!(found.controls, [set_reset(1, true, false), set_reset(0, true, true)]);
+    }
+
+    #[test]
+    fn a_jk_flip_flop_on_the_falling_edge_reads_its_state() {
+        let rows = [
+            "f 0 0 : ? : -",
+            "f 0 1 : ? : 0",
+            "f 1 0 : ? : 1",
+            "f 1 1 : 0 : 1",
+            "f 1 1 : 1 : 0",
+            "r ? ? : ? : -",
+            "? * ? : ? : -",
+            "? ? * : ? : -",
+        ];
+        let found = storage(&["ck", "j", "k"], &rows);
+        assert_eq!(found.load, Load::Clock { input: 0, edge: Edge::Negedge });
+        // j q' + k' q, with the state as variable 3, on all eight minterms.
+        for minterm in 0..8u32 {
+            let (j, k, q) = (minterm & 1 == 1, minterm & 2 == 2, minterm & 4 == 4);
+            let point = u32::from(j) << 1 | u32::from(k) << 2 | u32::from(q) << 3;
+            assert_eq!(found.data.iter().any(|cube| cube.contains(point)), j && !q || !k && q);
+        }
+    }
+
+    #[test]
+    fn two_clocks_are_unsupported() {
+        let rows =
+            ["r ? 0 : ? : 0", "r ? 1 : ? : 1", "? r ? : ? : 0", "f ? ? : ? : -", "? f ? : ? : -", "? ? * : ? : -"];
+        let result = UdpModel::declare(&udp(&["a", "b", "d"], &rows), &mut GraphBuilder::new());
+        assert_eq!(result.map_err(|diagnostic| diagnostic.kind), Err(Kind::Unsupported));
+    }
+
+    #[test]
+    fn a_latch_with_two_enables_is_unsupported() {
+        let rows = ["1 1 0 : ? : 0", "1 1 1 : ? : 1", "0 ? ? : ? : -", "? 0 ? : ? : -"];
+        let result = UdpModel::declare(&udp(&["a", "b", "d"], &rows), &mut GraphBuilder::new());
+        assert_eq!(result.map_err(|diagnostic| diagnostic.kind), Err(Kind::Unsupported));
+    }
+
+    #[test]
+    fn a_row_of_the_wrong_length_is_refused() {
+        let result = UdpModel::declare(&udp(&["g", "d"], &["1 0 1 : ? : 0"]), &mut GraphBuilder::new());
+        assert!(result.is_err());
+    }
+}

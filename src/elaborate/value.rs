@@ -494,3 +494,150 @@ fn power(left: &Value, right: &Value) -> Value {
     };
     Value::from_bigint(&result, left.width(), left.signed)
 }
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    /// `4'b10xz`, `8'sb...` as in a binary literal.
+    fn value(text: &str) -> Value {
+        let (width, digits) = text.split_once('\'').unwrap_or(("1", text));
+        let (signed, digits) = match digits.strip_prefix('s') {
+            Some(digits) => (true, digits),
+            None => (false, digits),
+        };
+        let bits: Vec<Logic> = digits.trim_start_matches('b').chars().rev().map(Logic::from_char).collect();
+        assert_eq!(width, bits.len().to_string());
+        Value::new(signed, bits)
+    }
+
+    fn literal(width: Option<u32>, signed: bool, based: bool, bits: &str) -> Literal {
+        Literal { width, signed, based, bits: bits.to_string() }
+    }
+
+    #[track_caller]
+    fn check(op: BinaryOp, left: &str, right: &str, expected: &str) {
+        assert_eq!(Value::binary(op, &value(left), &value(right)), value(expected), "{left} {op:?} {right}");
+    }
+
+    /// IEEE 1364-2005 tables 5-11 to 5-14, row by row.
+    #[test]
+    fn bitwise_tables() {
+        check(BinaryOp::And, "4'b0000", "4'b01xz", "4'b0000");
+        check(BinaryOp::And, "4'b1111", "4'b01xz", "4'b01xx");
+        check(BinaryOp::And, "4'bzzzz", "4'b01xz", "4'b0xxx");
+        check(BinaryOp::Or, "4'b0000", "4'b01xz", "4'b01xx");
+        check(BinaryOp::Or, "4'b1111", "4'b01xz", "4'b1111");
+        check(BinaryOp::Or, "4'bxxxx", "4'b01xz", "4'bx1xx");
+        check(BinaryOp::Xor, "4'b1111", "4'b01xz", "4'b10xx");
+        check(BinaryOp::Xnor, "4'b0000", "4'b01xz", "4'b10xx");
+    }
+
+    /// IEEE 1364-2005 table 5-6.
+    #[test]
+    fn powers_of_the_table() {
+        let rows = [
+            ("4'sb1110", "4'sb0011", "4'sb1000"), // -2 ** 3 = -8
+            ("4'sb1111", "4'sb0010", "4'sb0001"), // -1, even
+            ("4'sb1111", "4'sb0011", "4'sb1111"), // -1, odd
+            ("4'sb1111", "4'sb1110", "4'sb0001"), // -1, negative even
+            ("4'sb1111", "4'sb1101", "4'sb1111"), // -1, negative odd
+            ("4'sb0000", "4'sb0010", "4'sb0000"),
+            ("4'sb0000", "4'sb0000", "4'sb0001"),
+            ("4'sb0000", "4'sb1111", "4'sbxxxx"),
+            ("4'sb0001", "4'sb1111", "4'sb0001"),
+            ("4'sb0010", "4'sb1111", "4'sb0000"),
+            ("4'b0010", "4'b0101", "4'b0000"), // 32 is cut
+        ];
+        for (base, exponent, expected) in rows {
+            check(BinaryOp::Pow, base, exponent, expected);
+        }
+    }
+
+    /// The examples of IEEE 1364-2005 tables 5-5 and 5-7 and of the text around them.
+    #[test]
+    fn examples_of_the_standard() {
+        let integer = Value::integer;
+        let modulus = |a, b| Value::binary(BinaryOp::Mod, &integer(a), &integer(b)).to_i64();
+        assert_eq!(modulus(10, 3), Some(1));
+        assert_eq!(modulus(12, 3), Some(0));
+        assert_eq!(modulus(-10, 3), Some(-1));
+        assert_eq!(modulus(11, -3), Some(2));
+        // intA = -12; intA / 3 is -4, but -'d12 / 3 is 1431655761.
+        let unsigned = integer(-12).with_sign(false);
+        assert_eq!(Value::binary(BinaryOp::Div, &integer(-12), &integer(3)).to_i64(), Some(-4));
+        assert_eq!(Value::binary(BinaryOp::Div, &unsigned, &integer(3)).to_i64(), Some(1_431_655_761));
+        // start = 4'sb1000; start >>> 2 is 1110.
+        check(BinaryOp::ArithShr, "4'sb1000", "2'b10", "4'sb1110");
+        check(BinaryOp::Shr, "4'sb1000", "2'b10", "4'sb0010");
+        check(BinaryOp::Div, "4'b0101", "4'b0000", "4'bxxxx");
+        check(BinaryOp::Mod, "4'b0101", "4'b0000", "4'bxxxx");
+    }
+
+    /// IEEE 1364-2005, 3.5.1: how literals are padded.
+    #[test]
+    fn literals_are_padded_by_their_leading_digit() {
+        let known = |literal: &Literal| Value::from_literal(literal).map(|value| value.to_bit_string());
+        assert_eq!(known(&literal(Some(12), false, true, "xxxx")), Some("x".repeat(12)));
+        assert_eq!(known(&literal(Some(6), false, true, "zz11")), Some("zzzz11".into()));
+        assert_eq!(known(&literal(Some(5), false, true, "0011")), Some("00011".into()));
+        assert_eq!(known(&literal(Some(2), false, true, "1101")), Some("01".into()));
+        assert_eq!(known(&literal(None, false, true, "x")), Some("x".repeat(32)));
+        let wide = Value::from_literal_in(&literal(None, false, true, "x"), 40).map(|value| value.width());
+        assert_eq!(wide, Some(40));
+        // 4294967295 is positive, so it needs a sign bit.
+        let large = Value::from_literal(&literal(None, true, false, &"1".repeat(32)));
+        assert_eq!(large.and_then(|value| value.to_i64()), Some(4_294_967_295));
+        assert_eq!(Value::from_literal(&literal(Some(u32::MAX), false, true, "1")), None);
+    }
+
+    /// IEEE 1800-2017, 11.4.6: wildcards stand on the right side only.
+    #[test]
+    fn wildcard_equality() {
+        check(BinaryOp::WildEq, "4'b1010", "4'b1x1z", "1'b1");
+        check(BinaryOp::WildEq, "4'b1000", "4'b1x1z", "1'b0");
+        check(BinaryOp::WildEq, "4'bx010", "4'b1x1z", "1'bx");
+        check(BinaryOp::WildNe, "4'b1000", "4'b1x1z", "1'b1");
+    }
+
+    #[test]
+    fn case_labels_match_by_kind() {
+        let matches = |subject: &str, label: &str, z, x| value(subject).case_match(&value(label), z, x);
+        assert!(matches("4'b10xz", "4'b10xz", false, false));
+        assert!(!matches("4'b101z", "4'b10xz", false, false));
+        assert!(matches("4'b1011", "4'b1zz1", true, false));
+        assert!(!matches("4'b1011", "4'b1xz1", true, false));
+        assert!(matches("4'b1011", "4'b1xz1", true, true));
+    }
+
+    #[test]
+    fn selects_outside_are_unknown() {
+        assert_eq!(value("4'b1010").slice(2, 4), value("4'bxx10"));
+        assert_eq!(value("4'b1010").slice(-1, 3), value("3'b10x"));
+        assert_eq!(value("4'b1010").slice(i64::MAX, 2), value("2'bxx"));
+    }
+
+    #[test]
+    fn numbers_texts_and_logarithms() {
+        assert_eq!(value("4'sb1000").to_i64(), Some(-8));
+        assert_eq!(value("4'b1000").to_i64(), Some(8));
+        assert_eq!(value("4'sb1000").to_u64(), None);
+        assert_eq!(value("4'b10x0").to_i64(), None);
+        assert_eq!(Value::from_text("AB").to_u64(), Some(0x4142));
+        assert_eq!(Value::from_text("AB").to_text(), "AB");
+        assert_eq!(Value::from_text("").width(), 8);
+        let clog2 = |number| Value::integer(number).clog2();
+        assert_eq!([0, 1, 2, 3, 4, 5, 8, 9].map(clog2), [0, 0, 1, 2, 2, 3, 3, 4].map(Some));
+        assert_eq!(value("4'b10x0").to_string(), "4'b10x0");
+        assert_eq!(value("4'sb1111").to_string(), "-1");
+    }
+
+    #[test]
+    fn nothing_grows_without_bound() {
+        assert_eq!(Value::fill(Logic::One, 8).replicate(usize::MAX), None);
+        assert_eq!(Value::fill(Logic::One, MAX_WIDTH).replicate(2), None);
+        let wide = Value::fill(Logic::One, 1 << 12);
+        assert!(Value::binary(BinaryOp::Pow, &wide, &wide).has_unknown());
+        assert_eq!(Value::binary(BinaryOp::Shl, &wide, &wide).to_u64(), Some(0));
+    }
+}
