@@ -88,7 +88,7 @@ impl Op {
         }
     }
 
-    fn value(self, pins: impl IntoIterator<Item = bool>) -> bool {
+    pub fn value(self, pins: impl IntoIterator<Item = bool>) -> bool {
         let mut pins = pins.into_iter();
         match self {
             Op::Buf | Op::And => pins.all(|pin| pin),

@@ -10,3 +10,4 @@ mod pipeline;
 mod published;
 mod random_circuits;
 mod simulator;
+mod transport;
