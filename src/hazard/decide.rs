@@ -1,10 +1,168 @@
-//! The decision itself.
+//! The decision: every target against every source that reaches it. Cheap and exact methods come first. The parity
+//! filter settles most pairs; cones of few sources are enumerated; random simulation finds most of the hazards that are
+//! left and the solver proves the rest. Work is divided by target while cones are small and by source where targets
+//! share them, and each piece depends on nothing but the graph and the options, so the result is the same for any
+//! number of threads.
 
-use super::{Options, TargetVerdict};
-use crate::graph::{Graph, NodeId};
+use std::collections::BTreeMap;
 
-/// Decides every target against every source that reaches it.
+use rayon::prelude::*;
+
+use super::cone::{Cone, Edge};
+use super::order::Order;
+use super::{HazardKind, Options, Pair, TargetVerdict, Undecided, Witness};
+use super::{enumerate, search};
+use crate::graph::{Graph, NodeId, NodeKind};
+
+/// The kinds in the order of the report.
+pub(super) const KINDS: [HazardKind; 3] = [HazardKind::Static0, HazardKind::Static1, HazardKind::Dynamic];
+
+/// A set of hazard kinds.
+#[derive(Clone, Copy, PartialEq, Eq, Default, Debug)]
+pub(super) struct KindSet(u8);
+
+impl KindSet {
+    pub(super) const ALL: Self = Self(0b111);
+
+    pub(super) fn insert(&mut self, kind: HazardKind) {
+        self.0 |= 1 << kind as u8;
+    }
+
+    pub(super) fn contains(self, kind: HazardKind) -> bool {
+        self.0 >> kind as u8 & 1 == 1
+    }
+
+    pub(super) fn union(self, other: Self) -> Self {
+        Self(self.0 | other.0)
+    }
+
+    pub(super) fn is_empty(self) -> bool {
+        self.0 == 0
+    }
+
+    pub(super) fn missing(self) -> impl Iterator<Item = HazardKind> {
+        KINDS.into_iter().filter(move |&kind| !self.contains(kind))
+    }
+}
+
+/// An answer other than "clean" to one question about a root of a cone.
+pub(super) struct Answer {
+    /// Index of the root.
+    pub(super) root: usize,
+    pub(super) source: NodeId,
+    pub(super) kind: HazardKind,
+    pub(super) result: Result<Witness, Undecided>,
+}
+
+/// Decides every target against every source that reaches it. Under [`Options::one_per_kind`] only the first witness of
+/// a kind is listed per target, and pairs that were left out because of it are not in the list.
 pub fn decide(graph: &Graph, targets: &[NodeId], options: &Options) -> Vec<TargetVerdict> {
-    let _ = (graph, options);
-    targets.iter().map(|&target| TargetVerdict { target, sources: 0, pairs: Vec::new() }).collect()
+    // Nets connected by nothing but wires are one net: each is decided once.
+    let mut places: BTreeMap<NodeId, usize> = BTreeMap::new();
+    for &target in targets {
+        let next = places.len();
+        places.entry(graph.root(target)).or_insert(next);
+    }
+    let mut nodes: Vec<(usize, NodeId)> = places.iter().map(|(&node, &place)| (place, node)).collect();
+    nodes.sort_unstable();
+    let nodes: Vec<NodeId> = nodes.into_iter().map(|(_, node)| node).collect();
+
+    let cone = Cone::new(graph, &nodes, options.ignore_operators);
+    let extents: Vec<Extent> = cone.roots.par_iter().map(|&root| Extent::new(graph, &cone, root)).collect();
+
+    let small: Vec<usize> = (0..nodes.len()).filter(|&at| enumerate::fits(&extents[at].measure, options)).collect();
+    let large: Vec<usize> = (0..nodes.len()).filter(|&at| !enumerate::fits(&extents[at].measure, options)).collect();
+    let mut answers: Vec<Vec<Answer>> = (0..nodes.len()).map(|_| Vec::new()).collect();
+    let enumerated: Vec<(usize, Vec<Answer>)> = small
+        .into_par_iter()
+        .map(|at| (at, enumerate::enumerate(&cone.restrict(&[cone.roots[at]]), options)))
+        .collect();
+    for (at, found) in enumerated {
+        answers[at] = found;
+    }
+    if !large.is_empty() {
+        let roots: Vec<Edge> = large.iter().map(|&at| cone.roots[at]).collect();
+        let measures: Vec<Measure> = large.iter().map(|&at| extents[at].measure).collect();
+        for answer in search::search(&cone.restrict(&roots), &measures, options) {
+            answers[large[answer.root]].push(answer);
+        }
+    }
+
+    let verdicts: Vec<TargetVerdict> = nodes
+        .iter()
+        .zip(answers.into_iter().zip(&extents))
+        .map(|(&node, (answers, extent))| extent.verdict(node, answers))
+        .collect();
+    targets.iter().map(|&target| TargetVerdict { target, ..verdicts[places[&graph.root(target)]].clone() }).collect()
+}
+
+/// The size of a root's cone.
+#[derive(Clone, Copy)]
+pub(super) struct Measure {
+    pub(super) nodes: usize,
+    /// Sources and unknown constants.
+    pub(super) frees: usize,
+}
+
+/// What one root depends on.
+struct Extent {
+    measure: Measure,
+    /// How many sources reach the root, those behind loops and the nodes of loops included.
+    sources: usize,
+    /// The sources that reach the root through a loop.
+    behind_loops: Vec<NodeId>,
+}
+
+impl Extent {
+    fn new(graph: &Graph, cone: &Cone, root: Edge) -> Self {
+        use super::cone::Op;
+        let members = cone.closure([root.node()].into_iter(), |_| true);
+        let mut frees = 0;
+        let mut sources = Vec::new();
+        let mut looped = Vec::new();
+        for &member in &members {
+            let origin = cone.origin[member as usize];
+            if let Op::Free { changes } = cone.ops[member as usize] {
+                frees += 1;
+                if changes {
+                    sources.push(origin);
+                    if !matches!(graph.kind(origin), NodeKind::Source(_)) {
+                        looped.push(origin);
+                    }
+                }
+            }
+        }
+        let behind_loops = if looped.is_empty() { Vec::new() } else { Order::sources_behind(graph, &looped) };
+        sources.extend_from_slice(&behind_loops);
+        sources.sort_unstable();
+        sources.dedup();
+        Self { measure: Measure { nodes: members.len(), frees }, sources: sources.len(), behind_loops }
+    }
+
+    /// Sorts the answers by source; what may come through a loop and is not proven hazardous stays open.
+    fn verdict(&self, target: NodeId, answers: Vec<Answer>) -> TargetVerdict {
+        let mut pairs: BTreeMap<NodeId, Pair> = BTreeMap::new();
+        fn pair(pairs: &mut BTreeMap<NodeId, Pair>, source: NodeId) -> &mut Pair {
+            pairs.entry(source).or_insert_with(|| Pair { source, hazards: Vec::new(), undecided: Vec::new() })
+        }
+        for answer in answers {
+            let pair = pair(&mut pairs, answer.source);
+            match answer.result {
+                Ok(witness) => pair.hazards.push((answer.kind, witness)),
+                Err(reason) => pair.undecided.push((answer.kind, reason)),
+            }
+        }
+        for &source in &self.behind_loops {
+            let pair = pair(&mut pairs, source);
+            let open = |kind: &HazardKind| pair.hazards.iter().all(|(known, _)| known != kind);
+            pair.undecided = KINDS.into_iter().filter(open).map(|kind| (kind, Undecided::Loop)).collect();
+        }
+        let mut pairs: Vec<Pair> = pairs.into_values().collect();
+        for pair in &mut pairs {
+            pair.hazards.sort_unstable_by_key(|&(kind, _)| kind);
+            pair.undecided.sort_unstable();
+        }
+        pairs.retain(|pair| !pair.hazards.is_empty() || !pair.undecided.is_empty());
+        TargetVerdict { target, sources: self.sources, pairs }
+    }
 }

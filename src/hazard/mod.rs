@@ -1,15 +1,25 @@
 //! The hazard decision: for a net and every source that reaches it, whether a change of that source alone can show a
 //! static-0, static-1 or dynamic hazard there, for arbitrary gate and wire delays.
 
+
+mod cone;
 mod cover;
 mod decide;
+mod encode;
+mod enumerate;
 mod loops;
 mod options;
 mod order;
+mod parity;
 mod paths;
+mod prove;
+mod search;
+mod simulate;
+mod solver;
 mod tables;
 mod verdict;
 mod wave;
+mod witness;
 
 pub use cover::{Withheld, cover};
 pub use decide::decide;
