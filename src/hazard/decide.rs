@@ -39,10 +39,6 @@ impl KindSet {
     pub(super) fn is_empty(self) -> bool {
         self.0 == 0
     }
-
-    pub(super) fn missing(self) -> impl Iterator<Item = HazardKind> {
-        KINDS.into_iter().filter(move |&kind| !self.contains(kind))
-    }
 }
 
 /// An answer other than "clean" to one question about a root of a cone.

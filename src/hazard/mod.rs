@@ -1,7 +1,6 @@
 //! The hazard decision: for a net and every source that reaches it, whether a change of that source alone can show a
 //! static-0, static-1 or dynamic hazard there, for arbitrary gate and wire delays.
 
-
 mod cone;
 mod cover;
 mod decide;

@@ -10,7 +10,8 @@ use crate::rules::{PinKind, Severity};
 /// The most names listed of black boxes, benches and the like.
 const SHOWN_NAMES: usize = 8;
 
-const CAUTION: &str = "Delays, metastability, analogue effects and timing sign-off are out of scope; the responsible engineer decides.";
+const CAUTION: &str =
+    "Delays, metastability, analogue effects and timing sign-off are out of scope; the responsible engineer decides.";
 
 pub(super) fn render(report: &Report, style: &Style) -> String {
     let mut text = String::new();
@@ -77,16 +78,15 @@ fn findings(report: &Report, style: &Style) -> String {
 fn pins(report: &Report, text: &mut String) {
     let pins = &report.coverage.pins;
     if pins.total().nets == 0 {
-        text.push_str("  nets checked: none; there are no clocks, asynchronous pins, latch enables, watched nets or outputs\n");
+        text.push_str(
+            "  nets checked: none; there are no clocks, asynchronous pins, latch enables, watched nets or outputs\n",
+        );
         return;
     }
     let _ = writeln!(text, "  {:<14}{:>8}{:>8}{:>8}{:>11}", "nets checked", "all", "clean", "hazard", "undecided");
     let mut line = |name: &str, count: crate::rules::NetCount| {
-        let _ = writeln!(
-            text,
-            "  {name:<14}{:>8}{:>8}{:>8}{:>11}",
-            count.nets, count.clean, count.hazard, count.undecided
-        );
+        let _ =
+            writeln!(text, "  {name:<14}{:>8}{:>8}{:>8}{:>11}", count.nets, count.clean, count.hazard, count.undecided);
     };
     for kind in PinKind::ALL {
         if pins.get(kind).nets > 0 {

@@ -84,7 +84,8 @@ fn of_finding(sources: &SourceSet, finding: &Finding) -> Diagnostic<FileId> {
         notes.push(others(finding));
     }
     if let Some(cover) = &finding.cover {
-        let proven = if cover.proven { "proven: with it, no change of one signal can glitch this net" } else { "not proven" };
+        let proven =
+            if cover.proven { "proven: with it, no change of one signal can glitch this net" } else { "not proven" };
         notes.push(format!("cover ({proven}):\n  {}", cover.verilog));
     }
     notes.extend(finding.notes.iter().cloned());

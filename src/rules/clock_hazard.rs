@@ -17,7 +17,12 @@ pub(super) fn finding(graph: &Graph, verdict: &TargetVerdict, uses: &[Use], opti
     let net = super::names::name(graph, verdict.target);
     let what = format!("the clock `{net}` of {cells}");
     let judge = |kind| judge(&cells, kind);
-    evidence::finding(graph, verdict, &Subject { rule: Rule::ClockHazard, pin, what, judge: &judge, cure: CURE }, options)
+    evidence::finding(
+        graph,
+        verdict,
+        &Subject { rule: Rule::ClockHazard, pin, what, judge: &judge, cure: CURE },
+        options,
+    )
 }
 
 fn judge(cells: &str, kind: HazardKind) -> (Severity, String) {

@@ -8,8 +8,8 @@ use super::evidence;
 use super::finding::{Finding, LoopText, Rule, Severity, TraceStep, Verdict};
 use super::{cover_text, fingerprint, names, words};
 use crate::graph::{Graph, NodeId, NodeKind};
-use crate::source::Span;
 use crate::hazard::{Behaviour, BehaviourKind, HazardKind, LoopVerdict, StateLoss};
+use crate::source::Span;
 
 /// The most places shown of one loop; the nets are all in the finding's `loop`.
 const SHOWN_STEPS: usize = 10;
@@ -21,10 +21,10 @@ pub(super) fn finding(graph: &Graph, verdict: &LoopVerdict) -> Option<Finding> {
     let start = nets.first().map(|(_, node)| *node).or_else(|| verdict.nodes.first().copied())?;
     let net = names::name(graph, start);
     let ring = ring(graph, verdict, start);
-    let at = ring.iter().find(|&&node| graph.kind(node) != NodeKind::Wire).map_or_else(
-        || evidence::place(graph, start),
-        |&gate| evidence::place(graph, gate),
-    );
+    let at = ring
+        .iter()
+        .find(|&&node| graph.kind(node) != NodeKind::Wire)
+        .map_or_else(|| evidence::place(graph, start), |&gate| evidence::place(graph, gate));
     let (severity, what) = judge(verdict);
     let stores = verdict.behaviours.iter().any(|behaviour| behaviour.kind == BehaviourKind::Stores);
     let loss_open = stores && verdict.loses_state.is_none() && !verdict.loss_decided;
@@ -58,7 +58,9 @@ pub(super) fn finding(graph: &Graph, verdict: &LoopVerdict) -> Option<Finding> {
         lost_state(graph, start, loss, &mut finding);
     }
     if loss_open {
-        finding.notes.push("undecided: whether a change of one input can lose the value; this is not a pass".to_string());
+        finding
+            .notes
+            .push("undecided: whether a change of one input can lose the value; this is not a pass".to_string());
     }
     finding.message = message;
     finding.notes.push(cure(verdict).to_string());
@@ -94,7 +96,9 @@ fn explain(graph: &Graph, behaviour: &Behaviour) -> String {
             let states: Vec<String> = behaviour.states.iter().map(|state| values(graph, state)).collect();
             format!("stores{when}: stable are {}", states.join(" as well as "))
         }
-        BehaviourKind::Settles => "settles: from any state, every value of its inputs resolves every net of it".to_string(),
+        BehaviourKind::Settles => {
+            "settles: from any state, every value of its inputs resolves every net of it".to_string()
+        }
         BehaviourKind::DelayDependent => {
             format!("delay-dependent{when}: one state is stable, but some order of delays never reaches it")
         }
@@ -182,7 +186,10 @@ fn trace(graph: &Graph, ring: &[NodeId], at: Option<Span>) -> Vec<TraceStep> {
     if steps.len() > SHOWN_STEPS {
         let left_out = steps.len() - SHOWN_STEPS;
         steps.truncate(SHOWN_STEPS);
-        steps.push(TraceStep { at, text: format!("and {} more on the way back here, not shown", words::count(left_out, "place")) });
+        steps.push(TraceStep {
+            at,
+            text: format!("and {} more on the way back here, not shown", words::count(left_out, "place")),
+        });
     }
     steps
 }

@@ -84,7 +84,9 @@ fn cover(graph: &Graph, verdict: &TargetVerdict, options: &Options) -> (Option<C
     match hazard::cover(graph, verdict, options) {
         Ok(cover) => match cover_text::of(graph, verdict.target, &cover) {
             Some(text) => (Some(text), None),
-            None => (None, Some("a cover exists, but it needs signals that have no name; name them to see it".to_string())),
+            None => {
+                (None, Some("a cover exists, but it needs signals that have no name; name them to see it".to_string()))
+            }
         },
         Err(withheld) => (None, Some(format!("no cover is offered because {}", withheld.words()))),
     }
@@ -191,7 +193,8 @@ pub(super) fn trace(graph: &Graph, target: NodeId, paths: &Paths, at: Option<Spa
     let stem = names::name(graph, paths.stem);
     let several = paths.ways.len() > 1;
     let split = if several { "splits here into paths 1 and 2" } else { "changes" };
-    let stem_place = names::wire_of(graph, paths.stem).and_then(|wire| graph.span(wire)).or_else(|| place(graph, paths.stem));
+    let stem_place =
+        names::wire_of(graph, paths.stem).and_then(|wire| graph.span(wire)).or_else(|| place(graph, paths.stem));
     steps.push(TraceStep { at: stem_place, text: format!("`{stem}` {split}") });
     for (number, way) in paths.ways.iter().enumerate() {
         let hops = hops(graph, paths, way);
@@ -203,7 +206,12 @@ pub(super) fn trace(graph: &Graph, target: NodeId, paths: &Paths, at: Option<Spa
     let meet = words::gate(graph, paths.meet);
     let lengths: Vec<String> = (paths.ways.iter().enumerate())
         .map(|(number, way)| {
-            format!("{} ({}, {})", number + 1, words::count(way.gates, "gate"), words::count(way.inversions, "inversion"))
+            format!(
+                "{} ({}, {})",
+                number + 1,
+                words::count(way.gates, "gate"),
+                words::count(way.inversions, "inversion")
+            )
         })
         .collect();
     let joined = match graph.kind(paths.meet) {

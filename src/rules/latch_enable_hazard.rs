@@ -62,8 +62,14 @@ fn judge_level(cells: &str, active: bool, kind: HazardKind) -> (Severity, String
     if kind == HazardKind::Dynamic {
         (Severity::Warning, format!("opens and closes {cells} more than once"))
     } else if kind == opens {
-        (Severity::Error, format!("opens {cells} that should hold: the stored value is overwritten by whatever is at the data input"))
+        (
+            Severity::Error,
+            format!("opens {cells} that should hold: the stored value is overwritten by whatever is at the data input"),
+        )
     } else {
-        (Severity::Warning, format!("closes {cells} for a moment while data should pass: the output can lag behind its data"))
+        (
+            Severity::Warning,
+            format!("closes {cells} for a moment while data should pass: the output can lag behind its data"),
+        )
     }
 }

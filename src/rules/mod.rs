@@ -5,8 +5,8 @@
 mod about_text;
 mod clock_hazard;
 mod combinational_loop;
-mod coverage;
 mod cover_text;
+mod coverage;
 mod evidence;
 mod finding;
 mod fingerprint;

@@ -73,10 +73,8 @@ pub(super) fn collect(graph: &Graph) -> Pins {
 
 /// Whether the net can change in any way but cleanly: constants and sources cannot.
 pub(super) fn is_driven_by_logic(graph: &Graph, root: NodeId) -> bool {
-    matches!(
-        graph.kind(root),
-        NodeKind::Gate(_) | NodeKind::Table(_) | NodeKind::OpIn(_) | NodeKind::OpOut(_)
-    ) || (graph.kind(root) == NodeKind::Wire && !graph.fanin(root).is_empty())
+    matches!(graph.kind(root), NodeKind::Gate(_) | NodeKind::Table(_) | NodeKind::OpIn(_) | NodeKind::OpOut(_))
+        || (graph.kind(root) == NodeKind::Wire && !graph.fanin(root).is_empty())
 }
 
 /// The kind that stands for all uses of a net.

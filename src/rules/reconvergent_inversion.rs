@@ -18,9 +18,7 @@ const CURE_OUTPUT: &str = "to do: register the output if its reader acts on edge
 pub(super) fn watched(graph: &Graph, verdict: &TargetVerdict, watch: &Watch, options: &Options) -> Option<Finding> {
     let net = names::name(graph, verdict.target);
     let what = format!("the watched net `{net}`");
-    let judge = |_: HazardKind| {
-        (Severity::Error, format!("the net was to hold still: {}", watch.reason))
-    };
+    let judge = |_: HazardKind| (Severity::Error, format!("the net was to hold still: {}", watch.reason));
     let pin = pin(PinKind::Watch);
     let subject = Subject { rule: Rule::ReconvergentInversion, pin, what, judge: &judge, cure: CURE_WATCH };
     evidence::finding(graph, verdict, &subject, options)
@@ -43,9 +41,7 @@ pub(super) fn output(graph: &Graph, port: &Port, verdicts: &Verdicts, options: &
         (Some(bit), Some(range)) => format!("bit {} of the combinational output `{name}`", index(range, bit)),
         _ => format!("the combinational output `{name}`"),
     };
-    let judge = |_: HazardKind| {
-        (Severity::Warning, "whatever reads the output outside sees the pulse".to_string())
-    };
+    let judge = |_: HazardKind| (Severity::Warning, "whatever reads the output outside sees the pulse".to_string());
     let pin = pin(PinKind::Output);
     let subject = Subject { rule: Rule::ReconvergentInversion, pin, what, judge: &judge, cure: CURE_OUTPUT };
     let mut finding = evidence::finding(graph, shown, &subject, options)?;

@@ -30,7 +30,12 @@ pub(super) fn finding(graph: &Graph, verdict: &TargetVerdict, uses: &[Use], opti
     let net = super::names::name(graph, verdict.target);
     let what = format!("the {level}{noun} `{net}` of {}", words::cells(graph, uses));
     let judge = |kind| judge(graph, uses, kind);
-    evidence::finding(graph, verdict, &Subject { rule: Rule::SetResetHazard, pin, what, judge: &judge, cure: CURE }, options)
+    evidence::finding(
+        graph,
+        verdict,
+        &Subject { rule: Rule::SetResetHazard, pin, what, judge: &judge, cure: CURE },
+        options,
+    )
 }
 
 fn takes(uses: &[Use], wanted: Takes) -> bool {
@@ -71,13 +76,21 @@ fn judge_level(graph: &Graph, uses: &[Use], active: bool, kind: HazardKind) -> (
     };
     let towards = if active { HazardKind::Static0 } else { HazardKind::Static1 };
     if kind == HazardKind::Dynamic {
-        (Severity::Warning, format!("{acts} {cells} more than once, or releases them in between: what they took up there is lost"))
+        (
+            Severity::Warning,
+            format!("{acts} {cells} more than once, or releases them in between: what they took up there is lost"),
+        )
     } else if kind == towards {
         (
             Severity::Error,
-            format!("{acts} {cells} although no {acted} is asserted; a short pulse may take some of them and miss others"),
+            format!(
+                "{acts} {cells} although no {acted} is asserted; a short pulse may take some of them and miss others"
+            ),
         )
     } else {
-        (Severity::Warning, format!("releases {cells} from {state} for a moment: a clock edge just then changes their state"))
+        (
+            Severity::Warning,
+            format!("releases {cells} from {state} for a moment: a clock edge just then changes their state"),
+        )
     }
 }

@@ -64,9 +64,7 @@ pub(super) fn gate(graph: &Graph, node: NodeId) -> String {
             GateKind::Nand | GateKind::Nor => format!("a {} gate", kind.name().to_uppercase()),
         },
         NodeKind::Table(table) => format!("a primitive `{}`", graph.tables[table.index()].name),
-        NodeKind::OpIn(operator) | NodeKind::OpOut(operator) => {
-            with_article(graph.operators[operator.index()].what)
-        }
+        NodeKind::OpIn(operator) | NodeKind::OpOut(operator) => with_article(graph.operators[operator.index()].what),
         NodeKind::Const(_) | NodeKind::Unknown => "a constant".to_string(),
         NodeKind::Source(_) => "a source".to_string(),
         NodeKind::Wire => "a wire".to_string(),

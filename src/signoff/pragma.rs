@@ -73,10 +73,11 @@ fn collect_file(file: &SourceFile, collected: &mut Collected) {
             Ok(Parsed::Watch(watch)) => collected.watches.push(watch),
             Err(why) => {
                 let message = format!("{why}; the comment has no effect");
-                let diagnostic = Diagnostic::new(Kind::SignoffInvalid, "sign-off comment", message, Some(at)).with_help(
-                    "write `// stillwire: signoff RULE[, RULE] \"reason\" [by NAME] [until YYYY-MM-DD]` or \
+                let diagnostic = Diagnostic::new(Kind::SignoffInvalid, "sign-off comment", message, Some(at))
+                    .with_help(
+                        "write `// stillwire: signoff RULE[, RULE] \"reason\" [by NAME] [until YYYY-MM-DD]` or \
                      `// stillwire: watch \"reason\"`",
-                );
+                    );
                 collected.diagnostics.push(diagnostic);
             }
         }
