@@ -1,7 +1,7 @@
 //! The one integration binary: fixtures, end-to-end runs and checks against outside references.
 
-mod decision;
 mod decide;
+mod decision;
 mod explorer;
 mod formula;
 mod graph;
