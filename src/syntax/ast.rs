@@ -95,8 +95,10 @@ pub struct AnsiPort {
 pub enum AnsiPortKind {
     /// `net` is `None` for a variable port (`output reg q`, `output logic q`).
     Data { direction: Direction, net: Option<NetKind>, ty: DataType },
-    /// `bus_if.master m`; `interface` is `None` for the generic `interface` port.
-    Interface { interface: Option<Ident>, modport: Option<Ident> },
+    /// `bus_if.master m`; `interface` is `None` for the generic `interface` port. `name x` without a direction is also
+    /// kept here, and when `name` turns out to be a data type, the port is a variable of it with `direction`
+    /// (inherited from the port before).
+    Interface { interface: Option<Ident>, modport: Option<Ident>, direction: Direction },
     /// `.name(expr)` in an ANSI list.
     Explicit { direction: Direction, expr: Option<Expr> },
 }

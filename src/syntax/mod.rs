@@ -1,3 +1,6 @@
 //! The owned syntax tree and the one converter that builds it from the parser's concrete tree.
 
 pub mod ast;
+mod convert;
+
+pub use convert::convert;

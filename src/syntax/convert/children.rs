@@ -1,0 +1,271 @@
+//! The children of a node of the parser's tree. The parser offers a walk over a whole subtree only, but the last token of a
+//! node must be found without visiting all of it, or the places of nested nodes would take quadratic time. So this table
+//! names every kind of node. It is exhaustive: a parser that adds a kind does not compile until it is listed.
+
+use sv_parser as sv;
+use sv_parser::Node;
+
+macro_rules! children_of {
+    ($($kind:ident)*) => {
+        /// The direct children, in the order of the text.
+        pub(super) fn children(node: sv::RefNode<'_>) -> Vec<sv::RefNode<'_>> {
+            match node {
+                sv::RefNode::Locate(_) => Vec::new(),
+                $(sv::RefNode::$kind(x) => x.next().0,)*
+            }
+        }
+    };
+}
+
+children_of! {
+    ActionBlock ActionBlockElse ActualArgument AlwaysConstruct AlwaysKeyword AngleBracketLiteral AnonymousProgram
+    AnonymousProgramItem AnsiPortDeclaration AnsiPortDeclarationNet AnsiPortDeclarationParen
+    AnsiPortDeclarationVariable ArrayIdentifier ArrayManipulationCall ArrayMethodName ArrayPatternKey
+    ArrayRangeExpression ArrayRangeExpressionColon ArrayRangeExpressionMinusColon ArrayRangeExpressionPlusColon
+    AssertPropertyStatement AssertTiming AssertionItem AssertionItemDeclaration AssertionVariableDeclaration
+    AssignmentOperator AssignmentPattern AssignmentPatternArray AssignmentPatternExpression
+    AssignmentPatternExpressionType AssignmentPatternKey AssignmentPatternList AssignmentPatternNetLvalue
+    AssignmentPatternRepeat AssignmentPatternStructure AssignmentPatternVariableLvalue AssociativeDimension
+    AssociativeDimensionAsterisk AssociativeDimensionDataType AssumePropertyStatement AttrSpec AttributeInstance
+    BinIdentifier BinaryBase BinaryModulePathOperator BinaryNumber BinaryOperator BinaryValue BindDirective
+    BindDirectiveInstance BindDirectiveScope BindInstantiation BindTargetInstance BindTargetInstanceList
+    BindTargetScope BinsExpression BinsExpressionCoverPoint BinsKeyword BinsOrEmpty BinsOrEmptyNonEmpty BinsOrOptions
+    BinsOrOptionsCoverPoint BinsOrOptionsCovergroup BinsOrOptionsDefault BinsOrOptionsDefaultSequence
+    BinsOrOptionsSetCovergroup BinsOrOptionsTransList BinsSelection BinsSelectionOrOption BinsSelectionOrOptionBins
+    BinsSelectionOrOptionCoverage BitSelect BlockEventExpression BlockEventExpressionBegin BlockEventExpressionEnd
+    BlockEventExpressionOr BlockIdentifier BlockItemDeclaration BlockItemDeclarationData BlockItemDeclarationLet
+    BlockItemDeclarationLocalParameter BlockItemDeclarationParameter BlockingAssignment
+    BlockingAssignmentHierarchicalVariable BlockingAssignmentNonrangeVariable BlockingAssignmentVariable
+    BooleanAbbrev BuiltInMethodCall CIdentifier CaseExpression CaseGenerateConstruct CaseGenerateItem
+    CaseGenerateItemDefault CaseGenerateItemNondefault CaseInsideItem CaseInsideItemNondefault CaseItem
+    CaseItemDefault CaseItemExpression CaseItemNondefault CaseKeyword CasePatternItem CasePatternItemNondefault
+    CaseStatement CaseStatementInside CaseStatementMatches CaseStatementNormal Cast CastingType CellClause
+    CellIdentifier CelldefineDriveCompilerDirective ChargeStrength ChargeStrengthLarge ChargeStrengthMedium
+    ChargeStrengthSmall CheckerDeclaration CheckerGenerateItem CheckerIdentifier CheckerInstantiation
+    CheckerOrGenerateItem CheckerOrGenerateItemDeclaration CheckerOrGenerateItemDeclarationClocking
+    CheckerOrGenerateItemDeclarationData CheckerOrGenerateItemDeclarationDisable CheckerPortDirection CheckerPortItem
+    CheckerPortList ClassConstraint ClassConstructorDeclaration ClassConstructorPrototype ClassDeclaration
+    ClassIdentifier ClassItem ClassItemConstraint ClassItemCovergroup ClassItemDeclaration ClassItemMethod
+    ClassItemProperty ClassItemQualifier ClassMethod ClassMethodConstructor ClassMethodExternConstructor
+    ClassMethodExternMethod ClassMethodFunction ClassMethodPureVirtual ClassMethodTask ClassNew ClassNewArgument
+    ClassNewExpression ClassProperty ClassPropertyConst ClassPropertyConstExpression ClassPropertyNonConst
+    ClassQualifier ClassQualifierOrPackageScope ClassScope ClassType ClassVariableIdentifier ClockingDeclAssign
+    ClockingDeclaration ClockingDeclarationGlobal ClockingDeclarationLocal ClockingDirection ClockingDirectionInput
+    ClockingDirectionInputOutput ClockingDirectionOutput ClockingDrive ClockingEvent ClockingEventExpression
+    ClockingEventIdentifier ClockingIdentifier ClockingItem ClockingItemAssertion ClockingItemDefault
+    ClockingItemDirection ClockingSkew ClockingSkewEdge Clockvar ClockvarExpression CmosSwitchInstance CmosSwitchtype
+    CombinationalBody CombinationalEntry Comment CompilerDirective Concatenation ConcurrentAssertionItem
+    ConcurrentAssertionItemStatement ConcurrentAssertionStatement CondPattern CondPredicate
+    ConditionalCompilerDirective ConditionalExpression ConditionalGenerateConstruct ConditionalStatement Config
+    ConfigDeclaration ConfigIdentifier ConfigRuleStatement ConfigRuleStatementCellLib ConfigRuleStatementCellUse
+    ConfigRuleStatementDefault ConfigRuleStatementInstLib ConfigRuleStatementInstUse ConsecutiveRepetition
+    ConsecutiveRepetitionAsterisk ConsecutiveRepetitionExpression ConsecutiveRepetitionPlus Const ConstIdentifier
+    ConstOrRangeExpression ConstantAssignmentPatternExpression ConstantBitSelect ConstantCast ConstantConcatenation
+    ConstantExpression ConstantExpressionBinary ConstantExpressionTernary ConstantExpressionUnary
+    ConstantFunctionCall ConstantIndexedRange ConstantInsideExpression ConstantLetExpression
+    ConstantMintypmaxExpression ConstantMintypmaxExpressionTernary ConstantMultipleConcatenation
+    ConstantParamExpression ConstantPartSelectRange ConstantPrimary ConstantPrimaryConcatenation ConstantPrimaryEnum
+    ConstantPrimaryFormalPort ConstantPrimaryMintypmaxExpression ConstantPrimaryMultipleConcatenation
+    ConstantPrimaryPsParameter ConstantPrimarySpecparam ConstantRange ConstantRangeExpression ConstantSelect
+    ConstraintBlock ConstraintBlockItem ConstraintBlockItemSolve ConstraintDeclaration ConstraintExpression
+    ConstraintExpressionArrow ConstraintExpressionDisable ConstraintExpressionExpression ConstraintExpressionForeach
+    ConstraintExpressionIf ConstraintIdentifier ConstraintPrimary ConstraintPrototype ConstraintPrototypeQualifier
+    ConstraintSet ConstraintSetBrace ContinuousAssign ContinuousAssignNet ContinuousAssignVariable
+    ControlledReferenceEvent ControlledTimingCheckEvent CoverCross CoverPoint CoverPointIdentifier
+    CoverPropertyStatement CoverSequenceStatement CoverageEvent CoverageEventAt CoverageEventSample CoverageOption
+    CoverageOptionOption CoverageOptionTypeOption CoverageSpec CoverageSpecOrOption CoverageSpecOrOptionOption
+    CoverageSpecOrOptionSpec CovergroupDeclaration CovergroupExpression CovergroupIdentifier CovergroupRangeList
+    CovergroupValueRange CovergroupValueRangeBinary CovergroupVariableIdentifier CrossBody CrossBodyItem
+    CrossBodyNonEmpty CrossIdentifier CrossItem CrossSetExpression CurrentState CycleDelay
+    CycleDelayConstRangeExpression CycleDelayConstRangeExpressionBinary CycleDelayConstRangeExpressionDollar
+    CycleDelayExpression CycleDelayIdentifier CycleDelayIntegral CycleDelayRange CycleDelayRangeAsterisk
+    CycleDelayRangeExpression CycleDelayRangePlus CycleDelayRangePrimary DataDeclaration DataDeclarationVariable
+    DataEvent DataSourceExpression DataType DataTypeAtom DataTypeEnum DataTypeOrImplicit DataTypeOrVoid
+    DataTypeStructUnion DataTypeType DataTypeVector DataTypeVirtual DecimalBase DecimalNumber
+    DecimalNumberBaseUnsigned DecimalNumberBaseXNumber DecimalNumberBaseZNumber Default DefaultClause
+    DefaultNettypeCompilerDirective DefaultNettypeValue DefaultSkew DefaultSkewInput DefaultSkewInputOutput
+    DefaultSkewOutput DefaultText DeferredImmediateAssertStatement DeferredImmediateAssertionItem
+    DeferredImmediateAssertionStatement DeferredImmediateAssumeStatement DeferredImmediateCoverStatement
+    DefparamAssignment Delay2 Delay2Mintypmax Delay2Single Delay3 Delay3Mintypmax Delay3Single DelayControl
+    DelayControlDelay DelayControlMintypmax DelayOrEventControl DelayOrEventControlRepeat DelayValue DelayedData
+    DelayedDataWithMintypmax DelayedReference DelayedReferenceWithMintypmax Description DescriptionBindDirective
+    DescriptionPackageItem DesignStatement DisableStatement DisableStatementBlock DisableStatementFork
+    DisableStatementTask DistItem DistList DistWeight DistWeightDivide DistWeightEqual DpiFunctionImportProperty
+    DpiFunctionProto DpiImportExport DpiImportExportExportFunction DpiImportExportExportTask
+    DpiImportExportImportFunction DpiImportExportImportTask DpiSpecString DpiTaskImportProperty DpiTaskProto
+    DriveStrength DriveStrength01 DriveStrength0z DriveStrength10 DriveStrength1z DriveStrengthz0 DriveStrengthz1
+    DynamicArrayNew DynamicArrayVariableIdentifier EdgeControlSpecifier EdgeDescriptor EdgeIdentifier EdgeIndicator
+    EdgeIndicatorParen EdgeInputList EdgeSensitivePathDeclaration EdgeSensitivePathDeclarationFull
+    EdgeSensitivePathDeclarationParallel EdgeSymbol ElaborationSystemTask ElaborationSystemTaskError
+    ElaborationSystemTaskFatal ElaborationSystemTaskInfo ElaborationSystemTaskWarning ElseGroupOfLines
+    ElsifGroupOfLines EmptyUnpackedArrayConcatenation EnableGateInstance EnableGatetype EnableTerminal EndEdgeOffset
+    EndcelldefineDriveCompilerDirective EndkeywordsDirective EnumBaseType EnumBaseTypeAtom EnumBaseTypeType
+    EnumBaseTypeVector EnumIdentifier EnumNameDeclaration ErrorLimitValue EscapedIdentifier EventBasedFlag
+    EventControl EventControlAsterisk EventControlEventExpression EventControlEventIdentifier
+    EventControlParenAsterisk EventControlSequenceIdentifier EventExpression EventExpressionComma
+    EventExpressionExpression EventExpressionOr EventExpressionParen EventExpressionSequence EventTrigger
+    EventTriggerNamed EventTriggerNonblocking Exp ExpectPropertyStatement Expression ExpressionBinary
+    ExpressionOperatorAssignment ExpressionOrCondPattern ExpressionOrDist ExpressionUnary ExternConstraintDeclaration
+    ExternTfDeclaration ExternTfDeclarationMethod ExternTfDeclarationTask FilePathSpec FilePathSpecNonLiteral
+    FinalConstruct FinishNumber FixedPointNumber ForInitialization ForInitializationDeclaration ForStep
+    ForStepAssignment ForVariableDeclaration FormalArgument FormalIdentifier FormalPortIdentifier
+    FullEdgeSensitivePathDescription FullPathDescription FullskewTimingCheck FunctionBodyDeclaration
+    FunctionBodyDeclarationWithPort FunctionBodyDeclarationWithoutPort FunctionDataTypeOrImplicit FunctionDeclaration
+    FunctionIdentifier FunctionPrototype FunctionStatement FunctionStatementOrNull FunctionStatementOrNullAttribute
+    FunctionSubroutineCall GateInstantiation GateInstantiationCmos GateInstantiationEnable GateInstantiationMos
+    GateInstantiationNInput GateInstantiationNOutput GateInstantiationPass GateInstantiationPassEn
+    GateInstantiationPulldown GateInstantiationPullup GenerateBlock GenerateBlockIdentifier GenerateBlockMultiple
+    GenerateItem GenerateRegion Genvar GenvarDeclaration GenvarExpression GenvarIdentifier GenvarInitialization
+    GenvarIteration GenvarIterationAssignment GenvarIterationPrefix GenvarIterationSuffix GotoRepetition HexBase
+    HexNumber HexValue HierarchicalArrayIdentifier HierarchicalBlockIdentifier HierarchicalBtfIdentifier
+    HierarchicalBtfIdentifierMethod HierarchicalEventIdentifier HierarchicalIdentifier
+    HierarchicalIdentifierOrClassScope HierarchicalInstance HierarchicalNetIdentifier HierarchicalParameterIdentifier
+    HierarchicalPropertyIdentifier HierarchicalSequenceIdentifier HierarchicalTaskIdentifier HierarchicalTfIdentifier
+    HierarchicalVariableIdentifier HoldTimingCheck Identifier IdentifierList IfGenerateConstruct IfdefDirective
+    IfdefGroupOfLines IfndefDirective IfndefGroupOfLines ImmediateAssertionStatement ImplicitClassHandle
+    ImplicitClassHandleOrClassScope ImplicitClassHandleOrClassScopeOrPackageScope ImplicitClassHandleOrPackageScope
+    ImplicitDataType ImportExport IncOrDecExpression IncOrDecExpressionPrefix IncOrDecExpressionSuffix
+    IncOrDecOperator IncludeCompilerDirective IncludeCompilerDirectiveAngleBracket
+    IncludeCompilerDirectiveDoubleQuote IncludeCompilerDirectiveTextMacroUsage IncludeStatement
+    IndexVariableIdentifier IndexedRange InitVal InitialConstruct InoutDeclaration InoutPortIdentifier InoutTerminal
+    InputDeclaration InputDeclarationNet InputDeclarationVariable InputIdentifier InputIdentifierInterface
+    InputPortIdentifier InputTerminal InsideExpression InstClause InstName InstanceIdentifier IntegerAtomType
+    IntegerCovergroupExpression IntegerType IntegerVectorType IntegralNumber Interface InterfaceAnsiHeader
+    InterfaceClassDeclaration InterfaceClassItem InterfaceClassItemMethod InterfaceClassMethod InterfaceClassType
+    InterfaceDeclaration InterfaceDeclarationAnsi InterfaceDeclarationExternAnsi InterfaceDeclarationExternNonansi
+    InterfaceDeclarationNonansi InterfaceDeclarationWildcard InterfaceIdentifier InterfaceIdentifierOrClassScope
+    InterfaceInstanceIdentifier InterfaceInstantiation InterfaceItem InterfaceNonansiHeader InterfaceOrGenerateItem
+    InterfaceOrGenerateItemExtern InterfaceOrGenerateItemModule InterfacePortDeclaration InterfacePortHeader
+    InterfacePortHeaderIdentifier InterfacePortHeaderInterface JoinKeyword JumpStatement JumpStatementBreak
+    JumpStatementContinue JumpStatementReturn Keyword KeywordsDirective LetActualArg LetDeclaration LetExpression
+    LetFormalType LetIdentifier LetListOfArguments LetListOfArgumentsNamed LetListOfArgumentsOrdered LetPortItem
+    LetPortList Level LevelInputList LevelSymbol LiblistClause LibraryDeclaration LibraryDescription
+    LibraryIdentifier LibraryText Lifetime LimitValue LineCompilerDirective ListOfActualArguments ListOfArguments
+    ListOfArgumentsNamed ListOfArgumentsOrdered ListOfCheckerPortConnections ListOfCheckerPortConnectionsNamed
+    ListOfCheckerPortConnectionsOrdered ListOfClockingDeclAssign ListOfCrossItems ListOfDefparamAssignments
+    ListOfFormalArguments ListOfGenvarIdentifiers ListOfInterfaceIdentifiers ListOfNetAssignments
+    ListOfNetDeclAssignments ListOfParamAssignments ListOfParameterAssignments ListOfParameterAssignmentsNamed
+    ListOfParameterAssignmentsOrdered ListOfPathDelayExpressions ListOfPathInputs ListOfPathOutputs
+    ListOfPortConnections ListOfPortConnectionsNamed ListOfPortConnectionsOrdered ListOfPortDeclarations
+    ListOfPortIdentifiers ListOfPorts ListOfSpecparamAssignments ListOfTfVariableIdentifiers ListOfTypeAssignments
+    ListOfUdpPortIdentifiers ListOfVariableAssignments ListOfVariableDeclAssignments ListOfVariableIdentifiers
+    ListOfVariablePortIdentifiers Local LocalOrPackageScopeOrClassScope LocalParameterDeclaration
+    LocalParameterDeclarationParam LocalParameterDeclarationType LoopGenerateConstruct LoopStatement
+    LoopStatementDoWhile LoopStatementFor LoopStatementForeach LoopStatementForever LoopStatementRepeat
+    LoopStatementWhile LoopVariables MacroText MemberIdentifier MethodCall MethodCallBody MethodCallBodyUser
+    MethodCallRoot MethodIdentifier MethodPrototype MethodQualifier MintypmaxExpression MintypmaxExpressionTernary
+    ModportClockingDeclaration ModportDeclaration ModportIdentifier ModportItem ModportPortsDeclaration
+    ModportPortsDeclarationClocking ModportPortsDeclarationSimple ModportPortsDeclarationTf ModportSimplePort
+    ModportSimplePortNamed ModportSimplePortOrdered ModportSimplePortsDeclaration ModportTfPort
+    ModportTfPortsDeclaration ModuleAnsiHeader ModuleCommonItem ModuleDeclaration ModuleDeclarationAnsi
+    ModuleDeclarationExternAnsi ModuleDeclarationExternNonansi ModuleDeclarationNonansi ModuleDeclarationWildcard
+    ModuleIdentifier ModuleInstantiation ModuleItem ModuleKeyword ModuleNonansiHeader ModuleOrGenerateItem
+    ModuleOrGenerateItemDeclaration ModuleOrGenerateItemDeclarationClocking ModuleOrGenerateItemDeclarationDisable
+    ModuleOrGenerateItemGate ModuleOrGenerateItemModule ModuleOrGenerateItemModuleItem ModuleOrGenerateItemParameter
+    ModuleOrGenerateItemUdp ModulePathConcatenation ModulePathConditionalExpression ModulePathExpression
+    ModulePathExpressionBinary ModulePathExpressionUnary ModulePathMintypmaxExpression
+    ModulePathMintypmaxExpressionTernary ModulePathMultipleConcatenation ModulePathPrimary ModulePathPrimaryMintypmax
+    MosSwitchInstance MosSwitchtype MultipleConcatenation NInputGateInstance NInputGatetype NOutputGateInstance
+    NOutputGatetype NameOfInstance NamedCheckerPortConnection NamedCheckerPortConnectionAsterisk
+    NamedCheckerPortConnectionIdentifier NamedParameterAssignment NamedPortConnection NamedPortConnectionAsterisk
+    NamedPortConnectionIdentifier NcontrolTerminal NetAlias NetAssignment NetDeclAssignment NetDeclaration
+    NetDeclarationInterconnect NetDeclarationNetType NetDeclarationNetTypeIdentifier NetIdentifier NetLvalue
+    NetLvalueIdentifier NetLvalueLvalue NetLvaluePattern NetPortHeader NetPortHeaderOrInterfacePortHeader NetPortType
+    NetPortTypeDataType NetPortTypeInterconnect NetType NetTypeDeclaration NetTypeDeclarationDataType
+    NetTypeDeclarationNetType NetTypeIdentifier New NextState NochangeTimingCheck NonConsecutiveRepetition
+    NonIntegerType NonPortInterfaceItem NonPortModuleItem NonPortModuleItemSpecparam NonPortProgramItem
+    NonPortProgramItemAssertion NonPortProgramItemAssign NonPortProgramItemFinal NonPortProgramItemInitial
+    NonPortProgramItemModule NonZeroUnsignedNumber NonblockingAssignment NonrangeSelect NonrangeVariableLvalue
+    Notifier NounconnectedDriveCompilerDirective Number OctalBase OctalNumber OctalValue OpenRangeList OpenValueRange
+    OperatorAssignment OrderedCheckerPortConnection OrderedParameterAssignment OrderedPortConnection
+    OutputDeclaration OutputDeclarationNet OutputDeclarationVariable OutputIdentifier OutputIdentifierInterface
+    OutputPortIdentifier OutputSymbol OutputTerminal PackageDeclaration PackageExportDeclaration
+    PackageExportDeclarationAsterisk PackageExportDeclarationItem PackageIdentifier PackageImportDeclaration
+    PackageImportItem PackageImportItemAsterisk PackageImportItemIdentifier PackageItem
+    PackageOrGenerateItemDeclaration PackageScope PackageScopeOrClassScope PackageScopePackage Packed PackedDimension
+    PackedDimensionRange ParBlock ParallelEdgeSensitivePathDescription ParallelPathDescription ParamAssignment
+    ParamExpression ParameterDeclaration ParameterDeclarationParam ParameterDeclarationType ParameterIdentifier
+    ParameterOverride ParameterPortDeclaration ParameterPortDeclarationParamList ParameterPortDeclarationTypeList
+    ParameterPortList ParameterPortListAssignment ParameterPortListDeclaration ParameterValueAssignment
+    PartSelectRange PassEnSwitchtype PassEnableSwitchInstance PassSwitchInstance PassSwitchtype PathDeclaration
+    PathDelayExpression PathDelayValue PathDelayValueParen Pattern PatternIdentifierList PatternList PatternTagged
+    PatternVariable PcontrolTerminal PeriodTimingCheck PolarityOperator Port PortDeclaration PortDeclarationInout
+    PortDeclarationInput PortDeclarationInterface PortDeclarationOutput PortDeclarationRef PortDirection
+    PortExpression PortExpressionBrace PortIdentifier PortNamed PortNonNamed PortReference PositionCompilerDirective
+    Pragma PragmaExpression PragmaExpressionAssignment PragmaKeyword PragmaName PragmaValue PragmaValueParen
+    PreprocessorText Primary PrimaryConcatenation PrimaryHierarchical PrimaryLiteral PrimaryMintypmaxExpression
+    PrimaryMultipleConcatenation ProceduralAssertionStatement ProceduralContinuousAssignment
+    ProceduralContinuousAssignmentAssign ProceduralContinuousAssignmentDeassign
+    ProceduralContinuousAssignmentForceNet ProceduralContinuousAssignmentForceVariable
+    ProceduralContinuousAssignmentReleaseNet ProceduralContinuousAssignmentReleaseVariable ProceduralTimingControl
+    ProceduralTimingControlStatement Production ProductionIdentifier ProductionItem ProgramAnsiHeader
+    ProgramDeclaration ProgramDeclarationAnsi ProgramDeclarationExternAnsi ProgramDeclarationExternNonansi
+    ProgramDeclarationNonansi ProgramDeclarationWildcard ProgramGenerateItem ProgramIdentifier ProgramInstantiation
+    ProgramItem ProgramNonansiHeader PropertyActualArg PropertyCaseItem PropertyCaseItemDefault
+    PropertyCaseItemNondefault PropertyDeclaration PropertyExpr PropertyExprAcceptOn PropertyExprAlways
+    PropertyExprBinaryProperty PropertyExprBinarySequence PropertyExprCase PropertyExprClockingEvent
+    PropertyExprEventually PropertyExprIf PropertyExprNexttime PropertyExprNot PropertyExprParen PropertyExprRejectOn
+    PropertyExprSAlways PropertyExprSEventually PropertyExprSNexttime PropertyExprStrong PropertyExprSyncAcceptOn
+    PropertyExprSyncRejectOn PropertyExprWeak PropertyFormalType PropertyIdentifier PropertyInstance
+    PropertyListOfArguments PropertyListOfArgumentsNamed PropertyListOfArgumentsOrdered PropertyLvarPortDirection
+    PropertyPortItem PropertyPortList PropertyQualifier PropertySpec PsCheckerIdentifier PsClassIdentifier
+    PsCovergroupIdentifier PsIdentifier PsOrHierarchicalArrayIdentifier PsOrHierarchicalNetIdentifier
+    PsOrHierarchicalNetIdentifierHierarchical PsOrHierarchicalNetIdentifierPackageScope
+    PsOrHierarchicalPropertyIdentifier PsOrHierarchicalPropertyIdentifierHierarchical
+    PsOrHierarchicalPropertyIdentifierPackageScope PsOrHierarchicalSequenceIdentifier
+    PsOrHierarchicalSequenceIdentifierHierarchical PsOrHierarchicalSequenceIdentifierPackageScope
+    PsOrHierarchicalTfIdentifier PsOrHierarchicalTfIdentifierHierarchical PsOrHierarchicalTfIdentifierPackageScope
+    PsParameterIdentifier PsParameterIdentifierGenerate PsParameterIdentifierScope PsTypeIdentifier PullGateInstance
+    PulldownStrength PulldownStrength0 PulldownStrength01 PulldownStrength10 PullupStrength PullupStrength01
+    PullupStrength1 PullupStrength10 PulseControlSpecparam PulseControlSpecparamWithDescriptor
+    PulseControlSpecparamWithoutDescriptor PulsestyleDeclaration QueueDimension Rand RandcaseItem RandcaseStatement
+    RandomQualifier RandomizeCall RandsequenceStatement RangeExpression RealNumber RealNumberFloating
+    RecoveryTimingCheck RecremTimingCheck RefDeclaration ReferenceEvent RejectLimitValue RemainActiveFlag
+    RemovalTimingCheck RepeatRange RepeatRangeBinary ResetallCompilerDirective RestrictPropertyStatement Root RsCase
+    RsCaseItem RsCaseItemDefault RsCaseItemNondefault RsCodeBlock RsIfElse RsProd RsProductionList
+    RsProductionListJoin RsProductionListProd RsRepeat RsRule ScalarConstant ScalarTimingCheckCondition
+    ScalarTimingCheckConditionBinary ScalarTimingCheckConditionUnary Select SelectCondition SelectExpression
+    SelectExpressionAnd SelectExpressionCrossSet SelectExpressionNot SelectExpressionOr SelectExpressionParen
+    SelectExpressionWith SeqBlock SeqInputList SequenceAbbrev SequenceActualArg SequenceDeclaration SequenceExpr
+    SequenceExprBinary SequenceExprClockingEvent SequenceExprCycleDelayExpr SequenceExprExprCycleDelayExpr
+    SequenceExprExpression SequenceExprFirstMatch SequenceExprInstance SequenceExprParen SequenceExprThroughout
+    SequenceFormalType SequenceIdentifier SequenceInstance SequenceListOfArguments SequenceListOfArgumentsNamed
+    SequenceListOfArgumentsOrdered SequenceLvarPortDirection SequenceMatchItem SequenceMethodCall SequencePortItem
+    SequencePortList SequentialBody SequentialEntry SetCovergroupExpression SetupTimingCheck SetupholdTimingCheck
+    ShowcancelledDeclaration Sign SignalIdentifier Signing SimpleIdentifier SimpleImmediateAssertStatement
+    SimpleImmediateAssertionStatement SimpleImmediateAssumeStatement SimpleImmediateCoverStatement
+    SimplePathDeclaration SimplePathDeclarationFull SimplePathDeclarationParallel SimpleType Size SkewTimingCheck
+    SliceSize Soft SolveBeforeList SourceDescription SourceDescriptionNotDirective SourceText SpecifyBlock
+    SpecifyInputTerminalDescriptor SpecifyItem SpecifyOutputTerminalDescriptor SpecifyTerminalDescriptor
+    SpecparamAssignment SpecparamAssignmentMintypmax SpecparamDeclaration SpecparamIdentifier StartEdgeOffset
+    StateDependentPathDeclaration StateDependentPathDeclarationIfEdgeSensitive StateDependentPathDeclarationIfNone
+    StateDependentPathDeclarationIfSimple Statement StatementItem StatementOrNull StatementOrNullAttribute Static
+    StreamConcatenation StreamExpression StreamOperator StreamingConcatenation Strength Strength0 Strength1
+    StringLiteral StructUnion StructUnionMember StructurePatternKey SubroutineCall SubroutineCallRandomize
+    SubroutineCallStatement SubroutineCallStatementFunction Symbol SystemTfCall SystemTfCallArgDataType
+    SystemTfCallArgExpression SystemTfCallArgOptional SystemTfIdentifier SystemTimingCheck TPathDelayExpression
+    TaggedUnionExpression TaskBodyDeclaration TaskBodyDeclarationWithPort TaskBodyDeclarationWithoutPort
+    TaskDeclaration TaskIdentifier TaskPrototype TerminalIdentifier TextMacroDefinition TextMacroIdentifier
+    TextMacroName TextMacroUsage TfCall TfIdentifier TfItemDeclaration TfPortDeclaration TfPortDirection TfPortItem
+    TfPortList Threshold TimeLiteral TimeLiteralFixedPoint TimeLiteralUnsigned TimeUnit TimecheckCondition
+    TimescaleCompilerDirective TimeskewTimingCheck TimestampCondition TimeunitsDeclaration
+    TimeunitsDeclarationTimeprecision TimeunitsDeclarationTimeprecisionTimeunit TimeunitsDeclarationTimeunit
+    TimeunitsDeclarationTimeunitTimeprecision TimingCheckCondition TimingCheckConditionParen TimingCheckEvent
+    TimingCheckEventControl TimingCheckLimit TopmoduleIdentifier TransItem TransList TransRangeList
+    TransRangeListArrow TransRangeListAsterisk TransRangeListEqual TransSet TypeAssignment TypeDeclaration
+    TypeDeclarationDataType TypeDeclarationInterface TypeDeclarationKeyword TypeDeclarationReserved TypeIdentifier
+    TypeReference TypeReferenceDataType TypeReferenceExpression UdpAnsiDeclaration UdpBody UdpDeclaration
+    UdpDeclarationAnsi UdpDeclarationExternAnsi UdpDeclarationExternNonansi UdpDeclarationNonansi
+    UdpDeclarationPortList UdpDeclarationWildcard UdpIdentifier UdpInitialStatement UdpInputDeclaration UdpInstance
+    UdpInstantiation UdpNonansiDeclaration UdpOutputDeclaration UdpOutputDeclarationNonreg UdpOutputDeclarationReg
+    UdpPortDeclaration UdpPortList UdpRegDeclaration UnaryModulePathOperator UnaryOperator UnbasedUnsizedLiteral
+    UnconnectedDriveCompilerDirective UndefineCompilerDirective UndefineallCompilerDirective UniquePriority
+    UniquenessConstraint Unit UnpackedDimension UnpackedDimensionExpression UnpackedDimensionRange UnsignedNumber
+    UnsizedDimension UseClause UseClauseCell UseClauseCellNamed UseClauseNamed ValueRange ValueRangeBinary Var
+    VarDataType VarDataTypeVar VariableAssignment VariableDeclAssignment VariableDeclAssignmentClass
+    VariableDeclAssignmentDynamicArray VariableDeclAssignmentVariable VariableDimension VariableIdentifier
+    VariableIdentifierList VariableIdentifierListOrNull VariableLvalue VariableLvalueIdentifier VariableLvalueLvalue
+    VariableLvaluePattern VariablePortHeader VariablePortType VectorScalar VersionSpecifier Virtual WaitStatement
+    WaitStatementFork WaitStatementOrder WaitStatementWait WeightSpecification WeightSpecificationExpression
+    WhiteSpace WidthTimingCheck Wildcard WithCovergroupExpression XNumber ZNumber
+}

@@ -1,0 +1,242 @@
+//! Declarations of nets, variables, types, imports and the other things a package may hold. `name x;` may be a net of a
+//! user-defined net type or a variable of a named type; user-defined net types are not supported, so it is a variable.
+
+use sv_parser as sv;
+
+use super::Converter;
+use super::ast::{DataTypeKind, Declarator, Dim, Expr, Ident, Import, Item, ItemKind, NetKind};
+use super::names::Scope;
+use crate::source::Span;
+
+impl Converter<'_> {
+    pub(super) fn package_item(&self, item: &sv::PackageItem, items: &mut Vec<Item>) {
+        let span = self.span(item);
+        match item {
+            sv::PackageItem::PackageOrGenerateItemDeclaration(x) => self.package_or_generate_item(x, items),
+            sv::PackageItem::AnonymousProgram(_) => items.push(self.skipped("program", span)),
+            sv::PackageItem::PackageExportDeclaration(x) => {
+                let exports = match &**x {
+                    sv::PackageExportDeclaration::Asterisk(x) => {
+                        let star = Ident { name: "*".to_string(), span: self.span(&**x) };
+                        vec![Import { package: star, name: None }]
+                    }
+                    sv::PackageExportDeclaration::Item(x) => {
+                        x.nodes.1.contents().into_iter().map(|item| self.import_item(item)).collect()
+                    }
+                };
+                items.push(self.item(ItemKind::Export(exports), span));
+            }
+            sv::PackageItem::TimeunitsDeclaration(_) => items.push(self.skipped("time unit", span)),
+        }
+    }
+
+    pub(super) fn package_or_generate_item(&self, item: &sv::PackageOrGenerateItemDeclaration, items: &mut Vec<Item>) {
+        let span = self.span(item);
+        match item {
+            sv::PackageOrGenerateItemDeclaration::NetDeclaration(x) => items.push(self.net_declaration(x)),
+            sv::PackageOrGenerateItemDeclaration::DataDeclaration(x) => self.data_declaration(x, items),
+            sv::PackageOrGenerateItemDeclaration::TaskDeclaration(x) => items.push(self.task(x)),
+            sv::PackageOrGenerateItemDeclaration::FunctionDeclaration(x) => items.push(self.function(x)),
+            sv::PackageOrGenerateItemDeclaration::CheckerDeclaration(_) => items.push(self.skipped("checker", span)),
+            sv::PackageOrGenerateItemDeclaration::DpiImportExport(_) => items.push(self.skipped("DPI import", span)),
+            sv::PackageOrGenerateItemDeclaration::ExternConstraintDeclaration(_)
+            | sv::PackageOrGenerateItemDeclaration::ClassDeclaration(_)
+            | sv::PackageOrGenerateItemDeclaration::InterfaceClassDeclaration(_)
+            | sv::PackageOrGenerateItemDeclaration::ClassConstructorDeclaration(_) => {
+                items.push(self.skipped("class", span));
+            }
+            sv::PackageOrGenerateItemDeclaration::LocalParameterDeclaration(x) => {
+                for param in self.local_parameter_declaration(&x.0) {
+                    let span = param.span;
+                    items.push(self.item(ItemKind::Param(param), span));
+                }
+            }
+            sv::PackageOrGenerateItemDeclaration::ParameterDeclaration(x) => {
+                for param in self.parameter_declaration(&x.0) {
+                    let span = param.span;
+                    items.push(self.item(ItemKind::Param(param), span));
+                }
+            }
+            sv::PackageOrGenerateItemDeclaration::CovergroupDeclaration(_) => {
+                items.push(self.skipped("covergroup", span));
+            }
+            sv::PackageOrGenerateItemDeclaration::AssertionItemDeclaration(x) => {
+                items.push(self.assertion_declaration(x));
+            }
+            sv::PackageOrGenerateItemDeclaration::Empty(_) => {}
+        }
+    }
+
+    pub(super) fn assertion_declaration(&self, declaration: &sv::AssertionItemDeclaration) -> Item {
+        match declaration {
+            sv::AssertionItemDeclaration::LetDeclaration(x) => self.let_declaration(x),
+            sv::AssertionItemDeclaration::PropertyDeclaration(_)
+            | sv::AssertionItemDeclaration::SequenceDeclaration(_) => self.skipped("assertion", self.span(declaration)),
+        }
+    }
+
+    pub(super) fn let_declaration(&self, declaration: &sv::LetDeclaration) -> Item {
+        let (_, name, ports, _, body, _) = &declaration.nodes;
+        let ports = ports.as_ref().and_then(|ports| ports.nodes.1.as_ref());
+        let args = ports.map_or(Vec::new(), |ports| {
+            let ports = ports.nodes.0.contents().into_iter();
+            ports
+                .map(|port| {
+                    let (_, _, name, _, default) = &port.nodes;
+                    (self.ident(&name.nodes.0), default.as_ref().map(|(_, value)| self.expression(value)))
+                })
+                .collect()
+        });
+        let kind = ItemKind::Let { name: self.ident(&name.nodes.0), args, body: self.expression(body) };
+        self.item(kind, self.span(declaration))
+    }
+
+    fn net_declaration(&self, declaration: &sv::NetDeclaration) -> Item {
+        let span = self.span(declaration);
+        let kind = match declaration {
+            sv::NetDeclaration::NetType(x) => {
+                let (net, strength, _, ty, delay, names, _) = &x.nodes;
+                self.drop_timing(strength.as_ref());
+                self.drop_timing(delay.as_ref());
+                let ty = self.data_type_or_implicit(ty);
+                ItemKind::Net { net: self.net_type(net), ty, names: self.net_declarators(names) }
+            }
+            sv::NetDeclaration::NetTypeIdentifier(x) => {
+                let (ty, delay, names, _) = &x.nodes;
+                self.drop_timing(delay.as_ref());
+                ItemKind::Var { ty: self.named_type(Scope::None, &ty.nodes.0), names: self.net_declarators(names) }
+            }
+            sv::NetDeclaration::Interconnect(x) => {
+                let (_, ty, _, first, dims, second, _) = &x.nodes;
+                let mut names = vec![self.declarator(&first.nodes.0, self.unpacked_dims(dims))];
+                names.extend(
+                    second.iter().map(|(_, name, dims)| self.declarator(&name.nodes.0, self.unpacked_dims(dims))),
+                );
+                let mut ty = self.implicit_type(ty);
+                ty.kind = DataTypeKind::Unsupported("interconnect".to_string());
+                ItemKind::Net { net: NetKind::Wire, ty, names }
+            }
+        };
+        self.item(kind, span)
+    }
+
+    fn net_declarators(&self, names: &sv::ListOfNetDeclAssignments) -> Vec<Declarator> {
+        let declarator = |assignment: &sv::NetDeclAssignment| {
+            let (name, dims, init) = &assignment.nodes;
+            Declarator {
+                init: init.as_ref().map(|(_, value)| self.expression(value)),
+                ..self.declarator(&name.nodes.0, self.unpacked_dims(dims))
+            }
+        };
+        names.nodes.0.contents().into_iter().map(declarator).collect()
+    }
+
+    pub(super) fn declarator(&self, name: &sv::Identifier, dims: Vec<Dim>) -> Declarator {
+        Declarator { name: self.ident(name), dims, init: None }
+    }
+
+    pub(super) fn variable_declarators(&self, names: &sv::ListOfVariableDeclAssignments) -> Vec<Declarator> {
+        names.nodes.0.contents().into_iter().map(|name| self.variable_declarator(name)).collect()
+    }
+
+    fn variable_declarator(&self, assignment: &sv::VariableDeclAssignment) -> Declarator {
+        let unsupported = |what: &str, span: Span| -> Option<Expr> { Some(self.unsupported_expr(what, span)) };
+        match assignment {
+            sv::VariableDeclAssignment::Variable(x) => {
+                let (name, dims, init) = &x.nodes;
+                Declarator {
+                    init: init.as_ref().map(|(_, value)| self.expression(value)),
+                    ..self.declarator(&name.nodes.0, self.variable_dims(dims))
+                }
+            }
+            sv::VariableDeclAssignment::DynamicArray(x) => {
+                let (name, unsized_dim, dims, init) = &x.nodes;
+                let mut all = vec![Dim::Dynamic(self.span(unsized_dim))];
+                all.extend(self.variable_dims(dims));
+                Declarator {
+                    init: init.as_ref().and_then(|(_, new)| unsupported("dynamic array", self.span(new))),
+                    ..self.declarator(&name.nodes.0.nodes.0, all)
+                }
+            }
+            sv::VariableDeclAssignment::Class(x) => {
+                let (name, (_, new)) = &x.nodes;
+                Declarator {
+                    init: unsupported("class object", self.span(new)),
+                    ..self.declarator(&name.nodes.0.nodes.0, Vec::new())
+                }
+            }
+        }
+    }
+
+    pub(super) fn data_declaration(&self, declaration: &sv::DataDeclaration, items: &mut Vec<Item>) {
+        let span = self.span(declaration);
+        let kind = match declaration {
+            sv::DataDeclaration::Variable(x) => {
+                let (_, _, _, ty, names, _) = &x.nodes;
+                ItemKind::Var { ty: self.data_type_or_implicit(ty), names: self.variable_declarators(names) }
+            }
+            sv::DataDeclaration::TypeDeclaration(x) => self.typedef(x),
+            sv::DataDeclaration::PackageImportDeclaration(x) => ItemKind::Import(self.imports(x)),
+            sv::DataDeclaration::NetTypeDeclaration(_) => ItemKind::Unsupported("user-defined net type".to_string()),
+        };
+        items.push(self.item(kind, span));
+    }
+
+    fn typedef(&self, declaration: &sv::TypeDeclaration) -> ItemKind {
+        match declaration {
+            sv::TypeDeclaration::DataType(x) => {
+                let (_, ty, name, dims, _) = &x.nodes;
+                let dims = self.variable_dims(dims);
+                ItemKind::Typedef { name: self.ident(&name.nodes.0), ty: Some(self.data_type(ty)), dims }
+            }
+            sv::TypeDeclaration::Interface(_) => ItemKind::Unsupported("typedef of an interface's type".to_string()),
+            sv::TypeDeclaration::Reserved(x) => {
+                ItemKind::Typedef { name: self.ident(&x.nodes.2.nodes.0), ty: None, dims: Vec::new() }
+            }
+        }
+    }
+
+    pub(super) fn imports(&self, declaration: &sv::PackageImportDeclaration) -> Vec<Import> {
+        declaration.nodes.1.contents().into_iter().map(|item| self.import_item(item)).collect()
+    }
+
+    fn import_item(&self, item: &sv::PackageImportItem) -> Import {
+        match item {
+            sv::PackageImportItem::Identifier(x) => {
+                let (package, _, name) = &x.nodes;
+                Import { package: self.ident(&package.nodes.0), name: Some(self.ident(name)) }
+            }
+            sv::PackageImportItem::Asterisk(x) => Import { package: self.ident(&x.nodes.0.nodes.0), name: None },
+        }
+    }
+
+    /// Declarations at the head of a block, a task or a function.
+    pub(super) fn block_item(&self, declaration: &sv::BlockItemDeclaration, items: &mut Vec<Item>) {
+        let start = items.len();
+        let attributes = match declaration {
+            sv::BlockItemDeclaration::Data(x) => {
+                self.data_declaration(&x.nodes.1, items);
+                &x.nodes.0
+            }
+            sv::BlockItemDeclaration::LocalParameter(x) => {
+                for param in self.local_parameter_declaration(&x.nodes.1) {
+                    let span = param.span;
+                    items.push(self.item(ItemKind::Param(param), span));
+                }
+                &x.nodes.0
+            }
+            sv::BlockItemDeclaration::Parameter(x) => {
+                for param in self.parameter_declaration(&x.nodes.1) {
+                    let span = param.span;
+                    items.push(self.item(ItemKind::Param(param), span));
+                }
+                &x.nodes.0
+            }
+            sv::BlockItemDeclaration::Let(x) => {
+                items.push(self.let_declaration(&x.nodes.1));
+                &x.nodes.0
+            }
+        };
+        self.attach(attributes, &mut items[start..]);
+    }
+}
