@@ -1,6 +1,16 @@
-//! Equivalence with an independent simulator.
+//! Elaboration checked from outside: the flattened form of a design must simulate like the original. Both are run in an
+//! independent simulator (Debian's `iverilog`, IEEE 1364-2005) under one bench with the same random stimulus, and every
+//! output bit that both know must be equal, every time it is looked at.
+//!
+//! The bench knows clocks and resets by their names. It connects ports by order, so that the simulator itself complains
+//! when the flattened module has lost or resized one. Inputs change one after the other, never together with a clock:
+//! two simulations may order simultaneous changes differently and both be right.
 
+use std::fmt::Write;
+use std::path::{Path, PathBuf};
 use std::process::Command;
+
+use crate::outside;
 
 /// A small reproducible generator (xorshift).
 pub struct Random(u64);
@@ -26,12 +36,332 @@ impl Random {
 #[track_caller]
 pub fn display_lines(source: &str) -> Vec<String> {
     let folder = tempfile::tempdir().expect("a temporary folder");
-    let (input, program) = (folder.path().join("t.v"), folder.path().join("t.vvp"));
+    let input = folder.path().join("t.v");
     std::fs::write(&input, source).expect("written");
-    let compiled =
-        Command::new("iverilog").arg("-g2012").arg("-o").arg(&program).arg(&input).output().expect("iverilog runs");
-    assert!(compiled.status.success(), "iverilog: {}", String::from_utf8_lossy(&compiled.stderr));
-    let run = Command::new("vvp").arg("-n").arg(&program).output().expect("vvp runs");
-    assert!(run.status.success(), "vvp: {}", String::from_utf8_lossy(&run.stderr));
-    String::from_utf8_lossy(&run.stdout).lines().map(str::to_string).collect()
+    simulate(&[input], &[], folder.path()).expect("simulates")
+}
+
+/// Compiles `files` and runs the result in `folder`; the printed lines, or what the simulator had against it. Warnings
+/// about ports count.
+fn simulate(files: &[PathBuf], options: &[String], folder: &Path) -> Result<Vec<String>, String> {
+    let program = folder.join("t.vvp");
+    let compiled = Command::new("iverilog")
+        .args(["-g2012", "-Wportbind", "-Wimplicit", "-o"])
+        .arg(&program)
+        .args(options)
+        .args(files)
+        .output()
+        .map_err(|error| format!("iverilog does not run: {error}"))?;
+    let complaints = String::from_utf8_lossy(&compiled.stderr);
+    let about_ports = complaints.lines().any(|line| line.contains("bench.v") && line.contains("expects"));
+    if !compiled.status.success() || about_ports {
+        let first: Vec<&str> = complaints.lines().take(12).collect();
+        return Err(format!("iverilog complains:\n{}", first.join("\n")));
+    }
+    let run = Command::new("vvp").arg("-n").arg(&program).output().map_err(|error| format!("vvp: {error}"))?;
+    if !run.status.success() {
+        return Err(format!("vvp fails: {}", String::from_utf8_lossy(&run.stderr)));
+    }
+    Ok(String::from_utf8_lossy(&run.stdout).lines().map(str::to_string).collect())
+}
+
+/// A port as the flattened module declares it.
+#[derive(Clone, Debug)]
+struct Port {
+    direction: String,
+    /// `[7:0]` or nothing.
+    range: String,
+    name: String,
+}
+
+impl Port {
+    fn width(&self) -> usize {
+        let Some((left, right)) = self.range.trim_matches(['[', ']']).split_once(':') else { return 1 };
+        let number = |text: &str| text.parse::<i64>().expect("a number");
+        (number(left).abs_diff(number(right)) + 1) as usize
+    }
+
+    fn is_clock(&self) -> bool {
+        let name = self.name.to_lowercase();
+        name.starts_with("clk") || name.ends_with("clk") || name.starts_with("clock")
+    }
+
+    /// `Some(active level)` of a reset.
+    fn reset(&self) -> Option<u8> {
+        let name = self.name.to_lowercase();
+        let is_reset = name.contains("rst") || name.contains("reset");
+        is_reset.then_some(u8::from(!name.ends_with('n')))
+    }
+}
+
+fn ports(flat: &str, top: &str) -> Vec<Port> {
+    let header = format!("module {top} (");
+    let lines = flat.lines().skip_while(|line| !line.starts_with(&header)).skip(1);
+    lines
+        .map_while(|line| {
+            let mut words = line.trim().trim_end_matches(';').split_whitespace();
+            let direction = words.next().filter(|word| matches!(*word, "input" | "output" | "inout"))?.to_string();
+            let rest: Vec<&str> = words.collect();
+            let (range, name) = match rest[..] {
+                [name] => (String::new(), name.to_string()),
+                [range, name] => (range.to_string(), name.to_string()),
+                _ => panic!("an unexpected port: {line}"),
+            };
+            Some(Port { direction, range, name })
+        })
+        .collect()
+}
+
+/// What to compare, and how.
+struct Trial {
+    /// Files and folders given to the product.
+    paths: Vec<PathBuf>,
+    /// Options for both: include folders and defines.
+    options: Vec<String>,
+    /// Files given to the simulator.
+    files: Vec<PathBuf>,
+    top: String,
+    cycles: usize,
+    /// A reset comes about every so many cycles.
+    reset_every: usize,
+    /// Verilog expressions for inputs that would do nothing interesting with plain random values.
+    stimuli: Vec<(&'static str, &'static str)>,
+    /// Outputs that are allowed to be unknown most of the time.
+    mostly_unknown: Vec<&'static str>,
+}
+
+/// How many output bits were compared.
+#[derive(Debug, Default)]
+struct Counts {
+    compared: usize,
+    original_unknown: usize,
+    flat_unknown: usize,
+}
+
+/// The bench: it prints all outputs in binary after the inputs have changed and after each clock edge.
+fn bench(trial: &Trial, ports: &[Port]) -> String {
+    let mut text = String::from("`timescale 1ns/1ns\nmodule bench;\n  integer seed = 7, cycle;\n");
+    for port in ports {
+        let kind = if port.direction == "input" { "reg" } else { "wire" };
+        let _ = writeln!(text, "  {kind} {} {};", port.range, port.name);
+    }
+    let names: Vec<&str> = ports.iter().map(|port| port.name.as_str()).collect();
+    let _ = writeln!(text, "  {} dut ({});", trial.top, names.join(", "));
+    let outputs: Vec<&str> =
+        ports.iter().filter(|port| port.direction != "input").map(|port| port.name.as_str()).collect();
+    let formats = vec!["%b"; outputs.len()].join(" ");
+    let _ = writeln!(text, "  task show; $display(\"{formats}\", {}); endtask", outputs.join(", "));
+    let inputs: Vec<&Port> = ports.iter().filter(|port| port.direction == "input").collect();
+    let clocks: Vec<&Port> = inputs.iter().copied().filter(|port| port.is_clock()).collect();
+    text.push_str("  initial begin\n    #1;\n");
+    for input in &inputs {
+        let _ = writeln!(text, "    {} = {}; #1;", input.name, input.reset().unwrap_or(0));
+    }
+    let _ = writeln!(text, "    for (cycle = 0; cycle < {}; cycle = cycle + 1) begin", trial.cycles);
+    for input in inputs.iter().filter(|port| !port.is_clock()) {
+        let name = &input.name;
+        let words = vec!["$random(seed)"; input.width().div_ceil(32)].join(", ");
+        let custom = trial.stimuli.iter().find(|(port, _)| port == name);
+        if let Some(active) = input.reset() {
+            let every = trial.reset_every;
+            let _ = writeln!(
+                text,
+                "      if (cycle < 4) {name} = {active}; \
+                 else {name} = ($unsigned($random(seed)) % {every} == 0) ? {active} : {}; #1;",
+                1 - active
+            );
+        } else if let Some((_, expression)) = custom {
+            let _ = writeln!(text, "      {name} = {expression}; #1;");
+        } else {
+            let _ = writeln!(
+                text,
+                "      case ($unsigned($random(seed)) % 8) 0: {name} = 0; 1: {name} = ~0; 2: {name} = {name} + 1; \
+                 3: {name} = {name} << 1; default: {name} = {{{words}}}; endcase #1;"
+            );
+        }
+    }
+    text.push_str("      show;\n");
+    for level in [1, 0] {
+        for clock in &clocks {
+            let _ = writeln!(text, "      {} = {level}; #1 show;", clock.name);
+        }
+    }
+    text.push_str("    end\n    $finish(0);\n  end\nendmodule\n");
+    text
+}
+
+/// Runs one trial: the counts, or what is wrong.
+fn run(trial: &Trial) -> Result<Counts, String> {
+    let flat = Command::new(env!("CARGO_BIN_EXE_stillwire"))
+        .arg("flatten")
+        .args(&trial.paths)
+        .args(["--top", &trial.top])
+        .args(&trial.options)
+        .output()
+        .map_err(|error| format!("the product does not run: {error}"))?;
+    if !flat.status.success() {
+        return Err(format!("flatten: {}\n{}", flat.status, String::from_utf8_lossy(&flat.stderr)));
+    }
+    let flat = String::from_utf8_lossy(&flat.stdout).into_owned();
+    let ports = ports(&flat, &trial.top);
+    if ports.is_empty() {
+        return Err(format!("the flattened form has no module `{}` with ports", trial.top));
+    }
+    let folder = tempfile::tempdir().map_err(|error| error.to_string())?;
+    let (bench_file, flat_file) = (folder.path().join("bench.v"), folder.path().join("flat.v"));
+    std::fs::write(&bench_file, bench(trial, &ports)).map_err(|error| error.to_string())?;
+    std::fs::write(&flat_file, &flat).map_err(|error| error.to_string())?;
+    if let Some(keep) = std::env::var_os("STILLWIRE_KEEP") {
+        for file in [&bench_file, &flat_file] {
+            let name = format!("{}.{}", trial.top, file.file_name().unwrap_or_default().to_string_lossy());
+            std::fs::copy(file, Path::new(&keep).join(name)).map_err(|error| error.to_string())?;
+        }
+    }
+    let mut original_files = trial.files.clone();
+    original_files.push(bench_file.clone());
+    let original =
+        simulate(&original_files, &trial.options, folder.path()).map_err(|text| format!("original: {text}"))?;
+    let flat = simulate(&[flat_file, bench_file], &[], folder.path()).map_err(|text| format!("flattened: {text}"))?;
+    let outputs: Vec<&Port> = ports.iter().filter(|port| port.direction != "input").collect();
+    compare(trial, &outputs, &original, &flat)
+}
+
+fn compare(trial: &Trial, outputs: &[&Port], original: &[String], flat: &[String]) -> Result<Counts, String> {
+    if original.len() != flat.len() || original.len() < trial.cycles {
+        return Err(format!("{} and {} lines for {} cycles", original.len(), flat.len(), trial.cycles));
+    }
+    let mut total = Counts::default();
+    let mut compared = vec![0; outputs.len()];
+    let mut moves = vec![false; outputs.len()];
+    let mut wrong = Vec::new();
+    let first: Vec<&str> = original[original.len() / 2].split(' ').collect();
+    for (step, (original, flat)) in original.iter().zip(flat).enumerate() {
+        let (original, flat): (Vec<&str>, Vec<&str>) = (original.split(' ').collect(), flat.split(' ').collect());
+        if original.len() != outputs.len() || flat.len() != outputs.len() {
+            return Err(format!("step {step}: not one word for each output"));
+        }
+        for (at, (original, flat)) in original.iter().zip(&flat).enumerate() {
+            moves[at] |= *original != first[at];
+            let mut differs = false;
+            for (a, b) in original.chars().zip(flat.chars()) {
+                match (a, b) {
+                    ('0' | '1', '0' | '1') => {
+                        total.compared += 1;
+                        compared[at] += 1;
+                        differs |= a != b;
+                    }
+                    ('0' | '1', _) => total.flat_unknown += 1,
+                    _ => total.original_unknown += 1,
+                }
+            }
+            if differs {
+                wrong.push(format!("step {step}, {}: original {original}, flattened {flat}", outputs[at].name));
+            }
+        }
+    }
+    if !wrong.is_empty() {
+        let shown = wrong[..wrong.len().min(8)].join("\n");
+        return Err(format!("{} words differ ({total:?}):\n{shown}", wrong.len()));
+    }
+    for (at, output) in outputs.iter().enumerate() {
+        let bits = original.len() * output.width();
+        if trial.mostly_unknown.contains(&output.name.as_str()) {
+            continue;
+        }
+        if compared[at] * 2 < bits {
+            return Err(format!("{}: only {} of {bits} bits could be compared ({total:?})", output.name, compared[at]));
+        }
+        if !moves[at] {
+            return Err(format!("{}: never changes, so the comparison says nothing", output.name));
+        }
+    }
+    Ok(total)
+}
+
+/// Every file of `fixtures/constructs`: one construct each, the top named like the file. Where the simulator does not
+/// know the construct, `reference/` holds the same function written by hand in plain Verilog.
+#[test]
+#[ignore = "outside: run tests/outside/run"]
+fn constructs_simulate_like_their_flattened_form() {
+    let folder = Path::new(env!("CARGO_MANIFEST_DIR")).join("fixtures/constructs");
+    let mut files: Vec<PathBuf> =
+        std::fs::read_dir(&folder).expect("the folder").map(|entry| entry.expect("an entry").path()).collect();
+    files.retain(|file| file.is_file());
+    files.sort();
+    let only = std::env::var("STILLWIRE_CONSTRUCT").ok();
+    let mut failures = Vec::new();
+    for file in &files {
+        let top = file.file_stem().expect("a name").to_string_lossy().into_owned();
+        if only.as_ref().is_some_and(|only| *only != top) {
+            continue;
+        }
+        let reference = folder.join("reference").join(format!("{top}.v"));
+        let original = if reference.is_file() { reference } else { file.clone() };
+        let trial = Trial {
+            paths: vec![file.clone()],
+            options: Vec::new(),
+            files: vec![original],
+            top: top.clone(),
+            cycles: 600,
+            reset_every: 24,
+            stimuli: Vec::new(),
+            mostly_unknown: Vec::new(),
+        };
+        match run(&trial) {
+            Ok(counts) => println!("{top}: {counts:?}"),
+            Err(message) => failures.push(format!("{top}: {message}")),
+        }
+    }
+    assert!(files.len() >= 40, "only {} constructs", files.len());
+    assert!(failures.is_empty(), "{} of {} constructs:\n{}", failures.len(), files.len(), failures.join("\n\n"));
+}
+
+/// A word that is an instruction often enough to get a processor going: one of the opcodes of the RV32I base set.
+const INSTRUCTION: &str = "($unsigned($random(seed)) % 10 == 0) ? $random(seed) : \
+    {$random(seed), 7'b0} | ({7'h33, 7'h13, 7'h03, 7'h23, 7'h63, 7'h6f, 7'h67, 7'h37, 7'h17, 7'h13} \
+    >> (7 * ($unsigned($random(seed)) % 10)) & 7'h7f)";
+
+fn core(name: &str, files: &[&str], top: &str, stimuli: Vec<(&'static str, &'static str)>) -> Trial {
+    let folder = outside::data().join(name);
+    let files: Vec<PathBuf> = files.iter().map(|file| folder.join(file)).collect();
+    Trial {
+        paths: files.clone(),
+        options: Vec::new(),
+        files,
+        top: top.to_string(),
+        cycles: 5_000,
+        reset_every: 150,
+        stimuli,
+        mostly_unknown: Vec::new(),
+    }
+}
+
+#[track_caller]
+fn check_core(trial: &Trial) {
+    match run(trial) {
+        Ok(counts) => println!("{}: {counts:?}", trial.top),
+        Err(message) => panic!("{}: {message}", trial.top),
+    }
+}
+
+#[test]
+#[ignore = "outside: run tests/outside/run"]
+fn picorv32_simulates_like_its_flattened_form() {
+    check_core(&core("picorv32", &["picorv32.v"], "picorv32_axi", vec![("mem_axi_rdata", INSTRUCTION)]));
+}
+
+#[test]
+#[ignore = "outside: run tests/outside/run"]
+fn serv_simulates_like_its_flattened_form() {
+    let folder = outside::data().join("serv/rtl");
+    let mut files: Vec<PathBuf> = std::fs::read_dir(folder)
+        .expect("the core")
+        .map(|entry| entry.expect("an entry").path())
+        .filter(|path| path.extension().is_some_and(|extension| extension == "v"))
+        .collect();
+    files.sort();
+    let mut trial = core("serv", &[], "serv_rf_top", vec![("i_ibus_rdt", INSTRUCTION)]);
+    trial.paths = files.clone();
+    trial.files = files;
+    check_core(&trial);
 }
