@@ -1,0 +1,105 @@
+//! Where every byte of a preprocessed text came from. The text is a sequence of segments: one copied byte for byte from
+//! a file, or one that stands as a whole for a place (a macro's expansion maps to the macro's use).
+//!
+//! Invariant: segments are sorted by their start and cover the text without gaps, because every byte is pushed together
+//! with its origin.
+
+use super::{FileId, Places, Span};
+
+#[derive(Clone, Copy, Debug)]
+struct Segment {
+    /// Offset in the preprocessed text.
+    start: u32,
+    origin: Span,
+    /// Copied byte for byte, so that offsets inside the segment carry over.
+    verbatim: bool,
+}
+
+/// A preprocessed text with its way back.
+#[derive(Clone, Default, Debug)]
+pub struct MappedText {
+    pub text: String,
+    segments: Vec<Segment>,
+}
+
+impl MappedText {
+    /// Appends `text`, which stands at `start` of `file`.
+    pub fn push_verbatim(&mut self, text: &str, file: FileId, start: usize) {
+        if text.is_empty() {
+            return;
+        }
+        let origin = Span { file, start: start as u32, end: (start + text.len()) as u32 };
+        self.segments.push(Segment { start: self.text.len() as u32, origin, verbatim: true });
+        self.text.push_str(text);
+    }
+
+    /// Appends `text`, all of which stands for the place `origin`.
+    pub fn push_whole(&mut self, text: &str, origin: Span) {
+        if text.is_empty() {
+            return;
+        }
+        let continues = self.segments.last().is_some_and(|last| !last.verbatim && last.origin == origin);
+        if !continues {
+            self.segments.push(Segment { start: self.text.len() as u32, origin, verbatim: false });
+        }
+        self.text.push_str(text);
+    }
+
+    /// The original place of one byte; `None` only for an empty text. Past the end it is the last byte's place.
+    fn byte(&self, offset: usize) -> Option<Span> {
+        let index = self.segments.partition_point(|segment| segment.start as usize <= offset).saturating_sub(1);
+        let segment = self.segments.get(index)?;
+        if !segment.verbatim {
+            return Some(segment.origin);
+        }
+        let into = (offset as u32).saturating_sub(segment.start);
+        let start = (segment.origin.start + into).min(segment.origin.end);
+        Some(Span { file: segment.origin.file, start, end: (start + 1).min(segment.origin.end) })
+    }
+
+    /// The original place of a range; `None` only for an empty text.
+    pub fn place(&self, offset: usize, len: usize) -> Option<Span> {
+        let first = self.byte(offset)?;
+        if len == 0 {
+            return Some(Span { end: first.start, ..first });
+        }
+        let last = self.byte(offset + len - 1)?;
+        Some(if last.file == first.file && last.start >= first.start { first.to(last) } else { first })
+    }
+}
+
+/// The way back for one chunk of a preprocessed text, which the parser sees behind a prefix of `prefix` bytes.
+pub struct ChunkPlaces<'a> {
+    pub text: &'a MappedText,
+    /// Offset of the chunk in `text`.
+    pub start: usize,
+    pub prefix: usize,
+    /// The file that the text belongs to, for an empty text.
+    pub file: FileId,
+}
+
+impl Places for ChunkPlaces<'_> {
+    fn place(&self, offset: usize, len: usize) -> Span {
+        let offset = self.start + offset.saturating_sub(self.prefix);
+        self.text.place(offset, len).unwrap_or(Span { file: self.file, start: 0, end: 0 })
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn ranges_cross_segments() {
+        let file = FileId::new(0);
+        let mut text = MappedText::default();
+        text.push_verbatim("abc ", file, 10);
+        text.push_whole("expanded", Span { file, start: 14, end: 18 });
+        text.push_verbatim(" z", file, 18);
+        let place = |offset, len| text.place(offset, len).map(|span| (span.start, span.end));
+        assert_eq!(place(1, 2), Some((11, 13)));
+        assert_eq!(place(5, 3), Some((14, 18)));
+        assert_eq!(place(0, 14), Some((10, 20)));
+        assert_eq!(place(13, 1), Some((19, 20)));
+    }
+}

@@ -1,0 +1,105 @@
+//! Parses one piece of a preprocessed text and converts its concrete tree, which is dropped at once: it takes hundreds of
+//! bytes for each byte of source. Only this file and the converter know the parser.
+//!
+//! Sources older than SystemVerilog use its keywords as names (`bit`, `do`, `final`), so a piece of a `.v` file that does
+//! not parse is tried again with the keywords of IEEE 1364-2005.
+
+use std::panic::{AssertUnwindSafe, catch_unwind};
+
+use super::chunks::{Chunk, Refusal};
+use super::origin::{ChunkPlaces, MappedText};
+use super::{FileId, Span};
+use crate::diagnostic::{Diagnostic, Kind};
+use crate::syntax::{ast, convert};
+
+const OLD_KEYWORDS: &str = "`begin_keywords \"1364-2005\" ";
+
+/// Parses `chunk` of `text`, which belongs to `file`.
+///
+/// # Errors
+/// The one diagnostic of a piece that cannot be parsed.
+pub fn parse(
+    text: &MappedText,
+    chunk: &Chunk,
+    file: FileId,
+    may_be_old: bool,
+) -> Result<(ast::Unit, Vec<Diagnostic>), Box<Diagnostic>> {
+    if let Some(refusal) = chunk.refused {
+        return Err(refused(text, refusal, file));
+    }
+    let first = parse_behind(&chunk.prefix, text, chunk, file);
+    if first.is_ok() || !may_be_old || chunk.prefix.contains("begin_keywords") {
+        return first;
+    }
+    // The first error is the one to show: it speaks of the newer language, which includes the older one.
+    parse_behind(&format!("{OLD_KEYWORDS}{}", chunk.prefix), text, chunk, file).or(first)
+}
+
+fn parse_behind(
+    prefix: &str,
+    text: &MappedText,
+    chunk: &Chunk,
+    file: FileId,
+) -> Result<(ast::Unit, Vec<Diagnostic>), Box<Diagnostic>> {
+    let piece = [prefix, &text.text[chunk.start..chunk.end], "\n"].concat();
+    let places = ChunkPlaces { text, start: chunk.start, prefix: prefix.len(), file };
+    let place = |offset: usize| {
+        let at = (chunk.start + offset.saturating_sub(prefix.len())).min(chunk.end.saturating_sub(1));
+        (at, text.place(at, 1).unwrap_or(Span { file, start: 0, end: 0 }))
+    };
+    // The parser is not ours, and a panic in it must not lose the other files.
+    let parsed = catch_unwind(AssertUnwindSafe(|| {
+        let (preprocessed, defines) =
+            sv_parser::preprocess_str(&piece, "", &sv_parser::Defines::new(), NO_FOLDERS, true, false, 0, 0)?;
+        if preprocessed.text() != piece {
+            return Err(sv_parser::Error::Preprocess(None));
+        }
+        sv_parser::parse_sv_pp(preprocessed, defines, false).map(|(tree, _)| tree)
+    }));
+    let tree = match parsed {
+        Ok(Ok(tree)) => tree,
+        Ok(Err(sv_parser::Error::Parse(at) | sv_parser::Error::Preprocess(at))) => {
+            let (offset, span) = place(at.map_or(piece.len(), |(_, offset)| offset));
+            return Err(syntax_error(&text.text[..chunk.end], offset, span));
+        }
+        Ok(Err(error)) => {
+            let message = format!("this part of the file cannot be parsed: {error}");
+            return Err(Box::new(Diagnostic::new(Kind::Incomplete, "syntax", message, Some(place(prefix.len()).1))));
+        }
+        Err(_) => {
+            let message = "the parser gave up on this module or package";
+            let diagnostic = Diagnostic::new(Kind::Incomplete, "syntax", message, Some(place(prefix.len()).1));
+            return Err(Box::new(diagnostic.with_help("this is a defect of the parser; please report the file")));
+        }
+    };
+    Ok(convert(&tree, &places, file))
+}
+
+const NO_FOLDERS: &[&str] = &[];
+
+fn syntax_error(text: &str, offset: usize, span: Span) -> Box<Diagnostic> {
+    let rest = text.get(offset..).unwrap_or("").trim_start();
+    let length = rest.find(|c: char| !c.is_alphanumeric() && c != '_').unwrap_or(rest.len());
+    let length = if length == 0 { rest.chars().next().map_or(0, char::len_utf8) } else { length };
+    let message = match &rest[..length] {
+        "" => "syntax error: the text ends too early".to_string(),
+        token => format!("syntax error at `{token}`"),
+    };
+    let help = "the module or package around this place is left out; everything before it was understood";
+    Box::new(Diagnostic::new(Kind::Incomplete, "syntax", message, Some(span)).with_help(help))
+}
+
+fn refused(text: &MappedText, refusal: Refusal, file: FileId) -> Box<Diagnostic> {
+    let (at, message, help) = match refusal {
+        Refusal::TooDeep(at) => (
+            at,
+            "this is nested too deeply to be parsed: more than 1,000 operators or some 200 brackets around one place",
+            "split the expression or statement; the module around it is left out",
+        ),
+        Refusal::TooLong(at) => {
+            (at, "this module is longer than 4 MiB", "split it into several modules; it is left out of the analysis")
+        }
+    };
+    let place = text.place(at, 1).unwrap_or(Span { file, start: 0, end: 0 });
+    Box::new(Diagnostic::new(Kind::Incomplete, "size", message, Some(place)).with_help(help))
+}
