@@ -84,7 +84,7 @@ pub struct Path {
     pub steps: Vec<PathStep>,
     /// Gates strictly after the stem and strictly before the meeting gate; wires do not count, an operator counts as one.
     pub gates: usize,
-    /// Inverting gates among them.
+    /// Those among them whose output changes the other way than the step before.
     pub inversions: usize,
 }
 

@@ -92,16 +92,16 @@ fn and(inputs: &[Wave]) -> Wave {
     }
 }
 
-/// The waveforms of all nodes that `target` depends on. Sources, unknown constants and nodes on combinational loops
+/// The waveforms of all nodes of `order`. Sources, unknown constants and nodes on combinational loops
 /// take their values from `before` and `after`; what is missing there holds 0 (or, missing in `after`, its value in
-/// `before`).
+/// `before`). With `ignore_operators` the exits of operators are clean.
 pub(super) fn waves(
     graph: &Graph,
+    order: &Order,
     before: &BTreeMap<NodeId, bool>,
     after: &BTreeMap<NodeId, bool>,
-    target: NodeId,
+    ignore_operators: bool,
 ) -> BTreeMap<NodeId, Wave> {
-    let order = Order::new(graph, &[target]);
     let mut waves = BTreeMap::new();
     let mut inputs = Vec::new();
     for (&node, &looped) in order.nodes.iter().zip(&order.looped) {
@@ -117,6 +117,7 @@ pub(super) fn waves(
             (_, _) if looped => free(),
             (NodeKind::Const(value), _) => Wave::constant(value),
             (NodeKind::Unknown | NodeKind::Source(_), _) => free(),
+            (NodeKind::OpOut(_), &[driver]) if ignore_operators => Wave { h: false, ..driver },
             (NodeKind::Wire | NodeKind::OpOut(_), &[driver]) => driver,
             (NodeKind::OpIn(_), &[driver]) => Wave { h: driver.h || driver.changes(), ..driver },
             (NodeKind::Wire | NodeKind::OpOut(_) | NodeKind::OpIn(_), _) => free(),
@@ -131,5 +132,6 @@ pub(super) fn waves(
 /// The waveform of `node` when the sources go from `before` to `after`. Sources (and unknown constants, and nodes on
 /// combinational loops, which count as free) that are missing hold 0.
 pub fn waveform(graph: &Graph, before: &BTreeMap<NodeId, bool>, after: &BTreeMap<NodeId, bool>, node: NodeId) -> Wave {
-    waves(graph, before, after, node).get(&node).copied().unwrap_or(Wave::constant(false))
+    let order = Order::new(graph, &[node]);
+    waves(graph, &order, before, after, false).get(&node).copied().unwrap_or(Wave::constant(false))
 }

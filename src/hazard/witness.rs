@@ -5,6 +5,7 @@
 //! whatever the sources let go may hold, the target shows the same three bits.
 
 use std::collections::BinaryHeap;
+use std::sync::LazyLock;
 
 use super::cone::{Cone, Edge, Op};
 use super::parity::Region;
@@ -93,59 +94,84 @@ impl Lane<'_> {
 
     /// Drops every node of `holds` without which the waveform of `root` stays determined.
     fn drop_idle(&self, root: Edge, kept: &[usize], holds: &mut Vec<usize>) {
-        let mut sets: Vec<u8> = vec![ANY; kept.len()];
-        let mut open: Vec<bool> = vec![false; kept.len()];
+        let mut lifted = Lifted::new(self, kept);
         let mut candidates = holds.clone();
         candidates.sort_unstable_by_key(|&node| self.cone.origin[node]);
-        for candidate in candidates {
-            let Ok(at) = kept.binary_search(&candidate) else { continue };
-            open[at] = true;
-            for (position, &node) in kept.iter().enumerate() {
-                sets[position] = if !matches!(self.cone.ops[node], Op::Free { .. }) {
-                    self.lifted(node, kept, &sets)
-                } else if open[position] {
-                    STILL
-                } else {
-                    only(self.wave(Edge::new(node, false)))
-                };
+        candidates.retain(|&candidate| lifted.stays_determined_without(candidate, root.node()));
+        holds.retain(|node| !candidates.contains(node));
+    }
+}
+
+/// The kept nodes under the algebra lifted to sets of waveforms: each node has the set of those it may show, given that
+/// the sources dropped so far are any clean constant and nodes that were not kept are anything at all.
+struct Lifted<'a> {
+    cone: &'a Cone,
+    kept: &'a [usize],
+    sets: Vec<u8>,
+    /// Pins by position in `kept`, `None` for a node that was not kept; in one list, with where each node's begin.
+    pins: Vec<(Option<usize>, bool)>,
+    starts: Vec<usize>,
+    dirty: Vec<bool>,
+}
+
+impl<'a> Lifted<'a> {
+    fn new(lane: &Lane<'a>, kept: &'a [usize]) -> Self {
+        let cone = lane.cone;
+        let mut pins = Vec::new();
+        let mut starts = vec![0];
+        for &node in kept {
+            let fanin = cone.fanin(node).iter();
+            pins.extend(fanin.map(|pin| (kept.binary_search(&pin.node()).ok(), pin.inverted())));
+            starts.push(pins.len());
+        }
+        let sets = kept.iter().map(|&node| only(lane.wave(Edge::new(node, false)))).collect();
+        Self { cone, kept, sets, pins, starts, dirty: vec![false; kept.len()] }
+    }
+
+    /// Drops `candidate` if `root` keeps its one waveform without it, and tells whether it did.
+    fn stays_determined_without(&mut self, candidate: usize, root: usize) -> bool {
+        let Ok(at) = self.kept.binary_search(&candidate) else { return false };
+        let mut changed = vec![(at, self.sets[at])];
+        self.sets[at] = STILL;
+        self.dirty[at] = true;
+        for position in at + 1..self.kept.len() {
+            let pins = &self.pins[self.starts[position]..self.starts[position + 1]];
+            if !pins.iter().any(|&(pin, _)| pin.is_some_and(|pin| self.dirty[pin])) {
+                continue;
             }
-            let determined = kept.binary_search(&root.node()).is_ok_and(|at| sets[at].count_ones() == 1);
-            if determined {
-                holds.retain(|&node| node != candidate);
-            } else {
-                open[at] = false;
+            let set = self.set(position);
+            if set != self.sets[position] {
+                changed.push((position, std::mem::replace(&mut self.sets[position], set)));
+                self.dirty[position] = true;
             }
         }
+        let determined = self.kept.binary_search(&root).is_ok_and(|at| self.sets[at].count_ones() == 1);
+        for (position, before) in changed {
+            self.dirty[position] = false;
+            if !determined {
+                self.sets[position] = before;
+            }
+        }
+        determined
     }
 
     /// All waveforms a node can have when its pins have any of theirs.
-    fn lifted(&self, node: usize, kept: &[usize], sets: &[u8]) -> u8 {
-        let pins = self.cone.fanin(node).iter().map(|pin| match kept.binary_search(&pin.node()) {
-            Ok(at) if pin.inverted() => inverted(sets[at]),
-            Ok(at) => sets[at],
-            Err(_) => ANY,
+    fn set(&self, position: usize) -> u8 {
+        let pins = &self.pins[self.starts[position]..self.starts[position + 1]];
+        let pins = pins.iter().map(|&(pin, flip)| match pin {
+            Some(at) if flip => inverted(self.sets[at]),
+            Some(at) => self.sets[at],
+            None => ANY,
         });
-        let fold = |kind: GateKind, neutral: bool| {
-            pins.clone().fold(only(Wave::constant(neutral)), |all, set| {
-                let mut result = 0;
-                for left in members(all) {
-                    for right in members(set) {
-                        result |= only(wave::gate(kind, &[left, right]));
-                    }
-                }
-                result
-            })
-        };
-        match self.cone.ops[node] {
-            Op::Zero => only(Wave::constant(false)),
-            Op::Free { .. } => STILL,
-            Op::And => fold(GateKind::And, true),
-            Op::Xor => fold(GateKind::Xor, false),
+        match self.cone.ops[self.kept[position]] {
+            Op::Zero | Op::Free { .. } => self.sets[position],
+            Op::And => pins.fold(only(Wave::constant(true)), |all, set| PAIRS.and(all, set)),
+            Op::Xor => pins.fold(only(Wave::constant(false)), |all, set| PAIRS.xor(all, set)),
             Op::Enter => {
-                let moved = pins.clone().flat_map(members).map(|pin| Wave { h: pin.moves(), ..pin });
+                let moved = pins.flat_map(members).map(|pin| Wave { h: pin.moves(), ..pin });
                 moved.fold(0, |all, wave| all | only(wave))
             }
-            Op::Calm => pins.clone().flat_map(members).fold(0, |all, pin| all | only(Wave { h: false, ..pin })),
+            Op::Calm => pins.flat_map(members).fold(0, |all, pin| all | only(Wave { h: false, ..pin })),
             Op::Table(table) => {
                 let table = &self.cone.tables[table as usize];
                 let pins: Vec<u8> = pins.collect();
@@ -175,16 +201,57 @@ fn only(wave: Wave) -> u8 {
     1 << (u8::from(wave.i) | u8::from(wave.f) << 1 | u8::from(wave.h) << 2)
 }
 
-fn members(set: u8) -> impl Iterator<Item = Wave> {
-    (0..8u8).filter(move |index| set >> index & 1 == 1).map(|index| Wave {
-        i: index & 1 == 1,
-        f: index & 2 == 2,
-        h: index & 4 == 4,
-    })
+fn member(index: u8) -> Wave {
+    Wave { i: index & 1 == 1, f: index & 2 == 2, h: index & 4 == 4 }
 }
 
+fn members(set: u8) -> impl Iterator<Item = Wave> {
+    (0..8u8).filter(move |index| set >> index & 1 == 1).map(member)
+}
+
+/// Inversion swaps waveform 0 with 3, 1 with 2, 4 with 7 and 5 with 6.
 fn inverted(set: u8) -> u8 {
-    members(set).fold(0, |all, wave| all | only(wave.inverted()))
+    (set >> 3 & 0x11) | (set >> 1 & 0x22) | (set << 1 & 0x44) | (set << 3 & 0x88)
+}
+
+/// AND and XOR of every two sets of waveforms.
+struct Pairs {
+    and: Vec<u8>,
+    xor: Vec<u8>,
+}
+
+static PAIRS: LazyLock<Pairs> =
+    LazyLock::new(|| Pairs { and: Pairs::table(GateKind::And), xor: Pairs::table(GateKind::Xor) });
+
+impl Pairs {
+    fn and(&self, left: u8, right: u8) -> u8 {
+        self.and[usize::from(left) << 8 | usize::from(right)]
+    }
+
+    fn xor(&self, left: u8, right: u8) -> u8 {
+        self.xor[usize::from(left) << 8 | usize::from(right)]
+    }
+
+    fn table(kind: GateKind) -> Vec<u8> {
+        let mut table = vec![0u8; 1 << 16];
+        for left in 1..256usize {
+            for right in 1..256usize {
+                // Sets of one each by the algebra, larger ones as unions of smaller ones.
+                let rest = [(left & (left - 1), right), (left, right & (right - 1))];
+                table[left << 8 | right] = match rest.into_iter().find(|&(left, right)| left != 0 && right != 0) {
+                    Some((smaller, same)) if same == right => {
+                        table[smaller << 8 | right] | table[(left ^ smaller) << 8 | right]
+                    }
+                    Some((_, smaller)) => table[left << 8 | smaller] | table[left << 8 | (right ^ smaller)],
+                    None => {
+                        let pins = [left, right].map(|set| member(set.trailing_zeros() as u8));
+                        only(wave::gate(kind, &pins))
+                    }
+                };
+            }
+        }
+        table
+    }
 }
 
 /// Where in `lanes` of a response a root shows hazards of each kind.

@@ -10,17 +10,17 @@ use stillwire::hazard::{HazardKind, Options, TargetVerdict, Undecided, decide, w
 
 type Bits = (bool, bool, bool);
 
-struct Random(u64);
+pub struct Random(pub u64);
 
 impl Random {
-    fn below(&mut self, bound: usize) -> usize {
+    pub fn below(&mut self, bound: usize) -> usize {
         self.0 ^= self.0 << 13;
         self.0 ^= self.0 >> 7;
         self.0 ^= self.0 << 17;
         (self.0 >> 33) as usize % bound
     }
 
-    fn chance(&mut self, percent: usize) -> bool {
+    pub fn chance(&mut self, percent: usize) -> bool {
         self.below(100) < percent
     }
 }
@@ -50,7 +50,7 @@ fn random_table(random: &mut Random, name: String) -> Table {
     Table { name, rows }
 }
 
-fn random_graph(random: &mut Random, sources: usize, gates: usize) -> (Graph, Vec<NodeId>) {
+pub fn random_graph(random: &mut Random, sources: usize, gates: usize) -> (Graph, Vec<NodeId>) {
     let mut builder = GraphBuilder::new();
     let top = builder.instance(None, "top", "top", None);
     let site = Site { instance: top, span: None };
@@ -117,7 +117,7 @@ fn random_graph(random: &mut Random, sources: usize, gates: usize) -> (Graph, Ve
     (builder.freeze(), nodes)
 }
 
-fn bare_wire(builder: &mut GraphBuilder, top: stillwire::graph::InstanceId, number: usize) -> NodeId {
+pub fn bare_wire(builder: &mut GraphBuilder, top: stillwire::graph::InstanceId, number: usize) -> NodeId {
     let span = stillwire::source::Span { file: stillwire::source::FileId::new(0), start: 0, end: 0 };
     let net = builder.net(top, &format!("w{number}"), span, vec![String::new()], true);
     builder.net_bits(net)[0]
