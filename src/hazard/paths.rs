@@ -56,7 +56,8 @@ impl<'a> Trace<'a> {
                 inner.insert(node);
             }
         }
-        let looped = order.nodes.iter().zip(&order.looped).filter(|&(_, &looped)| looped).map(|(&node, _)| node).collect();
+        let looped =
+            order.nodes.iter().zip(&order.looped).filter(|&(_, &looped)| looped).map(|(&node, _)| node).collect();
         Self { graph, waves, rank, inner, looped }
     }
 

@@ -7,6 +7,7 @@ mod formula;
 mod graph;
 mod operators;
 mod outside;
+mod paths;
 mod pipeline;
 mod published;
 mod random_circuits;

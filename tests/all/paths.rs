@@ -63,7 +63,10 @@ fn check(graph: &Graph, target: NodeId, witness: &Witness, paths: &Paths) {
             way.steps[1..way.steps.len() - 1].iter().map(|step| step.node).collect()
         };
         assert!(inside(left).is_disjoint(&inside(right)), "the stem is the last common node");
-        if matches!(graph.kind(paths.meet), NodeKind::Gate(GateKind::And | GateKind::Nand | GateKind::Or | GateKind::Nor)) {
+        if matches!(
+            graph.kind(paths.meet),
+            NodeKind::Gate(GateKind::And | GateKind::Nand | GateKind::Or | GateKind::Nor)
+        ) {
             assert_ne!(last[0], last[1], "one rises, one falls");
         }
     }
