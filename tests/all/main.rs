@@ -11,5 +11,6 @@ mod paths;
 mod pipeline;
 mod published;
 mod random_circuits;
+mod signoff;
 mod simulator;
 mod transport;
