@@ -3,6 +3,7 @@
 mod decide;
 mod decision;
 mod explorer;
+mod fixtures;
 mod formula;
 mod graph;
 mod operators;
@@ -11,6 +12,9 @@ mod paths;
 mod pipeline;
 mod published;
 mod random_circuits;
+mod report;
+mod rule_pages;
 mod signoff;
 mod simulator;
+mod sources;
 mod transport;
