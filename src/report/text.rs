@@ -31,6 +31,9 @@ impl Default for Style {
 /// Findings beyond the first of one net are one line each; so many of them.
 const SHOWN_HAZARDS: usize = 6;
 
+/// Columns of a wrapped note.
+const WIDTH: usize = 100;
+
 /// Source lines longer than this are generated text and are not shown.
 const LONGEST_LINE: usize = 400;
 
@@ -78,7 +81,7 @@ fn of_finding(sources: &SourceSet, finding: &Finding) -> Diagnostic<FileId> {
     }
     if let Some(lead) = finding.hazards.first() {
         notes.push(waveform::render(lead, &finding.net));
-        notes.push(format!("effect: {}", lead.harm));
+        notes.push(wrapped(&format!("effect: {}", lead.harm)));
     }
     if finding.hazards.len() > 1 {
         notes.push(others(finding));
@@ -88,12 +91,28 @@ fn of_finding(sources: &SourceSet, finding: &Finding) -> Diagnostic<FileId> {
             if cover.proven { "proven: with it, no change of one signal can glitch this net" } else { "not proven" };
         notes.push(format!("cover ({proven}):\n  {}", cover.verilog));
     }
-    notes.extend(finding.notes.iter().cloned());
+    notes.extend(finding.notes.iter().map(|note| wrapped(note)));
     Diagnostic::new(level(finding.severity))
         .with_code(finding.rule.name())
         .with_message(&finding.message)
         .with_labels(labels)
         .with_notes(notes)
+}
+
+/// Sentences broken into lines of a readable length. A word is never broken, so that names can be searched for.
+fn wrapped(text: &str) -> String {
+    let mut lines: Vec<String> = vec![String::new()];
+    for word in text.split(' ') {
+        match lines.last_mut() {
+            Some(line) if line.is_empty() => line.push_str(word),
+            Some(line) if line.chars().count() + word.chars().count() < WIDTH => {
+                line.push(' ');
+                line.push_str(word);
+            }
+            _ => lines.push(format!("  {word}")),
+        }
+    }
+    lines.join("\n")
 }
 
 /// The hazards behind the lead, one line each, by what they do.
@@ -127,7 +146,7 @@ fn of_message(sources: &SourceSet, message: &Message) -> Diagnostic<FileId> {
     for (at, text) in &message.also {
         place(sources, *at, text, false, &mut labels, &mut notes);
     }
-    notes.extend(message.help.iter().map(|help| format!("to do: {help}")));
+    notes.extend(message.help.iter().map(|help| wrapped(&format!("to do: {help}"))));
     Diagnostic::new(level(message.severity)).with_message(&message.text).with_labels(labels).with_notes(notes)
 }
 

@@ -16,7 +16,7 @@ pub(super) fn finding(graph: &Graph, verdict: &TargetVerdict, uses: &[Use], opti
     let cells = words::cells(graph, uses);
     let net = super::names::name(graph, verdict.target);
     let what = format!("the clock `{net}` of {cells}");
-    let judge = |kind| judge(&cells, kind);
+    let judge = |kind| judge(&cells, uses, kind);
     evidence::finding(
         graph,
         verdict,
@@ -25,10 +25,10 @@ pub(super) fn finding(graph: &Graph, verdict: &TargetVerdict, uses: &[Use], opti
     )
 }
 
-fn judge(cells: &str, kind: HazardKind) -> (Severity, String) {
+fn judge(cells: &str, uses: &[Use], kind: HazardKind) -> (Severity, String) {
     let harm = match kind {
         HazardKind::Static0 | HazardKind::Static1 => {
-            format!("clocks {cells} although no edge was due; a short pulse may clock some of them and miss others")
+            format!("clocks {cells} although no edge was due{}", words::short_pulse(uses))
         }
         HazardKind::Dynamic => format!("clocks {cells} more than once where one edge was due"),
     };

@@ -81,3 +81,10 @@ pub(super) fn worse(first: (Severity, String), second: (Severity, String)) -> (S
     let text = if first.1 == second.1 { first.1.clone() } else { format!("{}; {}", first.1, second.1) };
     (first.0.max(second.0), text)
 }
+
+/// What a pulse too short for its pins does, if there are several.
+pub(super) fn short_pulse(uses: &[Use]) -> &'static str {
+    let mut cells = uses.iter().map(|one| one.cell);
+    let first = cells.next();
+    if cells.any(|cell| Some(cell) != first) { "; a short pulse may take some of them and miss others" } else { "" }
+}
