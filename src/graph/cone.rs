@@ -126,7 +126,11 @@ impl Cone {
             }
             self.kinds.push(kind);
             self.fanins.push(
-                graph.fanin(node).iter().map(|driver| *self.cuts.get(driver).unwrap_or(&self.copies[driver])).collect(),
+                graph
+                    .fanin(node)
+                    .iter()
+                    .map(|driver| *self.cuts.get(driver).unwrap_or_else(|| &self.copies[driver]))
+                    .collect(),
             );
             self.sites.push(mapped(graph.site(node), &instances));
         }
@@ -171,6 +175,47 @@ impl Cone {
     pub fn constant(&mut self, value: bool, near: NodeId) -> NodeId {
         let site = self.sites[near.index()];
         self.append(NodeKind::Const(value), Vec::new(), site)
+    }
+
+    /// Ties the copy of a source to a clean constant.
+    pub fn tie(&mut self, source: NodeId, value: bool) {
+        if let Some(copy) = self.copy_of(source).filter(|copy| self.fanins[copy.index()].is_empty()) {
+            self.kinds[copy.index()] = NodeKind::Const(value);
+        }
+    }
+
+    /// Copies the logic of `targets` once more, reading `instead` where it answers; other nodes without fan-in are
+    /// shared with the first copy, which must have them. Returns the new targets.
+    pub fn repeat(
+        &mut self,
+        graph: &Graph,
+        targets: &[NodeId],
+        instead: impl Fn(NodeId) -> Option<NodeId>,
+    ) -> Vec<NodeId> {
+        let mut again: BTreeMap<NodeId, NodeId> = BTreeMap::new();
+        let mut todo: Vec<NodeId> = targets.to_vec();
+        let mut members: Vec<NodeId> = Vec::new();
+        while let Some(node) = todo.pop() {
+            if again.contains_key(&node) {
+                continue;
+            }
+            let ready = instead(node).or_else(|| self.read_of(node).filter(|_| graph.fanin(node).is_empty()));
+            let copy = ready.unwrap_or_else(|| {
+                members.push(node);
+                todo.extend_from_slice(graph.fanin(node));
+                let near = self.copies.get(&node).map_or(0, |copy| copy.index());
+                let site = self.sites[near];
+                self.append(NodeKind::Unknown, Vec::new(), site)
+            });
+            again.insert(node, copy);
+        }
+        for node in members {
+            let copy = again[&node].index();
+            // Tables and operators were numbered anew by the first copy.
+            self.kinds[copy] = self.copies.get(&node).map_or(NodeKind::Unknown, |first| self.kinds[first.index()]);
+            self.fanins[copy] = graph.fanin(node).iter().map(|pin| again[pin]).collect();
+        }
+        targets.iter().map(|target| again[target]).collect()
     }
 
     /// Freezes the copy.

@@ -1,5 +1,13 @@
-//! What a combinational loop does: see [`LoopVerdict`].
+//! What a combinational loop does: see [`LoopVerdict`]. The loop is cut at a small set of feedback nodes ([`cut`]); its
+//! stable states are counted out ([`count`]) or searched with the solver ([`search`]); a loop that stores is asked
+//! whether a hazard of a next-state function can lose the state ([`loss`]).
 
+mod count;
+mod cut;
+mod loss;
+mod search;
+
+use self::cut::Cut;
 use super::Options;
 use crate::graph::{Graph, NodeId, cycles};
 
@@ -8,7 +16,8 @@ use crate::graph::{Graph, NodeId, cycles};
 pub struct LoopVerdict {
     /// All nodes of the component, sorted.
     pub nodes: Vec<NodeId>,
-    /// Nodes outside that drive it (roots of the side inputs), sorted.
+    /// The free inputs of the analysis, sorted: the sources behind its side inputs, other loops counting as sources;
+    /// when these are too many the roots of the side inputs themselves, taken as independent. Constants are left out.
     pub inputs: Vec<NodeId>,
     pub behaviours: Vec<Behaviour>,
     /// Whether a single input change can lose the stored state through a hazard of the next-state function; `None`
@@ -22,7 +31,7 @@ pub struct LoopVerdict {
 #[derive(Clone, PartialEq, Eq, Debug)]
 pub struct Behaviour {
     pub kind: BehaviourKind,
-    /// Values of `inputs` for which it happens; empty for `Settles` and `Undecided`.
+    /// Values of those `inputs` that matter; empty for `Settles` and `Undecided`.
     pub inputs: Vec<(NodeId, bool)>,
     /// For `Stores`: two stable states as values of the feedback nodes.
     pub states: Vec<Vec<(NodeId, bool)>>,
@@ -54,6 +63,8 @@ impl BehaviourKind {
 /// A single input change that can lose the state of a storing loop.
 #[derive(Clone, PartialEq, Eq, Debug)]
 pub struct StateLoss {
+    /// The feedback node whose next-state function shows the hazard.
+    pub node: NodeId,
     pub source: NodeId,
     pub witness: super::Witness,
     pub cover: Option<super::Cover>,
@@ -61,16 +72,30 @@ pub struct StateLoss {
 
 /// The verdict on every combinational loop, in order of the smallest node.
 pub fn loops(graph: &Graph, options: &Options) -> Vec<LoopVerdict> {
-    let _ = options;
-    let undecided = Behaviour { kind: BehaviourKind::Undecided, inputs: Vec::new(), states: Vec::new() };
-    cycles::components(graph)
-        .iter()
-        .map(|nodes| LoopVerdict {
-            nodes: nodes.to_vec(),
-            inputs: Vec::new(),
-            behaviours: vec![undecided.clone()],
-            loses_state: None,
-            loss_decided: false,
+    let components = cycles::components(graph);
+    (0..components.len())
+        .map(|index| {
+            let mut verdict = LoopVerdict {
+                nodes: components.nodes(index).to_vec(),
+                inputs: Vec::new(),
+                behaviours: Vec::new(),
+                loses_state: None,
+                loss_decided: false,
+            };
+            let Some(cut) = Cut::new(graph, &components, index) else {
+                let kind = BehaviourKind::Undecided;
+                verdict.behaviours.push(Behaviour { kind, inputs: Vec::new(), states: Vec::new() });
+                return verdict;
+            };
+            verdict.inputs = cut.inputs.iter().map(|input| cut.originals[input]).collect();
+            verdict.behaviours = count::behaviours(&cut).unwrap_or_else(|| search::behaviours(&cut, options));
+            let shows = |kind| verdict.behaviours.iter().any(|behaviour| behaviour.kind == kind);
+            if shows(BehaviourKind::Stores) {
+                (verdict.loses_state, verdict.loss_decided) = loss::losses(&cut, options);
+            } else {
+                verdict.loss_decided = !shows(BehaviourKind::Undecided);
+            }
+            verdict
         })
         .collect()
 }

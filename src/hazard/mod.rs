@@ -1,17 +1,21 @@
 //! The hazard decision: for a net and every source that reaches it, whether a change of that source alone can show a
 //! static-0, static-1 or dynamic hazard there, for arbitrary gate and wire delays.
 
+mod clauses;
 mod cone;
 mod cover;
 mod decide;
 mod encode;
 mod enumerate;
+mod function;
 mod loops;
 mod options;
 mod order;
 mod parity;
 mod paths;
+mod points;
 mod prove;
+mod rails;
 mod search;
 mod simulate;
 mod solver;

@@ -77,6 +77,16 @@ impl Promises {
         })
     }
 
+    /// Whether every combination of 0 and 1 has a row.
+    pub(super) fn is_total(&self) -> bool {
+        let width = self.function.first().map_or(0, |(needs, _)| needs.len());
+        (1..=WIDEST).contains(&width)
+            && (0..1usize << width).all(|combination| {
+                let point: Vec<bool> = (0..width).map(|at| combination >> at & 1 == 1).collect();
+                self.value(&point).is_some()
+            })
+    }
+
     /// The function; `None` for a combination without a row.
     pub(super) fn value(&self, point: &[bool]) -> Option<bool> {
         let fits = |needs: &[Need]| {

@@ -6,6 +6,7 @@ mod explorer;
 mod fixtures;
 mod formula;
 mod graph;
+mod loops;
 mod operators;
 mod outside;
 mod paths;
