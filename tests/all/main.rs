@@ -4,6 +4,7 @@ mod decide;
 mod decision;
 mod explorer;
 mod fixtures;
+mod flatten;
 mod formula;
 mod graph;
 mod loops;
