@@ -10,8 +10,8 @@
 use std::collections::HashSet;
 
 use crate::graph::{
-    BlackBox, Cell, CellKind, Edge, Graph, InstanceId, NetId, NodeId, NodeKind, Port, PortDirection, SourceKind,
-    Symbol, Table, TableId,
+    BlackBox, Cell, CellKind, Edge, GateKind, Graph, InstanceId, NetId, NodeId, NodeKind, Port, PortDirection,
+    SourceKind, Symbol, Table, TableId,
 };
 
 /// The whole graph: the primitives it uses, then one module per top in order of instances.
@@ -168,6 +168,13 @@ impl<'g> Writer<'g> {
                 if explained.insert(root) {
                     self.line(format!("  assign {} = {outside};", self.names[root.index()]));
                 }
+            } else if let Some((idle, external)) = tri_state(graph, root)
+                && port.direction == PortDirection::Inout
+                && explained.insert(external)
+            {
+                let (idle, external, value) = (self.name(idle), self.name(external), self.name(bit));
+                let both = format!("  assign {outside} = {idle} ? 1'bz : {value};\n  assign {external} = {outside};");
+                self.line(both);
             } else if port.direction != PortDirection::Input {
                 self.line(format!("  assign {outside} = {};", self.names[bit.index()]));
             }
@@ -395,6 +402,22 @@ fn port_range(graph: &Graph, port: &Port) -> Option<(i64, i64)> {
         _ if width == 1 => None,
         _ => Some((i64::try_from(width).unwrap_or(i64::MAX) - 1, 0)),
     }
+}
+
+/// The form of a net with tri-state drivers, the OR of the enabled ones and of what drives it from outside while none is
+/// enabled: the condition "none is enabled" and the source outside.
+fn tri_state(graph: &Graph, root: NodeId) -> Option<(NodeId, NodeId)> {
+    if graph.kind(root) != NodeKind::Gate(GateKind::Or) {
+        return None;
+    }
+    graph.fanin(root).iter().find_map(|&product| match (graph.kind(product), graph.fanin(product)) {
+        (NodeKind::Gate(GateKind::And), &[idle, external])
+            if graph.kind(external) == NodeKind::Source(SourceKind::Input) =>
+        {
+            Some((idle, external))
+        }
+        _ => None,
+    })
 }
 
 /// Whether a pin is driven by gates, hence can show the order in which a simulator evaluates them.

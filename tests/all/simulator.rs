@@ -145,6 +145,11 @@ fn bench(trial: &Trial, ports: &[Port]) -> String {
         let kind = if port.direction == "input" { "reg" } else { "wire" };
         let _ = writeln!(text, "  {kind} {} {};", port.range, port.name);
     }
+    // From outside, an inout port is driven weakly, so that the module wins whenever it drives.
+    let inouts: Vec<&Port> = ports.iter().filter(|port| port.direction == "inout").collect();
+    for Port { range, name, .. } in &inouts {
+        let _ = writeln!(text, "  reg {range} {name}_outside;\n  assign (weak0, weak1) {name} = {name}_outside;");
+    }
     let names: Vec<&str> = ports.iter().map(|port| port.name.as_str()).collect();
     let _ = writeln!(text, "  {} dut ({});", trial.top, names.join(", "));
     let outputs: Vec<&str> =
@@ -179,6 +184,9 @@ fn bench(trial: &Trial, ports: &[Port]) -> String {
                  3: {name} = {name} << 1; default: {name} = {{{words}}}; endcase #1;"
             );
         }
+    }
+    for name in inouts.iter().map(|port| &port.name) {
+        let _ = writeln!(text, "      {name}_outside = $random(seed); #1;");
     }
     text.push_str("      show;\n");
     for level in [1, 0] {
