@@ -2,16 +2,40 @@
 //! types worked out, every bit of every net a wire of the graph, every process executed symbolically.
 //! Nothing here stops at bad input: what is not supported or wrong becomes a diagnostic and an opaque part of the graph,
 //! never a wrong one.
+//!
+//! First the instance tree is built and what the modules do is only collected; then, when every hierarchical name can be
+//! resolved, the work is done; then the drivers of each wire are resolved and the cells are made.
 
+mod bits;
 pub mod blast;
+mod calls;
+mod constant;
+mod context;
+mod declare;
+mod drivers;
+mod environment;
+mod expr;
+mod gates;
+mod hierarchy;
+mod library;
+mod pattern;
+mod place;
+mod ports;
+mod process;
+mod scope;
+mod statement;
+mod types;
 pub mod udp;
 pub mod value;
 
 use std::collections::BTreeMap;
 
-use crate::diagnostic::Diagnostic;
+use crate::diagnostic::{Diagnostic, Kind};
 use crate::graph::{Graph, GraphBuilder};
 use crate::syntax::ast;
+
+/// Expressions nest as deep as the source; the stack of the elaborating thread must hold that.
+const STACK: usize = 1 << 30;
 
 /// What to elaborate.
 #[derive(Clone, Debug, Default)]
@@ -40,8 +64,24 @@ pub struct Design {
 
 /// Elaborates what is reached from the tops. See the module documentation.
 pub fn elaborate(units: &[ast::Unit], request: &Request) -> (Design, Vec<Diagnostic>) {
-    let _ = units;
-    let design = Design {
+    let on_large_stack = std::thread::scope(|scope| {
+        std::thread::Builder::new()
+            .stack_size(STACK)
+            .spawn_scoped(scope, || context::Elaborator::run(units, request))
+            .map(|thread| thread.join())
+    });
+    match on_large_stack {
+        Ok(Ok(result)) => result,
+        Ok(Err(panic)) => std::panic::resume_unwind(panic),
+        Err(error) => {
+            let message = format!("there is not enough memory for the elaborating thread: {error}");
+            (empty(request), vec![Diagnostic::new(Kind::Incomplete, "elaboration", message, None)])
+        }
+    }
+}
+
+fn empty(request: &Request) -> Design {
+    Design {
         graph: GraphBuilder::new().freeze(),
         tops: request.tops.clone(),
         modules_elaborated: 0,
@@ -49,6 +89,5 @@ pub fn elaborate(units: &[ast::Unit], request: &Request) -> (Design, Vec<Diagnos
         benches_left_out: Vec::new(),
         skipped: BTreeMap::new(),
         opaque_memories: Vec::new(),
-    };
-    (design, Vec::new())
+    }
 }

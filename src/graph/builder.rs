@@ -139,6 +139,30 @@ impl GraphBuilder {
         &self.fanins[node.index()]
     }
 
+    /// The number of nodes so far.
+    pub fn len(&self) -> usize {
+        self.kinds.len()
+    }
+
+    pub fn is_empty(&self) -> bool {
+        self.kinds.is_empty()
+    }
+
+    /// Where a node comes from.
+    pub fn site(&self, node: NodeId) -> Site {
+        self.sites[node.index()]
+    }
+
+    /// The full path of an instance.
+    pub fn instance_path(&self, instance: InstanceId) -> &str {
+        self.instances.get(instance.index()).map_or("", |instance| &instance.path)
+    }
+
+    /// The module that an instance is of.
+    pub fn instance_module(&self, instance: InstanceId) -> &str {
+        self.instances.get(instance.index()).map_or("", |instance| &instance.module)
+    }
+
     /// Moves the place of a node, for sources that learn late what they stand for.
     pub fn set_site(&mut self, node: NodeId, site: Site) {
         self.sites[node.index()] = site;

@@ -1,0 +1,261 @@
+//! Declarations: enters the names of a scope and lays out its nets and variables. Names that are worked out on first use
+//! come first, so that a net may use a function or parameter that stands below it.
+
+use std::cell::Cell;
+use std::collections::HashMap;
+use std::rc::Rc;
+
+use super::context::{Elaborator, Outcome, Storage, Variable, VariableId, unsupported, wrong};
+use super::place::MAX_MEMORY;
+use super::scope::{Lazy, ScopeId, Symbol};
+use super::types::Type;
+use crate::source::Span;
+use crate::syntax::ast::{
+    DataType, DataTypeKind, Declarator, Dim, Ident, Import, Item, ItemKind, NetKind, Package, Param, ParamKind,
+};
+
+/// The graph is not built beyond this many nodes.
+pub(super) const NODE_LIMIT: usize = 60_000_000;
+
+/// The declaration of a variable beside that of the port of the same name.
+struct Body<'a> {
+    ty: &'a DataType,
+    declarator: &'a Declarator,
+    net: Option<NetKind>,
+}
+
+impl<'a> Elaborator<'a> {
+    pub fn import(&mut self, scope: ScopeId, imports: &'a [Import]) -> Outcome<()> {
+        for import in imports {
+            let package = self.package(&import.package)?;
+            match &import.name {
+                None => {
+                    if !self.scope(scope).wildcards.contains(&package) {
+                        self.scopes[scope.index()].wildcards.push(package);
+                    }
+                }
+                Some(name) => {
+                    let symbol = self.look_up_in_package(&import.package, name)?;
+                    self.declare(scope, &name.name, symbol);
+                }
+            }
+        }
+        Ok(())
+    }
+
+    /// The scope of a package, made when it is first used.
+    pub fn package(&mut self, name: &Ident) -> Outcome<ScopeId> {
+        if let Some(&scope) = self.packages.get(&name.name) {
+            return Ok(scope);
+        }
+        let Some(&package) = self.library.packages.get(name.name.as_str()) else {
+            return Err(wrong(format!("there is no package `{}`", name.name), name.span));
+        };
+        let package: &'a Package = package;
+        let scope = self.inner_scope(self.unit, &name.name, self.instance, format!("{}::", name.name));
+        self.packages.insert(name.name.clone(), scope);
+        self.declare_all(scope, &package.items, true)?;
+        Ok(scope)
+    }
+
+    /// Enters everything that `items` declare. Variables of functions and packages are `local`: they have no wires.
+    pub fn declare_all(&mut self, scope: ScopeId, items: &'a [Item], local: bool) -> Outcome<()> {
+        for item in items {
+            match &item.kind {
+                ItemKind::Import(imports) | ItemKind::Export(imports) => {
+                    if imports.iter().all(|import| import.package.name != "*") {
+                        self.import(scope, imports)?;
+                    }
+                }
+                ItemKind::Function(function) | ItemKind::Task(function) => {
+                    self.declare(scope, &function.name.name, Symbol::Function(function, scope));
+                }
+                ItemKind::Let { name, .. } => {
+                    self.declare(scope, &name.name, Symbol::Let(item, scope));
+                }
+                ItemKind::Genvar(names) => {
+                    for name in names {
+                        self.declare(scope, &name.name, Symbol::Genvar);
+                    }
+                }
+                ItemKind::Param(param) => self.declare_parameter(scope, param)?,
+                ItemKind::Typedef { name, ty: Some(ty), dims } => {
+                    self.declare_lazy(scope, &name.name, Lazy::Type { ty, dims });
+                    self.in_scope(scope, |this| this.declare_enum_members(scope, ty))?;
+                }
+                ItemKind::Var { ty, .. } | ItemKind::Net { ty, .. } | ItemKind::PortDecl { ty, .. } => {
+                    self.in_scope(scope, |this| this.declare_enum_members(scope, ty))?;
+                }
+                ItemKind::GenBlock(block) if !block.scoped => self.declare_all(scope, &block.items, local)?,
+                ItemKind::Modport { name, .. } => {
+                    self.declare(scope, &name.name, Symbol::Scope(scope));
+                }
+                _ => {}
+            }
+        }
+        self.in_scope(scope, |this| this.declare_variables(scope, items, local))
+    }
+
+    fn declare_parameter(&mut self, scope: ScopeId, param: &'a Param) -> Outcome<()> {
+        match &param.kind {
+            ParamKind::Value { ty, dims, default } => {
+                if let Some(ty) = ty {
+                    self.in_scope(scope, |this| this.declare_enum_members(scope, ty))?;
+                }
+                if let Some(value) = default {
+                    self.declare_lazy(scope, &param.name.name, Lazy::Value { ty: ty.as_ref(), dims, value });
+                }
+            }
+            ParamKind::Type { default: Some(ty) } => {
+                self.declare_lazy(scope, &param.name.name, Lazy::Type { ty, dims: &[] });
+            }
+            ParamKind::Type { default: None } => {}
+        }
+        Ok(())
+    }
+
+    fn declare_variables(&mut self, scope: ScopeId, items: &'a [Item], local: bool) -> Outcome<()> {
+        let has_ports = items.iter().any(|item| matches!(item.kind, ItemKind::PortDecl { .. }));
+        let mut bodies: HashMap<&str, Body<'a>> = HashMap::new();
+        if has_ports {
+            for item in items {
+                let (ty, names, net) = match &item.kind {
+                    ItemKind::Var { ty, names } => (ty, names, None),
+                    ItemKind::Net { net, ty, names } => (ty, names, Some(*net)),
+                    _ => continue,
+                };
+                for declarator in names {
+                    bodies.entry(&declarator.name.name).or_insert(Body { ty, declarator, net });
+                }
+            }
+        }
+        for item in items {
+            match &item.kind {
+                ItemKind::PortDecl { net, ty, names, is_var, .. } => {
+                    for declarator in names {
+                        let body = bodies.get(declarator.name.name.as_str());
+                        self.declare_port(scope, ty, declarator, *net, *is_var, body)?;
+                    }
+                }
+                ItemKind::Net { net, ty, names } => {
+                    for declarator in names {
+                        let ty = self.declared_type(ty, &declarator.dims, declarator.name.span)?;
+                        self.declare_variable(scope, &declarator.name, ty, Storage::Net(*net))?;
+                    }
+                }
+                ItemKind::Var { ty, names } => {
+                    if matches!(ty.kind, DataTypeKind::Event | DataTypeKind::Real | DataTypeKind::String) && !local {
+                        // Of use only in simulation; whatever uses them fails by itself.
+                        self.skip("variable of a type for simulation");
+                        continue;
+                    }
+                    for declarator in names {
+                        let ty = self.declared_type(ty, &declarator.dims, declarator.name.span)?;
+                        if local {
+                            let name = &declarator.name;
+                            let id = self.add_local(&name.name, ty, name.span);
+                            self.declare(scope, &name.name, Symbol::Variable(id));
+                        } else {
+                            self.declare_variable(scope, &declarator.name, ty, Storage::Variable)?;
+                        }
+                    }
+                }
+                _ => {}
+            }
+        }
+        Ok(())
+    }
+
+    /// A non-ANSI port: its own declaration and that of the net or variable of the same name together.
+    fn declare_port(
+        &mut self,
+        scope: ScopeId,
+        ty: &'a DataType,
+        declarator: &'a Declarator,
+        net: Option<NetKind>,
+        is_var: bool,
+        body: Option<&Body<'a>>,
+    ) -> Outcome<()> {
+        let plain = |ty: &DataType, dims: &[Dim]| {
+            matches!(ty.kind, DataTypeKind::Implicit | DataTypeKind::Logic) && ty.packed.is_empty() && dims.is_empty()
+        };
+        let name = &declarator.name;
+        let (shape, dims): (&'a DataType, &'a [Dim]) = match body {
+            Some(body) if plain(ty, &declarator.dims) => (body.ty, &body.declarator.dims),
+            _ => (ty, &declarator.dims),
+        };
+        let mut full = self.declared_type(shape, dims, name.span)?;
+        if ty.signed == Some(true) || body.is_some_and(|body| body.ty.signed == Some(true)) {
+            full = full.with_sign(true);
+        }
+        let storage = match (body, net) {
+            (Some(&Body { net: Some(net), .. }), _) | (_, Some(net)) => Storage::Net(net),
+            (Some(Body { net: None, .. }), None) => Storage::Variable,
+            (None, None) if is_var => Storage::Variable,
+            (None, None) => Storage::Net(NetKind::Wire),
+        };
+        self.declare_variable(scope, name, full, storage)?;
+        Ok(())
+    }
+
+    /// Lays out a net or variable, unless the scope has one of that name already.
+    pub fn declare_variable(
+        &mut self,
+        scope: ScopeId,
+        name: &Ident,
+        ty: Rc<Type>,
+        storage: Storage,
+    ) -> Outcome<VariableId> {
+        if let Some(Symbol::Variable(id)) = self.scope(scope).names.get(&name.name) {
+            return Ok(*id);
+        }
+        if self.scope(scope).names.contains_key(&name.name) {
+            return Err(wrong(format!("`{}` is declared twice", name.name), name.span));
+        }
+        if ty.width == 0 {
+            return Err(unsupported("net or variable of this type", name.span));
+        }
+        let (instance, label) = (self.scope(scope).instance, format!("{}{}", self.scope(scope).prefix, name.name));
+        let memory = ty.unpacked_array() && ty.width > MAX_MEMORY;
+        let (net, wires) = if memory {
+            let path = self.scope_path(scope);
+            self.opaque_memories.push(format!("{path}.{label}"));
+            (None, Vec::new())
+        } else {
+            self.check_size(ty.width, name.span)?;
+            let suffixes = ty.suffixes();
+            let scalar = suffixes.first().is_some_and(String::is_empty);
+            let label = self.unique_label(instance, &label);
+            let net = self.builder.net(instance, &label, name.span, suffixes, scalar);
+            (Some(net), self.builder.net_bits(net).to_vec())
+        };
+        let id = self.add_variable(Variable {
+            name: label,
+            ty,
+            instance,
+            span: name.span,
+            storage: if memory { Storage::Memory } else { storage },
+            net,
+            wires,
+            read: Cell::new(false),
+            init: None,
+        });
+        self.declare(scope, &name.name, Symbol::Variable(id));
+        Ok(id)
+    }
+
+    /// An error when the graph would grow beyond its limit.
+    pub fn check_size(&mut self, more: usize, span: Span) -> Outcome<()> {
+        if self.builder.len().saturating_add(more) > NODE_LIMIT {
+            self.exhausted = true;
+            return Err(wrong(format!("the design has more than {NODE_LIMIT} gates and nets"), span));
+        }
+        Ok(())
+    }
+
+    /// The hierarchical name of the instance a scope belongs to.
+    pub fn scope_path(&self, scope: ScopeId) -> String {
+        self.builder.instance_path(self.scope(scope).instance).to_string()
+    }
+
+}

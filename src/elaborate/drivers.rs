@@ -1,0 +1,264 @@
+//! What drives each bit, collected while everything is elaborated and resolved at the end: one driver is a connection,
+//! tri-states join by their enables, wired nets by their gate, several plain drivers are a conflict. Cells are made here,
+//! because only at the end it is known which variables anything reads: a loop counter that only its own process uses makes
+//! no flip-flops.
+
+use std::collections::{BTreeMap, HashMap};
+use std::rc::Rc;
+
+use super::bits::Bit;
+use super::context::{Elaborator, Storage, VariableId};
+use crate::diagnostic::{Diagnostic, Kind};
+use crate::graph::{Cell, CellKind, Control, Edge, GateKind, InstanceId, NodeId, NodeKind, Site, SourceKind};
+use crate::source::Span;
+use crate::syntax::ast::NetKind;
+
+/// One driver of one wire.
+#[derive(Clone, Copy, Debug)]
+pub(super) struct Driver {
+    pub value: Bit,
+    pub span: Option<Span>,
+    pub instance: InstanceId,
+}
+
+/// An asynchronous control.
+#[derive(Clone, Copy, Debug)]
+pub(super) struct Rung {
+    pub net: NodeId,
+    pub active: bool,
+    pub value: NodeId,
+}
+
+/// What a process does to one bit of a variable.
+#[derive(Clone, Debug)]
+pub(super) enum PendingKind {
+    Value(Bit),
+    FlipFlop { clock: NodeId, edge: Edge, data: NodeId, rungs: Rc<[Rung]> },
+    Latch { enable: NodeId, active: bool, data: NodeId, rungs: Rc<[Rung]>, from: Option<Span> },
+}
+
+#[derive(Clone, Debug)]
+pub(super) struct Pending {
+    pub variable: VariableId,
+    pub offset: usize,
+    pub kind: PendingKind,
+    /// Written by blocking assignments only, as the scratch variables of a process are.
+    pub blocking_only: bool,
+    pub instance: InstanceId,
+}
+
+impl<'a> Elaborator<'a> {
+    pub fn add_driver(&mut self, wire: NodeId, value: Bit, span: Option<Span>) {
+        let instance = self.instance;
+        self.drivers.entry(wire).or_default().push(Driver { value, span, instance });
+    }
+
+    /// Turns what processes do into drivers and cells.
+    pub fn make_cells(&mut self) {
+        for pending in std::mem::take(&mut self.pending) {
+            let variable = &self.variables[pending.variable.index()];
+            if pending.blocking_only && !variable.read.get() {
+                continue;
+            }
+            let Some(&wire) = variable.wires.get(pending.offset) else { continue };
+            let span = Some(variable.span);
+            let init = variable.init.as_ref().and_then(|init| match init.get(pending.offset) {
+                Some(Bit::One) => Some(true),
+                Some(Bit::Zero) => Some(false),
+                _ => None,
+            });
+            self.instance = pending.instance;
+            let site = Site { instance: pending.instance, span };
+            let (kind, source, data, rungs, inferred_from) = match pending.kind {
+                PendingKind::Value(value) => {
+                    self.add_driver(wire, value, span);
+                    continue;
+                }
+                PendingKind::FlipFlop { clock, edge, data, rungs } => {
+                    (CellKind::FlipFlop { clock, edge }, SourceKind::FlipFlop, data, rungs, None)
+                }
+                PendingKind::Latch { enable, active, data, rungs, from } => {
+                    (CellKind::Latch { enable, active }, SourceKind::Latch, data, rungs, from)
+                }
+            };
+            let output = self.builder.source(source, site);
+            let controls =
+                rungs.iter().map(|rung| Control { net: rung.net, active: rung.active, value: rung.value }).collect();
+            self.builder.cell(Cell { kind, output, data, controls, init, inferred_from });
+            self.add_driver(wire, Bit::Node(output), span);
+        }
+    }
+
+    /// Connects every wire.
+    pub fn resolve_drivers(&mut self) {
+        self.join_aliases();
+        for index in 0..self.variables.len() {
+            let id = VariableId::new(index);
+            let variable = &self.variables[index];
+            if matches!(variable.storage, Storage::Local | Storage::Memory) {
+                continue;
+            }
+            self.instance = variable.instance;
+            let (storage, span, wires) = (variable.storage, variable.span, variable.wires.clone());
+            let mut conflict: Option<Vec<Driver>> = None;
+            for (offset, wire) in wires.into_iter().enumerate() {
+                if self.builder.driver(wire).is_some() || self.builder.kind(wire) != NodeKind::Wire {
+                    continue;
+                }
+                let drivers = self.drivers.get(&wire).cloned().unwrap_or_default();
+                let site = Site { instance: self.instance, span: Some(span) };
+                let idle = self.idle_value(id, offset, storage, wire);
+                let Some(node) = self.join_drivers(wire, &drivers, storage, idle, &mut conflict, site) else { continue };
+                self.builder.drive(wire, node);
+            }
+            if let Some(drivers) = conflict {
+                self.report_conflict(id, &drivers);
+            }
+        }
+    }
+
+    /// What a bit is when nothing drives it: pulled, initialised, or `None` for unknown.
+    fn idle_value(&mut self, id: VariableId, offset: usize, storage: Storage, wire: NodeId) -> Option<NodeId> {
+        if let Some(&external) = self.external.get(&wire) {
+            return Some(external);
+        }
+        if let Some(&pull) = self.pulls.get(&wire) {
+            return Some(self.builder.constant(pull));
+        }
+        let level = match storage {
+            Storage::Net(NetKind::Supply0 | NetKind::Tri0) => Some(false),
+            Storage::Net(NetKind::Supply1 | NetKind::Tri1) => Some(true),
+            Storage::Variable => match self.variable(id).init.as_ref().and_then(|init| init.get(offset)) {
+                Some(Bit::One) => Some(true),
+                Some(Bit::Zero) => Some(false),
+                _ => None,
+            },
+            _ => None,
+        };
+        level.map(|level| self.builder.constant(level))
+    }
+
+    /// The node that drives a wire; `None` leaves it undriven.
+    fn join_drivers(
+        &mut self,
+        wire: NodeId,
+        drivers: &[Driver],
+        storage: Storage,
+        idle: Option<NodeId>,
+        conflict: &mut Option<Vec<Driver>>,
+        site: Site,
+    ) -> Option<NodeId> {
+        let drivers = self.reaching(wire, drivers);
+        let tri = |driver: &Driver| matches!(driver.value, Bit::Z | Bit::Tri(_));
+        if drivers.is_empty() || drivers.iter().all(|driver| driver.value == Bit::Z) {
+            return idle;
+        }
+        if let [only] = drivers.as_slice()
+            && !tri(only)
+        {
+            return Some(self.node(only.value, site));
+        }
+        if !drivers.iter().any(tri) {
+            let gate = match storage {
+                Storage::Net(NetKind::Wand | NetKind::Triand) => GateKind::And,
+                Storage::Net(NetKind::Wor | NetKind::Trior) => GateKind::Or,
+                _ => {
+                    conflict.get_or_insert(drivers);
+                    return Some(self.builder.unknown(site));
+                }
+            };
+            let values: Vec<Bit> = drivers.iter().map(|driver| driver.value).collect();
+            let bit = self.gate(gate, &values, site);
+            return Some(self.node(bit, site));
+        }
+        if !drivers.iter().all(tri) {
+            let plain: Vec<Driver> = drivers.iter().filter(|driver| !tri(driver)).copied().collect();
+            // A constant that holds a shared net is a bus keeper of sorts; anything else is a conflict.
+            conflict.get_or_insert(if plain.len() > 1 { plain } else { drivers });
+            return Some(self.builder.unknown(site));
+        }
+        let mut enables = Vec::new();
+        let mut products = Vec::new();
+        for driver in &drivers {
+            if let (enable, Some(data), _) = self.split(driver.value, false) {
+                let site = Site { instance: driver.instance, span: driver.span };
+                products.push(self.and(&[enable, data], site));
+                enables.push(enable);
+            }
+        }
+        let idle = match idle {
+            Some(node) => node,
+            None => self.builder.unknown(site),
+        };
+        let none = self.gate(GateKind::Nor, &enables, site);
+        products.push(self.and(&[none, Bit::Node(idle)], site));
+        let bit = self.or(&products, site);
+        Some(self.node(bit, site))
+    }
+
+    /// The drivers of a wire, looking through output ports: when several modules drive a net through ports, their
+    /// tri-states act on the net directly.
+    fn reaching(&self, wire: NodeId, drivers: &[Driver]) -> Vec<Driver> {
+        let mut found = Vec::new();
+        let mut stack: Vec<Driver> = drivers.iter().rev().copied().collect();
+        let mut steps = 0;
+        while let Some(driver) = stack.pop() {
+            steps += 1;
+            let inner = match driver.value {
+                Bit::Node(node) if node != wire && self.port_wires.contains(&node) => self.drivers.get(&node),
+                _ => None,
+            };
+            let tri = |driver: &Driver| {
+                matches!(driver.value, Bit::Z | Bit::Tri(_))
+                    || matches!(driver.value, Bit::Node(node) if self.port_wires.contains(&node))
+            };
+            match inner {
+                Some(inner) if steps < 10_000 && !inner.is_empty() && inner.iter().all(tri) => {
+                    stack.extend(inner.iter().rev().copied());
+                }
+                _ => found.push(driver),
+            }
+        }
+        // Looking through ports only matters when a tri-state came to light.
+        if found.iter().any(|driver| matches!(driver.value, Bit::Z | Bit::Tri(_))) { found } else { drivers.to_vec() }
+    }
+
+    /// Wires that are one net: all drivers move to one of them, which drives the others.
+    fn join_aliases(&mut self) {
+        let mut parents: HashMap<NodeId, NodeId> = HashMap::new();
+        fn root(parents: &HashMap<NodeId, NodeId>, mut node: NodeId) -> NodeId {
+            while let Some(&parent) = parents.get(&node) {
+                node = parent;
+            }
+            node
+        }
+        let aliases = std::mem::take(&mut self.aliases);
+        for &(a, b) in &aliases {
+            let (a, b) = (root(&parents, a), root(&parents, b));
+            if a != b {
+                // The outer net comes first and stays the root.
+                parents.insert(b, a);
+            }
+        }
+        let members: BTreeMap<NodeId, NodeId> = parents.keys().map(|&node| (node, root(&parents, node))).collect();
+        for (node, root) in members {
+            if let Some(drivers) = self.drivers.remove(&node) {
+                self.drivers.entry(root).or_default().extend(drivers);
+            }
+            if let Some(pull) = self.pulls.remove(&node) {
+                self.pulls.entry(root).or_insert(pull);
+            }
+            self.builder.drive(node, root);
+        }
+    }
+
+    fn report_conflict(&mut self, id: VariableId, drivers: &[Driver]) {
+        let variable = self.variable(id);
+        let message = format!("`{}` has several drivers; it is taken as unknown", variable.name);
+        let mut diagnostic = Diagnostic::new(Kind::Note, "multiple drivers", message, Some(variable.span));
+        for span in drivers.iter().filter_map(|driver| driver.span).take(4) {
+            diagnostic = diagnostic.with_also(span, "driven here");
+        }
+        self.report(diagnostic);
+    }
+}

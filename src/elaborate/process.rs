@@ -1,0 +1,454 @@
+//! Processes: which always blocks make flip-flops, which latches, which plain logic. A process with an edge list is
+//! executed once for each state of its asynchronous controls, taken from the leading if-ladder, and once for the clock;
+//! every other process is executed once, and what it does not assign on every path is a latch.
+
+use std::collections::{BTreeMap, BTreeSet, HashMap};
+use std::rc::Rc;
+
+use super::bits::Bit;
+use super::context::{Elaborator, Outcome, Storage, VariableId, unsupported};
+use super::drivers::{Pending, PendingKind, Rung};
+use super::environment::{Environment, Mode};
+use super::scope::ScopeId;
+use crate::graph::{Edge, NodeId, NodeKind, SourceKind};
+use crate::source::Span;
+use crate::syntax::ast::{self, Event, Process, ProcessKind, Sensitivity, Stmt, StmtKind};
+
+/// What a process leaves in each variable, and whether only blocking assignments wrote it.
+type Results = BTreeMap<VariableId, (Vec<Bit>, bool)>;
+
+/// One condition of the leading if-ladder that asynchronous controls decide.
+#[derive(Clone, Copy)]
+struct Condition {
+    node: NodeId,
+}
+
+impl<'a> Elaborator<'a> {
+    pub fn process(&mut self, scope: ScopeId, process: &'a Process, span: Span) {
+        self.here = scope;
+        self.instance = self.scope(scope).instance;
+        self.steps = 0;
+        self.block_scopes.clear();
+        let events: &'a [Event] = match &process.sensitivity {
+            Some(Sensitivity::List(events)) => events,
+            _ => &[],
+        };
+        let edges = events.iter().filter(|event| event.edge.is_some()).count();
+        let outcome = match process.kind {
+            ProcessKind::Initial => return self.initial(process),
+            ProcessKind::Always | ProcessKind::AlwaysFf if edges > 0 && edges == events.len() => {
+                self.edge_process(events, &process.body)
+            }
+            _ if edges > 0 => Err(unsupported("sensitivity list that mixes edges and levels", span)),
+            ProcessKind::AlwaysFf => Err(unsupported("always_ff without an edge", span)),
+            ProcessKind::Always if process.sensitivity.is_none() => {
+                Err(unsupported("always without an event control at its head", span))
+            }
+            _ => self.level_process(&process.body),
+        };
+        if let Err(diagnostic) = outcome {
+            self.report(*diagnostic);
+            self.opaque_process(&process.body);
+        }
+    }
+
+    /// Executes a body under assumptions about its conditions; what it leaves in each variable.
+    fn run_body(&mut self, body: &'a Stmt, mode: Mode, assumed: HashMap<NodeId, bool>) -> Outcome<Results> {
+        self.environment = Environment::new(mode);
+        self.assumed = assumed;
+        self.strict = false;
+        let outcome = self.execute(body);
+        self.strict = true;
+        self.assumed.clear();
+        self.points.clear();
+        let mut environment = std::mem::take(&mut self.environment);
+        outcome?;
+        environment.layers.truncate(1);
+        let layer = environment.pop();
+        let mut results = Results::new();
+        for ((id, nonblocking), bits) in layer {
+            if self.variable(id).storage == Storage::Local {
+                continue;
+            }
+            if !nonblocking {
+                results.insert(id, (bits, true));
+                continue;
+            }
+            self.environment.mode = mode;
+            let base = self.base_value(id);
+            let entry = results.entry(id).or_insert_with(|| (base.clone(), false));
+            entry.1 = false;
+            for ((old, new), base) in entry.0.iter_mut().zip(bits).zip(base) {
+                if new != base {
+                    *old = new;
+                }
+            }
+        }
+        self.environment = Environment::default();
+        Ok(results)
+    }
+
+    fn initial(&mut self, process: &'a Process) {
+        let before = self.diagnostics.len();
+        self.environment = Environment::new(Mode::Initial);
+        let outcome = self.execute(&process.body);
+        self.points.clear();
+        let layer = std::mem::take(&mut self.environment).layers.into_iter().next().unwrap_or_default();
+        if outcome.is_err() {
+            self.diagnostics.truncate(before);
+            self.skip("initial block that is not constant");
+            return;
+        }
+        for ((id, _), bits) in layer {
+            if matches!(self.variable(id).storage, Storage::Variable) {
+                self.variables[id.index()].init = Some(bits);
+            }
+        }
+    }
+
+    fn level_process(&mut self, body: &'a Stmt) -> Outcome<()> {
+        let results = self.run_body(body, Mode::Level, HashMap::new())?;
+        let latches = results.values().any(|(bits, _)| bits.iter().any(|bit| matches!(bit, Bit::Partial(_))));
+        let mut ladder = Vec::new();
+        if latches {
+            self.latch_ladder(body, &results, &mut ladder)?;
+        }
+        for (id, (bits, blocking_only)) in results {
+            for (offset, &bit) in bits.iter().enumerate() {
+                let kind = match bit {
+                    Bit::Held => continue,
+                    Bit::Partial(_) => self.latch(id, offset, bit, &ladder),
+                    bit => PendingKind::Value(bit),
+                };
+                self.pend(id, offset, kind, blocking_only);
+            }
+        }
+        Ok(())
+    }
+
+    /// The rungs of a leading if-ladder, each with what the body does when it is taken and when it is not.
+    fn latch_ladder(
+        &mut self,
+        body: &'a Stmt,
+        all: &Results,
+        ladder: &mut Vec<(Condition, Results, Results)>,
+    ) -> Outcome<()> {
+        let mut assumed: HashMap<NodeId, bool> = HashMap::new();
+        let mut at = leading_if(body);
+        while let Some((condition, otherwise)) = at {
+            self.environment = Environment::new(Mode::Level);
+            let bit = self.eval_condition(condition)?;
+            let Bit::Node(node) = bit else { break };
+            let taken = with_assumption(&assumed, node, true);
+            let taken = self.run_body(body, Mode::Level, taken)?;
+            assumed.insert(node, false);
+            let rest = self.run_body(body, Mode::Level, assumed.clone())?;
+            // Only a rung that sets something to a constant can be a control.
+            let sets = taken.iter().any(|(id, (bits, _))| {
+                all.contains_key(id) && bits.iter().any(|bit| matches!(bit, Bit::Zero | Bit::One))
+            });
+            if !sets {
+                break;
+            }
+            ladder.push((Condition { node }, taken, rest));
+            at = otherwise.and_then(leading_if);
+        }
+        self.environment = Environment::default();
+        Ok(())
+    }
+
+    /// A latch bit: rungs that set it to a constant become controls as long as something is left to be latched.
+    fn latch(
+        &mut self,
+        id: VariableId,
+        offset: usize,
+        mut bit: Bit,
+        ladder: &[(Condition, Results, Results)],
+    ) -> PendingKind {
+        let at = |results: &Results| results.get(&id).map_or(Bit::Held, |(bits, _)| bits[offset]);
+        let mut rungs = Vec::new();
+        for (condition, taken, rest) in ladder {
+            let (value, rest) = (at(taken), at(rest));
+            if !matches!(value, Bit::Zero | Bit::One) || !matches!(rest, Bit::Partial(_)) {
+                break;
+            }
+            let (net, active) = self.pin(condition.node, id, if value == Bit::One { "set" } else { "reset" });
+            let site = self.site(self.variable(id).span);
+            let value = self.node(value, site);
+            rungs.push(Rung { net, active, value });
+            bit = rest;
+        }
+        let (enable, data, from) = self.split(bit, true);
+        let site = self.site(from.unwrap_or(self.variable(id).span));
+        let data = data.unwrap_or(Bit::X);
+        let data = self.node(data, site);
+        let enable = self.node(enable, site);
+        let (enable, active) = self.pin(enable, id, "enable");
+        PendingKind::Latch { enable, active, data, rungs: rungs.into(), from }
+    }
+
+    fn edge_process(&mut self, events: &'a [Event], body: &'a Stmt) -> Outcome<()> {
+        self.environment = Environment::new(Mode::Edge);
+        let mut signals: Vec<(NodeId, Edge, Span)> = Vec::new();
+        for event in events {
+            if event.iff.is_some() {
+                return Err(unsupported("`iff` in an event control", event.span));
+            }
+            let (bits, _) = self.eval_self(&event.expr)?;
+            let site = self.site(event.span);
+            let node = self.node(bits.first().copied().unwrap_or(Bit::X), site);
+            let (net, active) = self.builder.strip_inverters(node);
+            let edge = match (event.edge, active) {
+                (Some(ast::Edge::Posedge), true) | (Some(ast::Edge::Negedge), false) => Edge::Posedge,
+                (Some(ast::Edge::Both) | None, _) => Edge::Both,
+                _ => Edge::Negedge,
+            };
+            if !signals.iter().any(|&(other, other_edge, _)| other == net && other_edge == edge) {
+                signals.push((net, edge, event.span));
+            }
+        }
+        let mut conditions: Vec<Condition> = Vec::new();
+        let mut remaining = signals.clone();
+        let mut at = if signals.len() > 1 { leading_if(body) } else { None };
+        while let Some((condition, otherwise)) = at
+            && remaining.len() > 1
+        {
+            self.environment = Environment::new(Mode::Edge);
+            let bit = self.eval_condition(condition)?;
+            let Bit::Node(node) = bit else { break };
+            let support = self.support(node);
+            let listed = |wire: &NodeId| signals.iter().any(|(net, ..)| net == wire);
+            if support.is_empty() || !support.iter().all(listed) {
+                break;
+            }
+            let (net, active) = self.builder.strip_inverters(node);
+            if let Some(&(_, edge, span)) = signals.iter().find(|&&(signal, ..)| signal == net)
+                && (edge == Edge::Posedge) != active
+                && edge != Edge::Both
+            {
+                return Err(unsupported("asynchronous control tested against the edge it is listed with", span));
+            }
+            remaining.retain(|(net, ..)| !support.contains(net));
+            conditions.push(Condition { node });
+            at = otherwise.and_then(leading_if);
+        }
+        let &[(clock, edge, _)] = remaining.as_slice() else {
+            let what = if remaining.is_empty() {
+                "edge list that leaves no clock beside the asynchronous controls"
+            } else {
+                "edge list with more than one signal that could be the clock"
+            };
+            let span = events.first().map_or(body.span, |first| {
+                events.last().map_or(first.span, |last| first.span.to(last.span))
+            });
+            return Err(unsupported(what, span));
+        };
+        let mut assumed = HashMap::new();
+        let mut runs = Vec::new();
+        for condition in &conditions {
+            runs.push(self.run_body(body, Mode::Edge, self.with_condition(&assumed, condition.node, true))?);
+            assumed = self.with_condition(&assumed, condition.node, false);
+        }
+        let main = self.run_body(body, Mode::Edge, assumed)?;
+        self.flip_flops(clock, edge, &conditions, &runs, &main, body.span);
+        Ok(())
+    }
+
+    /// Assumes a condition, and the signal itself when the condition is nothing but that signal or its inverse.
+    fn with_condition(&self, assumed: &HashMap<NodeId, bool>, node: NodeId, value: bool) -> HashMap<NodeId, bool> {
+        let (net, active) = self.builder.strip_inverters(node);
+        with_assumption(&with_assumption(assumed, node, value), net, value == active)
+    }
+
+    fn flip_flops(
+        &mut self,
+        clock: NodeId,
+        edge: Edge,
+        conditions: &[Condition],
+        runs: &[Results],
+        main: &Results,
+        span: Span,
+    ) {
+        let ids: BTreeSet<VariableId> = main.keys().chain(runs.iter().flat_map(|run| run.keys())).copied().collect();
+        for id in ids {
+            let wires = self.variable(id).wires.clone();
+            let blocking_only =
+                runs.iter().chain([main]).filter_map(|run| run.get(&id)).all(|&(_, blocking_only)| blocking_only);
+            let (clock, active) = self.pin(clock, id, "clock");
+            let edge = match edge {
+                Edge::Posedge if !active => Edge::Negedge,
+                Edge::Negedge if !active => Edge::Posedge,
+                edge => edge,
+            };
+            let mut known: BTreeMap<Vec<Bit>, Rc<[Rung]>> = BTreeMap::new();
+            for (offset, &wire) in wires.iter().enumerate() {
+                let held = Bit::Node(wire);
+                let at = |results: &Results| results.get(&id).map_or(held, |(bits, _)| bits[offset]);
+                let values: Vec<Bit> = runs.iter().map(at).collect();
+                let mut data = at(main);
+                if data == held && values.iter().all(|&value| value == held) {
+                    continue;
+                }
+                let site = self.site(span);
+                let mut holding: Vec<Bit> = Vec::new();
+                let shape: Vec<Bit> =
+                    values.iter().map(|&value| if value == held { Bit::Held } else { value }).collect();
+                for (condition, value) in conditions.iter().zip(&values) {
+                    if *value == held {
+                        holding.push(Bit::Node(condition.node));
+                    }
+                }
+                let rungs = match known.get(&shape) {
+                    Some(rungs) => Rc::clone(rungs),
+                    None => {
+                        let rungs: Rc<[Rung]> = self.rungs(id, conditions, &shape, span).into();
+                        known.insert(shape, Rc::clone(&rungs));
+                        rungs
+                    }
+                };
+                // While a condition holds that leaves this bit alone, the clocked branch is not executed.
+                for condition in holding.into_iter().rev() {
+                    data = self.select(condition, held, data, site);
+                }
+                let data = self.node(data, site);
+                self.pend(id, offset, PendingKind::FlipFlop { clock, edge, data, rungs }, blocking_only);
+            }
+        }
+    }
+
+    /// The asynchronous controls of a bit, the strongest first; `Held` is a rung that leaves it alone.
+    fn rungs(&mut self, id: VariableId, conditions: &[Condition], values: &[Bit], span: Span) -> Vec<Rung> {
+        let site = self.site(span);
+        let mut holding: Vec<Bit> = Vec::new();
+        let mut rungs = Vec::new();
+        for (condition, &value) in conditions.iter().zip(values) {
+            if value == Bit::Held {
+                holding.push(Bit::Node(condition.node));
+                continue;
+            }
+            let mut node = condition.node;
+            if !holding.is_empty() {
+                let mut terms: Vec<Bit> = Vec::new();
+                for &earlier in &holding {
+                    terms.push(self.not(earlier, site));
+                }
+                terms.push(Bit::Node(condition.node));
+                let gated = self.and(&terms, site);
+                node = self.node(gated, site);
+            }
+            let label = match value {
+                Bit::Zero => "reset",
+                Bit::One => "set",
+                _ => "load",
+            };
+            let (net, active) = self.pin(node, id, label);
+            let value = self.node(value, site);
+            rungs.push(Rung { net, active, value });
+        }
+        rungs
+    }
+
+    /// The nets that a condition depends on.
+    fn support(&self, node: NodeId) -> BTreeSet<NodeId> {
+        let mut nets = BTreeSet::new();
+        let mut seen = BTreeSet::from([node]);
+        let mut stack = vec![node];
+        while let Some(node) = stack.pop() {
+            if !matches!(self.builder.kind(node), NodeKind::Gate(_) | NodeKind::OpIn(_) | NodeKind::OpOut(_)) {
+                nets.insert(node);
+                continue;
+            }
+            for &input in self.builder.fanin(node) {
+                if seen.insert(input) {
+                    stack.push(input);
+                }
+            }
+        }
+        nets.retain(|&net| !matches!(self.builder.kind(net), NodeKind::Const(_)));
+        nets
+    }
+
+    /// The net at a pin and the level at which it acts; a condition that has no name gets one after the variable.
+    fn pin(&mut self, node: NodeId, id: VariableId, label: &str) -> (NodeId, bool) {
+        let (net, active) = self.builder.strip_inverters(node);
+        if matches!(self.builder.kind(net), NodeKind::Wire | NodeKind::Const(_)) {
+            return (net, active);
+        }
+        if let Some(&wire) = self.pin_names.get(&net) {
+            return (wire, active);
+        }
+        let variable = self.variable(id);
+        let (instance, name) = (variable.instance, format!("{}.{label}", variable.name));
+        let span = self.builder.site(net).span.unwrap_or(variable.span);
+        let name = self.unique_label(instance, &name);
+        let made = self.builder.net(instance, &name, span, vec![String::new()], true);
+        let wire = self.builder.net_bits(made)[0];
+        self.builder.drive(wire, net);
+        self.pin_names.insert(net, wire);
+        (wire, active)
+    }
+
+    /// A name for a net of our own making that no other such net of the instance has.
+    pub fn unique_label(&mut self, instance: crate::graph::InstanceId, name: &str) -> String {
+        let mut label = name.to_string();
+        let mut number = 1;
+        while !self.pin_labels.insert((instance, label.clone())) {
+            number += 1;
+            label = format!("{name}{number}");
+        }
+        label
+    }
+
+    fn pend(&mut self, id: VariableId, offset: usize, kind: PendingKind, blocking_only: bool) {
+        let instance = self.instance;
+        self.pending.push(Pending { variable: id, offset, kind, blocking_only, instance });
+    }
+
+    /// A process that could not be executed: everything it assigns is opaque.
+    fn opaque_process(&mut self, body: &'a Stmt) {
+        self.environment = Environment::new(Mode::Level);
+        self.steps = 0;
+        self.strict = true;
+        self.points.clear();
+        self.poison(body);
+        let layer = self.environment.pop();
+        self.environment = Environment::default();
+        for ((id, _), bits) in layer {
+            if self.variable(id).storage == Storage::Local {
+                continue;
+            }
+            for (offset, bit) in bits.into_iter().enumerate() {
+                if bit != Bit::Held {
+                    let bit = match bit {
+                        Bit::Node(_) => bit,
+                        _ => {
+                            let site = self.site(body.span);
+                            Bit::Node(self.builder.source(SourceKind::BlackBox, site))
+                        }
+                    };
+                    self.pend(id, offset, PendingKind::Value(bit), false);
+                }
+            }
+        }
+    }
+}
+
+fn with_assumption(assumed: &HashMap<NodeId, bool>, node: NodeId, value: bool) -> HashMap<NodeId, bool> {
+    let mut assumed = assumed.clone();
+    assumed.insert(node, value);
+    assumed
+}
+
+/// The first if of a body, behind leading assignments: its condition and its else branch.
+fn leading_if(body: &Stmt) -> Option<(&ast::Expr, Option<&Stmt>)> {
+    match &body.kind {
+        StmtKind::If { cond, otherwise, .. } => Some((cond, otherwise.as_deref())),
+        StmtKind::Block { body, .. } => {
+            let mut statements = body
+                .iter()
+                .skip_while(|stmt| matches!(stmt.kind, StmtKind::Empty | StmtKind::Skipped(_) | StmtKind::Assign(_)));
+            statements.next().and_then(leading_if)
+        }
+        _ => None,
+    }
+}

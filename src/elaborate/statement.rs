@@ -1,0 +1,842 @@
+//! Symbolic execution of statements. Every statement is executed once for all values of its inputs: branches run in
+//! layers of their own that are merged under their condition, loops with known bounds are unrolled, and `break`, `return`
+//! and the like leave a condition under which the rest is not executed.
+
+use std::collections::BTreeMap;
+use std::collections::HashSet;
+
+use super::bits::{self, Bit, extend};
+use super::context::{Elaborator, Outcome, Storage, VariableId, unsupported, wrong};
+use super::environment::{Layer, Mode};
+use super::place::{Base, Place, Want};
+use super::scope::ScopeId;
+use super::types::Type;
+use crate::graph::{Site, SourceKind};
+use crate::source::Span;
+use crate::syntax::ast::{
+    Assignment, BinaryOp, Case, CaseKind, Expr, ExprKind, ForInit, Item, ItemKind, Stmt, StmtKind, Unique,
+};
+
+/// How many passes a loop may take whose end depends on signals.
+const VARIABLE_PASSES: usize = 4_096;
+
+/// Something that a jump can leave.
+#[derive(Clone, PartialEq, Eq, Debug)]
+pub(super) enum Point {
+    Loop,
+    /// One pass of a loop, which `continue` leaves.
+    Pass,
+    Block(String),
+    Call(String),
+}
+
+/// The conditions under which control leaves each enclosing point, by its depth.
+pub(super) type Exits = BTreeMap<usize, Bit>;
+
+/// Statements one after the other: the rest is executed in a layer of its own where an earlier one may have jumped.
+struct Sequence {
+    jumps: Vec<(Bit, Exits, Site)>,
+}
+
+impl Sequence {
+    fn new() -> Self {
+        Self { jumps: Vec::new() }
+    }
+
+    /// Takes note of the jumps of one statement; whether the next one can be reached.
+    fn after(&mut self, elaborator: &mut Elaborator<'_>, exits: Exits, site: Site) -> bool {
+        if exits.is_empty() {
+            return true;
+        }
+        let conditions: Vec<Bit> = exits.values().copied().collect();
+        let left = elaborator.or(&conditions, site);
+        if left == Bit::Zero {
+            return true;
+        }
+        elaborator.environment.push();
+        self.jumps.push((left, exits, site));
+        left != Bit::One
+    }
+
+    /// Joins all layers; the jumps of the whole sequence.
+    fn finish(self, elaborator: &mut Elaborator<'_>) -> Exits {
+        let mut rest = Exits::new();
+        for (left, exits, site) in self.jumps.into_iter().rev() {
+            let layer = elaborator.environment.pop();
+            elaborator.merge(left, Layer::new(), layer, false, site);
+            rest = elaborator.join_exits(left, exits, rest, site);
+        }
+        rest
+    }
+}
+
+/// The head of a statement: from its keyword to the end of its condition.
+fn head(statement: Span, condition: Span) -> Span {
+    if statement.file == condition.file && statement.start <= condition.end {
+        Span { file: statement.file, start: statement.start, end: condition.end }
+    } else {
+        statement
+    }
+}
+
+fn has_attribute(statement: &Stmt, name: &str) -> bool {
+    statement.attributes.iter().any(|attribute| attribute.name.name == name)
+}
+
+impl<'a> Elaborator<'a> {
+    fn join_exits(&mut self, condition: Bit, then: Exits, otherwise: Exits, site: Site) -> Exits {
+        let mut joined = Exits::new();
+        for &target in then.keys().chain(otherwise.keys()) {
+            let a = then.get(&target).copied().unwrap_or(Bit::Zero);
+            let b = otherwise.get(&target).copied().unwrap_or(Bit::Zero);
+            let exit = self.select(condition, a, b, site);
+            joined.insert(target, exit);
+        }
+        joined.retain(|_, exit| *exit != Bit::Zero);
+        joined
+    }
+
+    pub fn execute_all(&mut self, statements: &'a [Stmt]) -> Outcome<Exits> {
+        let mut sequence = Sequence::new();
+        for statement in statements {
+            let exits = self.execute(statement)?;
+            let site = self.site(statement.span);
+            if !sequence.after(self, exits, site) {
+                break;
+            }
+        }
+        Ok(sequence.finish(self))
+    }
+
+    /// Executes a statement. In a process, one that fails makes what it assigns opaque.
+    pub fn execute(&mut self, statement: &'a Stmt) -> Outcome<Exits> {
+        self.step(statement.span)?;
+        let layers = self.environment.layers.len();
+        let (scope, points, calls) = (self.here, self.points.len(), self.call_depth);
+        let diagnostic = match self.execute_strictly(statement) {
+            Ok(exits) => return Ok(exits),
+            Err(diagnostic) => diagnostic,
+        };
+        if self.strict || self.steps > super::constant::STEP_LIMIT {
+            return Err(diagnostic);
+        }
+        self.report(*diagnostic);
+        self.environment.layers.truncate(layers);
+        self.here = scope;
+        self.points.truncate(points);
+        self.call_depth = calls;
+        self.poison(statement);
+        Ok(Exits::new())
+    }
+
+    fn execute_strictly(&mut self, statement: &'a Stmt) -> Outcome<Exits> {
+        match &statement.kind {
+            StmtKind::Empty => {}
+            StmtKind::Skipped(what) => {
+                if self.counted.insert(std::ptr::from_ref(statement)) {
+                    self.skip(what);
+                }
+            }
+            StmtKind::Block { label, decls, body } => {
+                let label = label.as_ref().map(|label| label.name.as_str());
+                return self.execute_block(statement, label, decls, body);
+            }
+            StmtKind::Assign(assignment) => self.assign(assignment)?,
+            StmtKind::If { cond, then, otherwise, unique } => {
+                let condition = self.eval_condition(cond)?;
+                let site = self.site(head(statement.span, cond.span));
+                let full = otherwise.is_none() && matches!(unique, Some(Unique::Unique | Unique::Priority));
+                return match self.assume(condition) {
+                    Bit::One => self.execute(then),
+                    Bit::Zero | Bit::X | Bit::Z => match otherwise {
+                        Some(otherwise) => self.execute(otherwise),
+                        None => Ok(Exits::new()),
+                    },
+                    condition => {
+                        self.environment.push();
+                        let then_exits = self.execute(then)?;
+                        let then = self.environment.pop();
+                        self.environment.push();
+                        let else_exits = match otherwise {
+                            Some(otherwise) => self.execute(otherwise)?,
+                            None => Exits::new(),
+                        };
+                        let otherwise = self.environment.pop();
+                        self.merge(condition, then, otherwise, full, site);
+                        Ok(self.join_exits(condition, then_exits, else_exits, site))
+                    }
+                };
+            }
+            StmtKind::Case(case) => return self.execute_case(statement, case),
+            StmtKind::For { init, cond, step, body } => {
+                return self.execute_for(statement, init, cond.as_ref(), step, body);
+            }
+            StmtKind::Foreach { array, vars, body } => {
+                let ty = self.type_of(array)?;
+                let scope = self.block_scope(statement, None, &[])?;
+                let mut locals = Vec::new();
+                for name in vars {
+                    locals.push(match name {
+                        Some(name) => Some(self.loop_variable(scope, &name.name, Type::vector(32, true), name.span)),
+                        None => None,
+                    });
+                }
+                let exits =
+                    self.in_scope(scope, |this| this.execute_foreach(&locals, Some(ty), body, statement.span))?;
+                for local in locals.into_iter().flatten() {
+                    self.environment.forget(local);
+                }
+                return Ok(exits);
+            }
+            StmtKind::While { cond, body } => return self.execute_loop(Some(cond), true, &[], body),
+            StmtKind::DoWhile { cond, body } => return self.execute_loop(Some(cond), false, &[], body),
+            StmtKind::Forever { body } => return self.execute_loop(None, true, &[], body),
+            StmtKind::Repeat { count, body } => {
+                let count = self.constant_i64(count)?;
+                let site = self.site(statement.span);
+                self.points.push(Point::Loop);
+                let depth = self.points.len() - 1;
+                let mut sequence = Sequence::new();
+                for _ in 0..count {
+                    let exits = self.execute_pass(body)?;
+                    if !sequence.after(self, exits, site) {
+                        break;
+                    }
+                }
+                let mut exits = sequence.finish(self);
+                self.points.pop();
+                exits.remove(&depth);
+                return Ok(exits);
+            }
+            StmtKind::Call(call) => match &call.kind {
+                ExprKind::SystemCall { name, .. } => self.skip(name),
+                ExprKind::Call { callee, args } => {
+                    self.call(callee, args, call.span)?;
+                }
+                ExprKind::Cast(_, inner) => {
+                    self.eval_self(inner)?;
+                }
+                _ => return Err(unsupported("this kind of call statement", statement.span)),
+            },
+            StmtKind::Return(value) => {
+                let Some(depth) = self.points.iter().rposition(|point| matches!(point, Point::Call(_))) else {
+                    return Err(wrong("`return` outside of a function or task", statement.span));
+                };
+                if let (Some(value), Some(Some(result))) = (value, self.results.last().copied()) {
+                    let ty = std::rc::Rc::clone(&self.variable(result).ty);
+                    let bits = self.eval_as(value, &ty)?;
+                    self.environment.set((result, false), bits);
+                }
+                return Ok(Exits::from([(depth, Bit::One)]));
+            }
+            StmtKind::Break => return self.jump(|point| *point == Point::Loop, "break", statement.span),
+            StmtKind::Continue => return self.jump(|point| *point == Point::Pass, "continue", statement.span),
+            StmtKind::Disable(target) => {
+                let (ExprKind::Name(name) | ExprKind::Member(_, name)) = &target.kind else {
+                    return Err(unsupported("disable of something that has no name", statement.span));
+                };
+                let named = |point: &Point| {
+                    matches!(point, Point::Block(label) | Point::Call(label) if *label == name.name)
+                };
+                return self.jump(named, "disable", statement.span);
+            }
+            StmtKind::Timed { what, .. } => return Err(unsupported(format!("{what} inside a process"), statement.span)),
+            StmtKind::Unsupported(what) => return Err(unsupported(what, statement.span)),
+        }
+        Ok(Exits::new())
+    }
+
+    fn jump(&mut self, to: impl Fn(&Point) -> bool, what: &str, span: Span) -> Outcome<Exits> {
+        match self.points.iter().rposition(to) {
+            Some(depth) => Ok(Exits::from([(depth, Bit::One)])),
+            None => Err(unsupported(format!("`{what}` of something that does not enclose it"), span)),
+        }
+    }
+
+    /// The condition, or the value assumed for it while asynchronous controls are told apart.
+    fn assume(&self, condition: Bit) -> Bit {
+        let Bit::Node(node) = condition else {
+            return condition;
+        };
+        if let Some(&value) = self.assumed.get(&node) {
+            return value.into();
+        }
+        let (net, active) = self.builder.strip_inverters(node);
+        match self.assumed.get(&net) {
+            Some(&value) => Bit::from(value == active),
+            None => condition,
+        }
+    }
+
+    fn execute_block(
+        &mut self,
+        statement: &'a Stmt,
+        label: Option<&str>,
+        decls: &'a [Item],
+        body: &'a [Stmt],
+    ) -> Outcome<Exits> {
+        if let Some(label) = label {
+            self.points.push(Point::Block(label.to_string()));
+        }
+        let depth = self.points.len();
+        let outcome = if decls.is_empty() {
+            self.execute_all(body)
+        } else {
+            let scope = self.block_scope(statement, label, decls)?;
+            self.in_scope(scope, |this| {
+                this.initialise_locals(scope, decls)?;
+                this.execute_all(body)
+            })
+        };
+        let mut exits = outcome?;
+        if label.is_some() {
+            self.points.pop();
+            exits.remove(&(depth - 1));
+        }
+        Ok(exits)
+    }
+
+    /// The scope of a block with declarations, made when it is first executed.
+    fn block_scope(&mut self, statement: &'a Stmt, label: Option<&str>, decls: &'a [Item]) -> Outcome<ScopeId> {
+        let key = (std::ptr::from_ref(statement), self.here);
+        if let Some(&scope) = self.block_scopes.get(&key) {
+            return Ok(scope);
+        }
+        let (instance, outer) = (self.scope(self.here).instance, &self.scope(self.here).prefix);
+        let prefix = match label {
+            Some(label) => format!("{outer}{label}."),
+            None => outer.clone(),
+        };
+        let scope = self.inner_scope(self.here, label.unwrap_or(""), instance, prefix);
+        self.declare_all(scope, decls, self.call_depth > 0)?;
+        self.block_scopes.insert(key, scope);
+        Ok(scope)
+    }
+
+    /// Executes the initialisers of variables declared in a block.
+    pub fn initialise_locals(&mut self, scope: ScopeId, decls: &'a [Item]) -> Outcome<()> {
+        for item in decls {
+            let ItemKind::Var { names, .. } = &item.kind else { continue };
+            for declarator in names {
+                let symbol = self.scope(scope).names.get(&declarator.name.name).cloned();
+                if let (Some(init), Some(super::scope::Symbol::Variable(id))) = (&declarator.init, symbol) {
+                    let ty = std::rc::Rc::clone(&self.variable(id).ty);
+                    let bits = self.eval_as(init, &ty)?;
+                    self.environment.set((id, false), bits);
+                }
+            }
+        }
+        Ok(())
+    }
+
+    fn loop_variable(&mut self, scope: ScopeId, name: &str, ty: std::rc::Rc<Type>, span: Span) -> VariableId {
+        if let Some(&super::scope::Symbol::Variable(id)) = self.scope(scope).names.get(name) {
+            return id;
+        }
+        let id = self.add_local(name, ty, span);
+        self.declare(scope, name, super::scope::Symbol::Variable(id));
+        id
+    }
+
+    fn execute_for(
+        &mut self,
+        statement: &'a Stmt,
+        init: &'a [ForInit],
+        cond: Option<&'a Expr>,
+        step: &'a [Assignment],
+        body: &'a Stmt,
+    ) -> Outcome<Exits> {
+        let declares = init.iter().any(|init| matches!(init, ForInit::Declare { .. }));
+        let scope = if declares { self.block_scope(statement, None, &[])? } else { self.here };
+        let mut locals = Vec::new();
+        let outcome = self.in_scope(scope, |this| {
+            for init in init {
+                match init {
+                    ForInit::Assign(assignment) => this.assign(assignment)?,
+                    ForInit::Declare { ty, name, value } => {
+                        let ty = this.data_type(ty)?;
+                        let bits = this.eval_as(value, &ty)?;
+                        let local = this.loop_variable(scope, &name.name, ty, name.span);
+                        this.environment.set((local, false), bits);
+                        locals.push(local);
+                    }
+                }
+            }
+            this.execute_loop(cond, true, step, body)
+        });
+        for local in locals {
+            self.environment.forget(local);
+        }
+        outcome
+    }
+
+    /// A loop that goes on while its condition holds; `check_first` unless it is a do-while loop.
+    fn execute_loop(
+        &mut self,
+        cond: Option<&'a Expr>,
+        check_first: bool,
+        step: &'a [Assignment],
+        body: &'a Stmt,
+    ) -> Outcome<Exits> {
+        let site = self.site(cond.map_or(body.span, |cond| cond.span));
+        self.points.push(Point::Loop);
+        let depth = self.points.len() - 1;
+        let mut sequence = Sequence::new();
+        let mut variable_passes = 0;
+        let mut first = true;
+        loop {
+            self.step(body.span)?;
+            if let Some(cond) = cond
+                && (check_first || !first)
+            {
+                let condition = self.eval_condition(cond)?;
+                match condition {
+                    Bit::One => {}
+                    Bit::Zero | Bit::X | Bit::Z => break,
+                    condition => {
+                        variable_passes += 1;
+                        if variable_passes > VARIABLE_PASSES {
+                            return Err(wrong(
+                                format!("a loop whose end depends on signals takes more than {VARIABLE_PASSES} passes"),
+                                cond.span,
+                            ));
+                        }
+                        let ends = self.not(condition, site);
+                        if !sequence.after(self, Exits::from([(depth, ends)]), site) {
+                            break;
+                        }
+                    }
+                }
+            }
+            first = false;
+            let exits = self.execute_pass(body)?;
+            let leaves = !exits.is_empty();
+            if !sequence.after(self, exits, site) {
+                break;
+            }
+            variable_passes += usize::from(leaves);
+            if variable_passes > VARIABLE_PASSES {
+                return Err(wrong("a loop whose end depends on signals takes too many passes", body.span));
+            }
+            for assignment in step {
+                self.assign(assignment)?;
+            }
+        }
+        let mut exits = sequence.finish(self);
+        self.points.truncate(depth);
+        exits.remove(&depth);
+        Ok(exits)
+    }
+
+    fn execute_pass(&mut self, body: &'a Stmt) -> Outcome<Exits> {
+        self.points.push(Point::Pass);
+        let depth = self.points.len() - 1;
+        let mut exits = self.execute(body)?;
+        self.points.truncate(depth);
+        exits.remove(&depth);
+        Ok(exits)
+    }
+
+    fn execute_foreach(
+        &mut self,
+        variables: &[Option<VariableId>],
+        ty: Option<std::rc::Rc<Type>>,
+        body: &'a Stmt,
+        span: Span,
+    ) -> Outcome<Exits> {
+        let Some((&variable, rest)) = variables.split_first() else {
+            return self.execute_pass(body);
+        };
+        let Some((range, element)) = ty.and_then(|ty| Some((ty.range()?, ty.element()))) else {
+            return Err(wrong("foreach over something that is no array", span));
+        };
+        self.points.push(Point::Loop);
+        let depth = self.points.len() - 1;
+        let mut sequence = Sequence::new();
+        let passes = if variable.is_some() { range.len() } else { 1 };
+        for position in (0..passes).rev() {
+            if let Some(variable) = variable {
+                let number = super::value::Value::from_i64(range.index(position), 32, true);
+                self.environment.set((variable, false), bits::from_value(&number));
+            }
+            let exits = self.execute_foreach(rest, element.clone(), body, span)?;
+            let site = self.site(span);
+            if !sequence.after(self, exits, site) {
+                break;
+            }
+        }
+        let mut exits = sequence.finish(self);
+        self.points.truncate(depth);
+        exits.remove(&depth);
+        Ok(exits)
+    }
+}
+
+/// Assignments.
+impl<'a> Elaborator<'a> {
+    pub fn assign(&mut self, assignment: &'a Assignment) -> Outcome<()> {
+        let targets = self.targets(&assignment.target)?;
+        let width: usize = targets.iter().map(|place| place.ty.width).sum();
+        let site = self.site(assignment.span);
+        let value = match assignment.op {
+            None => match targets.as_slice() {
+                [place] => {
+                    let ty = std::rc::Rc::clone(&place.ty);
+                    self.eval_as(&assignment.value, &ty)
+                }
+                _ => self.eval_assigned(&assignment.value, width),
+            },
+            Some(op) => self.eval_compound(op, &assignment.target, &assignment.value, width),
+        };
+        let value = match value {
+            Ok(value) => value,
+            Err(diagnostic) if self.strict || self.steps > super::constant::STEP_LIMIT => return Err(diagnostic),
+            Err(diagnostic) => {
+                self.report(*diagnostic);
+                (0..width).map(|_| Bit::Node(self.builder.source(SourceKind::BlackBox, site))).collect()
+            }
+        };
+        let nonblocking = assignment.nonblocking && self.environment.mode != Mode::Initial;
+        self.store(&targets, &value, nonblocking, site)
+    }
+
+    /// Puts a value into places, the last of which takes the low bits.
+    pub fn store(&mut self, targets: &[Place], value: &[Bit], nonblocking: bool, site: Site) -> Outcome<()> {
+        let mut low = 0;
+        for place in targets.iter().rev() {
+            let part = &value[low.min(value.len())..(low + place.ty.width).min(value.len())];
+            low += place.ty.width;
+            if let Base::Variable(id) = place.base
+                && self.variable(id).storage != Storage::Memory
+            {
+                self.update((id, nonblocking), |this, bits| this.write_steps(bits, &place.steps, part, site));
+            }
+        }
+        Ok(())
+    }
+
+    /// The places on the left side, the most significant first.
+    pub fn targets(&mut self, target: &'a Expr) -> Outcome<Vec<Place>> {
+        let parts: &'a [Expr] = match &target.kind {
+            ExprKind::Concat(parts) => parts,
+            ExprKind::Pattern { items, .. } => {
+                let mut places = Vec::new();
+                for item in items {
+                    places.extend(self.targets(&item.value)?);
+                }
+                return Ok(places);
+            }
+            ExprKind::Stream { .. } => return Err(unsupported("streaming on the left of an assignment", target.span)),
+            _ => {
+                let place = self.place(target, Want::Value)?;
+                if !matches!(place.base, Base::Variable(_)) {
+                    return Err(wrong("an assignment to something that is no net or variable", target.span));
+                }
+                return Ok(vec![place]);
+            }
+        };
+        let mut places = Vec::new();
+        for part in parts {
+            places.extend(self.targets(part)?);
+        }
+        Ok(places)
+    }
+
+    /// The right side of an assignment to `width` bits.
+    pub fn eval_assigned(&mut self, value: &'a Expr, width: usize) -> Outcome<Vec<Bit>> {
+        let (own, signed) = self.size(value)?;
+        let bits = self.eval(value, own.max(width), signed)?;
+        Ok(extend(bits, width, signed))
+    }
+
+    fn eval_compound(
+        &mut self,
+        op: BinaryOp,
+        target: &'a Expr,
+        value: &'a Expr,
+        width: usize,
+    ) -> Outcome<Vec<Bit>> {
+        let site = self.site(target.span.to(value.span));
+        let (target_width, target_signed) = self.size(target)?;
+        let (value_width, value_signed) = self.size(value)?;
+        let shift = matches!(
+            op,
+            BinaryOp::Shl | BinaryOp::Shr | BinaryOp::ArithShl | BinaryOp::ArithShr | BinaryOp::Pow
+        );
+        let (context, signed) = if shift {
+            (target_width, target_signed)
+        } else {
+            (target_width.max(value_width), target_signed && value_signed)
+        };
+        let a = self.eval(target, context, signed)?;
+        let b = if shift { self.eval_self(value)?.0 } else { self.eval(value, context, signed)? };
+        let result = self.operate(op, &a, &b, signed, value_signed, site)?;
+        Ok(extend(result, width, signed))
+    }
+
+    /// Makes everything that a statement assigns opaque.
+    pub fn poison(&mut self, statement: &'a Stmt) {
+        let mut targets = Vec::new();
+        collect_targets(statement, &mut targets);
+        for (target, nonblocking) in targets {
+            let places = match self.targets(target) {
+                Ok(places) => places,
+                Err(_) => continue,
+            };
+            let site = self.site(target.span);
+            for place in places {
+                let Base::Variable(id) = place.base else { continue };
+                if self.variable(id).storage == Storage::Memory {
+                    continue;
+                }
+                let nonblocking = nonblocking && self.environment.mode != Mode::Initial;
+                let fixed = place.steps.iter().all(|step| matches!(step, super::place::Step::Fixed { .. }));
+                let width = if fixed { place.ty.width } else { self.variable(id).ty.width };
+                let fresh: Vec<Bit> =
+                    (0..width).map(|_| Bit::Node(self.builder.source(SourceKind::BlackBox, site))).collect();
+                let steps = if fixed { place.steps } else { Vec::new() };
+                self.update((id, nonblocking), |this, bits| this.write_steps(bits, &steps, &fresh, site));
+            }
+        }
+    }
+}
+
+/// All left sides in a statement, and whether they are assigned by nonblocking assignments.
+pub(super) fn collect_targets<'s>(statement: &'s Stmt, targets: &mut Vec<(&'s Expr, bool)>) {
+    match &statement.kind {
+        StmtKind::Assign(assignment) => targets.push((&assignment.target, assignment.nonblocking)),
+        StmtKind::Block { body, .. } => body.iter().for_each(|inner| collect_targets(inner, targets)),
+        StmtKind::If { then, otherwise, .. } => {
+            collect_targets(then, targets);
+            if let Some(otherwise) = otherwise {
+                collect_targets(otherwise, targets);
+            }
+        }
+        StmtKind::Case(case) => {
+            case.arms.iter().for_each(|arm| collect_targets(&arm.body, targets));
+            if let Some(default) = &case.default {
+                collect_targets(default, targets);
+            }
+        }
+        StmtKind::For { body, .. }
+        | StmtKind::Foreach { body, .. }
+        | StmtKind::While { body, .. }
+        | StmtKind::DoWhile { body, .. }
+        | StmtKind::Repeat { body, .. }
+        | StmtKind::Forever { body }
+        | StmtKind::Timed { body, .. } => collect_targets(body, targets),
+        _ => {}
+    }
+}
+
+/// What a constant label demands of each bit of the subject: `None` does not care.
+type Cube = Vec<Option<bool>>;
+
+/// `case` statements.
+impl<'a> Elaborator<'a> {
+    fn execute_case(&mut self, statement: &'a Stmt, case: &'a Case) -> Outcome<Exits> {
+        let site = self.site(head(statement.span, case.subject.span));
+        let full = case.default.is_none()
+            && (matches!(case.unique, Some(Unique::Unique | Unique::Priority)) || has_attribute(statement, "full_case"));
+        let (mut width, mut signed) = self.size(&case.subject)?;
+        for label in case.arms.iter().flat_map(|arm| &arm.labels) {
+            if !matches!(label.kind, ExprKind::Range(..)) {
+                let (label_width, label_signed) = self.size(label)?;
+                width = width.max(label_width);
+                signed &= label_signed;
+            }
+        }
+        let subject = self.eval(&case.subject, width, signed)?;
+        let mut cubes: Option<Vec<Vec<Cube>>> = Some(Vec::new());
+        let mut conditions = Vec::new();
+        for arm in &case.arms {
+            let mut matches = Vec::new();
+            let mut arm_cubes = Some(Vec::new());
+            for label in &arm.labels {
+                let label_site = self.site(label.span);
+                if matches!(label.kind, ExprKind::Range(..)) {
+                    matches.push(self.matches_label(&case.subject, width, signed, label)?);
+                    arm_cubes = None;
+                    continue;
+                }
+                let bits = self.eval(label, width, signed)?;
+                matches.push(self.match_label(&subject, &bits, case.kind, label_site));
+                match (label_cube(&bits, case.kind), &mut arm_cubes) {
+                    (Label::Cube(cube), Some(cubes)) => cubes.push(cube),
+                    (Label::Never, _) => {}
+                    _ => arm_cubes = None,
+                }
+            }
+            let arm_site = self.site(arm.span);
+            conditions.push(if let [one] = matches.as_slice() { *one } else { self.or(&matches, arm_site) });
+            match (arm_cubes, &mut cubes) {
+                (Some(arm_cubes), Some(cubes)) => cubes.push(arm_cubes),
+                _ => cubes = None,
+            }
+        }
+        let exclusive = cubes.filter(|cubes| !subject.iter().all(|bit| bit.is_literal()) && disjoint(cubes));
+        if let Some(cubes) = exclusive {
+            let covered = covers_all(&cubes, width);
+            return self.execute_exclusive(case, &conditions, covered, full, site);
+        }
+        self.execute_priority(case, &conditions, full, site)
+    }
+
+    /// One AND-OR level over all arms.
+    fn execute_exclusive(
+        &mut self,
+        case: &'a Case,
+        conditions: &[Bit],
+        covered: bool,
+        full: bool,
+        site: Site,
+    ) -> Outcome<Exits> {
+        let mut conditions = conditions.to_vec();
+        let mut layers = Vec::new();
+        let mut exits = Vec::new();
+        for arm in &case.arms {
+            self.environment.push();
+            exits.push(self.execute(&arm.body)?);
+            layers.push(self.environment.pop());
+        }
+        if !covered {
+            let any = self.or(&conditions, site);
+            conditions.push(self.not(any, site));
+            self.environment.push();
+            exits.push(match &case.default {
+                Some(default) => self.execute(default)?,
+                None => Exits::new(),
+            });
+            layers.push(self.environment.pop());
+        }
+        self.merge_exclusive(&conditions, &layers, full && !covered, site);
+        let targets: Vec<usize> = exits.iter().flat_map(|exits| exits.keys().copied()).collect();
+        let mut joined = Exits::new();
+        for target in targets {
+            let terms: Vec<(Bit, Bit)> = conditions
+                .iter()
+                .zip(&exits)
+                .map(|(&condition, exits)| (condition, exits.get(&target).copied().unwrap_or(Bit::Zero)))
+                .collect();
+            let exit = self.choose(&terms, site);
+            joined.insert(target, exit);
+        }
+        Ok(joined)
+    }
+
+    /// Selectors nested in the order of the arms.
+    fn execute_priority(
+        &mut self,
+        case: &'a Case,
+        conditions: &[Bit],
+        full: bool,
+        site: Site,
+    ) -> Outcome<Exits> {
+        let mut branches = Vec::new();
+        let mut decided = false;
+        for (arm, &condition) in case.arms.iter().zip(conditions) {
+            let condition = self.assume(condition);
+            if matches!(condition, Bit::Zero | Bit::X | Bit::Z) {
+                continue;
+            }
+            self.environment.push();
+            let exits = self.execute(&arm.body)?;
+            branches.push((condition, exits, self.environment.pop()));
+            if condition == Bit::One {
+                decided = true;
+                break;
+            }
+        }
+        self.environment.push();
+        let mut exits = match &case.default {
+            Some(default) if !decided => self.execute(default)?,
+            _ => Exits::new(),
+        };
+        let mut rest = self.environment.pop();
+        let full = full && !decided;
+        for (condition, then_exits, layer) in branches.into_iter().rev() {
+            self.environment.push();
+            self.merge(condition, layer, rest, full, site);
+            rest = self.environment.pop();
+            exits = self.join_exits(condition, then_exits, exits, site);
+        }
+        for (key, bits) in rest {
+            self.environment.set(key, bits);
+        }
+        Ok(exits)
+    }
+
+    fn match_label(&mut self, subject: &[Bit], label: &[Bit], kind: CaseKind, site: Site) -> Bit {
+        let ignores = |bit: Bit| match kind {
+            CaseKind::Case => false,
+            CaseKind::Casez => bit == Bit::Z,
+            CaseKind::Casex => matches!(bit, Bit::X | Bit::Z),
+            CaseKind::Inside => false,
+        };
+        let mut terms = Vec::with_capacity(label.len());
+        for (&value, &label) in subject.iter().zip(label) {
+            if ignores(label) || ignores(value) || kind == CaseKind::Inside && matches!(label, Bit::X | Bit::Z) {
+                continue;
+            }
+            match (value.logic(), label.logic()) {
+                (Some(value), Some(label)) if value == label => {}
+                (_, Some(super::value::Logic::X | super::value::Logic::Z)) | (Some(_), Some(_)) => return Bit::Zero,
+                _ => terms.push(self.gate(crate::graph::GateKind::Xnor, &[value, label], site)),
+            }
+        }
+        self.and(&terms, site)
+    }
+}
+
+enum Label {
+    Cube(Cube),
+    /// A label with x or z that an exact comparison never meets.
+    Never,
+    Variable,
+}
+
+fn label_cube(label: &[Bit], kind: CaseKind) -> Label {
+    let mut cube = Cube::with_capacity(label.len());
+    for bit in label {
+        cube.push(match (bit, kind) {
+            (Bit::Zero, _) => Some(false),
+            (Bit::One, _) => Some(true),
+            (Bit::Z, CaseKind::Casez | CaseKind::Casex | CaseKind::Inside) => None,
+            (Bit::X, CaseKind::Casex | CaseKind::Inside) => None,
+            (Bit::X | Bit::Z, _) => return Label::Never,
+            _ => return Label::Variable,
+        });
+    }
+    Label::Cube(cube)
+}
+
+/// Whether labels of different arms never match together.
+fn disjoint(arms: &[Vec<Cube>]) -> bool {
+    if arms.iter().flatten().flatten().all(Option::is_some) {
+        let mut owners: BTreeMap<&Cube, usize> = BTreeMap::new();
+        return arms
+            .iter()
+            .enumerate()
+            .all(|(arm, cubes)| cubes.iter().all(|cube| *owners.entry(cube).or_insert(arm) == arm));
+    }
+    let apart = |a: &Cube, b: &Cube| a.iter().zip(b).any(|(a, b)| matches!((a, b), (Some(a), Some(b)) if a != b));
+    arms.iter().enumerate().all(|(index, arm)| {
+        arms[index + 1..].iter().flatten().all(|other| arm.iter().all(|cube| apart(cube, other)))
+    })
+}
+
+/// Whether the labels together match every value of the subject: by counting, when they are disjoint.
+fn covers_all(arms: &[Vec<Cube>], width: usize) -> bool {
+    if width >= 64 {
+        return false;
+    }
+    let cubes: HashSet<&Cube> = arms.iter().flatten().collect();
+    let cubes: Vec<&Cube> = cubes.into_iter().collect();
+    let apart = |a: &Cube, b: &Cube| a.iter().zip(b).any(|(a, b)| matches!((a, b), (Some(a), Some(b)) if a != b));
+    let exact = cubes.iter().all(|cube| cube.iter().all(Option::is_some));
+    if !exact && cubes.iter().enumerate().any(|(at, a)| cubes[at + 1..].iter().any(|b| !apart(a, b))) {
+        return false;
+    }
+    let total: u128 = cubes.iter().map(|cube| 1u128 << cube.iter().filter(|bit| bit.is_none()).count()).sum();
+    total == 1u128 << width
+}
