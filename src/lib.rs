@@ -1,6 +1,10 @@
 //! Stillwire reads an RTL tree, flattens it into a gate graph and says, with proof, where a wire that must hold still can
-//! glitch. The modules stand in the order in which data flows.
+//! glitch. The modules stand in the order in which data flows; this page is the whole pipeline.
+//!
+//! Invariant: nothing here prints, reads the environment or the clock, or exits. Bad input is data; an `Err` means that
+//! the paths themselves are wrong and nothing was analysed.
 
+pub mod cli;
 pub mod diagnostic;
 pub mod elaborate;
 pub mod graph;
@@ -8,6 +12,207 @@ pub mod hazard;
 mod ids;
 pub mod report;
 pub mod rules;
+pub mod settings;
 pub mod signoff;
 pub mod source;
 pub mod syntax;
+
+use std::collections::BTreeSet;
+
+use jiff::civil::Date;
+
+use diagnostic::{Diagnostic, Kind};
+use report::{Coverage, LeftOut, Report};
+use source::{Environment, Loaded, PathError, SourceSet};
+
+/// What to analyse.
+#[derive(Clone, Debug)]
+pub struct Request {
+    pub source: source::Request,
+    /// Top modules; empty means every module that nobody instantiates.
+    pub tops: Vec<String>,
+    /// The day on which sign-offs are judged.
+    pub today: Date,
+    /// Number of threads, 0 for one per core. It never changes the result.
+    pub threads: usize,
+}
+
+/// How far a run is.
+#[derive(Clone, Copy, PartialEq, Eq, Debug)]
+pub enum Stage {
+    /// So many of so many bytes are parsed.
+    Reading {
+        done: usize,
+        total: usize,
+    },
+    Elaborating,
+    Deciding,
+}
+
+/// Is told about each stage.
+pub type Progress<'a> = &'a (dyn Fn(Stage) + Sync);
+
+/// What a scan leaves: the report and the texts that its places refer to.
+#[derive(Debug)]
+pub struct Scan {
+    pub sources: SourceSet,
+    pub report: Report,
+}
+
+/// The main job, from paths to a report.
+///
+/// # Errors
+/// Paths, file lists or tops that lead nowhere: nothing was analysed.
+pub fn scan(request: &Request, environment: Environment<'_>, progress: Progress<'_>) -> Result<Scan, PathError> {
+    on_big_stacks(request, || {
+        let (loaded, design, diagnostics) = front_end(request, environment, progress)?;
+        progress(Stage::Deciding);
+        let pragmas = signoff::collect(&loaded.sources);
+        let (watches, unplaced) = signoff::watches(&design.graph, &loaded.sources, &pragmas.watches);
+        let outcome = rules::run(&design.graph, &watches, &hazard::Options::default());
+        let mut report = report_on_input(&loaded, &design, diagnostics.iter().chain(&pragmas.diagnostics));
+        report.coverage.pins = outcome.pins;
+        report.coverage.loops = outcome.loops;
+        report.findings.extend(outcome.findings);
+        report.findings.extend(unplaced);
+        let applied =
+            signoff::apply(&design.graph, &loaded.sources, &pragmas.signoffs, &mut report.findings, request.today);
+        report.findings.extend(applied.findings);
+        report.messages.extend(applied.messages);
+        Ok(finished(report, loaded.sources))
+    })
+}
+
+/// The gate graph as structural Verilog, or the fan-in of one net, with a report on what was read.
+///
+/// # Errors
+/// As [`scan`], and a net that does not exist.
+pub fn flatten(
+    request: &Request,
+    cone: Option<&str>,
+    environment: Environment<'_>,
+    progress: Progress<'_>,
+) -> Result<(String, Scan), PathError> {
+    on_big_stacks(request, || {
+        let (loaded, design, diagnostics) = front_end(request, environment, progress)?;
+        let text = match cone {
+            None => report::flatten::flatten(&design.graph),
+            Some(net) => report::flatten::flatten_cone(&design.graph, net).map_err(|message| {
+                PathError::new(message, "give the full name, from the top module down, such as `top.u_core.rst_n`")
+            })?,
+        };
+        let report = report_on_input(&loaded, &design, &diagnostics);
+        Ok((text, finished(report, loaded.sources)))
+    })
+}
+
+/// Every stage recurses over the nesting of the sources, and so does dropping its trees.
+fn on_big_stacks<T: Send>(
+    request: &Request,
+    work: impl FnOnce() -> Result<T, PathError> + Send,
+) -> Result<T, PathError> {
+    let result = source::on_big_stacks(request.threads, work);
+    result.unwrap_or_else(|problem| Err(PathError::new(problem, "raise the limit on memory or use `--threads 1`")))
+}
+
+/// Reads and elaborates.
+fn front_end(
+    request: &Request,
+    environment: Environment<'_>,
+    progress: Progress<'_>,
+) -> Result<(Loaded, elaborate::Design, Vec<Diagnostic>), PathError> {
+    let mut loaded =
+        source::load(&request.source, environment, &|done, total| progress(Stage::Reading { done, total }))?;
+    require_input(request, &loaded)?;
+    progress(Stage::Elaborating);
+    let units = std::mem::take(&mut loaded.units);
+    let (design, more) = elaborate::elaborate(&units, &elaborate::Request { tops: request.tops.clone() });
+    if cfg!(debug_assertions) {
+        let violations = graph::check(&design.graph);
+        assert!(violations.is_empty(), "the graph is unsound:\n{}", violations.join("\n"));
+    }
+    let mut diagnostics = std::mem::take(&mut loaded.diagnostics);
+    diagnostics.extend(more);
+    Ok((loaded, design, diagnostics))
+}
+
+/// Nothing to read and tops that nobody defines are mistakes of usage, as long as every file could be read.
+fn require_input(request: &Request, loaded: &Loaded) -> Result<(), PathError> {
+    if loaded.files_read == 0 {
+        let paths: Vec<String> = request.source.paths.iter().map(|path| format!("`{}`", path.display())).collect();
+        let place = if paths.is_empty() { "the current folder".to_string() } else { paths.join(", ") };
+        let help = "give a file or a folder that contains .v or .sv files";
+        return Err(PathError::new(format!("no Verilog file was found in {place}"), help));
+    }
+    if loaded.files_failed > 0 {
+        return Ok(());
+    }
+    let names: BTreeSet<&str> =
+        loaded.units.iter().flat_map(|unit| &unit.modules).map(|module| module.name.name.as_str()).collect();
+    match request.tops.iter().find(|top| !names.contains(top.as_str())) {
+        None => Ok(()),
+        Some(top) => {
+            let nearest = names.iter().min_by_key(|name| settings::distance(top, name));
+            let help = match nearest.filter(|name| settings::distance(top, name) <= 3) {
+                Some(nearest) => format!("did you mean `{nearest}`?"),
+                None => "check the spelling, and that its file is among the paths".to_string(),
+            };
+            Err(PathError::new(format!("there is no module `{top}` to be the top"), help))
+        }
+    }
+}
+
+/// The report as far as reading and elaborating can tell.
+fn report_on_input<'a>(
+    loaded: &Loaded,
+    design: &elaborate::Design,
+    diagnostics: impl IntoIterator<Item = &'a Diagnostic>,
+) -> Report {
+    let mut report = Report { tops: design.tops.clone(), ..Report::default() };
+    report.tops.sort();
+    let mut coverage = Coverage {
+        files_read: loaded.files_read,
+        files_failed: loaded.files_failed,
+        modules_elaborated: design.modules_elaborated,
+        modules_failed: design.modules_failed,
+        left_out: LeftOut {
+            regions: loaded.regions.iter().map(|region| region.at).collect(),
+            skipped: design.skipped.clone(),
+            benches: design.benches_left_out.clone(),
+            opaque_memories: design.opaque_memories.clone(),
+        },
+        ..Coverage::default()
+    };
+    for black_box in &design.graph.black_boxes {
+        *coverage.black_boxes.entry(black_box.module.clone()).or_default() += 1;
+    }
+    for diagnostic in diagnostics {
+        match diagnostic.kind {
+            Kind::Unsupported => coverage.unsupported.push((diagnostic.construct.clone(), diagnostic.at)),
+            Kind::Incomplete => coverage.incomplete = true,
+            Kind::Note | Kind::SignoffInvalid => {}
+        }
+        match rules::say(diagnostic) {
+            rules::Said::Finding(finding) => report.findings.push(*finding),
+            rules::Said::Message(message) => report.messages.push(message),
+        }
+    }
+    coverage.left_out.regions.sort();
+    report.coverage = coverage;
+    report
+}
+
+/// The report in the order of every output.
+fn finished(mut report: Report, sources: SourceSet) -> Scan {
+    rules::sort(&mut report.findings, |span| {
+        let position = sources.position(span);
+        (position.file, position.line)
+    });
+    let place = |span: source::Span| {
+        let position = sources.position(span);
+        (position.file, position.line, position.column)
+    };
+    report.coverage.unsupported.sort_by_cached_key(|(construct, at)| (at.map(place), construct.clone()));
+    report.messages.sort_by_cached_key(|message| (message.at.map(place), message.text.clone()));
+    Scan { sources, report }
+}

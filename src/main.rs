@@ -1,1 +1,203 @@
-fn main() {}
+//! Process entry: arguments in, exit code out. Only this file prints, reads the environment and the clock, looks at
+//! terminals, writes files and exits.
+
+use std::io::{IsTerminal, Write};
+use std::path::{Path, PathBuf};
+use std::process::ExitCode;
+use std::sync::mpsc;
+use std::time::Duration;
+
+use clap::Parser;
+use indicatif::{ProgressBar, ProgressDrawTarget, ProgressStyle};
+use stillwire::cli::{self, Cli, Command, Format, Input, Output};
+use stillwire::report::{json, text};
+use stillwire::rules::{self, Severity};
+use stillwire::settings::{self, Settings};
+use stillwire::source::{self, Exclude, PathError};
+use stillwire::{Request, Scan, Stage};
+
+/// Wrong usage, settings or paths.
+const USAGE: u8 = 2;
+/// Part of the input could not be analysed.
+const INCOMPLETE: u8 = 3;
+
+fn main() -> ExitCode {
+    let result = match Cli::parse().command {
+        Command::Scan(arguments) => scan(&arguments),
+        Command::Explain { rule } => {
+            print(rules::page(rule));
+            Ok(0)
+        }
+        Command::Flatten(arguments) => flatten(&arguments),
+    };
+    let code = result.unwrap_or_else(|error| {
+        complain(&format!("error: {}\n  help: {}\n", error.message, error.help));
+        USAGE
+    });
+    ExitCode::from(code)
+}
+
+fn scan(arguments: &cli::Scan) -> Result<u8, PathError> {
+    let settings = read_settings(&arguments.input)?;
+    check_outputs(&arguments.write)?;
+    let request = request(&arguments.input, &settings);
+    let scan = with_progress(|progress| stillwire::scan(&request, &environment, progress))?;
+
+    let gate = arguments.gate.map(Severity::from).or(settings.gate).unwrap_or(Severity::Error);
+    let show = arguments.show.map(Severity::from).or(settings.show).unwrap_or(Severity::Warning);
+    let to_stderr = arguments.write.iter().any(|output| output.file.is_none());
+    let is_terminal = if to_stderr { std::io::stderr().is_terminal() } else { std::io::stdout().is_terminal() };
+    let style = text::Style { show, gate, colours: is_terminal && colours_wanted() };
+    let rendered = text::render(&scan.report, &scan.sources, &style);
+    if to_stderr {
+        complain(&rendered);
+    } else {
+        print(&rendered);
+    }
+    for output in &arguments.write {
+        let rendered = match output.format {
+            Format::Json => json::render(&scan.report, &scan.sources),
+        };
+        match &output.file {
+            None => print(&rendered),
+            Some(file) => write_beside_and_rename(file, &rendered)?,
+        }
+    }
+    Ok(scan.report.exit_code(gate))
+}
+
+fn flatten(arguments: &cli::Flatten) -> Result<u8, PathError> {
+    let settings = read_settings(&arguments.input)?;
+    let request = request(&arguments.input, &settings);
+    let cone = arguments.cone.as_deref();
+    let (verilog, Scan { sources, report }) =
+        with_progress(|progress| stillwire::flatten(&request, cone, &environment, progress))?;
+    if !report.complete() {
+        let style = text::Style {
+            show: Severity::Note,
+            gate: Severity::Error,
+            colours: std::io::stderr().is_terminal() && colours_wanted(),
+        };
+        complain(&text::render(&report, &sources, &style));
+    }
+    print(&verilog);
+    Ok(if report.complete() { 0 } else { INCOMPLETE })
+}
+
+/// The settings that hold: those named, else those found upward from the first path.
+fn read_settings(input: &Input) -> Result<Settings, PathError> {
+    if let Some(file) = &input.settings {
+        return settings::read(file);
+    }
+    let current = PathBuf::from(".");
+    let first = input.paths.first().or(input.list.first()).unwrap_or(&current);
+    match settings::find(first) {
+        Some(file) => settings::read(&file),
+        None => Ok(Settings::default()),
+    }
+}
+
+/// The command line with the settings behind it.
+fn request(input: &Input, settings: &Settings) -> Request {
+    // A macro of the command line replaces one of the settings, because the later definition holds.
+    let defines = settings.define.iter().chain(&input.define).cloned().collect();
+    Request {
+        source: source::Request {
+            paths: input.paths.clone(),
+            lists: input.list.clone(),
+            include: input.include.iter().chain(&settings.include).cloned().collect(),
+            defines,
+            exclude: Exclude { root: settings.folder.clone(), patterns: settings.exclude.clone() },
+        },
+        tops: if input.top.is_empty() { settings.top.clone() } else { input.top.clone() },
+        today: jiff::Zoned::now().date(),
+        threads: input.threads.map_or(0, usize::from),
+    }
+}
+
+fn environment(name: &str) -> Option<String> {
+    std::env::var(name).ok()
+}
+
+fn colours_wanted() -> bool {
+    let refused = environment("NO_COLOR").is_some_and(|value| !value.is_empty());
+    !refused && environment("TERM").is_none_or(|terminal| terminal != "dumb")
+}
+
+/// Runs `work` with a progress bar on standard error, which shows only on a terminal and only past one second.
+fn with_progress<T>(work: impl FnOnce(stillwire::Progress<'_>) -> T) -> T {
+    if !std::io::stderr().is_terminal() {
+        return work(&|_| {});
+    }
+    let bar = ProgressBar::with_draw_target(Some(0), ProgressDrawTarget::hidden());
+    if let Ok(style) = ProgressStyle::with_template("{spinner} {msg} [{bar:30}] {elapsed}") {
+        bar.set_style(style.progress_chars("=> "));
+    }
+    let (finished, wait) = mpsc::channel::<()>();
+    let bar = &bar;
+    std::thread::scope(|scope| {
+        scope.spawn(move || {
+            if wait.recv_timeout(Duration::from_secs(1)) == Err(mpsc::RecvTimeoutError::Timeout) {
+                bar.set_draw_target(ProgressDrawTarget::stderr());
+                bar.enable_steady_tick(Duration::from_millis(200));
+            }
+        });
+        let result = work(&|stage| match stage {
+            Stage::Reading { done, total } => {
+                bar.set_message("reading");
+                bar.set_length(total as u64);
+                bar.set_position(done as u64);
+            }
+            Stage::Elaborating => bar.set_message("elaborating"),
+            Stage::Deciding => bar.set_message("deciding"),
+        });
+        drop(finished);
+        bar.finish_and_clear();
+        result
+    })
+}
+
+/// Complains about an output that cannot be written before the analysis and not after it.
+fn check_outputs(outputs: &[Output]) -> Result<(), PathError> {
+    if outputs.iter().filter(|output| output.file.is_none()).count() > 1 {
+        return Err(PathError::new("two outputs go to standard output", "write one of them to a file"));
+    }
+    for file in outputs.iter().filter_map(|output| output.file.as_deref()) {
+        if file.is_dir() {
+            let message = format!("the output `{}` is a folder", file.display());
+            return Err(PathError::new(message, "name a file in it"));
+        }
+        let folder = folder_of(file);
+        if !folder.is_dir() {
+            let message = format!("the folder `{}` of the output does not exist", folder.display());
+            return Err(PathError::new(message, "make it first"));
+        }
+    }
+    Ok(())
+}
+
+fn folder_of(file: &Path) -> &Path {
+    file.parent().filter(|folder| !folder.as_os_str().is_empty()).unwrap_or(Path::new("."))
+}
+
+/// Nobody ever sees half a file: it is written beside its place and renamed.
+fn write_beside_and_rename(file: &Path, contents: &str) -> Result<(), PathError> {
+    let name = file.file_name().unwrap_or_default().to_string_lossy().into_owned();
+    let beside = folder_of(file).join(format!(".{name}.{}", std::process::id()));
+    let result = std::fs::write(&beside, contents).and_then(|()| std::fs::rename(&beside, file));
+    result.map_err(|error| {
+        let _ = std::fs::remove_file(&beside);
+        let message = format!("the output `{}` cannot be written: {error}", file.display());
+        PathError::new(message, "check its folder's permissions and space")
+    })
+}
+
+/// A reader that goes away early (`| head`) is no error of ours.
+fn print(text: &str) {
+    let mut stdout = std::io::stdout().lock();
+    let _ = stdout.write_all(text.as_bytes()).and_then(|()| stdout.flush());
+}
+
+fn complain(text: &str) {
+    let _ = std::io::stderr().lock().write_all(text.as_bytes());
+}

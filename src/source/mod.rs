@@ -23,6 +23,7 @@ mod stack;
 mod texts;
 
 pub use discover::{Exclude, PathError};
+pub use filelist::{Environment, define};
 pub use load::{Loaded, Progress, Request, load};
 pub use places::Places;
 pub use regions::Region;

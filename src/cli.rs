@@ -1,0 +1,171 @@
+//! The command line. Its words are fixed by the design: other people's scripts depend on them. This file turns arguments
+//! into data and knows nothing of what happens then.
+
+use std::path::PathBuf;
+
+use clap::{Args, Parser, Subcommand, ValueEnum};
+
+use crate::rules::{Rule, Severity};
+use crate::source::define;
+
+/// Finds, before synthesis and with proof, the wires of an RTL design that must hold still and can glitch.
+#[derive(Parser, Debug)]
+#[command(name = "stillwire", version, arg_required_else_help = true)]
+#[command(after_help = "Exit codes of scan:\n  \
+    0  nothing at or above the gate, and the analysis is complete\n  \
+    1  findings at or above the gate\n  \
+    2  wrong usage, settings or paths; nothing was analysed\n  \
+    3  nothing to fail on, but part of the input could not be analysed")]
+pub struct Cli {
+    #[command(subcommand)]
+    pub command: Command,
+}
+
+#[derive(Subcommand, Debug)]
+pub enum Command {
+    /// Analyse files and folders, and report every net that must hold still and can glitch.
+    Scan(Scan),
+    /// Print the page of a rule: what it finds, why it matters, how to cure it.
+    Explain {
+        /// The rule's name, as the findings print it.
+        #[arg(value_parser = rule)]
+        rule: Rule,
+    },
+    /// Write the gate graph, or the fan-in of one net, as structural Verilog on standard output.
+    Flatten(Flatten),
+}
+
+/// What is read, and how.
+#[derive(Args, Debug)]
+pub struct Input {
+    /// Files and folders of Verilog and SystemVerilog [default: the current folder]
+    #[arg(value_name = "PATH")]
+    pub paths: Vec<PathBuf>,
+    /// A top module; may be repeated [default: every module that nobody instantiates]
+    #[arg(long, value_name = "NAME")]
+    pub top: Vec<String>,
+    /// A folder to look for included files in; may be repeated
+    #[arg(short = 'I', value_name = "DIR")]
+    pub include: Vec<PathBuf>,
+    /// Define a macro; without a value it is 1
+    #[arg(short = 'D', value_name = "NAME[=VALUE]", value_parser = macro_definition)]
+    pub define: Vec<(String, Option<String>)>,
+    /// A file list, with the options +incdir+, +define+, -y, -v and +libext+ inside; may be repeated
+    #[arg(short = 'f', value_name = "FILE")]
+    pub list: Vec<PathBuf>,
+    /// The settings file [default: stillwire.toml, looked for upward from the first path]
+    #[arg(long, value_name = "FILE")]
+    pub settings: Option<PathBuf>,
+    /// Number of threads [default: one per core]
+    #[arg(long, value_name = "N", value_parser = clap::value_parser!(u16).range(1..=1024))]
+    pub threads: Option<u16>,
+}
+
+#[derive(Args, Debug)]
+pub struct Scan {
+    #[command(flatten)]
+    pub input: Input,
+    /// Write the findings to a file as well, or to standard output with `-`; FORMAT is json; may be repeated
+    #[arg(long, value_name = "FORMAT:FILE", value_parser = output)]
+    pub write: Vec<Output>,
+    /// The lowest severity that fails the run [default: error]
+    #[arg(long, value_name = "SEVERITY")]
+    pub gate: Option<Level>,
+    /// The lowest severity that is printed as text; the rest is counted [default: warning]
+    #[arg(long, value_name = "SEVERITY")]
+    pub show: Option<Level>,
+}
+
+#[derive(Args, Debug)]
+pub struct Flatten {
+    #[command(flatten)]
+    pub input: Input,
+    /// Only the fan-in of this net, by its full name such as top.u_core.rst_n or top.en[3]
+    #[arg(long, value_name = "NET")]
+    pub cone: Option<String>,
+}
+
+#[derive(Clone, Copy, PartialEq, Eq, ValueEnum, Debug)]
+pub enum Level {
+    Error,
+    Warning,
+    Note,
+}
+
+impl From<Level> for Severity {
+    fn from(level: Level) -> Severity {
+        match level {
+            Level::Error => Severity::Error,
+            Level::Warning => Severity::Warning,
+            Level::Note => Severity::Note,
+        }
+    }
+}
+
+/// A format of `--write`.
+#[derive(Clone, Copy, PartialEq, Eq, Debug)]
+pub enum Format {
+    Json,
+}
+
+/// One `--write`.
+#[derive(Clone, PartialEq, Eq, Debug)]
+pub struct Output {
+    pub format: Format,
+    /// `None` is standard output.
+    pub file: Option<PathBuf>,
+}
+
+fn output(text: &str) -> Result<Output, String> {
+    let Some((format, file)) = text.split_once(':') else {
+        return Err("write it as FORMAT:FILE, such as json:findings.json".to_string());
+    };
+    let format = match format {
+        "json" => Format::Json,
+        other => return Err(format!("the format `{other}` is not known; there is json")),
+    };
+    match file {
+        "" => Err("the file is missing; `-` is standard output".to_string()),
+        "-" => Ok(Output { format, file: None }),
+        file => Ok(Output { format, file: Some(PathBuf::from(file)) }),
+    }
+}
+
+fn rule(text: &str) -> Result<Rule, String> {
+    Rule::from_name(text).ok_or_else(|| {
+        let names: Vec<&str> = Rule::ALL.iter().map(|rule| rule.name()).collect();
+        format!("there is no such rule; the rules are {}", names.join(", "))
+    })
+}
+
+fn macro_definition(text: &str) -> Result<(String, Option<String>), String> {
+    let (name, value) = define(text);
+    let mut letters = name.chars();
+    let good = letters.next().is_some_and(|first| first.is_ascii_alphabetic() || first == '_')
+        && letters.all(|letter| letter.is_ascii_alphanumeric() || matches!(letter, '_' | '$'));
+    if good { Ok((name, value)) } else { Err(format!("`{name}` is no name of a macro")) }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use clap::CommandFactory;
+
+    #[test]
+    fn the_definition_is_consistent() {
+        Cli::command().debug_assert();
+    }
+
+    #[test]
+    fn options_may_be_repeated_and_joined() {
+        let line = "stillwire scan rtl -Iinc -I more -DA=1 -D B --top a --top b -f x.f --write json:- --gate note";
+        let Ok(Cli { command: Command::Scan(scan) }) = Cli::try_parse_from(line.split(' ')) else {
+            panic!("the line is good");
+        };
+        assert_eq!(scan.input.include, [PathBuf::from("inc"), PathBuf::from("more")]);
+        assert_eq!(scan.input.define, [("A".to_string(), Some("1".to_string())), ("B".to_string(), None)]);
+        assert_eq!(scan.input.top, ["a", "b"]);
+        assert_eq!(scan.write, [Output { format: Format::Json, file: None }]);
+        assert_eq!(scan.gate, Some(Level::Note));
+    }
+}
