@@ -17,7 +17,7 @@ fetch:
     tests/outside/fetch
 
 bench:
-    STILLWIRE_DATA=$(tests/outside/fetch) cargo bench --profile dev
+    STILLWIRE_DATA=$(tests/outside/fetch) cargo bench --profile dev --bench iscas85 --bench scan_ratio
 
 lint:
     cargo fmt --check
