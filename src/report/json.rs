@@ -98,6 +98,7 @@ struct PinOut<'a> {
 
 #[derive(Serialize)]
 struct HazardOut<'a> {
+    net: &'a str,
     kind: &'static str,
     cause: &'static str,
     changes: &'a [String],
@@ -217,6 +218,7 @@ fn finding_out<'a>(finding: &'a Finding, place: &impl Fn(Option<Span>) -> Option
             .hazards
             .iter()
             .map(|hazard| HazardOut {
+                net: &hazard.net,
                 kind: hazard.kind,
                 cause: hazard.cause,
                 changes: &hazard.changes,

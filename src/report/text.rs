@@ -80,7 +80,7 @@ fn of_finding(sources: &SourceSet, finding: &Finding) -> Diagnostic<FileId> {
         }
     }
     if let Some(lead) = finding.hazards.first() {
-        notes.push(waveform::render(lead, &finding.net));
+        notes.push(waveform::render(lead));
         notes.push(wrapped(&format!("effect: {}", lead.harm)));
     }
     if finding.hazards.len() > 1 {
@@ -89,7 +89,7 @@ fn of_finding(sources: &SourceSet, finding: &Finding) -> Diagnostic<FileId> {
     if let Some(cover) = &finding.cover {
         let proven =
             if cover.proven { "proven: with it, no change of one signal can glitch this net" } else { "not proven" };
-        notes.push(format!("cover ({proven}):\n  {}", cover.verilog));
+        notes.push(format!("cover ({proven}):\n  {}", wrapped(&cover.verilog).replace('\n', "\n  ")));
     }
     notes.extend(finding.notes.iter().map(|note| wrapped(note)));
     Diagnostic::new(level(finding.severity))
@@ -118,9 +118,10 @@ fn wrapped(text: &str) -> String {
 /// The hazards behind the lead, one line each, by what they do.
 fn others(finding: &Finding) -> String {
     let rest = &finding.hazards[1..];
-    let mut lines = vec!["the same net, by other changes:".to_string()];
+    let mut lines = vec!["and by other changes:".to_string()];
     for hazard in rest.iter().take(SHOWN_HAZARDS) {
-        lines.push(format!("  {} by {}: {}", hazard.kind, hazard.changes.join(", "), held(hazard)));
+        let on = if hazard.net == finding.net { String::new() } else { format!(" on {}", hazard.net) };
+        lines.push(format!("  {}{on} by {}: {}", hazard.kind, hazard.changes.join(", "), held(hazard)));
     }
     if rest.len() > SHOWN_HAZARDS {
         lines.push(format!("  and {} more, all in the JSON output", rest.len() - SHOWN_HAZARDS));

@@ -7,7 +7,7 @@ use crate::rules::Hazard;
 const SHOWN_HELD: usize = 8;
 
 /// The drawing, one line per signal, names aligned, under a line that says what it is.
-pub(super) fn render(hazard: &Hazard, net: &str) -> String {
+pub(super) fn render(hazard: &Hazard) -> String {
     let mut rows: Vec<(&str, &str, String)> = Vec::new();
     for (name, before) in hazard.before.iter().filter(|(name, _)| hazard.changes.contains(name)) {
         let (drawn, word) = if *before { ("~~~\\______", "falls") } else { ("___/~~~~~~", "rises") };
@@ -24,7 +24,7 @@ pub(super) fn render(hazard: &Hazard, net: &str) -> String {
         ((false, true), _) => ("___/~\\_/~~", "should rise once, bounces"),
         ((true, false), _) => ("~~~\\_/~\\__", "should fall once, bounces"),
     };
-    rows.push((net, drawn, word.to_string()));
+    rows.push((&hazard.net, drawn, word.to_string()));
     let width = rows.iter().map(|(name, _, _)| name.chars().count()).max().unwrap_or(0);
     let mut lines = vec!["witness (every signal not named may have any value):".to_string()];
     lines.extend(rows.iter().map(|(name, drawn, word)| format!("  {name:<width$}  {drawn}  {word}")));

@@ -55,7 +55,7 @@ pub(super) fn finding(graph: &Graph, verdict: &LoopVerdict) -> Option<Finding> {
     };
     if let Some(loss) = &verdict.loses_state {
         message.push_str(&format!("; a change of `{}` alone can lose the value", names::name(graph, loss.source)));
-        lost_state(graph, start, loss, &mut finding);
+        lost_state(graph, loss, &mut finding);
     }
     if loss_open {
         finding
@@ -117,16 +117,16 @@ fn values(graph: &Graph, nodes: &[(NodeId, bool)]) -> String {
     texts.join(", ")
 }
 
-fn lost_state(graph: &Graph, start: NodeId, loss: &StateLoss, finding: &mut Finding) {
+fn lost_state(graph: &Graph, loss: &StateLoss, finding: &mut Finding) {
     let kind = match loss.witness.target {
         (false, false) => HazardKind::Static0,
         (true, true) => HazardKind::Static1,
         _ => HazardKind::Dynamic,
     };
     let harm = "the feedback can catch the pulse and keep the wrong value".to_string();
-    finding.hazards.push(evidence::hazard_text(graph, kind, &loss.witness, harm));
+    finding.hazards.push(evidence::hazard_text(graph, loss.node, kind, &loss.witness, harm));
     match &loss.cover {
-        Some(cover) => finding.cover = cover_text::of(graph, start, cover),
+        Some(cover) => finding.cover = cover_text::of(graph, loss.node, cover),
         None => finding.notes.push("no cover is known that keeps the state".to_string()),
     }
 }

@@ -53,7 +53,7 @@ pub(super) fn finding(
         net: net.clone(),
         bits: None,
         pin: Some(subject.pin.clone()),
-        hazards: hazards.iter().map(|ranked| ranked.hazard(graph)).collect(),
+        hazards: hazards.iter().map(|ranked| ranked.hazard(graph, root)).collect(),
         cover: None,
         loop_: None,
         notes: Vec::new(),
@@ -128,18 +128,18 @@ fn ranked<'a>(graph: &Graph, verdict: &'a TargetVerdict, judge: &Judge<'_>) -> V
 
 /// All hazards of a target in words, the lead first.
 pub(super) fn hazards(graph: &Graph, verdict: &TargetVerdict, judge: &Judge<'_>) -> Vec<Hazard> {
-    ranked(graph, verdict, judge).iter().map(|ranked| ranked.hazard(graph)).collect()
+    ranked(graph, verdict, judge).iter().map(|ranked| ranked.hazard(graph, verdict.target)).collect()
 }
 
 impl Ranked<'_> {
-    fn hazard(&self, graph: &Graph) -> Hazard {
-        hazard_text(graph, self.kind, self.witness, self.harm.clone())
+    fn hazard(&self, graph: &Graph, target: NodeId) -> Hazard {
+        hazard_text(graph, target, self.kind, self.witness, self.harm.clone())
     }
 }
 
 /// A witness in names. Under a change of one source alone every hazard is a logic hazard: there is no third value
 /// between the two endpoints that the function could pass through.
-pub(super) fn hazard_text(graph: &Graph, kind: HazardKind, witness: &Witness, harm: String) -> Hazard {
+pub(super) fn hazard_text(graph: &Graph, target: NodeId, kind: HazardKind, witness: &Witness, harm: String) -> Hazard {
     let mut before: Vec<(String, bool)> = Vec::new();
     let mut after: Vec<(String, bool)> = Vec::new();
     for &(node, value) in &witness.changes {
@@ -154,7 +154,8 @@ pub(super) fn hazard_text(graph: &Graph, kind: HazardKind, witness: &Witness, ha
     after.sort();
     let mut changes: Vec<String> = witness.changes.iter().map(|&(node, _)| names::name(graph, node)).collect();
     changes.sort();
-    Hazard { kind: kind.name(), cause: "logic", changes, harm, before, after, pin: witness.target }
+    let net = names::name(graph, target);
+    Hazard { net, kind: kind.name(), cause: "logic", changes, harm, before, after, pin: witness.target }
 }
 
 /// One sentence per reason why questions about this target stayed open.

@@ -132,6 +132,8 @@ pub struct Pin {
 /// One (changing source, kind) pair with its witness.
 #[derive(Clone, PartialEq, Eq, Debug)]
 pub struct Hazard {
+    /// The net that shows it, by full name: the finding's, or one bit of its port, or a feedback net of its loop.
+    pub net: String,
     /// `static-0`, `static-1`, `dynamic`.
     pub kind: &'static str,
     /// `logic` or `function`.

@@ -14,13 +14,8 @@ const CURE: &str = "to do: drive the enable from a flip-flop, or make its logic 
 
 pub(super) fn finding(graph: &Graph, verdict: &TargetVerdict, uses: &[Use], options: &Options) -> Option<Finding> {
     let pin = pins::pin(graph, uses);
-    let level = match pin.active {
-        Some(true) => "active-high ",
-        Some(false) => "active-low ",
-        None => "",
-    };
     let net = names::name(graph, verdict.target);
-    let what = format!("the {level}enable `{net}` of {}", words::cells(graph, uses));
+    let what = format!("the enable `{net}` of {}", words::cells(graph, uses));
     let judge = |kind| judge(graph, uses, kind);
     let subject = Subject { rule: Rule::LatchEnableHazard, pin, what, judge: &judge, cure: CURE };
     let mut finding = evidence::finding(graph, verdict, &subject, options)?;

@@ -22,13 +22,8 @@ pub(super) fn finding(graph: &Graph, verdict: &TargetVerdict, uses: &[Use], opti
         _ if mixed(uses) => "asynchronous set and reset",
         _ => "asynchronous reset",
     };
-    let level = match pin.active {
-        Some(true) => "active-high ",
-        Some(false) => "active-low ",
-        None => "",
-    };
     let net = super::names::name(graph, verdict.target);
-    let what = format!("the {level}{noun} `{net}` of {}", words::cells(graph, uses));
+    let what = format!("the {noun} `{net}` of {}", words::cells(graph, uses));
     let judge = |kind| judge(graph, uses, kind);
     evidence::finding(
         graph,
@@ -84,7 +79,8 @@ fn judge_level(graph: &Graph, uses: &[Use], active: bool, kind: HazardKind) -> (
         (
             Severity::Error,
             format!(
-                "{acts} {cells} although no {acted} is asserted; a short pulse may take some of them and miss others"
+                "{acts} {cells} although no {acted} is asserted{}",
+                words::short_pulse(uses)
             ),
         )
     } else {
