@@ -123,7 +123,7 @@ impl<'a> Trace<'a> {
             _ => {
                 let ways: Vec<Path> = changing
                     .first()
-                    .and_then(|&pin| self.from_source(pin))
+                    .and_then(|&pin| self.way_from_source(pin))
                     .map(|way| self.path(way, meet))
                     .into_iter()
                     .collect();
@@ -154,7 +154,7 @@ impl<'a> Trace<'a> {
         let way = |pin: NodeId| match stem {
             Some(&stem) => self.search(pin, |node| node == stem, changes),
             // Several sources change and no node sees two of them: each way starts at its own.
-            None => self.from_source(pin),
+            None => self.way_from_source(pin),
         };
         let ways: Vec<Path> = [left, right].into_iter().filter_map(way).map(|way| self.path(way, meet)).collect();
         (stem.copied().unwrap_or_else(|| ways.first().map_or(meet, |way| way.steps[0].node)), ways)
@@ -173,7 +173,7 @@ impl<'a> Trace<'a> {
         seen
     }
 
-    fn from_source(&self, pin: NodeId) -> Option<Vec<NodeId>> {
+    fn way_from_source(&self, pin: NodeId) -> Option<Vec<NodeId>> {
         let changes = |node: NodeId| self.wave(node).changes();
         self.search(pin, |node| !self.pins(node).any(changes), changes)
     }

@@ -148,10 +148,10 @@ mod tests {
         for pigeon in &sits {
             solver.clause(pigeon);
         }
-        for hole in 0..7 {
-            for first in 0..8 {
-                for second in 0..first {
-                    solver.clause(&[!sits[first][hole], !sits[second][hole]]);
+        for (index, first) in sits.iter().enumerate() {
+            for second in &sits[..index] {
+                for (&one, &other) in first.iter().zip(second) {
+                    solver.clause(&[!one, !other]);
                 }
             }
         }
