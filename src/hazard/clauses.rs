@@ -199,6 +199,7 @@ impl<S: Solver> Clauses<S> {
             promised[usize::from(*value)].push(fits);
             open = self.and(&[open, !fits]);
         }
+        promised[0].push(open);
         let [zero, one] = promised;
         Pair { zero: !self.or(&one), one: !self.or(&zero) }
     }

@@ -193,9 +193,9 @@ impl<'a> Cure<'a> {
                     HazardKind::Static0 => grown |= terms.add(function.span(witness, false)?, false),
                     HazardKind::Static1 => grown |= terms.add(function.span(witness, true)?, true),
                 }
-            }
-            if terms.len() > TERMS {
-                return Err(Withheld::TooManyTerms);
+                if terms.len() > TERMS {
+                    return Err(Withheld::TooManyTerms);
+                }
             }
             if !grown {
                 return Err(Withheld::Undecided);

@@ -7,6 +7,8 @@ mod cut;
 mod loss;
 mod search;
 
+use rayon::prelude::*;
+
 use self::cut::Cut;
 use super::Options;
 use crate::graph::{Graph, NodeId, cycles};
@@ -74,6 +76,7 @@ pub struct StateLoss {
 pub fn loops(graph: &Graph, options: &Options) -> Vec<LoopVerdict> {
     let components = cycles::components(graph);
     (0..components.len())
+        .into_par_iter()
         .map(|index| {
             let mut verdict = LoopVerdict {
                 nodes: components.nodes(index).to_vec(),
@@ -82,7 +85,7 @@ pub fn loops(graph: &Graph, options: &Options) -> Vec<LoopVerdict> {
                 loses_state: None,
                 loss_decided: false,
             };
-            let Some(cut) = Cut::new(graph, &components, index) else {
+            let Some(cut) = Cut::new(graph, &components, index).filter(|cut| !cut.is_partial()) else {
                 let kind = BehaviourKind::Undecided;
                 verdict.behaviours.push(Behaviour { kind, inputs: Vec::new(), states: Vec::new() });
                 return verdict;

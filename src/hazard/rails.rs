@@ -1,6 +1,7 @@
 //! Three-valued evaluation, 64 patterns at a time, of logic without loops. Each node carries two words, "may be 0" and
 //! "may be 1"; both set is the unknown of ternary simulation (Eichelberger, IBM J. R&D 9, 1965). Definite inputs give
-//! definite results, so the same code makes truth tables; only a table without a row for its inputs answers unknown.
+//! definite results, so the same code makes truth tables. Combinations without a row in a table count as 0, as they do
+//! in the decision.
 
 use super::order::Order;
 use super::tables::{Need, Promises};
@@ -136,7 +137,7 @@ fn gate(kind: GateKind, pins: &[Rails]) -> Rails {
     if kind.inverts() { plain.inverted() } else { plain }
 }
 
-/// A table knows its result where a row promises it, or where all inputs are known and have a row.
+/// A table knows its result where a row promises it, or where all inputs are known.
 fn promised(promises: &Promises, pins: &[Rails]) -> Rails {
     let mut result = Rails::UNKNOWN;
     for (needs, value) in &promises.rows {
@@ -166,5 +167,6 @@ fn promised(promises: &Promises, pins: &[Rails]) -> Rails {
         }
         open &= !fits;
     }
+    result.one &= !open;
     result
 }

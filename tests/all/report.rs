@@ -145,8 +145,21 @@ fn json_has_every_field_of_the_schema() {
     assert_eq!(value["schema"], "stillwire-findings/1");
     let finding = &value["findings"][0];
     for key in [
-        "rule", "severity", "verdict", "message", "at", "trace", "instance", "net", "bits", "pin", "hazards", "cover",
-        "loop", "fingerprint", "signoff",
+        "rule",
+        "severity",
+        "verdict",
+        "message",
+        "at",
+        "trace",
+        "instance",
+        "net",
+        "bits",
+        "pin",
+        "hazards",
+        "cover",
+        "loop",
+        "fingerprint",
+        "signoff",
     ] {
         assert!(keys(finding).contains(&key.to_string()), "{key}");
     }

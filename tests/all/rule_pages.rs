@@ -39,7 +39,9 @@ fn every_page_has_the_same_parts() {
     for rule in Rule::ALL {
         let page = page(rule);
         assert!(page.starts_with(&format!("# {}\n", rule.name())));
-        for part in ["**What.**", "**Why it matters.**", "## Hazardous", "## Safe", "## The cure", "## Source of the method"] {
+        for part in
+            ["**What.**", "**Why it matters.**", "## Hazardous", "## Safe", "## The cure", "## Source of the method"]
+        {
             assert!(page.contains(part), "{}: no part {part}", rule.name());
         }
     }

@@ -163,7 +163,8 @@ fn other_lines_and_other_rules_are_stale() {
 
 #[test]
 fn a_signoff_holds_through_its_last_day() {
-    let text = |day: &str| format!("wire y;\n\nassign y = a & b; // stillwire: signoff clock-hazard \"why\" until {day}\n");
+    let text =
+        |day: &str| format!("wire y;\n\nassign y = a & b; // stillwire: signoff clock-hazard \"why\" until {day}\n");
     assert_eq!(applied(&text("2026-06-15"), TODAY), (true, vec![]));
     assert_eq!(applied(&text("2026-06-14"), TODAY), (false, vec![Rule::SignoffExpired]));
 }

@@ -18,10 +18,7 @@ pub(super) fn behaviours(cut: &Cut) -> Option<Vec<Behaviour>> {
     if variables > VARIABLES || Points::blocks(variables).saturating_mul(cut.graph.len()) > EFFORT {
         return None;
     }
-    let (stable, total) = stable(cut);
-    if !total {
-        return Some(vec![Behaviour { kind: BehaviourKind::Undecided, inputs: Vec::new(), states: Vec::new() }]);
-    }
+    let stable = stable(cut);
     let states = cut.states.len();
     let count = |input: usize| (0..1usize << states).filter(|state| stable.contains(input << states | state)).count();
     let counts: Vec<usize> = (0..1usize << cut.inputs.len()).map(count).collect();
@@ -56,11 +53,10 @@ pub(super) fn behaviours(cut: &Cut) -> Option<Vec<Behaviour>> {
     Some(found)
 }
 
-/// The stable points, states in the low bits, and whether every next state was known.
-fn stable(cut: &Cut) -> (Points, bool) {
+/// The stable points, states in the low bits.
+fn stable(cut: &Cut) -> Points {
     let variables = cut.inputs.len() + cut.states.len();
     let mut evaluator = Evaluator::new(&cut.graph, &cut.next);
-    let mut total = true;
     let words = (0..Points::blocks(variables))
         .map(|block| {
             for (index, &leaf) in cut.states.iter().chain(&cut.inputs).enumerate() {
@@ -69,14 +65,12 @@ fn stable(cut: &Cut) -> (Points, bool) {
             evaluator.run();
             let mut word = !0;
             for (&state, &next) in cut.states.iter().zip(&cut.next) {
-                let (state, next) = (evaluator.get(state), evaluator.get(next));
-                total &= next.unknown() == 0;
-                word &= !(state.one ^ next.one);
+                word &= !(evaluator.get(state).one ^ evaluator.get(next).one);
             }
             word
         })
         .collect();
-    (Points::new(variables, words), total)
+    Points::new(variables, words)
 }
 
 /// An input value for which ternary simulation leaves a node of the loop unknown.

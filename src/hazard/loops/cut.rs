@@ -8,6 +8,7 @@ use crate::graph::cone::Cone;
 use crate::graph::cycles::{self, Components};
 use crate::graph::{Graph, NodeId, NodeKind};
 use crate::hazard::rails::is_leaf;
+use crate::hazard::tables::Promises;
 
 /// Side inputs are followed to the sources behind them while these are at most this many, so that an impossible
 /// combination (a signal and its complement) is not taken for a case.
@@ -15,7 +16,7 @@ const SOURCES: usize = 16;
 /// Nodes looked at on the way to those sources.
 const BEHIND: usize = 4096;
 /// Bound on rounds times nodes in the search for feedback nodes.
-const EFFORT: usize = 4_000_000;
+const EFFORT: usize = 1_000_000;
 
 /// See the module documentation.
 pub(super) struct Cut {
@@ -51,6 +52,11 @@ impl Cut {
         let mut inputs: Vec<NodeId> = originals.keys().copied().filter(|node| !states.contains(node)).collect();
         inputs.sort_unstable_by_key(|node| originals[node]);
         Some(Self { graph: frozen.graph, inputs, states, next, originals })
+    }
+
+    /// Whether a primitive has input values without a row: what the loop does there is nobody's promise.
+    pub(super) fn is_partial(&self) -> bool {
+        self.graph.tables.iter().any(|table| !Promises::new(table).is_total())
     }
 
     /// The same cut with other next-state functions, in a graph that extends its own.

@@ -6,12 +6,11 @@
 
 use super::cut::Cut;
 use super::{Behaviour, BehaviourKind};
-use crate::graph::{NodeId, NodeKind};
+use crate::graph::NodeId;
 use crate::hazard::Options;
 use crate::hazard::clauses::{Clauses, Pair};
 use crate::hazard::order::Order;
 use crate::hazard::solver::{Answer, Batsat, Literal, Solver};
-use crate::hazard::tables::Promises;
 
 /// Candidates tried for "no stable state".
 const ROUNDS: usize = 256;
@@ -29,13 +28,6 @@ enum Outcome {
 pub(super) fn behaviours(cut: &Cut, options: &Options) -> Vec<Behaviour> {
     let undecided = Behaviour { kind: BehaviourKind::Undecided, inputs: Vec::new(), states: Vec::new() };
     let order = Order::new(&cut.graph, &cut.next).nodes;
-    let partial = order.iter().any(|&node| match cut.graph.kind(node) {
-        NodeKind::Table(table) => !Promises::new(&cut.graph.tables[table.index()]).is_total(),
-        _ => false,
-    });
-    if partial {
-        return vec![undecided];
-    }
     let unresolved = unresolved(cut, &order, options);
     if matches!(unresolved, Outcome::No) {
         return vec![Behaviour { kind: BehaviourKind::Settles, inputs: Vec::new(), states: Vec::new() }];
