@@ -12,9 +12,7 @@ use super::statement::Point;
 use super::types::{Shape, Type};
 use super::value::Value;
 use crate::source::Span;
-use crate::syntax::ast::{
-    CallArg, DataTypeKind, Direction, Expr, ExprKind, Function, Item, ItemKind,
-};
+use crate::syntax::ast::{CallArg, DataTypeKind, Direction, Expr, ExprKind, Function, Item, ItemKind};
 
 /// How deep functions may call each other.
 const CALL_DEPTH: usize = 512;
@@ -203,12 +201,7 @@ impl<'a> Elaborator<'a> {
     }
 
     /// The actual argument for each formal one.
-    fn actuals(
-        &mut self,
-        function: &'a Function,
-        args: &'a [CallArg],
-        span: Span,
-    ) -> Outcome<Vec<Option<&'a Expr>>> {
+    fn actuals(&mut self, function: &'a Function, args: &'a [CallArg], span: Span) -> Outcome<Vec<Option<&'a Expr>>> {
         let mut actuals: Vec<Option<&'a Expr>> = vec![None; function.args.len()];
         for (index, arg) in args.iter().enumerate() {
             let place = match &arg.name {
@@ -226,13 +219,7 @@ impl<'a> Elaborator<'a> {
         Ok(actuals)
     }
 
-    fn expand_let(
-        &mut self,
-        item: &'a Item,
-        scope: ScopeId,
-        args: &'a [CallArg],
-        span: Span,
-    ) -> Outcome<Vec<Bit>> {
+    fn expand_let(&mut self, item: &'a Item, scope: ScopeId, args: &'a [CallArg], span: Span) -> Outcome<Vec<Bit>> {
         let ItemKind::Let { name, args: formals, body } = &item.kind else {
             return Err(wrong("a call of something that is no function", span));
         };
@@ -303,9 +290,25 @@ impl<'a> Elaborator<'a> {
         Ok(match name {
             "$signed" | "$unsigned" => (self.size(self.argument(args, name, span)?)?.0, name == "$signed"),
             "$onehot" | "$onehot0" | "$isunknown" => (1, false),
-            "$clog2" | "$bits" | "$size" | "$left" | "$right" | "$high" | "$low" | "$increment" | "$dimensions"
-            | "$unpacked_dimensions" | "$countones" | "$rtoi" | "$ceil" | "$floor" | "$itor" | "$sqrt" | "$ln"
-            | "$log10" | "$exp" => (32, true),
+            "$clog2"
+            | "$bits"
+            | "$size"
+            | "$left"
+            | "$right"
+            | "$high"
+            | "$low"
+            | "$increment"
+            | "$dimensions"
+            | "$unpacked_dimensions"
+            | "$countones"
+            | "$rtoi"
+            | "$ceil"
+            | "$floor"
+            | "$itor"
+            | "$sqrt"
+            | "$ln"
+            | "$log10"
+            | "$exp" => (32, true),
             "$cast" => (32, true),
             _ => return Err(unsupported(format!("system function {name}"), span)),
         })

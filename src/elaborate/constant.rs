@@ -91,13 +91,15 @@ impl<'a> Elaborator<'a> {
         }
         Ok(match &expr.kind {
             ExprKind::Real(real) | ExprKind::TimeLiteral(real) => Some(*real),
-            ExprKind::Name(_) | ExprKind::Scoped { .. } | ExprKind::Member(..) => match self.resolve(expr, Want::Type)? {
-                Resolved::Place(place) => match place.base {
-                    Base::Real(real) => Some(real),
+            ExprKind::Name(_) | ExprKind::Scoped { .. } | ExprKind::Member(..) => {
+                match self.resolve(expr, Want::Type)? {
+                    Resolved::Place(place) => match place.base {
+                        Base::Real(real) => Some(real),
+                        _ => None,
+                    },
                     _ => None,
-                },
-                _ => None,
-            },
+                }
+            }
             ExprKind::Unary(UnaryOp::Minus, operand) => self.real(operand)?.map(|real| -real),
             ExprKind::Unary(UnaryOp::Plus, operand) => self.real(operand)?,
             ExprKind::Binary(op, left, right) => {
@@ -161,10 +163,7 @@ impl<'a> Elaborator<'a> {
                 }
                 ExprKind::Scoped { .. } => return true,
                 ExprKind::SystemCall { name, .. } => {
-                    return matches!(
-                        name.as_str(),
-                        "$itor" | "$ceil" | "$floor" | "$sqrt" | "$ln" | "$log10" | "$exp"
-                    );
+                    return matches!(name.as_str(), "$itor" | "$ceil" | "$floor" | "$sqrt" | "$ln" | "$log10" | "$exp");
                 }
                 ExprKind::Unary(UnaryOp::Minus | UnaryOp::Plus, operand) => operand,
                 ExprKind::Binary(
@@ -229,10 +228,7 @@ impl<'a> Elaborator<'a> {
             self.check_size(0, span)?;
         }
         if self.steps > STEP_LIMIT {
-            return Err(wrong(
-                format!("a loop or function that does not end within {STEP_LIMIT} steps"),
-                span,
-            ));
+            return Err(wrong(format!("a loop or function that does not end within {STEP_LIMIT} steps"), span));
         }
         Ok(())
     }

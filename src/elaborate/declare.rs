@@ -257,5 +257,4 @@ impl<'a> Elaborator<'a> {
     pub fn scope_path(&self, scope: ScopeId) -> String {
         self.builder.instance_path(self.scope(scope).instance).to_string()
     }
-
 }

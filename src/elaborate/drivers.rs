@@ -108,7 +108,9 @@ impl<'a> Elaborator<'a> {
                 let drivers = self.drivers.get(&wire).cloned().unwrap_or_default();
                 let site = Site { instance: self.instance, span: Some(span) };
                 let idle = self.idle_value(id, offset, storage, wire);
-                let Some(node) = self.join_drivers(wire, &drivers, storage, idle, &mut conflict, site) else { continue };
+                let Some(node) = self.join_drivers(wire, &drivers, storage, idle, &mut conflict, site) else {
+                    continue;
+                };
                 self.builder.drive(wire, node);
             }
             if let Some(drivers) = conflict {

@@ -385,9 +385,7 @@ impl<'a> Elaborator<'a> {
                 let equal = self.equal(a, b, site);
                 self.not(equal, site)
             }
-            BinaryOp::CaseEq | BinaryOp::CaseNe if a.iter().chain(b).any(unknown) => {
-                Bit::from(op == BinaryOp::CaseNe)
-            }
+            BinaryOp::CaseEq | BinaryOp::CaseNe if a.iter().chain(b).any(unknown) => Bit::from(op == BinaryOp::CaseNe),
             BinaryOp::CaseEq => self.equal(a, b, site),
             BinaryOp::CaseNe => {
                 let equal = self.equal(a, b, site);
@@ -520,9 +518,7 @@ impl<'a> Elaborator<'a> {
             _ => None,
         };
         match symbol {
-            Some(super::scope::Symbol::Lazy(lazy)) if self.is_type(lazy) => {
-                self.force_type(lazy, expr.span).map(Some)
-            }
+            Some(super::scope::Symbol::Lazy(lazy)) if self.is_type(lazy) => self.force_type(lazy, expr.span).map(Some),
             _ => Ok(None),
         }
     }

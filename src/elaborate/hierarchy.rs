@@ -13,8 +13,8 @@ use crate::diagnostic::{Diagnostic, Kind};
 use crate::graph::InstanceId;
 use crate::source::Span;
 use crate::syntax::ast::{
-    Assignment, Connection, DefaultNettype, Dim, Expr, ExprKind, GateInstance, GateType, GenBlock,
-    GenvarInit, Ident, Instance, Item, ItemKind, Module, ModuleKind, ParamKind, Process,
+    Assignment, Connection, DefaultNettype, Dim, Expr, ExprKind, GateInstance, GateType, GenBlock, GenvarInit, Ident,
+    Instance, Item, ItemKind, Module, ModuleKind, ParamKind, Process,
 };
 
 /// Instances may be nested this deep.
@@ -26,15 +26,44 @@ const GENERATE_LIMIT: usize = 1 << 17;
 
 /// Something a module does.
 pub(super) enum Work<'a> {
-    Assign { scope: ScopeId, target: &'a Expr, value: &'a Expr },
+    Assign {
+        scope: ScopeId,
+        target: &'a Expr,
+        value: &'a Expr,
+    },
     /// The initialiser of a net declaration.
-    NetInit { scope: ScopeId, variable: VariableId, value: &'a Expr },
+    NetInit {
+        scope: ScopeId,
+        variable: VariableId,
+        value: &'a Expr,
+    },
     /// The initialiser of a variable declaration.
-    VariableInit { scope: ScopeId, variable: VariableId, value: &'a Expr },
-    Alias { scope: ScopeId, nets: &'a [Expr] },
-    Process { scope: ScopeId, process: &'a Process, span: Span },
-    Gate { scope: ScopeId, gate: GateType, instance: &'a GateInstance, slot: Option<Slot> },
-    Primitive { scope: ScopeId, name: &'a Ident, instance: &'a Instance, slot: Option<Slot> },
+    VariableInit {
+        scope: ScopeId,
+        variable: VariableId,
+        value: &'a Expr,
+    },
+    Alias {
+        scope: ScopeId,
+        nets: &'a [Expr],
+    },
+    Process {
+        scope: ScopeId,
+        process: &'a Process,
+        span: Span,
+    },
+    Gate {
+        scope: ScopeId,
+        gate: GateType,
+        instance: &'a GateInstance,
+        slot: Option<Slot>,
+    },
+    Primitive {
+        scope: ScopeId,
+        name: &'a Ident,
+        instance: &'a Instance,
+        slot: Option<Slot>,
+    },
     Connection(ConnectionWork<'a>),
     BlackBox(BlackBoxWork<'a>),
 }
@@ -128,7 +157,8 @@ impl<'a> Elaborator<'a> {
             ItemKind::Param(param) => Some(param),
             _ => None,
         });
-        for (param, in_header) in module.params.iter().map(|param| (param, true)).chain(body.map(|param| (param, false)))
+        for (param, in_header) in
+            module.params.iter().map(|param| (param, true)).chain(body.map(|param| (param, false)))
         {
             let name = param.name.name.as_str();
             match &param.kind {
@@ -429,11 +459,7 @@ impl<'a> Elaborator<'a> {
             return Ok(vec![(None, Vec::new())]);
         }
         let count = indices.len();
-        Ok(indices
-            .into_iter()
-            .enumerate()
-            .map(|(position, index)| (Some(Slot { position, count }), index))
-            .collect())
+        Ok(indices.into_iter().enumerate().map(|(position, index)| (Some(Slot { position, count }), index)).collect())
     }
 
     fn instances(
@@ -578,7 +604,10 @@ impl<'a> Elaborator<'a> {
         self.instance_count += 1;
         if self.instance_count > INSTANCE_LIMIT {
             self.exhausted = true;
-            return Err(wrong(format!("the design has more than {INSTANCE_LIMIT} instances and generate blocks"), span));
+            return Err(wrong(
+                format!("the design has more than {INSTANCE_LIMIT} instances and generate blocks"),
+                span,
+            ));
         }
         let parent = self.scope(scope).instance;
         let module = self.builder.instance_module(parent).to_string();

@@ -27,9 +27,8 @@ impl<'a> Library<'a> {
         let mut library = Self::default();
         let mut duplicate = |what: &str, name: &str, at: Span, first: Span| {
             let message = format!("{what} `{name}` is declared more than once; the first one in path order is used");
-            diagnostics.push(
-                Diagnostic::new(Kind::Note, "duplicate declaration", message, Some(at)).with_also(first, "used"),
-            );
+            diagnostics
+                .push(Diagnostic::new(Kind::Note, "duplicate declaration", message, Some(at)).with_also(first, "used"));
         };
         for unit in units {
             for module in &unit.modules {

@@ -177,13 +177,7 @@ impl<'a> Elaborator<'a> {
         }
     }
 
-    fn resolve_index(
-        &mut self,
-        base: Resolved<'a>,
-        index: &'a Expr,
-        want: Want,
-        span: Span,
-    ) -> Outcome<Resolved<'a>> {
+    fn resolve_index(&mut self, base: Resolved<'a>, index: &'a Expr, want: Want, span: Span) -> Outcome<Resolved<'a>> {
         match base {
             Resolved::Place(place) => self.index(place, index, want, span).map(Resolved::Place),
             Resolved::Symbol(Symbol::Scopes(scopes)) => {
@@ -383,10 +377,8 @@ impl<'a> Elaborator<'a> {
 
     /// The AND-OR of a decoded index. What is undriven reads unknown here.
     fn choose_read(&mut self, column: &[(Bit, Bit)], site: Site) -> Bit {
-        let plain: Vec<(Bit, Bit)> = column
-            .iter()
-            .map(|&(matches, bit)| (matches, if bit == Bit::Z { Bit::X } else { bit }))
-            .collect();
+        let plain: Vec<(Bit, Bit)> =
+            column.iter().map(|&(matches, bit)| (matches, if bit == Bit::Z { Bit::X } else { bit })).collect();
         match plain.as_slice() {
             [] => Bit::X,
             terms => self.choose(terms, site),

@@ -14,8 +14,7 @@ use crate::diagnostic::{Diagnostic, Kind};
 use crate::graph::{BlackBox, InstanceId, NodeId, Port, PortDirection, Site, SourceKind};
 use crate::source::Span;
 use crate::syntax::ast::{
-    AnsiPort, AnsiPortKind, Connection, Direction, Expr, ExprKind, Ident, Instance, ItemKind, Module, ModuleKind,
-    Ports,
+    AnsiPort, AnsiPortKind, Connection, Direction, Expr, ExprKind, Ident, Instance, ItemKind, Module, ModuleKind, Ports,
 };
 
 /// A port of an elaborated module.
@@ -91,9 +90,7 @@ impl<'a> BlackBoxWork<'a> {
 fn port_names(module: &Module) -> Vec<Option<&str>> {
     match &module.ports {
         Ports::Ansi(ports) => ports.iter().map(|port| Some(port.name.name.as_str())).collect(),
-        Ports::NonAnsi(ports) => {
-            ports.iter().map(|port| port.name.as_ref().map(|name| name.name.as_str())).collect()
-        }
+        Ports::NonAnsi(ports) => ports.iter().map(|port| port.name.as_ref().map(|name| name.name.as_str())).collect(),
         Ports::None => Vec::new(),
     }
 }
@@ -573,12 +570,7 @@ impl<'a> Elaborator<'a> {
             };
             self.survive(outcome);
         }
-        self.builder.black_box(BlackBox {
-            module: work.name.name.clone(),
-            instance: work.node,
-            inputs,
-            outputs,
-        });
+        self.builder.black_box(BlackBox { module: work.name.name.clone(), instance: work.node, inputs, outputs });
     }
 
     fn black_box_input(&mut self, actual: Actual<'a>) -> Outcome<Vec<NodeId>> {

@@ -238,9 +238,9 @@ impl<'a> Elaborator<'a> {
             } else {
                 "edge list with more than one signal that could be the clock"
             };
-            let span = events.first().map_or(body.span, |first| {
-                events.last().map_or(first.span, |last| first.span.to(last.span))
-            });
+            let span = events
+                .first()
+                .map_or(body.span, |first| events.last().map_or(first.span, |last| first.span.to(last.span)));
             return Err(unsupported(what, span));
         };
         let mut assumed = HashMap::new();

@@ -235,12 +235,13 @@ impl<'a> Elaborator<'a> {
                 let (ExprKind::Name(name) | ExprKind::Member(_, name)) = &target.kind else {
                     return Err(unsupported("disable of something that has no name", statement.span));
                 };
-                let named = |point: &Point| {
-                    matches!(point, Point::Block(label) | Point::Call(label) if *label == name.name)
-                };
+                let named =
+                    |point: &Point| matches!(point, Point::Block(label) | Point::Call(label) if *label == name.name);
                 return self.jump(named, "disable", statement.span);
             }
-            StmtKind::Timed { what, .. } => return Err(unsupported(format!("{what} inside a process"), statement.span)),
+            StmtKind::Timed { what, .. } => {
+                return Err(unsupported(format!("{what} inside a process"), statement.span));
+            }
             StmtKind::Unsupported(what) => return Err(unsupported(what, statement.span)),
         }
         Ok(Exits::new())
@@ -549,20 +550,12 @@ impl<'a> Elaborator<'a> {
         Ok(extend(bits, width, signed))
     }
 
-    fn eval_compound(
-        &mut self,
-        op: BinaryOp,
-        target: &'a Expr,
-        value: &'a Expr,
-        width: usize,
-    ) -> Outcome<Vec<Bit>> {
+    fn eval_compound(&mut self, op: BinaryOp, target: &'a Expr, value: &'a Expr, width: usize) -> Outcome<Vec<Bit>> {
         let site = self.site(target.span.to(value.span));
         let (target_width, target_signed) = self.size(target)?;
         let (value_width, value_signed) = self.size(value)?;
-        let shift = matches!(
-            op,
-            BinaryOp::Shl | BinaryOp::Shr | BinaryOp::ArithShl | BinaryOp::ArithShr | BinaryOp::Pow
-        );
+        let shift =
+            matches!(op, BinaryOp::Shl | BinaryOp::Shr | BinaryOp::ArithShl | BinaryOp::ArithShr | BinaryOp::Pow);
         let (context, signed) = if shift {
             (target_width, target_signed)
         } else {
@@ -637,7 +630,8 @@ impl<'a> Elaborator<'a> {
     fn execute_case(&mut self, statement: &'a Stmt, case: &'a Case) -> Outcome<Exits> {
         let site = self.site(head(statement.span, case.subject.span));
         let full = case.default.is_none()
-            && (matches!(case.unique, Some(Unique::Unique | Unique::Priority)) || has_attribute(statement, "full_case"));
+            && (matches!(case.unique, Some(Unique::Unique | Unique::Priority))
+                || has_attribute(statement, "full_case"));
         let (mut width, mut signed) = self.size(&case.subject)?;
         for label in case.arms.iter().flat_map(|arm| &arm.labels) {
             if !matches!(label.kind, ExprKind::Range(..)) {
@@ -725,13 +719,7 @@ impl<'a> Elaborator<'a> {
     }
 
     /// Selectors nested in the order of the arms.
-    fn execute_priority(
-        &mut self,
-        case: &'a Case,
-        conditions: &[Bit],
-        full: bool,
-        site: Site,
-    ) -> Outcome<Exits> {
+    fn execute_priority(&mut self, case: &'a Case, conditions: &[Bit], full: bool, site: Site) -> Outcome<Exits> {
         let mut branches = Vec::new();
         let mut decided = false;
         for (arm, &condition) in case.arms.iter().zip(conditions) {
@@ -820,9 +808,9 @@ fn disjoint(arms: &[Vec<Cube>]) -> bool {
             .all(|(arm, cubes)| cubes.iter().all(|cube| *owners.entry(cube).or_insert(arm) == arm));
     }
     let apart = |a: &Cube, b: &Cube| a.iter().zip(b).any(|(a, b)| matches!((a, b), (Some(a), Some(b)) if a != b));
-    arms.iter().enumerate().all(|(index, arm)| {
-        arms[index + 1..].iter().flatten().all(|other| arm.iter().all(|cube| apart(cube, other)))
-    })
+    arms.iter()
+        .enumerate()
+        .all(|(index, arm)| arms[index + 1..].iter().flatten().all(|other| arm.iter().all(|cube| apart(cube, other))))
 }
 
 /// Whether the labels together match every value of the subject: by counting, when they are disjoint.

@@ -54,7 +54,7 @@ impl Function {
             }
             Form::Table([Points::new(count, zeros), Points::new(count, ones)])
         } else {
-            let mut clauses = Clauses::<Batsat>::new();
+            let mut clauses: Box<Clauses<Batsat>> = Box::new(Clauses::new());
             let literals: Vec<Literal> = variables.iter().map(|_| clauses.solver.variable()).collect();
             let known: BTreeMap<NodeId, Literal> = variables.iter().copied().zip(literals.iter().copied()).collect();
             let zero = !clauses.one;
