@@ -29,7 +29,7 @@ enum Form {
     /// The points where the function is 0, and those where it is 1.
     Table([Points; 2]),
     Clauses {
-        clauses: Clauses<Batsat>,
+        clauses: Box<Clauses<Batsat>>,
         variables: Vec<Literal>,
         target: Literal,
     },
