@@ -2,7 +2,6 @@
 //! An [`Outcome`] that is an error has not been reported yet: whoever handles it decides what becomes opaque, and
 //! reports it once.
 
-use std::cell::Cell;
 use std::collections::{BTreeMap, HashMap, HashSet};
 use std::rc::Rc;
 
@@ -61,8 +60,7 @@ pub(super) struct Variable {
     pub net: Option<NetId>,
     /// The wire of each bit, least significant first; empty for locals and memories.
     pub wires: Vec<NodeId>,
-    /// Whether anything reads a wire of it, or it is a port.
-    pub read: Cell<bool>,
+    pub is_port: bool,
     /// The values of an initialiser or of `initial` blocks.
     pub init: Option<Vec<Bit>>,
 }
@@ -131,6 +129,8 @@ pub(super) struct Elaborator<'a> {
     pub port_wires: HashSet<NodeId>,
     /// Wires that processes drive.
     pub pending_wires: HashSet<NodeId>,
+    /// Nodes that black boxes and primitives use, beside what drives wires and cells.
+    pub used: Vec<NodeId>,
 }
 
 impl<'a> Elaborator<'a> {
@@ -224,6 +224,7 @@ impl<'a> Elaborator<'a> {
             ports: HashMap::new(),
             port_wires: HashSet::new(),
             pending_wires: HashSet::new(),
+            used: Vec::new(),
         }
     }
 
@@ -268,7 +269,7 @@ impl<'a> Elaborator<'a> {
             storage: Storage::Local,
             net: None,
             wires: Vec::new(),
-            read: Cell::new(false),
+            is_port: false,
             init: None,
         })
     }

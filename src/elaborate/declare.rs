@@ -1,7 +1,6 @@
 //! Declarations: enters the names of a scope and lays out its nets and variables. Names that are worked out on first use
 //! come first, so that a net may use a function or parameter that stands below it.
 
-use std::cell::Cell;
 use std::collections::HashMap;
 use std::rc::Rc;
 
@@ -237,7 +236,7 @@ impl<'a> Elaborator<'a> {
             storage: if memory { Storage::Memory } else { storage },
             net,
             wires,
-            read: Cell::new(false),
+            is_port: false,
             init: None,
         });
         self.declare(scope, &name.name, Symbol::Variable(id));

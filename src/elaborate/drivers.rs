@@ -3,7 +3,7 @@
 //! because only at the end it is known which variables anything reads: a loop counter that only its own process uses makes
 //! no flip-flops.
 
-use std::collections::{BTreeMap, HashMap};
+use std::collections::{BTreeMap, HashMap, HashSet};
 use std::rc::Rc;
 
 use super::bits::Bit;
@@ -53,11 +53,85 @@ impl<'a> Elaborator<'a> {
         self.drivers.entry(wire).or_default().push(Driver { value, span, instance });
     }
 
+    /// The nodes that a bit is made of.
+    fn parts(&self, bit: Bit, nodes: &mut Vec<NodeId>) {
+        match bit {
+            Bit::Node(node) => nodes.push(node),
+            Bit::Tri(index) | Bit::Partial(index) => {
+                let guarded = self.guarded[index as usize];
+                self.parts(guarded.enable, nodes);
+                self.parts(guarded.data, nodes);
+            }
+            _ => {}
+        }
+    }
+
+    fn pending_parts(&self, kind: &PendingKind, nodes: &mut Vec<NodeId>) {
+        let rungs = match kind {
+            PendingKind::Value(bit) => return self.parts(*bit, nodes),
+            PendingKind::FlipFlop { clock, data, rungs, .. } => {
+                nodes.extend([*clock, *data]);
+                rungs
+            }
+            PendingKind::Latch { enable, data, rungs, .. } => {
+                nodes.extend([*enable, *data]);
+                rungs
+            }
+        };
+        nodes.extend(rungs.iter().flat_map(|rung| [rung.net, rung.value]));
+    }
+
+    /// The variables that processes write with blocking assignments only and that nothing but themselves depends on:
+    /// loop counters and scratch values.
+    fn scratch_variables(&self) -> HashSet<VariableId> {
+        let mut writes: HashMap<VariableId, Vec<&Pending>> = HashMap::new();
+        let mut scratch: HashSet<VariableId> = HashSet::new();
+        for pending in &self.pending {
+            writes.entry(pending.variable).or_default().push(pending);
+            scratch.insert(pending.variable);
+        }
+        for pending in &self.pending {
+            if !pending.blocking_only || self.variable(pending.variable).is_port {
+                scratch.remove(&pending.variable);
+            }
+        }
+        let mut owners: HashMap<NodeId, VariableId> = HashMap::new();
+        for &id in &scratch {
+            owners.extend(self.variable(id).wires.iter().map(|&wire| (wire, id)));
+        }
+        let mut stack: Vec<NodeId> = self.used.clone();
+        for driver in self.drivers.values().flatten() {
+            self.parts(driver.value, &mut stack);
+        }
+        for pending in &self.pending {
+            if !scratch.contains(&pending.variable) {
+                self.pending_parts(&pending.kind, &mut stack);
+            }
+        }
+        stack.extend(self.aliases.iter().flat_map(|&(a, b)| [a, b]));
+        let mut seen = vec![false; self.builder.len()];
+        while let Some(node) = stack.pop() {
+            if std::mem::replace(&mut seen[node.index()], true) {
+                continue;
+            }
+            stack.extend_from_slice(self.builder.fanin(node));
+            if let Some(id) = owners.get(&node)
+                && scratch.remove(id)
+            {
+                for pending in writes.get(id).into_iter().flatten() {
+                    self.pending_parts(&pending.kind, &mut stack);
+                }
+            }
+        }
+        scratch
+    }
+
     /// Turns what processes do into drivers and cells.
     pub fn make_cells(&mut self) {
+        let scratch = self.scratch_variables();
         for pending in std::mem::take(&mut self.pending) {
             let variable = &self.variables[pending.variable.index()];
-            if pending.blocking_only && !variable.read.get() {
+            if scratch.contains(&pending.variable) {
                 continue;
             }
             let Some(&wire) = variable.wires.get(pending.offset) else { continue };

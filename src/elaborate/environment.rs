@@ -111,7 +111,6 @@ impl Elaborator<'_> {
                 self.base_value(id)[low..low + width].to_vec()
             }
             _ => {
-                variable.read.set(true);
                 variable.wires[low..low + width].iter().map(|&wire| Bit::Node(wire)).collect()
             }
         }
@@ -123,9 +122,7 @@ impl Elaborator<'_> {
         if enable == Bit::One {
             return bit;
         }
-        let variable = self.variable(id);
-        variable.read.set(true);
-        let wire = variable.wires.get(at).map_or(Bit::X, |&wire| Bit::Node(wire));
+        let wire = self.variable(id).wires.get(at).map_or(Bit::X, |&wire| Bit::Node(wire));
         match data {
             Some(data) => self.select(enable, data, wire, site),
             None => wire,

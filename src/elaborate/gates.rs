@@ -292,6 +292,7 @@ impl<'a> Elaborator<'a> {
             });
         }
         let nodes = self.nodes(&bits, site);
+        self.used.extend(&nodes);
         let node = match model {
             Some(model) => model.instantiate(&mut self.builder, &nodes, site),
             None => self.builder.source(SourceKind::BlackBox, site),

@@ -34,8 +34,9 @@ use crate::diagnostic::{Diagnostic, Kind};
 use crate::graph::{Graph, GraphBuilder};
 use crate::syntax::ast;
 
-/// Expressions nest as deep as the source; the stack of the elaborating thread must hold that.
-const STACK: usize = 1 << 30;
+/// Expressions nest as deep as the source; the stack of the elaborating thread must hold that. The sizes are tried in
+/// order, in MiB, because a system with little address space refuses the larger ones.
+const STACK_MIB: [usize; 3] = [1024, 512, 256];
 
 /// What to elaborate.
 #[derive(Clone, Debug, Default)]
@@ -64,20 +65,22 @@ pub struct Design {
 
 /// Elaborates what is reached from the tops. See the module documentation.
 pub fn elaborate(units: &[ast::Unit], request: &Request) -> (Design, Vec<Diagnostic>) {
-    let on_large_stack = std::thread::scope(|scope| {
-        std::thread::Builder::new()
-            .stack_size(STACK)
-            .spawn_scoped(scope, || context::Elaborator::run(units, request))
-            .map(|thread| thread.join())
-    });
-    match on_large_stack {
-        Ok(Ok(result)) => result,
-        Ok(Err(panic)) => std::panic::resume_unwind(panic),
-        Err(error) => {
-            let message = format!("there is not enough memory for the elaborating thread: {error}");
-            (empty(request), vec![Diagnostic::new(Kind::Incomplete, "elaboration", message, None)])
+    let mut problem = String::new();
+    for mib in STACK_MIB {
+        let outcome = std::thread::scope(|scope| {
+            std::thread::Builder::new()
+                .stack_size(mib << 20)
+                .spawn_scoped(scope, || context::Elaborator::run(units, request))
+                .map(|thread| thread.join())
+        });
+        match outcome {
+            Ok(Ok(result)) => return result,
+            Ok(Err(panic)) => std::panic::resume_unwind(panic),
+            Err(error) => problem = error.to_string(),
         }
     }
+    let message = format!("there is not enough memory for the elaborating thread: {problem}");
+    (empty(request), vec![Diagnostic::new(Kind::Incomplete, "elaboration", message, None)])
 }
 
 fn empty(request: &Request) -> Design {

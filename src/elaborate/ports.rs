@@ -210,7 +210,7 @@ impl<'a> Elaborator<'a> {
         let mut list = Vec::new();
         let named = |this: &mut Self, name: &str| match this.scope(scope).names.get(name) {
             Some(&Symbol::Variable(id)) => {
-                this.variable(id).read.set(true);
+                this.variables[id.index()].is_port = true;
                 Some(Target::Variable(id))
             }
             Some(Symbol::Scope(_) | Symbol::Scopes(_)) => Some(Target::Interface),
@@ -507,7 +507,6 @@ impl<'a> Elaborator<'a> {
 
     fn top_port(&mut self, id: VariableId, instance: InstanceId, direction: PortDirection) {
         let variable = self.variable(id);
-        variable.read.set(true);
         let (wires, span, name) = (variable.wires.clone(), variable.span, variable.name.clone());
         let range = match &variable.ty.shape {
             Shape::Array { range, element, .. } if matches!(element.shape, Shape::Scalar) => {
@@ -587,7 +586,9 @@ impl<'a> Elaborator<'a> {
             }
         };
         let site = Site { instance: self.instance, span: self.actual_span(actual) };
-        Ok(self.nodes(&bits, site))
+        let nodes = self.nodes(&bits, site);
+        self.used.extend(&nodes);
+        Ok(nodes)
     }
 
     fn black_box_output(&mut self, actual: Actual<'a>, work: &BlackBoxWork<'a>) -> Outcome<Vec<NodeId>> {
