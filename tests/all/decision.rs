@@ -117,6 +117,7 @@ fn the_algebra_equals_the_explorer_on_every_transition() {
 /// Decides random circuits with `options` and requires the explorer's pairs, with nothing undecided.
 #[track_caller]
 fn check(options: Options, seeds: std::ops::Range<u64>) {
+    let mut seen = Seen::default();
     for seed in seeds {
         let written = Written::random(&mut Random::new(seed));
         let (graph, inputs, node) = build(&written.circuit, written.target);
@@ -140,6 +141,14 @@ fn check(options: Options, seeds: std::ops::Range<u64>) {
                     (Some(*kind), witness.target),
                     "seed {seed}: {witness:?}"
                 );
+                // Sources that the witness leaves out may have any value.
+                let bit = |node: NodeId| 1u32 << inputs.iter().position(|&input| input == node).expect("an input");
+                let fixed = start.keys().fold(0, |mask, &node| mask | bit(node));
+                let vector = start.iter().filter(|&(_, &value)| value).fold(0, |mask, (&node, _)| mask | bit(node));
+                for free in (0..1u32 << inputs.len()).filter(|free| free & fixed == 0) {
+                    let shown = transition(&written.circuit, written.target, vector | free, source, &mut seen);
+                    assert_eq!(shown, Some(glitch(*kind)), "seed {seed}: {witness:?} with {free:b}");
+                }
             }
         }
         assert_eq!(found, glitches(&written.circuit, written.target), "seed {seed}\n{}", written.body());

@@ -61,12 +61,12 @@ impl Published {
 
     /// A module that marks the target with `watch`.
     pub fn verilog(&self, module: &str) -> String {
-        let mut text = format!("module {module} (input {}, input clk, output reg q);\n", self.inputs.join(", "));
+        let mut text = format!("module {module} (input {}, input clk, output reg held);\n", self.inputs.join(", "));
         for (at, (name, formula)) in self.definitions.iter().enumerate() {
             let watch = if at + 1 == self.definitions.len() { " // stillwire: watch \"published\"" } else { "" };
             let _ = writeln!(text, "  wire {name};{watch}\n  assign {name} = {};", formula.verilog());
         }
-        let _ = writeln!(text, "  always @(posedge clk) q <= {};\nendmodule", self.target());
+        let _ = writeln!(text, "  always @(posedge clk) held <= {};\nendmodule", self.target());
         text
     }
 }
