@@ -66,7 +66,7 @@ pub(super) fn finding(
         let who = words::who(&names::name(graph, lead.source), sources.len());
         finding.message = format!("{who} {}", words::can(lead.kind, &subject.what));
         let paths = hazard::paths(graph, root, lead.witness);
-        finding.trace = trace(graph, root, &paths, finding.at);
+        finding.trace = trace(graph, root, lead.source, &paths, finding.at);
         let (cover, note) = cover(graph, verdict, options);
         finding.cover = cover;
         finding.notes.extend(note);
@@ -189,16 +189,15 @@ fn undecided(graph: &Graph, verdict: &TargetVerdict, options: &Options) -> Vec<S
 const SHOWN_HOPS: usize = 8;
 
 /// The places of a hazard in the order in which the change meets them: the stem, both ways, where they meet, the target.
-pub(super) fn trace(graph: &Graph, target: NodeId, paths: &Paths, at: Option<Span>) -> Vec<TraceStep> {
-    let mut steps = Vec::new();
-    let stem = names::name(graph, paths.stem);
-    let several = paths.ways.len() > 1;
-    let split = if several { "splits here into paths 1 and 2" } else { "changes" };
-    let stem_place =
-        names::wire_of(graph, paths.stem).and_then(|wire| graph.span(wire)).or_else(|| place(graph, paths.stem));
-    steps.push(TraceStep { at: stem_place, text: format!("`{stem}` {split}") });
+fn trace(graph: &Graph, target: NodeId, source: NodeId, paths: &Paths, at: Option<Span>) -> Vec<TraceStep> {
+    let mut steps = vec![stem(graph, source, paths)];
+    let meet_place = place(graph, paths.meet);
     for (number, way) in paths.ways.iter().enumerate() {
-        let hops = hops(graph, paths, way);
+        let mut hops = hops(graph, paths, way);
+        // A way that runs within the place where both meet is told by its length alone.
+        if hops.iter().all(|hop| hop.at == meet_place) {
+            hops.clear();
+        }
         for (letter, hop) in hops.into_iter().enumerate() {
             let letter = char::from(b'a' + (letter % 26) as u8);
             steps.push(TraceStep { at: hop.at, text: format!("{}{letter}: {}", number + 1, hop.text) });
@@ -224,9 +223,8 @@ pub(super) fn trace(graph: &Graph, target: NodeId, paths: &Paths, at: Option<Spa
     };
     let target_name = names::name(graph, target);
     let between = paths.tail.iter().filter(|&&node| node != paths.meet && counts_as_gate(graph, node)).count();
-    let meet_place = place(graph, paths.meet);
     if between == 0 && meet_place == at {
-        steps.push(TraceStep { at, text: format!("{joined}, which drives `{target_name}`") });
+        steps.push(TraceStep { at, text: joined });
     } else {
         steps.push(TraceStep { at: meet_place, text: joined });
         let way = match between {
@@ -236,6 +234,18 @@ pub(super) fn trace(graph: &Graph, target: NodeId, paths: &Paths, at: Option<Spa
         steps.push(TraceStep { at, text: format!("{way} `{target_name}`") });
     }
     steps
+}
+
+/// Where the change splits, at the declaration of that net. Deep in the hierarchy the net has another name than the
+/// signal that the message is about.
+fn stem(graph: &Graph, source: NodeId, paths: &Paths) -> TraceStep {
+    let name = names::name(graph, paths.stem);
+    let signal = names::name(graph, source);
+    let same = graph.root(paths.stem) == graph.root(source) && name != signal;
+    let also = if same { format!(", which is `{signal}`,") } else { String::new() };
+    let does = if paths.ways.len() > 1 { "splits here into paths 1 and 2" } else { "changes" };
+    let wire = names::wire_of(graph, paths.stem).and_then(|wire| graph.span(wire));
+    TraceStep { at: wire.or_else(|| place(graph, paths.stem)), text: format!("`{name}`{also} {does}") }
 }
 
 /// A gate to the reader: wires do not count, an operator counts once, at its exit.
