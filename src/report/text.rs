@@ -68,16 +68,26 @@ fn of_finding(sources: &SourceSet, finding: &Finding) -> Diagnostic<FileId> {
     let mut notes = Vec::new();
     // The last step of a trace at the finding's own place says what happens there.
     let own = finding.trace.iter().rposition(|step| step.at == finding.at && step.at.is_some());
-    if let Some(at) = finding.at {
-        let text = own.map_or("", |index| finding.trace[index].text.as_str());
-        place(sources, at, text, true, &mut labels, &mut notes);
-    }
+    let mut places: Vec<(Span, String)> = Vec::new();
     for (index, step) in finding.trace.iter().enumerate() {
         match step.at {
             _ if Some(index) == own => {}
-            Some(at) => place(sources, at, &step.text, false, &mut labels, &mut notes),
+            // The renderer would put labels of one place in an order of its own.
+            Some(at) => match places.iter_mut().find(|(known, _)| *known == at) {
+                Some((_, text)) => text.push_str(&format!("; {}", step.text)),
+                None => places.push((at, step.text.clone())),
+            },
             None => notes.push(step.text.clone()),
         }
+    }
+    if let Some(at) = finding.at {
+        let own = own.map(|index| finding.trace[index].text.clone());
+        let before = places.iter().position(|(known, _)| *known == at).map(|index| places.remove(index).1);
+        let text: Vec<String> = before.into_iter().chain(own).collect();
+        place(sources, at, &text.join("; "), true, &mut labels, &mut notes);
+    }
+    for (at, text) in places {
+        place(sources, at, &text, false, &mut labels, &mut notes);
     }
     if let Some(lead) = finding.hazards.first() {
         notes.push(waveform::render(lead));

@@ -20,11 +20,11 @@ pub(super) fn finding(graph: &Graph, verdict: &LoopVerdict) -> Option<Finding> {
     nets.sort();
     let start = nets.first().map(|(_, node)| *node).or_else(|| verdict.nodes.first().copied())?;
     let net = names::name(graph, start);
-    let ring = ring(graph, verdict, start);
-    let at = ring
-        .iter()
-        .find(|&&node| graph.kind(node) != NodeKind::Wire)
-        .map_or_else(|| evidence::place(graph, start), |&gate| evidence::place(graph, gate));
+    let mut ring = ring(graph, verdict, start);
+    // The gate that drives the net comes first: it is the finding's place.
+    let driver = ring.iter().rposition(|&node| graph.kind(node) != NodeKind::Wire).unwrap_or(0);
+    ring.rotate_left(driver);
+    let at = evidence::place(graph, graph.root(start));
     let (severity, what) = judge(verdict);
     let stores = verdict.behaviours.iter().any(|behaviour| behaviour.kind == BehaviourKind::Stores);
     let loss_open = stores && verdict.loses_state.is_none() && !verdict.loss_decided;

@@ -217,7 +217,7 @@ fn trace(graph: &Graph, target: NodeId, source: NodeId, paths: &Paths, at: Optio
     let joined = match graph.kind(paths.meet) {
         NodeKind::OpOut(_) | NodeKind::OpIn(_) => format!(
             "{} inside {meet}: no implementation is fixed before synthesis, so any change of its result may glitch",
-            if several { format!("paths {} meet", lengths.join(" and ")) } else { "the change passes".to_string() }
+            if paths.ways.len() > 1 { format!("paths {} meet", lengths.join(" and ")) } else { "the change passes".to_string() }
         ),
         _ => format!("paths {} meet in {meet}", lengths.join(" and ")),
     };
