@@ -8,7 +8,7 @@ use std::collections::BTreeMap;
 
 use rayon::prelude::*;
 
-use super::cone::{Cone, Edge};
+use super::cone::{Cone, Edge, Op};
 use super::order::Order;
 use super::{HazardKind, Options, Pair, TargetVerdict, Undecided, Witness};
 use super::{enumerate, search};
@@ -107,11 +107,12 @@ struct Extent {
     sources: usize,
     /// The sources that reach the root through a loop.
     behind_loops: Vec<NodeId>,
+    /// The nodes of loops that the root depends on directly; sorted.
+    looped: Vec<NodeId>,
 }
 
 impl Extent {
     fn new(graph: &Graph, cone: &Cone, root: Edge) -> Self {
-        use super::cone::Op;
         let members = cone.closure([root.node()].into_iter(), |_| true);
         let mut frees = 0;
         let mut sources = Vec::new();
@@ -132,7 +133,8 @@ impl Extent {
         sources.extend_from_slice(&behind_loops);
         sources.sort_unstable();
         sources.dedup();
-        Self { measure: Measure { nodes: members.len(), frees }, sources: sources.len(), behind_loops }
+        looped.sort_unstable();
+        Self { measure: Measure { nodes: members.len(), frees }, sources: sources.len(), behind_loops, looped }
     }
 
     /// Sorts the answers by source; what may come through a loop and is not proven hazardous stays open.
@@ -142,6 +144,12 @@ impl Extent {
             pairs.entry(source).or_insert_with(|| Pair { source, hazards: Vec::new(), undecided: Vec::new() })
         }
         for answer in answers {
+            // A witness in which the loop holds still while a source drives it shows nothing.
+            let supposes =
+                |witness: &Witness| witness.holds.iter().any(|(node, _)| self.looped.binary_search(node).is_ok());
+            if self.behind_loops.binary_search(&answer.source).is_ok() && answer.result.as_ref().is_ok_and(supposes) {
+                continue;
+            }
             let pair = pair(&mut pairs, answer.source);
             match answer.result {
                 Ok(witness) => pair.hazards.push((answer.kind, witness)),

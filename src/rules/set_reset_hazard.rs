@@ -76,13 +76,7 @@ fn judge_level(graph: &Graph, uses: &[Use], active: bool, kind: HazardKind) -> (
             format!("{acts} {cells} more than once, or releases them in between: what they took up there is lost"),
         )
     } else if kind == towards {
-        (
-            Severity::Error,
-            format!(
-                "{acts} {cells} although no {acted} is asserted{}",
-                words::short_pulse(uses)
-            ),
-        )
+        (Severity::Error, format!("{acts} {cells} although no {acted} is asserted{}", words::short_pulse(uses)))
     } else {
         (
             Severity::Warning,

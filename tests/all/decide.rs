@@ -392,11 +392,21 @@ fn what_comes_through_a_loop_is_never_clean() {
     let lower = builder.and(&[low, q], site);
     let target = builder.or(&[upper, lower], site);
     let beside = builder.and(&[a, set], site);
+    // `set` drives the latch as well, so that nobody knows whether `q` holds still when it changes.
+    let not_set = builder.not(set, site);
+    let upper = builder.and(&[set, q], site);
+    let lower = builder.and(&[not_set, q], site);
+    let both = builder.or(&[upper, lower], site);
+    // The same through `a`, where the latch only masks.
+    let upper = builder.and(&[set, a], site);
+    let lower = builder.and(&[not_set, a], site);
+    let either = builder.or(&[upper, lower, q], site);
+    let despite = builder.and(&[either, a], site);
     let graph = builder.freeze();
 
     for exhaustive_sources in [0, 16] {
         let options = Options { exhaustive_sources, ..Options::default() };
-        let verdicts = decide(&graph, &[target, beside], &options);
+        let verdicts = decide(&graph, &[target, beside, both, despite], &options);
         let verdict = &verdicts[0];
         // The two inputs of the latch, the latch itself, and `a`.
         assert_eq!(verdict.sources, 4);
@@ -413,5 +423,11 @@ fn what_comes_through_a_loop_is_never_clean() {
         assert!(pair(driver).is_none(), "one polarity only: clean");
         assert!(verdicts[1].is_clean());
         assert_eq!(verdicts[1].sources, 2);
+        let pair = |of: &TargetVerdict| of.pairs.iter().find(|pair| pair.source == set).cloned().expect("listed");
+        assert!(pair(&verdicts[2]).hazards.is_empty());
+        assert_eq!(pair(&verdicts[2]).undecided.len(), 3);
+        // With `q` = 1 the pulse is masked, so its witness supposes `q` = 0 and is no proof either.
+        assert!(pair(&verdicts[3]).hazards.is_empty());
+        assert_eq!(pair(&verdicts[3]).undecided.len(), 3);
     }
 }
