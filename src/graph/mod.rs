@@ -109,6 +109,23 @@ impl Graph {
         Some(format!("{}.{}{}", self.instances[net.instance.index()].path, net.name, name.suffix))
     }
 
+    /// Every node that a cell, a module without text or a port of a top reads, in no useful order; the fan-out of a node
+    /// lists only other nodes.
+    pub fn endpoints(&self) -> impl Iterator<Item = NodeId> + '_ {
+        let cells = self.cells.iter().flat_map(|cell| {
+            let pin = match cell.kind {
+                CellKind::FlipFlop { clock, .. } => clock,
+                CellKind::Latch { enable, .. } => enable,
+            };
+            let controls = cell.controls.iter().flat_map(|control| [control.net, control.value]);
+            [cell.data, pin].into_iter().chain(controls)
+        });
+        let boxes = self.black_boxes.iter().flat_map(|one| &one.inputs).flat_map(|(_, nodes)| nodes.iter().copied());
+        let outputs = self.ports.iter().filter(|port| port.direction != PortDirection::Input);
+        let outputs = outputs.flat_map(|port| self.nets[port.net.index()].bits.iter().copied());
+        cells.chain(boxes).chain(outputs)
+    }
+
     /// Follows wires down to the node that drives them: two nets with the same root are one net.
     pub fn root(&self, mut node: NodeId) -> NodeId {
         let mut steps = 0;

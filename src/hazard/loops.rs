@@ -9,6 +9,8 @@ mod search;
 
 use rayon::prelude::*;
 
+use std::collections::BTreeSet;
+
 use self::cut::Cut;
 use super::Options;
 use crate::graph::{Graph, NodeId, cycles};
@@ -75,6 +77,7 @@ pub struct StateLoss {
 /// The verdict on every combinational loop, in order of the smallest node.
 pub fn loops(graph: &Graph, options: &Options) -> Vec<LoopVerdict> {
     let components = cycles::components(graph);
+    let endpoints: BTreeSet<NodeId> = if components.is_empty() { BTreeSet::new() } else { graph.endpoints().collect() };
     (0..components.len())
         .into_par_iter()
         .map(|index| {
@@ -85,7 +88,7 @@ pub fn loops(graph: &Graph, options: &Options) -> Vec<LoopVerdict> {
                 loses_state: None,
                 loss_decided: false,
             };
-            let Some(cut) = Cut::new(graph, &components, index).filter(|cut| !cut.is_partial()) else {
+            let Some(cut) = Cut::new(graph, &components, index, &endpoints).filter(|cut| !cut.is_partial()) else {
                 let kind = BehaviourKind::Undecided;
                 verdict.behaviours.push(Behaviour { kind, inputs: Vec::new(), states: Vec::new() });
                 return verdict;

@@ -97,9 +97,12 @@ fn of_finding(sources: &SourceSet, finding: &Finding) -> Diagnostic<FileId> {
         notes.push(others(finding));
     }
     if let Some(cover) = &finding.cover {
-        let proven =
-            if cover.proven { "proven: with it, no change of one signal can glitch this net" } else { "not proven" };
-        notes.push(format!("cover ({proven}):\n  {}", wrapped(&cover.verilog).replace('\n', "\n  ")));
+        let effect = match (cover.proven, &finding.loop_) {
+            (false, _) => "not proven",
+            (true, None) => "proven: with it, no change of one signal can glitch this net",
+            (true, Some(_)) => "proven: with it, no change of one signal can lose the value",
+        };
+        notes.push(format!("cover ({effect}):\n  {}", wrapped(&cover.verilog).replace('\n', "\n  ")));
     }
     notes.extend(finding.notes.iter().map(|note| wrapped(note)));
     Diagnostic::new(level(finding.severity))

@@ -15,8 +15,10 @@ pub(super) fn render(hazard: &Hazard) -> String {
     }
     let held: Vec<_> = hazard.before.iter().filter(|(name, _)| !hazard.changes.contains(name)).collect();
     for (name, value) in held.iter().take(SHOWN_HELD) {
-        let (drawn, word) = if *value { ("~~~~~~~~~~", "holds 1") } else { ("__________", "holds 0") };
-        rows.push((name, drawn, word.to_string()));
+        let drawn = if *value { "~~~~~~~~~~" } else { "__________" };
+        // A net of a loop stands for what is fed back from it, and for what is made of that.
+        let word = if *name == hazard.net { "is fed back as" } else { "holds" };
+        rows.push((name, drawn, format!("{word} {}", u8::from(*value))));
     }
     let (drawn, word) = match (hazard.pin, hazard.kind) {
         ((false, false), _) => ("____/~\\___", "should hold 0, pulses"),

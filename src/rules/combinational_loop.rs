@@ -2,7 +2,7 @@
 //! bad it is: one that oscillates or races is an error, one that stores is a latch that nobody declared (an error when a
 //! single input change can lose its state), and one that always settles is worth no more than a note.
 
-use std::collections::{BTreeMap, VecDeque};
+use std::collections::{BTreeMap, BTreeSet, VecDeque};
 
 use super::evidence;
 use super::finding::{Finding, LoopText, Rule, Severity, TraceStep, Verdict};
@@ -14,11 +14,20 @@ use crate::source::Span;
 /// The most places shown of one loop; the nets are all in the finding's `loop`.
 const SHOWN_STEPS: usize = 10;
 
-pub(super) fn finding(graph: &Graph, verdict: &LoopVerdict) -> Option<Finding> {
+/// `endpoints` are the nodes that cells and ports read.
+pub(super) fn finding(graph: &Graph, verdict: &LoopVerdict, endpoints: &BTreeSet<NodeId>) -> Option<Finding> {
     let mut nets: Vec<(String, NodeId)> =
         verdict.nodes.iter().filter_map(|&node| Some((graph.name(node)?, node))).collect();
     nets.sort();
-    let start = nets.first().map(|(_, node)| *node).or_else(|| verdict.nodes.first().copied())?;
+    // The net that the rest of the design reads is the one that the reader knows; by name, so that moved code keeps it.
+    let read = |node: NodeId| {
+        let outside = |reader: &NodeId| verdict.nodes.binary_search(reader).is_err();
+        endpoints.contains(&node) || graph.fanout(node).iter().any(outside)
+    };
+    let start = (nets.iter().find(|(_, node)| read(*node)))
+        .or_else(|| nets.first())
+        .map(|(_, node)| *node)
+        .or_else(|| verdict.nodes.first().copied())?;
     let net = names::name(graph, start);
     let mut ring = ring(graph, verdict, start);
     // The gate that drives the net comes first: it is the finding's place.
@@ -126,7 +135,7 @@ fn lost_state(graph: &Graph, loss: &StateLoss, finding: &mut Finding) {
     let harm = "the feedback can catch the pulse and keep the wrong value".to_string();
     finding.hazards.push(evidence::hazard_text(graph, loss.node, kind, &loss.witness, harm));
     match &loss.cover {
-        Some(cover) => finding.cover = cover_text::of(graph, loss.node, cover),
+        Some(cover) => finding.cover = cover_text::of_loop(graph, loss.node, cover),
         None => finding.notes.push("no cover is known that keeps the state".to_string()),
     }
 }

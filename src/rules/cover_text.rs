@@ -6,8 +6,22 @@ use super::names;
 use crate::graph::{Graph, InstanceId, NodeId};
 use crate::hazard::Cover;
 
-/// `None` when a literal has no name in the design.
+/// The cover of a pin: a net to be read in place of the present one. `None` when a literal has no name in the design.
 pub(super) fn of(graph: &Graph, target: NodeId, cover: &Cover) -> Option<CoverText> {
+    let old = names::verilog(graph, target, names::instance(graph, target))?;
+    let name: String = old.chars().map(|c| if c.is_ascii_alphanumeric() { c } else { '_' }).collect();
+    let name = name.trim_end_matches('_');
+    text(graph, target, cover, &old, &format!("wire {name}_covered"))
+}
+
+/// The cover of a loop: the terms must stand inside the feedback, so the net itself is assigned.
+pub(super) fn of_loop(graph: &Graph, target: NodeId, cover: &Cover) -> Option<CoverText> {
+    let name = names::verilog(graph, target, names::instance(graph, target))?;
+    text(graph, target, cover, "<present logic>", &format!("assign {name}"))
+}
+
+/// `<left> = <terms over present>;`
+fn text(graph: &Graph, target: NodeId, cover: &Cover, present: &str, left: &str) -> Option<CoverText> {
     let scope = names::instance(graph, target);
     let term = |literals: &Vec<(NodeId, bool)>, operator: &str| -> Option<String> {
         let literals: Option<Vec<String>> =
@@ -17,10 +31,9 @@ pub(super) fn of(graph: &Graph, target: NodeId, cover: &Cover) -> Option<CoverTe
     let products: Option<Vec<String>> = cover.products.iter().map(|literals| term(literals, " & ")).collect();
     let sums: Option<Vec<String>> = cover.sums.iter().map(|literals| term(literals, " | ")).collect();
     let (products, sums) = (products?, sums?);
-    let old = names::verilog(graph, target, scope)?;
     let mut alternatives: Vec<String> = Vec::new();
     if !cover.replaces {
-        alternatives.push(old.clone());
+        alternatives.push(present.to_string());
     }
     alternatives.extend(products.iter().map(|product| parenthesised(product, " & ")));
     let mut whole = alternatives.join(" | ");
@@ -30,9 +43,7 @@ pub(super) fn of(graph: &Graph, target: NodeId, cover: &Cover) -> Option<CoverTe
             whole.push_str(&format!(" & {}", parenthesised(sum, " | ")));
         }
     }
-    let name: String = old.chars().map(|c| if c.is_ascii_alphanumeric() { c } else { '_' }).collect();
-    let name = name.trim_end_matches('_');
-    let verilog = format!("wire {name}_covered = {whole};");
+    let verilog = format!("{left} = {whole};");
     Some(CoverText { terms: products.into_iter().chain(sums).collect(), verilog, proven: cover.proven })
 }
 

@@ -215,10 +215,12 @@ fn trace(graph: &Graph, target: NodeId, source: NodeId, paths: &Paths, at: Optio
         })
         .collect();
     let joined = match graph.kind(paths.meet) {
-        NodeKind::OpOut(_) | NodeKind::OpIn(_) => format!(
-            "{} inside {meet}: no implementation is fixed before synthesis, so any change of its result may glitch",
-            if paths.ways.len() > 1 { format!("paths {} meet", lengths.join(" and ")) } else { "the change passes".to_string() }
-        ),
+        NodeKind::OpOut(_) | NodeKind::OpIn(_) => {
+            format!("inside {meet} no implementation is fixed before synthesis: a change of its result may glitch")
+        }
+        NodeKind::Table(_) if paths.ways.len() < 2 => {
+            format!("{meet}, whose table has no row for x that promises a still output here")
+        }
         _ => format!("paths {} meet in {meet}", lengths.join(" and ")),
     };
     let target_name = names::name(graph, target);
@@ -244,7 +246,12 @@ fn stem(graph: &Graph, source: NodeId, paths: &Paths) -> TraceStep {
     let same = graph.root(paths.stem) == graph.root(source) && name != signal;
     let also = if same { format!(", which is `{signal}`,") } else { String::new() };
     let does = if paths.ways.len() > 1 { "splits here into paths 1 and 2" } else { "changes" };
-    let wire = names::wire_of(graph, paths.stem).and_then(|wire| graph.span(wire));
+    let wire = names::wire_of(graph, paths.stem);
+    if wire.is_none() && !matches!(graph.kind(paths.stem), NodeKind::Source(_)) {
+        let text = format!("the output of {} {does}", words::gate(graph, paths.stem));
+        return TraceStep { at: place(graph, paths.stem), text };
+    }
+    let wire = wire.and_then(|wire| graph.span(wire));
     TraceStep { at: wire.or_else(|| place(graph, paths.stem)), text: format!("`{name}`{also} {does}") }
 }
 

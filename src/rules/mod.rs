@@ -85,6 +85,9 @@ pub fn run(graph: &Graph, watches: &[Watch], options: &Options) -> Outcome {
         coverage.open_questions += verdict.pairs.iter().map(|pair| pair.undecided.len()).sum::<usize>();
     }
 
+    let endpoints: BTreeSet<NodeId> = if loops.is_empty() { BTreeSet::new() } else { graph.endpoints().collect() };
+    let endpoints = &endpoints;
+
     // Paths and covers are worked out per finding, which is where the time goes; the order is that of the tasks.
     let mut tasks: Vec<Task<'_>> = Vec::new();
     for (nets, rule) in [
@@ -108,7 +111,7 @@ pub fn run(graph: &Graph, watches: &[Watch], options: &Options) -> Outcome {
         tasks.push(Box::new(move || reconvergent_inversion::output(graph, port, verdicts, outside)));
     }
     for verdict in &loops {
-        tasks.push(Box::new(move || combinational_loop::finding(graph, verdict)));
+        tasks.push(Box::new(move || combinational_loop::finding(graph, verdict, endpoints)));
     }
     let found: Vec<Option<Finding>> = tasks.par_iter().map(|task| task()).collect();
     Outcome { findings: found.into_iter().flatten().collect(), pins: coverage, loops: loops.len() }

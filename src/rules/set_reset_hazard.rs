@@ -73,7 +73,7 @@ fn judge_level(graph: &Graph, uses: &[Use], active: bool, kind: HazardKind) -> (
     if kind == HazardKind::Dynamic {
         (
             Severity::Warning,
-            format!("{acts} {cells} more than once, or releases them in between: what they took up there is lost"),
+            format!("{acts} {cells} more than once, or lets go in between: what was taken up there is lost"),
         )
     } else if kind == towards {
         (Severity::Error, format!("{acts} {cells} although no {acted} is asserted{}", words::short_pulse(uses)))

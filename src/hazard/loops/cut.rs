@@ -34,10 +34,16 @@ pub(super) struct Cut {
 
 impl Cut {
     /// Cuts the component `index`; `None` when it is too large.
-    pub(super) fn new(graph: &Graph, components: &Components, index: usize) -> Option<Self> {
+    /// Cells and ports read `endpoints`.
+    pub(super) fn new(
+        graph: &Graph,
+        components: &Components,
+        index: usize,
+        endpoints: &BTreeSet<NodeId>,
+    ) -> Option<Self> {
         let nodes = components.nodes(index);
         let border = border(graph, components, index);
-        let feedback = feedback(graph, nodes, &border)?;
+        let feedback = feedback(graph, nodes, &border, endpoints)?;
         let cuts: Vec<NodeId> = border.iter().chain(&feedback).copied().collect();
         let cone = Cone::cut(graph, &feedback, &cuts);
         let states: Vec<NodeId> = feedback.iter().filter_map(|&node| cone.read_of(node)).collect();
@@ -102,7 +108,7 @@ fn border(graph: &Graph, components: &Components, index: usize) -> Vec<NodeId> {
 /// A small set of nodes that every cycle passes, greedily: in each remaining component the node that most pairs of
 /// edges meet in. Of equals one that is read outside the loop, because that is where a state is a state: cut at an inner
 /// gate, a latch would be judged by what that gate forgets; then a declared net, because the reader knows its name.
-fn feedback(graph: &Graph, nodes: &[NodeId], border: &[NodeId]) -> Option<Vec<NodeId>> {
+fn feedback(graph: &Graph, nodes: &[NodeId], border: &[NodeId], endpoints: &BTreeSet<NodeId>) -> Option<Vec<NodeId>> {
     let mut found: BTreeSet<NodeId> = BTreeSet::new();
     let mut left = EFFORT;
     loop {
@@ -118,7 +124,8 @@ fn feedback(graph: &Graph, nodes: &[NodeId], border: &[NodeId]) -> Option<Vec<No
             let best =
                 members.iter().filter_map(|&node| Some((node, cone.original(node)?))).max_by_key(|&(copy, node)| {
                     let pairs = inside(cone.graph.fanin(copy)) * inside(cone.graph.fanout(copy));
-                    let read = graph.fanout(node).iter().any(|reader| nodes.binary_search(reader).is_err());
+                    let outside = |reader: &NodeId| nodes.binary_search(reader).is_err();
+                    let read = endpoints.contains(&node) || graph.fanout(node).iter().any(outside);
                     (pairs, read, graph.node_name(node).is_some(), node)
                 });
             found.extend(best.map(|(_, node)| node));

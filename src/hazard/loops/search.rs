@@ -222,7 +222,7 @@ mod tests {
             }
             let parsed = text::parse(&text).unwrap_or_else(|error| panic!("{error} in\n{text}"));
             let components = cycles::components(&parsed.graph);
-            let cut = Cut::new(&parsed.graph, &components, 0).expect("small");
+            let cut = Cut::new(&parsed.graph, &components, 0, &std::collections::BTreeSet::new()).expect("small");
             let kinds = |found: &[Behaviour]| found.iter().map(|behaviour| behaviour.kind).collect::<Vec<_>>();
             let counted = count::behaviours(&cut).expect("small");
             assert_eq!(kinds(&counted), kinds(&behaviours(&cut, &Options::default())), "{text}");
