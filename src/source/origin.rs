@@ -74,14 +74,26 @@ pub struct ChunkPlaces<'a> {
     /// Offset of the chunk in `text`.
     pub start: usize,
     pub prefix: usize,
+    /// Blanks that the parser's side has more: from which offset on how many bytes.
+    pub added: Vec<(usize, usize)>,
     /// The file that the text belongs to, for an empty text.
     pub file: FileId,
 }
 
+impl ChunkPlaces<'_> {
+    /// From an offset that the parser knows to one of the whole text.
+    fn in_text(&self, offset: usize) -> usize {
+        let index = self.added.partition_point(|&(from, _)| from <= offset);
+        let added = index.checked_sub(1).map_or(0, |index| self.added[index].1);
+        self.start + offset.saturating_sub(self.prefix + added)
+    }
+}
+
 impl Places for ChunkPlaces<'_> {
     fn place(&self, offset: usize, len: usize) -> Span {
-        let offset = self.start + offset.saturating_sub(self.prefix);
-        self.text.place(offset, len).unwrap_or(Span { file: self.file, start: 0, end: 0 })
+        let start = self.in_text(offset);
+        let end = self.in_text(offset + len).max(start);
+        self.text.place(start, end - start).unwrap_or(Span { file: self.file, start: 0, end: 0 })
     }
 }
 

@@ -42,7 +42,6 @@ fn parse_behind(
     file: FileId,
 ) -> Result<(ast::Unit, Vec<Diagnostic>), Box<Diagnostic>> {
     let piece = [prefix, &text.text[chunk.start..chunk.end], "\n"].concat();
-    let places = ChunkPlaces { text, start: chunk.start, prefix: prefix.len(), file };
     let place = |offset: usize| {
         let at = (chunk.start + offset.saturating_sub(prefix.len())).min(chunk.end.saturating_sub(1));
         (at, text.place(at, 1).unwrap_or(Span { file, start: 0, end: 0 }))
@@ -51,28 +50,51 @@ fn parse_behind(
     let parsed = catch_unwind(AssertUnwindSafe(|| {
         let (preprocessed, defines) =
             sv_parser::preprocess_str(&piece, "", &sv_parser::Defines::new(), NO_FOLDERS, true, false, 0, 0)?;
-        if preprocessed.text() != piece {
-            return Err(sv_parser::Error::Preprocess(None));
-        }
-        sv_parser::parse_sv_pp(preprocessed, defines, false).map(|(tree, _)| tree)
+        let added = added_blanks(preprocessed.text(), &piece).ok_or(sv_parser::Error::Preprocess(None))?;
+        sv_parser::parse_sv_pp(preprocessed, defines, false).map(|(tree, _)| {
+            let places = ChunkPlaces { text, start: chunk.start, prefix: prefix.len(), added, file };
+            convert(&tree, &places, file)
+        })
     }));
-    let tree = match parsed {
-        Ok(Ok(tree)) => tree,
+    match parsed {
+        Ok(Ok(result)) => Ok(result),
         Ok(Err(sv_parser::Error::Parse(at) | sv_parser::Error::Preprocess(at))) => {
             let (offset, span) = place(at.map_or(piece.len(), |(_, offset)| offset));
-            return Err(syntax_error(&text.text[..chunk.end], offset, span));
+            Err(syntax_error(&text.text[..chunk.end], offset, span))
         }
         Ok(Err(error)) => {
             let message = format!("this part of the file cannot be parsed: {error}");
-            return Err(Box::new(Diagnostic::new(Kind::Incomplete, "syntax", message, Some(place(prefix.len()).1))));
+            Err(Box::new(Diagnostic::new(Kind::Incomplete, "syntax", message, Some(place(prefix.len()).1))))
         }
         Err(_) => {
             let message = "the parser gave up on this module or package";
             let diagnostic = Diagnostic::new(Kind::Incomplete, "syntax", message, Some(place(prefix.len()).1));
-            return Err(Box::new(diagnostic.with_help("this is a defect of the parser; please report the file")));
+            Err(Box::new(diagnostic.with_help("this is a defect of the parser or of ours; please report the file")))
         }
-    };
-    Ok(convert(&tree, &places, file))
+    }
+}
+
+/// Where the parser's own preprocessor added white space to `piece`: it doubles what follows a string or an escaped
+/// identifier. Each entry says from which offset of `parsed` on how many bytes were added; `None` when there is any other
+/// difference.
+fn added_blanks(parsed: &str, piece: &str) -> Option<Vec<(usize, usize)>> {
+    let (parsed, piece) = (parsed.as_bytes(), piece.as_bytes());
+    let mut added = Vec::new();
+    let mut at = 0;
+    let mut count = 0;
+    while at < parsed.len() {
+        let rest = parsed[at..].iter().zip(piece.get(at - count..)?);
+        at += rest.take_while(|(left, right)| left == right).count();
+        let blanks = parsed[at..].iter().take_while(|byte| byte.is_ascii_whitespace()).count();
+        if at < parsed.len() && blanks == 0 {
+            return None;
+        }
+        if blanks > 0 {
+            (at, count) = (at + blanks, count + blanks);
+            added.push((at, count));
+        }
+    }
+    (at - count == piece.len()).then_some(added)
 }
 
 const NO_FOLDERS: &[&str] = &[];
@@ -102,4 +124,18 @@ fn refused(text: &MappedText, refusal: Refusal, file: FileId) -> Box<Diagnostic>
     };
     let place = text.place(at, 1).unwrap_or(Span { file, start: 0, end: 0 });
     Box::new(Diagnostic::new(Kind::Incomplete, "size", message, Some(place)).with_help(help))
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn added_blanks_are_found() {
+        assert_eq!(added_blanks("a b c", "a b c"), Some(vec![]));
+        assert_eq!(added_blanks("\"s\"  x \\e   y", "\"s\" x \\e  y"), Some(vec![(5, 1), (12, 2)]));
+        assert_eq!(added_blanks("a  ", "a "), Some(vec![(3, 1)]));
+        assert_eq!(added_blanks("a x", "a y"), None);
+        assert_eq!(added_blanks("a", "a y"), None);
+    }
 }
