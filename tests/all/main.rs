@@ -3,6 +3,7 @@
 mod covers;
 mod decide;
 mod decision;
+mod demo;
 mod explorer;
 mod fixtures;
 mod flatten;
