@@ -31,6 +31,9 @@ impl Default for Style {
 /// Findings beyond the first of one net are one line each; so many of them.
 const SHOWN_HAZARDS: usize = 6;
 
+/// The most held signals named in such a line.
+const SHOWN_HELD: usize = 4;
+
 /// Columns of a wrapped note.
 const WIDTH: usize = 100;
 
@@ -144,11 +147,17 @@ fn others(finding: &Finding) -> String {
 
 /// "while a = 1, b = 0".
 fn held(hazard: &crate::rules::Hazard) -> String {
-    let held: Vec<String> = (hazard.before.iter())
-        .filter(|(name, _)| !hazard.changes.contains(name))
-        .map(|(name, value)| format!("{name} = {}", u8::from(*value)))
-        .collect();
-    if held.is_empty() { "whatever the others do".to_string() } else { format!("while {}", held.join(", ")) }
+    let held: Vec<&(String, bool)> = hazard.before.iter().filter(|(name, _)| !hazard.changes.contains(name)).collect();
+    if held.is_empty() {
+        return "whatever the others do".to_string();
+    }
+    let shown: Vec<String> =
+        held.iter().take(SHOWN_HELD).map(|(name, value)| format!("{name} = {}", u8::from(*value))).collect();
+    let more = match held.len().saturating_sub(SHOWN_HELD) {
+        0 => String::new(),
+        more => format!(" and {more} more hold"),
+    };
+    format!("while {}{more}", shown.join(", "))
 }
 
 fn of_message(sources: &SourceSet, message: &Message) -> Diagnostic<FileId> {
@@ -160,7 +169,7 @@ fn of_message(sources: &SourceSet, message: &Message) -> Diagnostic<FileId> {
     for (at, text) in &message.also {
         place(sources, *at, text, false, &mut labels, &mut notes);
     }
-    notes.extend(message.help.iter().map(|help| wrapped(&format!("to do: {help}"))));
+    notes.extend(message.help.iter().map(|help| wrapped(help)));
     Diagnostic::new(level(message.severity)).with_message(&message.text).with_labels(labels).with_notes(notes)
 }
 

@@ -31,7 +31,7 @@ pub fn say(diagnostic: &Diagnostic) -> Said {
         Kind::Incomplete => (Rule::UnsupportedConstruct, Severity::Warning),
         Kind::SignoffInvalid => (Rule::SignoffInvalid, Severity::Error),
     };
-    let mut notes: Vec<String> = diagnostic.help.iter().map(|help| format!("to do: {help}")).collect();
+    let mut notes: Vec<String> = diagnostic.help.iter().cloned().collect();
     if rule == Rule::UnsupportedConstruct {
         notes.push("what depends on it was not analysed; the run is incomplete".to_string());
     }

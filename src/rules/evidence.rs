@@ -357,8 +357,9 @@ impl Stretch {
                 format!("{}, {}", words::count(gates, "gate"), words::count(self.inversions, "inversion"))
             }
         };
-        if let Some(name) = drives.and_then(|wire| graph.name(wire)) {
-            text.push_str(&format!(", drives `{name}`"));
+        // The excerpt shows the module's own text, where the local name is the one to look for.
+        if let Some(name) = drives.and_then(|wire| graph.node_name(wire)) {
+            text.push_str(&format!(", drives `{}{}`", graph.nets[name.net.index()].name, name.suffix));
         }
         Some(Hop { at: self.at, text })
     }
