@@ -24,7 +24,13 @@ impl Converter<'_> {
     fn unpacked_dim(&self, dim: &sv::UnpackedDimension) -> Dim {
         match dim {
             sv::UnpackedDimension::Range(x) => self.range_dim(&x.nodes.0.nodes.1),
-            sv::UnpackedDimension::Expression(x) => Dim::Size(self.constant_expression(&x.nodes.0.nodes.1)),
+            sv::UnpackedDimension::Expression(x) => match &x.nodes.0.nodes.1 {
+                // `[$]`, a queue.
+                sv::ConstantExpression::ConstantPrimary(size) if matches!(**size, sv::ConstantPrimary::Dollar(_)) => {
+                    Dim::Dynamic(self.span(&**x))
+                }
+                size => Dim::Size(self.constant_expression(size)),
+            },
         }
     }
 

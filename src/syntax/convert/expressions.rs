@@ -49,7 +49,7 @@ impl Converter<'_> {
                 Pending::Constant(x) => self.lay_out_constant(x, &mut pieces, &mut pending),
             }
         }
-        group(pieces).unwrap_or_else(|| self.unsupported_expr("expression", span_of_all))
+        group(pieces).unwrap_or_else(|| self.unsupported_expr("operator outside table 11-2", span_of_all))
     }
 
     fn lay_out<'n>(&self, expression: &'n sv::Expression, pieces: &mut Vec<Piece>, pending: &mut Vec<Pending<'n>>) {
@@ -68,7 +68,7 @@ impl Converter<'_> {
             sv::Expression::Binary(x) => {
                 let (left, operator, _, right) = &x.nodes;
                 pending.push(Pending::Any(right));
-                pending.push(Pending::Piece(self.binary(operator)));
+                pending.push(Pending::Piece(self.binary(operator, self.offset(right))));
                 pending.push(Pending::Any(left));
             }
             sv::Expression::ConditionalExpression(x) => {
@@ -107,7 +107,7 @@ impl Converter<'_> {
             sv::ConstantExpression::Binary(x) => {
                 let (left, operator, _, right) = &x.nodes;
                 pending.push(Pending::Constant(right));
-                pending.push(Pending::Piece(self.binary(operator)));
+                pending.push(Pending::Piece(self.binary(operator, self.offset(right))));
                 pending.push(Pending::Constant(left));
             }
             sv::ConstantExpression::Ternary(x) => {
@@ -134,12 +134,18 @@ impl Converter<'_> {
         }
     }
 
-    /// A binary operator; one that table 11-2 does not know becomes an operand that makes the grouping fail, so that the
-    /// whole expression is reported.
-    fn binary(&self, operator: &sv::BinaryOperator) -> Piece {
-        match binary_op(self.symbol(&operator.nodes.0)) {
-            Some(op) => Piece::Binary(op),
-            None => Piece::Operand(self.unsupported_expr("binary operator", self.span(operator))),
+    /// A binary operator whose right operand starts at offset `right`. One that table 11-2 does not know becomes an operand,
+    /// which makes the grouping fail, so that the whole expression is reported. That includes `&&&`, which the parser
+    /// splits into `&&` and a reduction.
+    fn binary(&self, operator: &sv::BinaryOperator, right: usize) -> Piece {
+        let symbol = &operator.nodes.0;
+        let token = &symbol.nodes.0;
+        let text = self.symbol(symbol);
+        let joined = sv::Locate { len: 3, ..*token };
+        let triple = text == "&&" && right == token.offset + 2 && self.token(&joined) == "&&&";
+        match binary_op(text) {
+            Some(op) if !triple => Piece::Binary(op),
+            _ => Piece::Operand(self.unsupported_expr("operator", self.span(operator))),
         }
     }
 

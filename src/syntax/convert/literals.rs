@@ -81,15 +81,15 @@ impl Converter<'_> {
                 &x.nodes.1
             }
         };
-        let scale = match unit {
-            sv::TimeUnit::S(_) => 1.0,
-            sv::TimeUnit::MS(_) => 1e-3,
-            sv::TimeUnit::US(_) => 1e-6,
-            sv::TimeUnit::NS(_) => 1e-9,
-            sv::TimeUnit::PS(_) => 1e-12,
-            sv::TimeUnit::FS(_) => 1e-15,
-        };
-        parse_real(&text) * scale
+        text.push_str(match unit {
+            sv::TimeUnit::S(_) => "e0",
+            sv::TimeUnit::MS(_) => "e-3",
+            sv::TimeUnit::US(_) => "e-6",
+            sv::TimeUnit::NS(_) => "e-9",
+            sv::TimeUnit::PS(_) => "e-12",
+            sv::TimeUnit::FS(_) => "e-15",
+        });
+        parse_real(&text)
     }
 
     pub(super) fn integral(&self, number: &sv::IntegralNumber) -> Expr {

@@ -49,30 +49,29 @@ impl Converter<'_> {
         Ports::Ansi(ports.into_iter().map(|(attrs, port)| self.ansi_port(attrs, port, default, &mut before)).collect())
     }
 
-    /// A list whose first port has no header at all can only be a non-ANSI one.
+    /// A list in which no port has a header can only be a non-ANSI one.
     fn bare_names(&self, ports: &[&(Vec<sv::AttributeInstance>, sv::AnsiPortDeclaration)]) -> Option<Vec<PortRef>> {
         let mut refs = Vec::with_capacity(ports.len());
         for (_, port) in ports {
-            let span = self.span(port);
-            match port {
+            let (bare, name) = match port {
                 sv::AnsiPortDeclaration::Net(x) => {
                     let (header, name, dims, default) = &x.nodes;
-                    if header.is_some() || !dims.is_empty() || default.is_some() {
-                        return None;
-                    }
-                    let expr = self.name_expr(&name.nodes.0);
-                    refs.push(PortRef { name: Some(self.ident(&name.nodes.0)), expr: Some(expr), span });
+                    (header.as_ref().is_none_or(is_empty) && dims.is_empty() && default.is_none(), name)
                 }
-                sv::AnsiPortDeclaration::Paren(x) => {
-                    let (direction, _, name, expr) = &x.nodes;
-                    if direction.is_some() {
-                        return None;
-                    }
-                    let expr = expr.nodes.1.as_ref().map(|expr| self.expression(expr));
-                    refs.push(PortRef { name: Some(self.ident(&name.nodes.0)), expr, span });
+                sv::AnsiPortDeclaration::Variable(x) => {
+                    let (header, name, dims, default) = &x.nodes;
+                    (header.is_none() && dims.is_empty() && default.is_none(), name)
                 }
-                sv::AnsiPortDeclaration::Variable(_) => return None,
+                sv::AnsiPortDeclaration::Paren(x) => (x.nodes.0.is_none(), &x.nodes.2),
+            };
+            if !bare {
+                return None;
             }
+            let expr = match port {
+                sv::AnsiPortDeclaration::Paren(x) => x.nodes.3.nodes.1.as_ref().map(|expr| self.expression(expr)),
+                _ => Some(self.name_expr(&name.nodes.0)),
+            };
+            refs.push(PortRef { name: Some(self.ident(&name.nodes.0)), expr, span: self.span(port) });
         }
         Some(refs)
     }
@@ -88,8 +87,8 @@ impl Converter<'_> {
         let (kind, direction, name, dims, default) = match port {
             sv::AnsiPortDeclaration::Net(x) => {
                 let (header, name, dims, default) = &x.nodes;
-                let (kind, direction) = match header {
-                    None => self.inherited_kind(before, default_net),
+                let (kind, direction) = match header.as_ref().filter(|header| !is_empty(header)) {
+                    None => self.inherited_kind(before, default_net, &name.nodes.0),
                     Some(sv::NetPortHeaderOrInterfacePortHeader::InterfacePortHeader(x)) => {
                         (self.interface_kind(x, inherited), inherited)
                     }
@@ -105,7 +104,7 @@ impl Converter<'_> {
             sv::AnsiPortDeclaration::Variable(x) => {
                 let (header, name, dims, default) = &x.nodes;
                 let (kind, direction) = match header {
-                    None => self.inherited_kind(before, default_net),
+                    None => self.inherited_kind(before, default_net, &name.nodes.0),
                     Some(header) => {
                         let (direction, ty) = &header.nodes;
                         let (var, ty) = self.variable_port_type(ty);
@@ -136,11 +135,16 @@ impl Converter<'_> {
     }
 
     /// A port without any header: everything from the port before.
-    fn inherited_kind(&self, before: &Option<Before>, default_net: NetKind) -> (AnsiPortKind, Direction) {
+    fn inherited_kind(
+        &self,
+        before: &Option<Before>,
+        default_net: NetKind,
+        name: &sv::Identifier,
+    ) -> (AnsiPortKind, Direction) {
         match before {
             Some(before) => (before.kind.clone(), before.direction),
             None => {
-                let ty = self.plain_type(DataTypeKind::Implicit, self.nowhere());
+                let ty = self.plain_type(DataTypeKind::Implicit, self.span(name));
                 complete(Header { direction: None, net: None, ty }, Direction::Inout, default_net)
             }
         }
@@ -316,6 +320,14 @@ impl Converter<'_> {
         };
         names.nodes.0.contents().into_iter().map(declarator).collect()
     }
+}
+
+/// Whether the parser reports a header with nothing in it.
+fn is_empty(header: &sv::NetPortHeaderOrInterfacePortHeader) -> bool {
+    let sv::NetPortHeaderOrInterfacePortHeader::NetPortHeader(header) = header else { return false };
+    let (None, sv::NetPortType::DataType(ty)) = &header.nodes else { return false };
+    let (None, sv::DataTypeOrImplicit::ImplicitDataType(ty)) = &ty.nodes else { return false };
+    ty.nodes.0.is_none() && ty.nodes.1.is_empty()
 }
 
 /// Fills in what a header leaves out.

@@ -111,7 +111,8 @@ impl Converter<'_> {
                 }
                 None => match lone_name(&mut ty) {
                     Some((name, dims)) => (name, dims, None),
-                    None => (Ident { name: String::new(), span: ty.span }, Vec::new(), None),
+                    // `f()` reaches us as one argument with nothing in it.
+                    None => continue,
                 },
             };
             let before = args.last();

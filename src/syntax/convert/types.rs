@@ -34,8 +34,11 @@ impl Converter<'_> {
             sv::DataType::StructUnion(x) => self.struct_union(x, span),
             sv::DataType::Enum(x) => self.enumeration(x, span),
             sv::DataType::String(_) => self.plain_type(DataTypeKind::String, span),
-            sv::DataType::Chandle(_) => self.plain_type(DataTypeKind::Chandle, span),
-            sv::DataType::Event(_) => self.plain_type(DataTypeKind::Event, span),
+            // The parser reports `event` as a `chandle` too.
+            sv::DataType::Chandle(x) | sv::DataType::Event(x) => {
+                let event = self.keyword(x) == "event";
+                self.plain_type(if event { DataTypeKind::Event } else { DataTypeKind::Chandle }, span)
+            }
             sv::DataType::Virtual(_) => {
                 self.plain_type(DataTypeKind::Unsupported("virtual interface".to_string()), span)
             }
