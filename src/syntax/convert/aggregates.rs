@@ -69,7 +69,10 @@ impl Converter<'_> {
         let items = match items {
             sv::AssignmentPattern::List(x) => {
                 let values = x.nodes.0.nodes.1.contents();
-                values.into_iter().map(|value| self.positional(value)).collect()
+                values
+                    .into_iter()
+                    .map(|value| PatternItem { key: PatternKey::None, value: self.expression(value) })
+                    .collect()
             }
             sv::AssignmentPattern::Structure(x) => {
                 let items = x.nodes.0.nodes.1.contents().into_iter();
@@ -112,12 +115,6 @@ impl Converter<'_> {
         };
         let ty = ty.as_ref().map(|ty| Box::new(self.pattern_type(ty)));
         Expr { kind: ExprKind::Pattern { ty, items }, span: self.span(pattern) }
-    }
-
-    /// A value by position. `'{3{x}}` may also reach us as a list of one replication, which it is not: a replication as
-    /// an element stands in braces of its own.
-    fn positional(&self, value: &sv::Expression) -> PatternItem {
-        PatternItem { key: PatternKey::None, value: self.expression(value) }
     }
 
     fn pattern_key(&self, key: &sv::AssignmentPatternKey) -> PatternKey {

@@ -121,18 +121,20 @@ impl Converter<'_> {
                     if with.is_some() {
                         return self.unsupported_expr("array method with a with clause", span);
                     }
-                    let name = match name {
-                        sv::ArrayMethodName::MethodIdentifier(x) => self.ident(&x.nodes.0),
+                    let (name, keyword) = match name {
+                        sv::ArrayMethodName::MethodIdentifier(x) => (self.ident(&x.nodes.0), false),
                         sv::ArrayMethodName::Unique(x)
                         | sv::ArrayMethodName::And(x)
                         | sv::ArrayMethodName::Or(x)
-                        | sv::ArrayMethodName::Xor(x) => self.keyword_ident(x),
+                        | sv::ArrayMethodName::Xor(x) => (self.keyword_ident(x), true),
                     };
                     let callee = member(root, name);
                     match arguments {
-                        // The names of the reductions are keywords, so without parentheses too this is a call.
-                        None => Expr { span, kind: ExprKind::Call { callee: Box::new(callee), args: Vec::new() } },
-                        Some(_) => self.call(callee, arguments),
+                        // A keyword cannot be a member, so `a.and` is a call; `G.H` in a constant expression is not.
+                        None if keyword => {
+                            Expr { span, kind: ExprKind::Call { callee: Box::new(callee), args: Vec::new() } }
+                        }
+                        _ => self.call(callee, arguments),
                     }
                 }
                 sv::BuiltInMethodCall::RandomizeCall(_) => self.unsupported_expr("randomize", span),

@@ -215,8 +215,14 @@ impl Converter<'_> {
         let start = items.len();
         let attributes = match declaration {
             sv::BlockItemDeclaration::Data(x) => {
-                self.data_declaration(&x.nodes.1, items);
-                &x.nodes.0
+                let (attributes, declaration) = &x.nodes;
+                if self.initialised_once(declaration) {
+                    let what = "static variable with an initial value in a procedural block";
+                    items.push(self.unsupported(what, self.span(declaration)));
+                } else {
+                    self.data_declaration(declaration, items);
+                }
+                attributes
             }
             sv::BlockItemDeclaration::LocalParameter(x) => {
                 for param in self.local_parameter_declaration(&x.nodes.1) {
@@ -238,5 +244,22 @@ impl Converter<'_> {
             }
         };
         self.attach(attributes, &mut items[start..]);
+    }
+
+    /// Whether a variable of a block takes its initial value once, before time zero, and not each time the block runs
+    /// (IEEE 1800-2017 clause 6.21): the tree only knows the latter.
+    fn initialised_once(&self, declaration: &sv::DataDeclaration) -> bool {
+        let sv::DataDeclaration::Variable(x) = declaration else { return false };
+        let (_, _, lifetime, _, names, _) = &x.nodes;
+        let automatic = match lifetime {
+            Some(sv::Lifetime::Automatic(_)) => true,
+            Some(sv::Lifetime::Static(_)) => false,
+            None => self.automatic.get(),
+        };
+        let initialised = |name: &&sv::VariableDeclAssignment| match name {
+            sv::VariableDeclAssignment::Variable(x) => x.nodes.2.is_some(),
+            sv::VariableDeclAssignment::DynamicArray(_) | sv::VariableDeclAssignment::Class(_) => true,
+        };
+        !automatic && names.nodes.0.contents().iter().any(initialised)
     }
 }

@@ -62,10 +62,10 @@ impl Converter<'_> {
         }
     }
 
-    fn nested(&self, module: Result<super::ast::Module, Item>, span: Span) -> Item {
+    fn nested(&self, module: Result<super::ast::Module, Box<Item>>, span: Span) -> Item {
         match module {
             Ok(module) => self.item(ItemKind::Module(Box::new(module)), span),
-            Err(item) => item,
+            Err(item) => *item,
         }
     }
 

@@ -60,6 +60,8 @@ struct Converter<'a> {
     file: FileId,
     /// Changes of `` `default_nettype `` by their offset in the preprocessed text, in order.
     nettypes: Vec<(usize, ast::DefaultNettype)>,
+    /// Inside an automatic task or function, whose variables are automatic too unless they say otherwise.
+    automatic: Cell<bool>,
     /// Delays and strengths left out, and the place of the first.
     timing_dropped: Cell<usize>,
     timing_first: Cell<Option<Span>>,
@@ -73,6 +75,7 @@ impl<'a> Converter<'a> {
             places,
             file,
             nettypes: Vec::new(),
+            automatic: Cell::new(false),
             timing_dropped: Cell::new(0),
             timing_first: Cell::new(None),
             diagnostics: RefCell::new(Vec::new()),

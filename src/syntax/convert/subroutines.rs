@@ -21,6 +21,20 @@ struct Body {
 
 impl Converter<'_> {
     pub(super) fn function(&self, function: &sv::FunctionDeclaration) -> Item {
+        self.automatic.set(is_automatic(&function.nodes.1));
+        let item = self.function_item(function);
+        self.automatic.set(false);
+        item
+    }
+
+    pub(super) fn task(&self, task: &sv::TaskDeclaration) -> Item {
+        self.automatic.set(is_automatic(&task.nodes.1));
+        let item = self.task_item(task);
+        self.automatic.set(false);
+        item
+    }
+
+    fn function_item(&self, function: &sv::FunctionDeclaration) -> Item {
         let span = self.span(function);
         let (_, lifetime, body) = &function.nodes;
         let body = match body {
@@ -55,7 +69,7 @@ impl Converter<'_> {
         self.item(ItemKind::Function(assemble(body, lifetime, span)), span)
     }
 
-    pub(super) fn task(&self, task: &sv::TaskDeclaration) -> Item {
+    fn task_item(&self, task: &sv::TaskDeclaration) -> Item {
         let span = self.span(task);
         let (_, lifetime, body) = &task.nodes;
         let ret = self.plain_type(DataTypeKind::Void, span);
@@ -178,8 +192,11 @@ impl Converter<'_> {
 
 fn assemble(body: Body, lifetime: &Option<sv::Lifetime>, span: Span) -> Function {
     let Body { name, ret, args, locals, body } = body;
-    let automatic = matches!(lifetime, Some(sv::Lifetime::Automatic(_)));
-    Function { name, automatic, ret, args, locals, body, span }
+    Function { name, automatic: is_automatic(lifetime), ret, args, locals, body, span }
+}
+
+fn is_automatic(lifetime: &Option<sv::Lifetime>) -> bool {
+    matches!(lifetime, Some(sv::Lifetime::Automatic(_)))
 }
 
 fn tf_direction(direction: &sv::TfPortDirection) -> Direction {

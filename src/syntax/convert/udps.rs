@@ -16,7 +16,7 @@ struct Ports {
 }
 
 impl Converter<'_> {
-    pub(super) fn udp_declaration(&self, declaration: &sv::UdpDeclaration) -> Result<Udp, Item> {
+    pub(super) fn udp_declaration(&self, declaration: &sv::UdpDeclaration) -> Result<Udp, Box<Item>> {
         let span = self.span(declaration);
         let mut ports = Ports::default();
         let (name, body) = match declaration {
@@ -46,11 +46,11 @@ impl Converter<'_> {
                 (name, body)
             }
             sv::UdpDeclaration::ExternNonansi(_) | sv::UdpDeclaration::ExternAnsi(_) => {
-                return Err(self.skipped("extern primitive declaration", span));
+                return Err(Box::new(self.skipped("extern primitive declaration", span)));
             }
         };
         let Some(output) = ports.output else {
-            return Err(self.unsupported("primitive without an output", span));
+            return Err(Box::new(self.unsupported("primitive without an output", span)));
         };
         let mut initial = ports.initial;
         let (sequential, rows) = match body {

@@ -68,19 +68,19 @@ impl Converter<'_> {
             sv::Description::ResetallCompilerDirective(_) => {}
             sv::Description::ModuleDeclaration(x) => match self.module_declaration(x) {
                 Ok(module) => unit.modules.push(module),
-                Err(item) => unit.items.push(item),
+                Err(item) => unit.items.push(*item),
             },
             sv::Description::InterfaceDeclaration(x) => match self.interface_declaration(x) {
                 Ok(module) => unit.modules.push(module),
-                Err(item) => unit.items.push(item),
+                Err(item) => unit.items.push(*item),
             },
             sv::Description::ProgramDeclaration(x) => match self.program_declaration(x) {
                 Ok(module) => unit.modules.push(module),
-                Err(item) => unit.items.push(item),
+                Err(item) => unit.items.push(*item),
             },
             sv::Description::UdpDeclaration(x) => match self.udp_declaration(x) {
                 Ok(udp) => unit.udps.push(udp),
-                Err(item) => unit.items.push(item),
+                Err(item) => unit.items.push(*item),
             },
             sv::Description::InterfaceClassDeclaration(_) => unit.items.push(self.skipped("class", span)),
             sv::Description::PackageDeclaration(x) => unit.packages.push(self.package(x)),
@@ -101,7 +101,7 @@ impl Converter<'_> {
     }
 
     /// A module, or the item that says why it is none (`extern module`).
-    pub(super) fn module_declaration(&self, declaration: &sv::ModuleDeclaration) -> Result<Module, Item> {
+    pub(super) fn module_declaration(&self, declaration: &sv::ModuleDeclaration) -> Result<Module, Box<Item>> {
         let span = self.span(declaration);
         let mut items = Vec::new();
         let header = match declaration {
@@ -124,13 +124,13 @@ impl Converter<'_> {
                 self.wildcard_header(ModuleKind::Module, attributes, &name.nodes.0, span, &mut items)
             }
             sv::ModuleDeclaration::ExternAnsi(_) | sv::ModuleDeclaration::ExternNonansi(_) => {
-                return Err(self.skipped("extern module declaration", span));
+                return Err(Box::new(self.skipped("extern module declaration", span)));
             }
         };
         Ok(assemble(header, items, span))
     }
 
-    pub(super) fn interface_declaration(&self, declaration: &sv::InterfaceDeclaration) -> Result<Module, Item> {
+    pub(super) fn interface_declaration(&self, declaration: &sv::InterfaceDeclaration) -> Result<Module, Box<Item>> {
         let span = self.span(declaration);
         let mut items = Vec::new();
         let header = match declaration {
@@ -153,13 +153,13 @@ impl Converter<'_> {
                 self.wildcard_header(ModuleKind::Interface, attributes, &name.nodes.0, span, &mut items)
             }
             sv::InterfaceDeclaration::ExternAnsi(_) | sv::InterfaceDeclaration::ExternNonansi(_) => {
-                return Err(self.skipped("extern interface declaration", span));
+                return Err(Box::new(self.skipped("extern interface declaration", span)));
             }
         };
         Ok(assemble(header, items, span))
     }
 
-    pub(super) fn program_declaration(&self, declaration: &sv::ProgramDeclaration) -> Result<Module, Item> {
+    pub(super) fn program_declaration(&self, declaration: &sv::ProgramDeclaration) -> Result<Module, Box<Item>> {
         let span = self.span(declaration);
         let mut items = vec![self.skipped("program", span)];
         let header = match declaration {
@@ -177,7 +177,7 @@ impl Converter<'_> {
                 self.wildcard_header(ModuleKind::Program, attributes, &name.nodes.0, span, &mut items)
             }
             sv::ProgramDeclaration::ExternAnsi(_) | sv::ProgramDeclaration::ExternNonansi(_) => {
-                return Err(self.skipped("extern program declaration", span));
+                return Err(Box::new(self.skipped("extern program declaration", span)));
             }
         };
         Ok(assemble(header, items, span))
