@@ -147,6 +147,10 @@ fn require_input(request: &Request, loaded: &Loaded) -> Result<(), PathError> {
     if loaded.files_failed > 0 {
         return Ok(());
     }
+    if loaded.units.iter().all(|unit| unit.modules.is_empty()) {
+        let message = format!("no module was found in the {} files that were read", loaded.files_read);
+        return Err(PathError::new(message, "check the paths, and the conditions (`ifdef) around the modules"));
+    }
     let names: BTreeSet<&str> =
         loaded.units.iter().flat_map(|unit| &unit.modules).map(|module| module.name.name.as_str()).collect();
     match request.tops.iter().find(|top| !names.contains(top.as_str())) {

@@ -110,9 +110,7 @@ impl Elaborator<'_> {
             Storage::Variable if self.environment.mode == Mode::Initial => {
                 self.base_value(id)[low..low + width].to_vec()
             }
-            _ => {
-                variable.wires[low..low + width].iter().map(|&wire| Bit::Node(wire)).collect()
-            }
+            _ => variable.wires[low..low + width].iter().map(|&wire| Bit::Node(wire)).collect(),
         }
     }
 

@@ -20,7 +20,7 @@ use super::origin::MappedText;
 use super::preprocess::preprocess;
 use super::regions::Region;
 use super::texts::Texts;
-use super::{FileId, SourceSet, parse};
+use super::{FileId, SourceSet, Span, parse};
 use crate::diagnostic::{Diagnostic, Kind};
 use crate::syntax::ast;
 
@@ -73,7 +73,7 @@ pub fn load(request: &Request, environment: Environment<'_>, progress: Progress<
         texts: Texts::default(),
         search: IncludeSearch::new(folders, found.tree.into_iter().chain(listed).collect()),
         units: Vec::new(),
-        included: BTreeSet::new(),
+        included: BTreeMap::new(),
         failed: BTreeSet::new(),
         failures: Vec::new(),
         diagnostics: found.diagnostics,
@@ -118,8 +118,8 @@ struct Reader<'a> {
     texts: Texts,
     search: IncludeSearch,
     units: Vec<(FileId, ast::Unit)>,
-    /// Files that some unit included.
-    included: BTreeSet<FileId>,
+    /// Which units included a file.
+    included: BTreeMap<FileId, BTreeSet<FileId>>,
     failed: BTreeSet<FileId>,
     /// What is wrong with files as units of their own.
     failures: Vec<(FileId, Diagnostic)>,
@@ -138,8 +138,15 @@ impl Reader<'_> {
         if !self.texts.claim(file) {
             return None;
         }
+        if self.texts.set.file(file).text.trim().is_empty() {
+            let message = format!("`{}` is empty", self.texts.set.file(file).name());
+            let at = Span { file, start: 0, end: 0 };
+            self.diagnostics.push(Diagnostic::new(Kind::Note, "file", message, Some(at)));
+        }
         let preprocessed = preprocess(&mut self.texts, &self.search, macros, file);
-        self.included.extend(preprocessed.included);
+        for included in preprocessed.included {
+            self.included.entry(included).or_default().insert(file);
+        }
         match preprocessed.text {
             Ok(text) => {
                 let chunks = chunks(&text.text);
@@ -240,8 +247,10 @@ impl Reader<'_> {
     fn finish(mut self) -> Loaded {
         let mut diagnostics = std::mem::take(&mut self.texts.diagnostics);
         diagnostics.append(&mut self.diagnostics);
+        let failing: BTreeSet<FileId> = self.failures.iter().map(|(file, _)| *file).collect();
         for (file, failure) in self.failures {
-            if self.included.contains(&file) {
+            let includers = self.included.get(&file);
+            if includers.is_some_and(|units| units.iter().any(|unit| !failing.contains(unit))) {
                 // A part of a module that other files include need not be a unit of its own.
                 let name = self.texts.set.file(file).name();
                 let message = format!("`{name}` is included by other files and is read only there");

@@ -118,9 +118,11 @@ fn refused(text: &MappedText, refusal: Refusal, file: FileId) -> Box<Diagnostic>
             "this is nested too deeply to be parsed: more than 1,000 operators or some 200 brackets around one place",
             "split the expression or statement; the module around it is left out",
         ),
-        Refusal::TooLong(at) => {
-            (at, "this module is longer than 4 MiB", "split it into several modules; it is left out of the analysis")
-        }
+        Refusal::TooLong(at) => (
+            at,
+            "the module that begins here is longer than 4 MiB",
+            "split it into several; it is left out of the analysis",
+        ),
     };
     let place = text.place(at, 1).unwrap_or(Span { file, start: 0, end: 0 });
     Box::new(Diagnostic::new(Kind::Incomplete, "size", message, Some(place)).with_help(help))

@@ -18,6 +18,8 @@ use crate::diagnostic::{Diagnostic, Kind};
 
 /// Bytes of expansions and includes that may be scanned for one unit, counted each time.
 const MAX_EXPANSION: usize = 64 << 20;
+/// What one macro used inside another costs beside its text, so that empty macros that multiply end as well.
+const EXPANSION_COST: usize = 100;
 /// Includes within includes; the standard asks for at least 15.
 const MAX_INCLUDE_DEPTH: usize = 64;
 /// Files included by one unit, counted each time.
@@ -124,7 +126,8 @@ impl Preprocessor<'_> {
 
     fn scan(&mut self, text: &str, origin: Origin) -> Outcome<()> {
         let is_unit = self.files.len() == 1 && matches!(origin, Origin::File(_));
-        self.work += if is_unit { 0 } else { text.len() };
+        let overhead = if self.active.len() > 1 { EXPANSION_COST } else { 0 };
+        self.work += if is_unit { 0 } else { text.len() + overhead };
         if self.work > MAX_EXPANSION {
             return Err(too_much(origin.span(0, text.len().min(1))));
         }
