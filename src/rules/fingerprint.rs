@@ -4,6 +4,7 @@
 //! the logic makes the finding a new one.
 
 use std::collections::HashMap;
+use std::collections::hash_map::Entry;
 
 use super::Rule;
 use super::names;
@@ -70,8 +71,8 @@ fn cone(graph: &Graph, root: NodeId, memo: &mut HashMap<NodeId, Option<u128>>) -
                 hash = hash.number(input.unwrap_or(u128::MAX));
             }
             memo.insert(node, Some(hash.0));
-        } else if !memo.contains_key(&node) {
-            memo.insert(node, None);
+        } else if let Entry::Vacant(slot) = memo.entry(node) {
+            slot.insert(None);
             stack.push((node, true));
             let inputs = graph.fanin(node).iter().rev().map(|&input| graph.root(input));
             stack.extend(inputs.filter(|input| !memo.contains_key(input)).map(|input| (input, false)));
