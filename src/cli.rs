@@ -80,7 +80,7 @@ pub struct Scan {
 pub struct Flatten {
     #[command(flatten)]
     pub input: Input,
-    /// Only the fan-in of this net, by its full name such as top.u_core.rst_n or top.en[3]
+    /// Only the fan-in of this net, by its full name such as top.u_core.rst_n; a bit of a vector with its index
     #[arg(long, value_name = "NET")]
     pub cone: Option<String>,
 }

@@ -4,6 +4,9 @@
 //! Invariant: nothing here prints, reads the environment or the clock, or exits. Bad input is data; an `Err` means that
 //! the paths themselves are wrong and nothing was analysed.
 
+// The types of the parser nest deeper than the default limit allows rustdoc to follow.
+#![recursion_limit = "512"]
+
 pub mod cli;
 pub mod diagnostic;
 pub mod elaborate;

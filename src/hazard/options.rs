@@ -1,6 +1,6 @@
 //! The bounds of a decision. Every bound that is hit yields a typed "undecided", never a pass.
 
-/// Effort and scope of [`super::decide`].
+/// Effort and scope of [`super::decide()`].
 #[derive(Clone, Copy, PartialEq, Eq, Debug)]
 pub struct Options {
     /// Conflicts per solver question before it stays undecided.

@@ -4,7 +4,7 @@
 //! [`discover`]); their texts are decoded ([`texts`]) and regions that the user switched off are blanked ([`regions`]);
 //! our own preprocessor resolves macros and includes and remembers where every byte came from ([`preprocess`],
 //! [`origin`]); the result is cut into descriptions whose nesting is known to fit the stack ([`chunks`]) and parsed in
-//! parallel ([`parse`]). [`load`] runs it all.
+//! parallel ([`parse`]). [`load()`] runs it all.
 
 mod chunks;
 mod discover;
