@@ -45,6 +45,12 @@ impl<'a> Elaborator<'a> {
             };
             return Ok(Callee::EnumMethod(value, place.ty, &method.name));
         }
+        // Inside a function its name is also that of its result, but only the function can be called.
+        if let ExprKind::Name(name) = &callee.kind
+            && let Some((function, scope)) = self.find_function(&name.name)
+        {
+            return Ok(Callee::Function(function, scope));
+        }
         match self.resolve(callee, want)? {
             Resolved::Symbol(Symbol::Function(function, scope)) => Ok(Callee::Function(function, scope)),
             Resolved::Symbol(Symbol::Let(item, scope)) => Ok(Callee::Let(item, scope)),

@@ -6,7 +6,7 @@ use std::rc::Rc;
 
 use super::bits::{Bit, extend};
 use super::context::{Elaborator, Outcome, Storage, VariableId, unsupported, wrong};
-use super::hierarchy::Slot;
+use super::hierarchy::{Slot, Work};
 use super::place::{Base, Place, Resolved};
 use super::scope::{ScopeId, Symbol};
 use super::types::{Shape, Type};
@@ -145,11 +145,17 @@ impl<'a> Elaborator<'a> {
         };
         for (index, port) in ports.iter().enumerate() {
             match &port.kind {
-                AnsiPortKind::Data { net, ty, .. } => {
+                AnsiPortKind::Data { direction, net, ty } => {
                     self.declare_enum_members(scope, ty)?;
                     let ty = self.declared_type(ty, &port.dims, port.name.span)?;
                     let storage = net.map_or(Storage::Variable, Storage::Net);
-                    self.declare_variable(scope, &port.name, ty, storage)?;
+                    let variable = self.declare_variable(scope, &port.name, ty, storage)?;
+                    if let (Some(value), Direction::Output) = (&port.default, direction) {
+                        self.works.push(match storage {
+                            Storage::Net(_) => Work::NetInit { scope, variable, value },
+                            _ => Work::VariableInit { scope, variable, value },
+                        });
+                    }
                 }
                 AnsiPortKind::Interface { interface, .. } => {
                     if let Some(name) = interface

@@ -195,6 +195,19 @@ impl<'a> Elaborator<'a> {
         None
     }
 
+    /// The nearest function or task of that name, looking past the variable that a function's name is inside it.
+    pub fn find_function(&self, name: &str) -> Option<(&'a ast::Function, ScopeId)> {
+        let mut at = Some(self.here);
+        while let Some(id) = at {
+            match self.find_from(id, name)? {
+                Symbol::Function(function, scope) => return Some((function, scope)),
+                Symbol::Variable(_) => at = self.scope(id).parent,
+                _ => return None,
+            }
+        }
+        None
+    }
+
     /// The first name of a hierarchical name: also names of enclosing scopes and what their instances are called.
     pub fn find_upward(&self, name: &str) -> Option<Symbol<'a>> {
         if let Some(symbol) = self.find(name) {
