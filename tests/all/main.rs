@@ -2,6 +2,7 @@
 
 mod convert;
 mod covers;
+mod constructs;
 mod decide;
 mod decision;
 mod demo;

@@ -11,7 +11,7 @@ use std::fmt::Write;
 use std::path::{Path, PathBuf};
 use std::process::Command;
 
-use crate::outside;
+use crate::{constructs, outside};
 
 /// A small reproducible generator (xorshift).
 pub struct Random(u64);
@@ -108,6 +108,8 @@ fn ports(flat: &str, top: &str) -> Vec<Port> {
                 [range, name] => (range.to_string(), name.to_string()),
                 _ => panic!("an unexpected port: {line}"),
             };
+            // An escaped name ends with a blank, wherever it is used.
+            let name = if name.starts_with('\\') { name + " " } else { name };
             Some(Port { direction, range, name })
         })
         .collect()
@@ -127,11 +129,14 @@ struct Trial {
     reset_every: usize,
     /// Verilog expressions for inputs that would do nothing interesting with plain random values.
     stimuli: Vec<(&'static str, &'static str)>,
-    /// Outputs that are compared but never change.
-    constant: Vec<&'static str>,
+    /// Outputs that are compared, but are constant or mostly unknown since the default parameters switch their unit off.
+    quiet: Vec<&'static str>,
     /// Whether all storage starts with the same random values on both sides. Designs that never reset their storage need
     /// it: a simulator takes the else branch of an unknown condition, which no gate does.
     preset: bool,
+    /// What the simulator calls unnamed generate blocks where it departs from IEEE 1364-2005, 12.4.3: it counts an else
+    /// branch as a construct of its own.
+    renamed: Vec<(&'static str, &'static str)>,
 }
 
 /// What both simulations assign to their storage at the beginning.
@@ -143,7 +148,7 @@ struct Preset {
 
 /// The registers of the flattened form, each with the variable of the original that it stands for: the net that it
 /// drives. A name that the original does not have is an error of the simulator.
-fn preset(flat: &str, top: &str) -> Preset {
+fn preset(flat: &str, trial: &Trial) -> Preset {
     let registers: BTreeSet<&str> =
         flat.lines().filter_map(|line| line.strip_prefix("  reg ")?.strip_suffix(';')).collect();
     let mut random = Random::new(11);
@@ -155,8 +160,9 @@ fn preset(flat: &str, top: &str) -> Preset {
         let driver = driver.trim_end_matches(';');
         if registers.contains(driver) {
             let value = random.below(2);
-            let inner = name.trim_end().strip_prefix(top).unwrap_or(name);
-            let _ = writeln!(preset.original, "    dut{inner} = 1'b{value};");
+            let inner = name.trim_end().strip_prefix(trial.top.as_str()).unwrap_or(name);
+            let renamed = trial.renamed.iter().fold(inner.to_string(), |name, (from, to)| name.replace(from, to));
+            let _ = writeln!(preset.original, "    dut{renamed} = 1'b{value};");
             let _ = writeln!(preset.flat, "    dut.{driver} = 1'b{value};");
         }
     }
@@ -249,7 +255,7 @@ fn run(trial: &Trial) -> Result<Counts, String> {
         return Err(format!("the flattened form has no module `{}` with ports", trial.top));
     }
     let folder = tempfile::tempdir().map_err(|error| error.to_string())?;
-    let preset = if trial.preset { preset(&flat, &trial.top) } else { Preset::default() };
+    let preset = if trial.preset { preset(&flat, trial) } else { Preset::default() };
     let texts = [
         ("bench.v", bench(trial, &ports, &preset.original)),
         ("flat_bench.v", bench(trial, &ports, &preset.flat)),
@@ -311,13 +317,15 @@ fn compare(trial: &Trial, outputs: &[&Port], original: &[String], flat: &[String
         return Err(format!("{} words differ ({total:?}):\n{shown}", wrong.len()));
     }
     for (at, output) in outputs.iter().enumerate() {
+        if trial.quiet.contains(&output.name.as_str()) {
+            continue;
+        }
         let bits = original.len() * output.width();
         if compared[at] * 2 < bits {
             wrong.push(format!("{}: only {} of {bits} bits could be compared", output.name, compared[at]));
         }
-        if moves[at] == trial.constant.contains(&output.name.as_str()) {
-            let how = if moves[at] { "changes, though it is said to be constant" } else { "never changes" };
-            wrong.push(format!("{}: {how}", output.name));
+        if !moves[at] {
+            wrong.push(format!("{}: never changes", output.name));
         }
     }
     if wrong.is_empty() { Ok(total) } else { Err(format!("too little is compared ({total:?}):\n{}", wrong.join("\n"))) }
@@ -328,19 +336,14 @@ fn compare(trial: &Trial, outputs: &[&Port], original: &[String], flat: &[String
 #[test]
 #[ignore = "outside: run tests/outside/run"]
 fn constructs_simulate_like_their_flattened_form() {
-    let folder = Path::new(env!("CARGO_MANIFEST_DIR")).join("fixtures/constructs");
-    let mut files: Vec<PathBuf> =
-        std::fs::read_dir(&folder).expect("the folder").map(|entry| entry.expect("an entry").path()).collect();
-    files.retain(|file| file.is_file());
-    files.sort();
+    let references = Path::new(env!("CARGO_MANIFEST_DIR")).join("fixtures/constructs/reference");
     let only = std::env::var("STILLWIRE_CONSTRUCT").ok();
     let mut failures = Vec::new();
-    for file in &files {
-        let top = file.file_stem().expect("a name").to_string_lossy().into_owned();
+    for (file, top) in constructs::fixtures() {
         if only.as_ref().is_some_and(|only| *only != top) {
             continue;
         }
-        let reference = folder.join("reference").join(format!("{top}.v"));
+        let reference = references.join(format!("{top}.v"));
         let original = if reference.is_file() { reference } else { file.clone() };
         let trial = Trial {
             paths: vec![file.clone()],
@@ -350,16 +353,16 @@ fn constructs_simulate_like_their_flattened_form() {
             cycles: 600,
             reset_every: 24,
             stimuli: Vec::new(),
-            constant: Vec::new(),
+            quiet: Vec::new(),
             preset: false,
+            renamed: Vec::new(),
         };
         match run(&trial) {
             Ok(counts) => println!("{top}: {counts:?}"),
             Err(message) => failures.push(format!("{top}: {message}")),
         }
     }
-    assert!(files.len() >= 40, "only {} constructs", files.len());
-    assert!(failures.is_empty(), "{} of {} constructs:\n{}", failures.len(), files.len(), failures.join("\n\n"));
+    assert!(failures.is_empty(), "{} constructs:\n{}", failures.len(), failures.join("\n\n"));
 }
 
 /// A word that is an instruction often enough to get a processor going: one of the opcodes of the RV32I base set.
@@ -378,8 +381,9 @@ fn core(name: &str, files: &[&str], top: &str, stimuli: Vec<(&'static str, &'sta
         cycles: 5_000,
         reset_every: 150,
         stimuli,
-        constant: Vec::new(),
+        quiet: Vec::new(),
         preset: true,
+        renamed: Vec::new(),
     }
 }
 
@@ -395,7 +399,7 @@ fn check_core(trial: &Trial) {
 #[ignore = "outside: run tests/outside/run"]
 fn picorv32_simulates_like_its_flattened_form() {
     let mut trial = core("picorv32", &["picorv32.v"], "picorv32_axi", vec![("mem_axi_rdata", INSTRUCTION)]);
-    trial.constant = vec!["mem_axi_awprot"];
+    trial.quiet = vec!["mem_axi_awprot", "pcpi_valid", "pcpi_insn", "pcpi_rs1", "pcpi_rs2", "trace_data"];
     check_core(&trial);
 }
 
@@ -412,5 +416,7 @@ fn serv_simulates_like_its_flattened_form() {
     let mut trial = core("serv", &[], "serv_rf_top", vec![("i_ibus_rdt", INSTRUCTION)]);
     trial.paths = files.clone();
     trial.files = files;
+    trial.quiet = vec!["o_mdu_valid"];
+    trial.renamed = vec![("cpu.genblk3.", "cpu.genblk5.")];
     check_core(&trial);
 }
