@@ -6,6 +6,9 @@ use std::path::Path;
 use std::process::Command;
 
 use serde_json::Value;
+use stillwire::elaborate;
+use stillwire::graph::{Graph, NodeId};
+use stillwire::source::{Request, load, on_big_stacks};
 
 /// What a run of `stillwire scan` left behind.
 pub struct Scan {
@@ -42,6 +45,27 @@ pub fn scan_text(verilog: &str) -> Scan {
     let scan = scan(&[&file], &[]);
     assert_eq!(scan.json["complete"], true, "{}\n{verilog}", scan.text);
     scan
+}
+
+/// The gate graph of a design, for questions that no output answers; everything must be read and elaborated.
+#[track_caller]
+pub fn graph(path: &Path, top: &str) -> Graph {
+    let request = Request { paths: vec![path.to_path_buf()], ..Request::default() };
+    let work = || {
+        let loaded = load(&request, &|_| None, &|_, _| {}).expect("the path exists");
+        assert_eq!(loaded.files_failed, 0, "{:?}", loaded.diagnostics);
+        let (design, _) = elaborate::elaborate(&loaded.units, &elaborate::Request { tops: vec![top.to_string()] });
+        assert_eq!((design.modules_failed, design.graph.black_boxes.len()), (0, 0));
+        design.graph
+    };
+    on_big_stacks(0, work).expect("threads")
+}
+
+/// The node that drives the net of this full name.
+#[track_caller]
+pub fn driver(graph: &Graph, name: &str) -> NodeId {
+    let node = graph.nodes().find(|&node| graph.name(node).as_deref() == Some(name));
+    graph.root(node.unwrap_or_else(|| panic!("no net {name}")))
 }
 
 /// One entry of a finding's `hazards`.

@@ -6,11 +6,14 @@
 //! "memory" in a source means that the text could not be seen; "computed" that the answer (not the circuit) was found by
 //! exhaustive exploration of all delay orders, independent of any product code.
 
-use std::collections::BTreeSet;
+use std::collections::{BTreeMap, BTreeSet};
 
-use crate::explorer::{Glitch, Pin, Seen, transition};
+use stillwire::graph::NodeId;
+use stillwire::hazard::waveform;
+
+use crate::explorer::{Pin, Seen, transition};
 use crate::formula::Published;
-use crate::pipeline::{hazards, pairs, scan_text};
+use crate::pipeline::{driver, graph, hazards, pairs, scan_text};
 
 /// A hazardous transition: "before-after" in the order of the inputs, and the kind.
 type Place = (String, &'static str);
@@ -45,18 +48,45 @@ fn source<'a>(circuit: &'a Published, place: &str) -> &'a str {
 fn explored(circuit: &Published) -> BTreeSet<Place> {
     let (gates, target) = circuit.circuit();
     let Pin::Gate(target) = target else { panic!("the target is a gate") };
-    let text =
-        |vector: u32| -> String { (0..gates.inputs).map(|at| if vector >> at & 1 == 1 { '1' } else { '0' }).collect() };
     let mut seen = Seen::default();
     let mut found = BTreeSet::new();
     for vector in 0..1u32 << gates.inputs {
         for source in 0..gates.inputs {
             if let Some(glitch) = transition(&gates, target, vector, source, &mut seen) {
-                found.insert((format!("{}-{}", text(vector), text(vector ^ 1 << source)), Glitch::name(glitch)));
+                let other = vector ^ 1 << source;
+                found.insert((format!("{}-{}", bits(vector, gates.inputs), bits(other, gates.inputs)), glitch.name()));
             }
         }
     }
     found
+}
+
+/// What the graph of the elaborated Verilog says of every transition.
+fn analysed(circuit: &Published, verilog: &str) -> BTreeSet<Place> {
+    let folder = tempfile::tempdir().expect("a temporary folder");
+    let file = folder.path().join("design.v");
+    std::fs::write(&file, verilog).expect("the file is written");
+    let graph = graph(&file, "t");
+    let target = driver(&graph, &format!("t.{}", circuit.target()));
+    let inputs: Vec<NodeId> = circuit.inputs().iter().map(|input| driver(&graph, &format!("t.{input}"))).collect();
+    let values = |vector: u32| -> BTreeMap<NodeId, bool> {
+        inputs.iter().enumerate().map(|(at, &input)| (input, vector >> at & 1 == 1)).collect()
+    };
+    let mut found = BTreeSet::new();
+    for vector in 0..1u32 << inputs.len() {
+        for source in 0..inputs.len() {
+            let other = vector ^ 1 << source;
+            if let Some(kind) = waveform(&graph, &values(vector), &values(other), target).hazard() {
+                found.insert((format!("{}-{}", bits(vector, inputs.len()), bits(other, inputs.len())), kind.name()));
+            }
+        }
+    }
+    found
+}
+
+/// A vector as published: the first input first.
+fn bits(vector: u32, inputs: usize) -> String {
+    (0..inputs).map(|at| if vector >> at & 1 == 1 { '1' } else { '0' }).collect()
 }
 
 /// Requires exactly the published transitions, and the published terms of the cure when there are any.
@@ -67,6 +97,7 @@ fn check(inputs: &[&str], definitions: &[&str], published: &[&str], cover: &[&st
     assert_eq!(explored(&circuit), expected, "the explorer disagrees with {definitions:?}");
 
     let verilog = circuit.verilog("t");
+    assert_eq!(analysed(&circuit, &verilog), expected, "{verilog}");
     let scan = scan_text(&verilog);
     assert_eq!(scan.pins("watch", "nets"), 1, "{verilog}");
     let findings = scan.findings_in("t");
