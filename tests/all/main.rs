@@ -3,6 +3,7 @@
 mod convert;
 mod covers;
 mod constructs;
+mod cores;
 mod decide;
 mod decision;
 mod demo;

@@ -1,0 +1,218 @@
+//! Scans of three processor cores that nobody here wrote: complete, nothing undecided, and with exactly the findings that
+//! were read one by one and found right. How many pins there are is counted independently: clock nets, reset nets and register
+//! bits from the program that Debian's `iverilog` (a general simulator) compiles the same sources into.
+
+use std::collections::{BTreeMap, BTreeSet};
+use std::path::{Path, PathBuf};
+use std::process::Command;
+
+use stillwire::graph::CellKind;
+
+use crate::outside::data;
+use crate::pipeline::{graph, scan};
+
+/// A core and what is known about it.
+struct Core {
+    /// Below the outside data.
+    path: &'static str,
+    top: &'static str,
+    /// Whether it has asynchronous resets.
+    asynchronous: bool,
+    /// Rule, severity, net and hazard kinds of each finding, reviewed.
+    findings: &'static [(&'static str, &'static str, &'static str, &'static [&'static str])],
+}
+
+const PICORV32: Core = Core { path: "picorv32/picorv32.v", top: "picorv32_axi", asynchronous: false, findings: &[] };
+
+const SERV: Core = Core { path: "serv/rtl", top: "serv_rf_top", asynchronous: false, findings: &[] };
+
+const MOR1KX: Core = Core { path: "mor1kx/rtl/verilog", top: "mor1kx", asynchronous: false, findings: MOR1KX_FINDINGS };
+
+const MOR1KX_ASYNC: Core =
+    Core { path: "mor1kx-async/rtl/verilog", top: "mor1kx", asynchronous: true, findings: MOR1KX_FINDINGS };
+
+/// The kind of reset changes nothing about the combinational outputs, so both settings have the same findings.
+const MOR1KX_FINDINGS: &[(&str, &str, &str, &[&str])] = &[];
+
+/// The Verilog sources of a core, headers left out.
+fn sources(core: &Core) -> Vec<PathBuf> {
+    let path = data().join(core.path);
+    let mut files: Vec<PathBuf> = walkdir::WalkDir::new(path)
+        .into_iter()
+        .map(|entry| entry.expect("a readable folder").into_path())
+        .filter(|path| path.extension().is_some_and(|extension| extension == "v"))
+        .collect();
+    files.sort();
+    files
+}
+
+/// Register bits that clocked processes assign with `<=`, and variables they only assign with `=`.
+#[derive(PartialEq, Eq, Default, Debug)]
+struct Registers {
+    clocks: usize,
+    /// Nets that asynchronous processes wait for beside the clock.
+    resets: usize,
+    synchronous: usize,
+    asynchronous: usize,
+    /// Bits of variables that clocked processes only assign with `=`: registers or mere temporaries.
+    temporary: usize,
+}
+
+/// Counted in the program that `iverilog` compiles the core into: each clocked thread waits for an event of one net
+/// (synchronous) or several (asynchronous), and assigns variables whose widths the program declares.
+fn simulated_registers(core: &Core) -> Registers {
+    let folder = tempfile::tempdir().expect("a temporary folder");
+    let program = folder.path().join("core.vvp");
+    let sources = sources(core);
+    let include = sources[0].parent().expect("a folder");
+    let compiled = Command::new("iverilog")
+        .args(["-g2005-sv", "-s", core.top, "-I"])
+        .arg(include)
+        .arg("-o")
+        .arg(&program)
+        .args(&sources)
+        .output()
+        .expect("iverilog runs");
+    assert!(compiled.status.success(), "{}", String::from_utf8_lossy(&compiled.stderr));
+    let text = std::fs::read_to_string(&program).expect("the compiled program");
+
+    let range = |words: &[&str]| -> usize {
+        let number = |word: &str| word.trim_end_matches([',', ';']).parse::<i64>().expect("an index");
+        words.chunks(2).map(|pair| number(pair[0]).abs_diff(number(pair[1])) as usize + 1).product()
+    };
+    let mut widths: BTreeMap<&str, usize> = BTreeMap::new();
+    let mut events: BTreeMap<&str, Vec<&str>> = BTreeMap::new();
+    let mut waits = None;
+    let mut nonblocking: BTreeMap<&str, &str> = BTreeMap::new();
+    let mut blocking: BTreeSet<&str> = BTreeSet::new();
+    let (mut alone, mut together) = (BTreeSet::new(), BTreeSet::new());
+    for line in text.lines() {
+        let words: Vec<&str> = line.split_whitespace().collect();
+        match words[..] {
+            [label, kind, _, ref indices @ ..] if kind.starts_with(".var") || kind.starts_with(".array") => {
+                let count = if kind.starts_with(".var") { 2 } else { 4 };
+                widths.insert(label, range(&indices[..count]));
+            }
+            [label, ".event", ref rest @ ..] => {
+                events.insert(label, rest.to_vec());
+            }
+            [".thread", ..] => waits = None,
+            ["%wait", event] => waits = events.get(event.trim_end_matches(';')),
+            [operation, variable, ..] if operation.starts_with("%assign/") || operation.starts_with("%store/") => {
+                let Some([edge, nets @ ..]) = waits.map(Vec::as_slice) else { continue };
+                if !matches!(*edge, "posedge," | "negedge,") {
+                    continue;
+                }
+                if nets.len() > 1 { &mut together } else { &mut alone }
+                    .extend(nets.iter().map(|net| net.trim_end_matches([',', ';'])));
+                let variable = variable.trim_end_matches([',', ';']);
+                if operation.starts_with("%assign/") {
+                    nonblocking.insert(variable, if nets.len() > 1 { "asynchronous" } else { "synchronous" });
+                } else {
+                    blocking.insert(variable);
+                }
+            }
+            _ => {}
+        }
+    }
+    let resets = together.difference(&alone).count();
+    let mut registers = Registers { clocks: alone.len(), resets, ..Registers::default() };
+    for (variable, kind) in &nonblocking {
+        let count = if *kind == "asynchronous" { &mut registers.asynchronous } else { &mut registers.synchronous };
+        *count += widths[variable];
+    }
+    let temporary = blocking.iter().filter(|variable| !nonblocking.contains_key(*variable));
+    registers.temporary = temporary.filter_map(|variable| widths.get(variable)).sum();
+    registers
+}
+
+/// The same from the elaborated graph.
+fn elaborated_registers(path: &Path, top: &str) -> Registers {
+    let graph = graph(path, top);
+    let asynchronous = graph.cells.iter().filter(|cell| !cell.controls.is_empty()).count();
+    let mut clocks = BTreeSet::new();
+    let mut resets = BTreeSet::new();
+    for cell in &graph.cells {
+        let CellKind::FlipFlop { clock, .. } = cell.kind else { panic!("no latch is written in the core") };
+        clocks.insert(graph.root(clock));
+        resets.extend(cell.controls.iter().map(|control| graph.root(control.net)));
+    }
+    Registers {
+        clocks: clocks.len(),
+        resets: resets.len(),
+        asynchronous,
+        synchronous: graph.cells.len() - asynchronous,
+        temporary: 0,
+    }
+}
+
+#[track_caller]
+fn check(core: &Core) {
+    let path = data().join(core.path);
+    let scan = scan(&[&path], &["--top", core.top]);
+    assert_eq!(scan.json["complete"], true, "{}", scan.text);
+    assert_eq!(scan.json["coverage"]["unsupported"].as_array().map(Vec::len), Some(0), "{}", scan.text);
+    assert_eq!(scan.json["coverage"]["black_boxes"].as_array().map(Vec::len), Some(0), "{}", scan.text);
+    for kind in ["clock", "set", "reset", "load", "latch-enable", "watch", "output"] {
+        assert_eq!(scan.pins(kind, "undecided"), 0, "{kind}");
+    }
+
+    let mut found: Vec<(String, String, String, BTreeSet<String>)> = scan
+        .findings()
+        .iter()
+        .map(|finding| {
+            let text = |key: &str| finding[key].as_str().unwrap_or_default().to_string();
+            let hazards = finding["hazards"].as_array().map_or(&[][..], Vec::as_slice);
+            let kinds = hazards.iter().filter_map(|hazard| hazard["kind"].as_str()).map(str::to_string).collect();
+            (text("rule"), text("severity"), text("net"), kinds)
+        })
+        .collect();
+    found.sort();
+    let mut reviewed: Vec<_> = core
+        .findings
+        .iter()
+        .map(|(rule, severity, net, kinds)| {
+            let kinds = kinds.iter().map(|kind| (*kind).to_string()).collect();
+            ((*rule).to_string(), (*severity).to_string(), (*net).to_string(), kinds)
+        })
+        .collect();
+    reviewed.sort();
+    assert_eq!(found, reviewed, "the findings are not the reviewed ones\n{}", scan.text);
+    let worst = found.iter().any(|finding| finding.1 == "error");
+    assert_eq!(scan.exit, i32::from(worst), "{}", scan.text);
+
+    let (simulated, elaborated) = (simulated_registers(core), elaborated_registers(&path, core.top));
+    assert_eq!(elaborated.asynchronous, simulated.asynchronous, "{simulated:?}, {elaborated:?}");
+    assert_eq!(elaborated.asynchronous > 0, core.asynchronous);
+    assert_eq!((elaborated.clocks, elaborated.resets), (simulated.clocks, simulated.resets));
+    assert_eq!(scan.pins("clock", "nets"), simulated.clocks as u64);
+    let resets: u64 = ["set", "reset", "load"].map(|kind| scan.pins(kind, "nets")).iter().sum();
+    assert_eq!(resets, simulated.resets as u64);
+    assert_eq!(scan.pins("latch-enable", "nets"), 0);
+    let most = simulated.synchronous + simulated.temporary;
+    assert!((simulated.synchronous..=most).contains(&elaborated.synchronous), "{simulated:?}, {elaborated:?}");
+}
+
+#[test]
+#[ignore = "outside: run tests/outside/run"]
+fn picorv32() {
+    check(&PICORV32);
+}
+
+#[test]
+#[ignore = "outside: run tests/outside/run"]
+fn serv() {
+    check(&SERV);
+}
+
+#[test]
+#[ignore = "outside: run tests/outside/run"]
+fn mor1kx() {
+    check(&MOR1KX);
+}
+
+#[test]
+#[ignore = "outside: run tests/outside/run"]
+fn mor1kx_with_asynchronous_resets() {
+    check(&MOR1KX_ASYNC);
+}
