@@ -82,7 +82,7 @@ fn simulated_registers(core: &Core) -> Registers {
     };
     let mut widths: BTreeMap<&str, usize> = BTreeMap::new();
     let mut events: BTreeMap<&str, Vec<&str>> = BTreeMap::new();
-    let mut waits = None;
+    let mut waits: Option<Vec<&str>> = None;
     let mut nonblocking: BTreeMap<&str, &str> = BTreeMap::new();
     let mut blocking: BTreeSet<&str> = BTreeSet::new();
     let (mut alone, mut together) = (BTreeSet::new(), BTreeSet::new());
@@ -97,9 +97,9 @@ fn simulated_registers(core: &Core) -> Registers {
                 events.insert(label, rest.to_vec());
             }
             [".thread", ..] => waits = None,
-            ["%wait", event] => waits = events.get(event.trim_end_matches(';')),
+            ["%wait", event] => waits = events.get(event.trim_end_matches(';')).cloned(),
             [operation, variable, ..] if operation.starts_with("%assign/") || operation.starts_with("%store/") => {
-                let Some([edge, nets @ ..]) = waits.map(Vec::as_slice) else { continue };
+                let Some([edge, nets @ ..]) = waits.as_deref() else { continue };
                 if !matches!(*edge, "posedge," | "negedge,") {
                     continue;
                 }
