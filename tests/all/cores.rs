@@ -89,7 +89,9 @@ fn simulated_registers(core: &Core) -> Registers {
     for line in text.lines() {
         let words: Vec<&str> = line.split_whitespace().collect();
         match words[..] {
-            [label, kind, _, ref indices @ ..] if kind.starts_with(".var") || kind.starts_with(".array") => {
+            [label, kind, _, ref indices @ ..]
+                if kind.starts_with(".var") || (kind.starts_with(".array") && *kind != ".array/port") =>
+            {
                 let count = if kind.starts_with(".var") { 2 } else { 4 };
                 widths.insert(label, range(&indices[..count]));
             }
