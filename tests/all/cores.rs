@@ -100,7 +100,7 @@ fn simulated_registers(core: &Core) -> Registers {
         let words: Vec<&str> = line.split_whitespace().collect();
         match words[..] {
             [label, kind, _, ref indices @ ..]
-                if kind.starts_with(".var") || (kind.starts_with(".array") && *kind != ".array/port") =>
+                if kind.starts_with(".var") || (kind.starts_with(".array") && kind != ".array/port") =>
             {
                 let count = if kind.starts_with(".var") { 2 } else { 4 };
                 widths.insert(label, range(&indices[..count]));
