@@ -33,8 +33,19 @@ pub(super) struct Rung {
 #[derive(Clone, Debug)]
 pub(super) enum PendingKind {
     Value(Bit),
-    FlipFlop { clock: NodeId, edge: Edge, data: NodeId, rungs: Rc<[Rung]> },
-    Latch { enable: NodeId, active: bool, data: NodeId, rungs: Rc<[Rung]>, from: Option<Span> },
+    /// Clocked by the edges of one signal, or of several.
+    FlipFlop {
+        clocks: Rc<[(NodeId, Edge)]>,
+        data: NodeId,
+        rungs: Rc<[Rung]>,
+    },
+    Latch {
+        enable: NodeId,
+        active: bool,
+        data: NodeId,
+        rungs: Rc<[Rung]>,
+        from: Option<Span>,
+    },
 }
 
 #[derive(Clone, Debug)]
@@ -69,8 +80,9 @@ impl<'a> Elaborator<'a> {
     fn pending_parts(&self, kind: &PendingKind, nodes: &mut Vec<NodeId>) {
         let rungs = match kind {
             PendingKind::Value(bit) => return self.parts(*bit, nodes),
-            PendingKind::FlipFlop { clock, data, rungs, .. } => {
-                nodes.extend([*clock, *data]);
+            PendingKind::FlipFlop { clocks, data, rungs } => {
+                nodes.extend(clocks.iter().map(|&(clock, _)| clock));
+                nodes.push(*data);
                 rungs
             }
             PendingKind::Latch { enable, data, rungs, .. } => {
@@ -143,22 +155,25 @@ impl<'a> Elaborator<'a> {
             });
             self.instance = pending.instance;
             let site = Site { instance: pending.instance, span };
-            let (kind, source, data, rungs, inferred_from) = match pending.kind {
+            let (kinds, source, data, rungs, inferred_from) = match pending.kind {
                 PendingKind::Value(value) => {
                     self.add_driver(wire, value, span);
                     continue;
                 }
-                PendingKind::FlipFlop { clock, edge, data, rungs } => {
-                    (CellKind::FlipFlop { clock, edge }, SourceKind::FlipFlop, data, rungs, None)
+                PendingKind::FlipFlop { clocks, data, rungs } => {
+                    let kinds = clocks.iter().map(|&(clock, edge)| CellKind::FlipFlop { clock, edge }).collect();
+                    (kinds, SourceKind::FlipFlop, data, rungs, None)
                 }
                 PendingKind::Latch { enable, active, data, rungs, from } => {
-                    (CellKind::Latch { enable, active }, SourceKind::Latch, data, rungs, from)
+                    (vec![CellKind::Latch { enable, active }], SourceKind::Latch, data, rungs, from)
                 }
             };
             let output = self.builder.source(source, site);
-            let controls =
+            let controls: Vec<Control> =
                 rungs.iter().map(|rung| Control { net: rung.net, active: rung.active, value: rung.value }).collect();
-            self.builder.cell(Cell { kind, output, data, controls, init, inferred_from });
+            for kind in kinds {
+                self.builder.cell(Cell { kind, output, data, controls: controls.clone(), init, inferred_from });
+            }
             self.add_driver(wire, Bit::Node(output), span);
         }
     }

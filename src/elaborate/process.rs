@@ -2,7 +2,7 @@
 //! executed once for each state of its asynchronous controls, taken from the leading if-ladder, and once for the clock;
 //! every other process is executed once, and what it does not assign on every path is a latch.
 
-use std::collections::{BTreeMap, BTreeSet, HashMap};
+use std::collections::{BTreeMap, BTreeSet, HashMap, HashSet};
 use std::rc::Rc;
 
 use super::bits::Bit;
@@ -10,6 +10,7 @@ use super::context::{Elaborator, Outcome, Storage, VariableId, unsupported};
 use super::drivers::{Pending, PendingKind, Rung};
 use super::environment::{Environment, Mode};
 use super::scope::ScopeId;
+use crate::diagnostic::{Diagnostic, Kind};
 use crate::graph::{Edge, NodeId, NodeKind, SourceKind};
 use crate::source::Span;
 use crate::syntax::ast::{self, Event, Process, ProcessKind, Sensitivity, Stmt, StmtKind};
@@ -232,17 +233,11 @@ impl<'a> Elaborator<'a> {
             conditions.push(Condition { node });
             at = otherwise.and_then(leading_if);
         }
-        let &[(clock, edge, _)] = remaining.as_slice() else {
-            let what = if remaining.is_empty() {
-                "edge list that leaves no clock beside the asynchronous controls"
-            } else {
-                "edge list with more than one signal that could be the clock"
-            };
-            let span = events
-                .first()
-                .map_or(body.span, |first| events.last().map_or(first.span, |last| first.span.to(last.span)));
+        let span = events.iter().map(|event| event.span).reduce(Span::to).unwrap_or(body.span);
+        if remaining.is_empty() {
+            let what = "edge list that leaves no clock beside the asynchronous controls";
             return Err(unsupported(what, span));
-        };
+        }
         let mut assumed = HashMap::new();
         let mut runs = Vec::new();
         for condition in &conditions {
@@ -250,7 +245,11 @@ impl<'a> Elaborator<'a> {
             assumed = self.with_condition(&assumed, condition.node, false);
         }
         let main = self.run_body(body, Mode::Edge, assumed)?;
-        self.flip_flops(clock, edge, &conditions, &runs, &main, body.span);
+        if remaining.len() > 1 {
+            self.several_clocks(&remaining, &runs, &main, span)?;
+        }
+        let clocks: Vec<(NodeId, Edge)> = remaining.iter().map(|&(net, edge, _)| (net, edge)).collect();
+        self.flip_flops(&clocks, &conditions, &runs, &main, body.span);
         Ok(())
     }
 
@@ -260,10 +259,34 @@ impl<'a> Elaborator<'a> {
         with_assumption(&with_assumption(assumed, node, value), net, value == active)
     }
 
+    /// Edges that the body never tests all clock the flip-flops, as the standard says; the reader is told, since one of them
+    /// may have been meant as a control. A body that reads such a signal would see it change with its own edge, which
+    /// is neither a clock nor a control.
+    fn several_clocks(
+        &mut self,
+        clocks: &[(NodeId, Edge, Span)],
+        runs: &[Results],
+        main: &Results,
+        span: Span,
+    ) -> Outcome<()> {
+        let mut seen: HashSet<NodeId> = HashSet::new();
+        for (bits, _) in runs.iter().chain([main]).flat_map(BTreeMap::values) {
+            for &bit in bits {
+                let Bit::Node(node) = bit else { continue };
+                self.support_into(node, &mut seen);
+            }
+        }
+        if clocks.iter().any(|(net, ..)| seen.contains(net)) {
+            return Err(unsupported("edge list with more than one signal that could be the clock", span));
+        }
+        let message = format!("{} signals clock these flip-flops: none of them is tested as a control", clocks.len());
+        self.report(Diagnostic::new(Kind::Note, "several clocks", message, Some(span)));
+        Ok(())
+    }
+
     fn flip_flops(
         &mut self,
-        clock: NodeId,
-        edge: Edge,
+        clocks: &[(NodeId, Edge)],
         conditions: &[Condition],
         runs: &[Results],
         main: &Results,
@@ -274,12 +297,9 @@ impl<'a> Elaborator<'a> {
             let wires = self.variable(id).wires.clone();
             let blocking_only =
                 runs.iter().chain([main]).filter_map(|run| run.get(&id)).all(|&(_, blocking_only)| blocking_only);
-            let (clock, active) = self.pin(clock, id, "clock");
-            let edge = match edge {
-                Edge::Posedge if !active => Edge::Negedge,
-                Edge::Negedge if !active => Edge::Posedge,
-                edge => edge,
-            };
+            // The inverters in front of a clock are gone already; only a clock without a name gets one here.
+            let clocks: Rc<[(NodeId, Edge)]> =
+                clocks.iter().map(|&(clock, edge)| (self.pin(clock, id, "clock").0, edge)).collect();
             let mut known: BTreeMap<Vec<Bit>, Rc<[Rung]>> = BTreeMap::new();
             for (offset, &wire) in wires.iter().enumerate() {
                 let held = Bit::Node(wire);
@@ -311,7 +331,7 @@ impl<'a> Elaborator<'a> {
                     data = self.select(condition, held, data, site);
                 }
                 let data = self.node(data, site);
-                self.pend(id, offset, PendingKind::FlipFlop { clock, edge, data, rungs }, blocking_only);
+                self.pend(id, offset, PendingKind::FlipFlop { clocks: Rc::clone(&clocks), data, rungs }, blocking_only);
             }
         }
     }
@@ -350,22 +370,28 @@ impl<'a> Elaborator<'a> {
 
     /// The nets that a condition depends on.
     fn support(&self, node: NodeId) -> BTreeSet<NodeId> {
-        let mut nets = BTreeSet::new();
-        let mut seen = BTreeSet::from([node]);
+        let mut seen = HashSet::new();
+        self.support_into(node, &mut seen);
+        seen.retain(|&node| !self.inner(node) && !matches!(self.builder.kind(node), NodeKind::Const(_)));
+        seen.into_iter().collect()
+    }
+
+    /// Whether a node is logic, not a net or source.
+    fn inner(&self, node: NodeId) -> bool {
+        matches!(
+            self.builder.kind(node),
+            NodeKind::Gate(_) | NodeKind::Table(_) | NodeKind::OpIn(_) | NodeKind::OpOut(_)
+        )
+    }
+
+    /// Collects all nodes of the logic in front of a node, up to and including nets and sources.
+    fn support_into(&self, node: NodeId, seen: &mut HashSet<NodeId>) {
         let mut stack = vec![node];
         while let Some(node) = stack.pop() {
-            if !matches!(self.builder.kind(node), NodeKind::Gate(_) | NodeKind::OpIn(_) | NodeKind::OpOut(_)) {
-                nets.insert(node);
-                continue;
-            }
-            for &input in self.builder.fanin(node) {
-                if seen.insert(input) {
-                    stack.push(input);
-                }
+            if seen.insert(node) && self.inner(node) {
+                stack.extend_from_slice(self.builder.fanin(node));
             }
         }
-        nets.retain(|&net| !matches!(self.builder.kind(net), NodeKind::Const(_)));
-        nets
     }
 
     /// The net at a pin and the level at which it acts; a condition that has no name gets one after the variable.

@@ -622,7 +622,7 @@ pub(super) fn collect_targets<'s>(statement: &'s Stmt, targets: &mut Vec<(&'s Ex
     }
 }
 
-/// What a constant label demands of each bit of the subject: `None` does not care.
+/// What a constant label demands of each bit of the subject that can change: `None` does not care.
 type Cube = Vec<Option<bool>>;
 
 /// `case` statements.
@@ -655,7 +655,7 @@ impl<'a> Elaborator<'a> {
                 }
                 let bits = self.eval(label, width, signed)?;
                 matches.push(self.match_label(&subject, &bits, case.kind, label_site));
-                match (label_cube(&bits, case.kind), &mut arm_cubes) {
+                match (label_cube(&subject, &bits, case.kind), &mut arm_cubes) {
                     (Label::Cube(cube), Some(cubes)) => cubes.push(cube),
                     (Label::Never, _) => {}
                     _ => arm_cubes = None,
@@ -670,7 +670,7 @@ impl<'a> Elaborator<'a> {
         }
         let exclusive = cubes.filter(|cubes| !subject.iter().all(|bit| bit.is_literal()) && disjoint(cubes));
         if let Some(cubes) = exclusive {
-            let covered = covers_all(&cubes, width);
+            let covered = covers_all(&cubes);
             return self.execute_exclusive(case, &conditions, covered, full, site);
         }
         self.execute_priority(case, &conditions, full, site)
@@ -783,19 +783,31 @@ enum Label {
     Variable,
 }
 
-fn label_cube(label: &[Bit], kind: CaseKind) -> Label {
-    let mut cube = Cube::with_capacity(label.len());
-    for bit in label {
-        cube.push(match (bit, kind) {
+/// The label as a cube over the distinct nodes of the subject. Bits that the subject was extended by are literal, or
+/// repeat its sign.
+fn label_cube(subject: &[Bit], label: &[Bit], kind: CaseKind) -> Label {
+    let mut demands: BTreeMap<Bit, Option<bool>> = BTreeMap::new();
+    for (&value, bit) in subject.iter().zip(label) {
+        let demand = match (bit, kind) {
             (Bit::Zero, _) => Some(false),
             (Bit::One, _) => Some(true),
             (Bit::Z, CaseKind::Casez | CaseKind::Casex | CaseKind::Inside) => None,
             (Bit::X, CaseKind::Casex | CaseKind::Inside) => None,
             (Bit::X | Bit::Z, _) => return Label::Never,
             _ => return Label::Variable,
-        });
+        };
+        match (value, demand) {
+            (Bit::Zero, Some(true)) | (Bit::One, Some(false)) => return Label::Never,
+            (Bit::Zero | Bit::One, _) => {}
+            (Bit::X | Bit::Z, _) => return Label::Variable,
+            (value, demand) => match demands.entry(value).or_insert(demand) {
+                Some(before) if demand.is_some_and(|demand| demand != *before) => return Label::Never,
+                Some(_) => {}
+                slot => *slot = demand,
+            },
+        }
     }
-    Label::Cube(cube)
+    Label::Cube(demands.into_values().collect())
 }
 
 /// Whether labels of different arms never match together.
@@ -814,7 +826,8 @@ fn disjoint(arms: &[Vec<Cube>]) -> bool {
 }
 
 /// Whether the labels together match every value of the subject: by counting, when they are disjoint.
-fn covers_all(arms: &[Vec<Cube>], width: usize) -> bool {
+fn covers_all(arms: &[Vec<Cube>]) -> bool {
+    let width = arms.iter().flatten().next().map_or(64, Vec::len);
     if width >= 64 {
         return false;
     }

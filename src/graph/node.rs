@@ -112,7 +112,8 @@ pub enum Edge {
     Both,
 }
 
-/// A flip-flop or latch of one bit. Its output is a source node; its pins are where hazards do harm.
+/// A flip-flop or latch of one bit. Its output is a source node; its pins are where hazards do harm. A flip-flop that the
+/// edges of several signals clock is one cell for each of them, all with the same output, data and controls.
 #[derive(Clone, Debug)]
 pub struct Cell {
     pub kind: CellKind,

@@ -7,6 +7,7 @@ mod cores;
 mod decide;
 mod decision;
 mod demo;
+mod elaborate;
 mod explorer;
 mod fixtures;
 mod flatten;
