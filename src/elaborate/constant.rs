@@ -224,7 +224,7 @@ impl<'a> Elaborator<'a> {
     /// Counts a step of execution; an error past the limit.
     pub fn step(&mut self, span: crate::source::Span) -> Outcome<()> {
         self.steps += 1;
-        if self.steps.is_multiple_of(64) {
+        if self.steps & 63 == 0 {
             self.check_size(0, span)?;
         }
         if self.steps > STEP_LIMIT {

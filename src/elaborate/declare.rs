@@ -61,10 +61,10 @@ impl<'a> Elaborator<'a> {
     pub fn declare_all(&mut self, scope: ScopeId, items: &'a [Item], local: bool) -> Outcome<()> {
         for item in items {
             match &item.kind {
-                ItemKind::Import(imports) | ItemKind::Export(imports) => {
-                    if imports.iter().all(|import| import.package.name != "*") {
-                        self.import(scope, imports)?;
-                    }
+                ItemKind::Import(imports) | ItemKind::Export(imports)
+                    if imports.iter().all(|import| import.package.name != "*") =>
+                {
+                    self.import(scope, imports)?;
                 }
                 ItemKind::Function(function) | ItemKind::Task(function) => {
                     self.declare(scope, &function.name.name, Symbol::Function(function, scope));

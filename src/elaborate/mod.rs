@@ -9,6 +9,7 @@
 mod bits;
 pub mod blast;
 mod calls;
+mod case;
 mod constant;
 mod context;
 mod declare;

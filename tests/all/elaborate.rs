@@ -294,7 +294,7 @@ fn widths_and_signs_follow_the_context() {
                 let s = b;
                 let inputs = [("a", a), ("b", b), ("s", s), ("u", u)];
                 let (ss, su) = (signed(s, 4), signed(u, 3));
-                assert_eq!(t.value("narrow", &inputs), (a + b) % 16 >> 1, "the carry is lost at four bits");
+                assert_eq!(t.value("narrow", &inputs), ((a + b) % 16) >> 1, "the carry is lost at four bits");
                 assert_eq!(t.value("wide", &inputs), (a + b) >> 1, "the left side widens the addition");
                 assert_eq!(t.value("shifted", &inputs), (ss >> 1) as u64 & 15);
                 assert_eq!(t.value("less", &inputs), u64::from(ss < su));

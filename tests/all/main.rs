@@ -1,9 +1,9 @@
 //! The one integration binary: fixtures, end-to-end runs and checks against outside references.
 
-mod convert;
-mod covers;
 mod constructs;
+mod convert;
 mod cores;
+mod covers;
 mod decide;
 mod decision;
 mod demo;
