@@ -18,18 +18,33 @@ struct Core {
     top: &'static str,
     /// Whether it has asynchronous resets.
     asynchronous: bool,
+    /// Register bits that are only assigned where a parameter never lets control pass: constants, to the analysis.
+    never_written: usize,
     /// Rule, severity, net and hazard kinds of each finding, reviewed.
     findings: &'static [(&'static str, &'static str, &'static str, &'static [&'static str])],
 }
 
-const PICORV32: Core = Core { path: "picorv32/picorv32.v", top: "picorv32_axi", asynchronous: false, findings: &[] };
+/// `mem_16bit_buffer` is written under `COMPRESSED_ISA` only, which is 0.
+const PICORV32: Core =
+    Core { path: "picorv32/picorv32.v", top: "picorv32_axi", asynchronous: false, never_written: 16, findings: &[] };
 
-const SERV: Core = Core { path: "serv/rtl", top: "serv_rf_top", asynchronous: false, findings: &[] };
+const SERV: Core = Core { path: "serv/rtl", top: "serv_rf_top", asynchronous: false, never_written: 0, findings: &[] };
 
-const MOR1KX: Core = Core { path: "mor1kx/rtl/verilog", top: "mor1kx", asynchronous: false, findings: MOR1KX_FINDINGS };
+const MOR1KX: Core = Core {
+    path: "mor1kx/rtl/verilog",
+    top: "mor1kx",
+    asynchronous: false,
+    never_written: 0,
+    findings: MOR1KX_FINDINGS,
+};
 
-const MOR1KX_ASYNC: Core =
-    Core { path: "mor1kx-async/rtl/verilog", top: "mor1kx", asynchronous: true, findings: MOR1KX_FINDINGS };
+const MOR1KX_ASYNC: Core = Core {
+    path: "mor1kx-async/rtl/verilog",
+    top: "mor1kx",
+    asynchronous: true,
+    never_written: 0,
+    findings: MOR1KX_FINDINGS,
+};
 
 /// The kind of reset changes nothing about the combinational outputs, so both settings have the same findings. Both are in
 /// mor1kx_bus_if_wb32.v, bridge of the instruction bus. Why they are right:
@@ -99,11 +114,12 @@ fn simulated_registers(core: &Core) -> Registers {
     for line in text.lines() {
         let words: Vec<&str> = line.split_whitespace().collect();
         match words[..] {
-            [label, kind, _, ref indices @ ..]
-                if kind.starts_with(".var") || (kind.starts_with(".array") && kind != ".array/port") =>
-            {
-                let count = if kind.starts_with(".var") { 2 } else { 4 };
-                widths.insert(label, range(&indices[..count]));
+            [label, kind, _, ref indices @ ..] if kind.starts_with(".var") && indices.len() >= 2 => {
+                widths.insert(label, range(&indices[..2]));
+            }
+            // Arrays of nets have one range only.
+            [label, ".array" | ".array/s" | ".array/i", _, ref indices @ ..] if indices.len() >= 4 => {
+                widths.insert(label, range(&indices[..4]));
             }
             [label, ".event", ref rest @ ..] => {
                 events.insert(label, rest.to_vec());
@@ -201,8 +217,9 @@ fn check(core: &Core) {
     let resets: u64 = ["set", "reset", "load"].map(|kind| scan.pins(kind, "nets")).iter().sum();
     assert_eq!(resets, simulated.resets as u64);
     assert_eq!(scan.pins("latch-enable", "nets"), 0);
-    let most = simulated.synchronous + simulated.temporary;
-    assert!((simulated.synchronous..=most).contains(&elaborated.synchronous), "{simulated:?}, {elaborated:?}");
+    let least = simulated.synchronous - core.never_written;
+    let most = least + simulated.temporary;
+    assert!((least..=most).contains(&elaborated.synchronous), "{simulated:?}, {elaborated:?}");
 }
 
 #[test]
