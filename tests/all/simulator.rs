@@ -335,6 +335,7 @@ fn compare(trial: &Trial, outputs: &[&Port], original: &[String], flat: &[String
 /// know the construct, `reference/` holds the same function written by hand in plain Verilog.
 #[test]
 #[ignore = "outside: run tests/outside/run"]
+#[allow(clippy::print_stdout, reason = "how much was compared belongs to the result of an outside check")]
 fn constructs_simulate_like_their_flattened_form() {
     let references = Path::new(env!("CARGO_MANIFEST_DIR")).join("fixtures/constructs/reference");
     let only = std::env::var("STILLWIRE_CONSTRUCT").ok();
@@ -387,7 +388,17 @@ fn core(name: &str, files: &[&str], top: &str, stimuli: Vec<(&'static str, &'sta
     }
 }
 
+/// The Verilog files of a folder of the outside data.
+fn verilog_files(folder: &str) -> Vec<PathBuf> {
+    let entries = std::fs::read_dir(outside::data().join(folder)).expect("the core");
+    let mut files: Vec<PathBuf> = entries.map(|entry| entry.expect("an entry").path()).collect();
+    files.retain(|path| path.extension().is_some_and(|extension| extension == "v"));
+    files.sort();
+    files
+}
+
 #[track_caller]
+#[allow(clippy::print_stdout, reason = "how much was compared belongs to the result of an outside check")]
 fn check_core(trial: &Trial) {
     match run(trial) {
         Ok(counts) => println!("{}: {counts:?}", trial.top),
@@ -406,13 +417,7 @@ fn picorv32_simulates_like_its_flattened_form() {
 #[test]
 #[ignore = "outside: run tests/outside/run"]
 fn serv_simulates_like_its_flattened_form() {
-    let folder = outside::data().join("serv/rtl");
-    let mut files: Vec<PathBuf> = std::fs::read_dir(folder)
-        .expect("the core")
-        .map(|entry| entry.expect("an entry").path())
-        .filter(|path| path.extension().is_some_and(|extension| extension == "v"))
-        .collect();
-    files.sort();
+    let files = verilog_files("serv/rtl");
     let mut trial = core("serv", &[], "serv_rf_top", vec![("i_ibus_rdt", INSTRUCTION)]);
     trial.paths = files.clone();
     trial.files = files;
