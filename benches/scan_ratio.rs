@@ -78,7 +78,10 @@ fn run(data: &Path) {
     println!("mor1kx, {} files, {} kB, {threads} threads, best of {RUNS}", files.len(), bytes / 1000);
     println!("parser alone {parsing:7.3} s");
     println!("reading      {reading:7.3} s (our preprocessing, parsing, own tree)");
-    println!("whole scan   {scanning:7.3} s, {:.2} times the parser alone; the aim is 1.30", scanning / parsing);
+    println!("whole scan   {scanning:7.3} s");
+    // The stricter of the two counts: our reading cuts files into pieces and so keeps all threads busier.
+    let ratio = scanning / parsing.min(reading);
+    println!("ratio to the parser alone {:.2}, to the faster of both {ratio:.2}; the aim is 1.30", scanning / parsing);
 }
 
 fn main() {

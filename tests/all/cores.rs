@@ -6,7 +6,7 @@ use std::collections::{BTreeMap, BTreeSet};
 use std::path::{Path, PathBuf};
 use std::process::Command;
 
-use stillwire::graph::CellKind;
+use stillwire::graph::{CellKind, NodeId};
 
 use crate::outside::data;
 use crate::pipeline::{graph, scan};
@@ -20,29 +20,41 @@ struct Core {
     asynchronous: bool,
     /// Register bits that are only assigned where a parameter never lets control pass: constants, to the analysis.
     never_written: usize,
+    /// Register bits of asynchronous processes that do not test the reset: it clocks them.
+    two_clocks: usize,
     /// Rule, severity, net and hazard kinds of each finding, reviewed.
     findings: &'static [(&'static str, &'static str, &'static str, &'static [&'static str])],
 }
 
 /// `mem_16bit_buffer` is written under `COMPRESSED_ISA` only, which is 0.
-const PICORV32: Core =
-    Core { path: "picorv32/picorv32.v", top: "picorv32_axi", asynchronous: false, never_written: 16, findings: &[] };
+const PICORV32: Core = Core {
+    path: "picorv32/picorv32.v",
+    top: "picorv32_axi",
+    asynchronous: false,
+    never_written: 16,
+    two_clocks: 0,
+    findings: &[],
+};
 
-const SERV: Core = Core { path: "serv/rtl", top: "serv_rf_top", asynchronous: false, never_written: 0, findings: &[] };
+const SERV: Core =
+    Core { path: "serv/rtl", top: "serv_rf_top", asynchronous: false, never_written: 0, two_clocks: 0, findings: &[] };
 
 const MOR1KX: Core = Core {
     path: "mor1kx/rtl/verilog",
     top: "mor1kx",
     asynchronous: false,
     never_written: 0,
+    two_clocks: 0,
     findings: MOR1KX_FINDINGS,
 };
 
+/// `pc_execute_o` is written in a process that waits for the reset and never tests it: an oversight of the core.
 const MOR1KX_ASYNC: Core = Core {
     path: "mor1kx-async/rtl/verilog",
     top: "mor1kx",
     asynchronous: true,
     never_written: 0,
+    two_clocks: 32,
     findings: MOR1KX_FINDINGS,
 };
 
@@ -74,10 +86,10 @@ fn sources(core: &Core) -> Vec<PathBuf> {
 /// Register bits that clocked processes assign with `<=`, and variables they only assign with `=`.
 #[derive(PartialEq, Eq, Default, Debug)]
 struct Registers {
-    clocks: usize,
-    /// Nets that asynchronous processes wait for beside the clock.
-    resets: usize,
+    /// Nets whose edges processes wait for: clocks and asynchronous resets.
+    nets: usize,
     synchronous: usize,
+    /// Of processes that wait for more than one net.
     asynchronous: usize,
     /// Bits of variables that clocked processes only assign with `=`: registers or mere temporaries.
     temporary: usize,
@@ -110,7 +122,7 @@ fn simulated_registers(core: &Core) -> Registers {
     let mut waits: Option<Vec<&str>> = None;
     let mut nonblocking: BTreeMap<&str, &str> = BTreeMap::new();
     let mut blocking: BTreeSet<&str> = BTreeSet::new();
-    let (mut alone, mut together) = (BTreeSet::new(), BTreeSet::new());
+    let mut edges = BTreeSet::new();
     for line in text.lines() {
         let words: Vec<&str> = line.split_whitespace().collect();
         match words[..] {
@@ -131,8 +143,7 @@ fn simulated_registers(core: &Core) -> Registers {
                 if !matches!(*edge, "posedge," | "negedge,") {
                     continue;
                 }
-                if nets.len() > 1 { &mut together } else { &mut alone }
-                    .extend(nets.iter().map(|net| net.trim_end_matches([',', ';'])));
+                edges.extend(nets.iter().map(|net| net.trim_end_matches([',', ';'])));
                 let variable = variable.trim_end_matches([',', ';']);
                 if operation.starts_with("%assign/") {
                     nonblocking.insert(variable, if nets.len() > 1 { "asynchronous" } else { "synchronous" });
@@ -143,8 +154,7 @@ fn simulated_registers(core: &Core) -> Registers {
             _ => {}
         }
     }
-    let resets = together.difference(&alone).count();
-    let mut registers = Registers { clocks: alone.len(), resets, ..Registers::default() };
+    let mut registers = Registers { nets: edges.len(), ..Registers::default() };
     for (variable, kind) in &nonblocking {
         let count = if *kind == "asynchronous" { &mut registers.asynchronous } else { &mut registers.synchronous };
         *count += widths[variable];
@@ -154,24 +164,24 @@ fn simulated_registers(core: &Core) -> Registers {
     registers
 }
 
-/// The same from the elaborated graph.
-fn elaborated_registers(path: &Path, top: &str) -> Registers {
+/// The same from the elaborated graph, and the bits that several nets clock.
+fn elaborated_registers(path: &Path, top: &str) -> (Registers, usize) {
     let graph = graph(path, top);
-    let asynchronous = graph.cells.iter().filter(|cell| !cell.controls.is_empty()).count();
-    let mut clocks = BTreeSet::new();
-    let mut resets = BTreeSet::new();
+    let mut nets = BTreeSet::new();
+    // A bit that several nets clock is one cell for each of them.
+    let mut bits: BTreeMap<NodeId, (usize, bool)> = BTreeMap::new();
     for cell in &graph.cells {
         let CellKind::FlipFlop { clock, .. } = cell.kind else { panic!("no latch is written in the core") };
-        clocks.insert(graph.root(clock));
-        resets.extend(cell.controls.iter().map(|control| graph.root(control.net)));
+        nets.insert(graph.root(clock));
+        nets.extend(cell.controls.iter().map(|control| graph.root(control.net)));
+        let (clocks, controlled) = bits.entry(cell.output).or_default();
+        *clocks += 1;
+        *controlled |= !cell.controls.is_empty();
     }
-    Registers {
-        clocks: clocks.len(),
-        resets: resets.len(),
-        asynchronous,
-        synchronous: graph.cells.len() - asynchronous,
-        temporary: 0,
-    }
+    let asynchronous = bits.values().filter(|&&(clocks, controlled)| controlled || clocks > 1).count();
+    let synchronous = bits.len() - asynchronous;
+    let several = bits.values().filter(|&&(clocks, _)| clocks > 1).count();
+    (Registers { nets: nets.len(), asynchronous, synchronous, temporary: 0 }, several)
 }
 
 #[track_caller]
@@ -209,13 +219,15 @@ fn check(core: &Core) {
     let worst = found.iter().any(|finding| finding.1 == "error");
     assert_eq!(scan.exit, i32::from(worst), "{}", scan.text);
 
-    let (simulated, elaborated) = (simulated_registers(core), elaborated_registers(&path, core.top));
+    let simulated = simulated_registers(core);
+    let (elaborated, several) = elaborated_registers(&path, core.top);
     assert_eq!(elaborated.asynchronous, simulated.asynchronous, "{simulated:?}, {elaborated:?}");
     assert_eq!(elaborated.asynchronous > 0, core.asynchronous);
-    assert_eq!((elaborated.clocks, elaborated.resets), (simulated.clocks, simulated.resets));
-    assert_eq!(scan.pins("clock", "nets"), simulated.clocks as u64);
+    assert_eq!(elaborated.nets, simulated.nets);
+    assert_eq!(several, core.two_clocks);
+    assert_eq!(scan.pins("clock", "nets"), 1 + u64::from(several > 0));
     let resets: u64 = ["set", "reset", "load"].map(|kind| scan.pins(kind, "nets")).iter().sum();
-    assert_eq!(resets, simulated.resets as u64);
+    assert_eq!(resets, u64::from(core.asynchronous));
     assert_eq!(scan.pins("latch-enable", "nets"), 0);
     let least = simulated.synchronous - core.never_written;
     let most = least + simulated.temporary;
