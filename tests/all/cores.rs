@@ -18,8 +18,11 @@ struct Core {
     top: &'static str,
     /// Whether it has asynchronous resets.
     asynchronous: bool,
-    /// Register bits that are only assigned where a parameter never lets control pass: constants, to the analysis.
-    never_written: usize,
+    /// Register bits that the simulator has and the analysis has not: only assigned where a parameter never lets control
+    /// pass, or between `translate_off` and `translate_on`.
+    absent: usize,
+    /// Register bits of asynchronous processes that the branch of the reset leaves alone: no pin is on them.
+    without_reset: usize,
     /// Register bits of asynchronous processes that do not test the reset: it clocks them.
     two_clocks: usize,
     /// Rule, severity, net and hazard kinds of each finding, reviewed.
@@ -31,29 +34,41 @@ const PICORV32: Core = Core {
     path: "picorv32/picorv32.v",
     top: "picorv32_axi",
     asynchronous: false,
-    never_written: 16,
+    absent: 16,
+    without_reset: 0,
     two_clocks: 0,
     findings: &[],
 };
 
-const SERV: Core =
-    Core { path: "serv/rtl", top: "serv_rf_top", asynchronous: false, never_written: 0, two_clocks: 0, findings: &[] };
+const SERV: Core = Core {
+    path: "serv/rtl",
+    top: "serv_rf_top",
+    asynchronous: false,
+    absent: 0,
+    without_reset: 0,
+    two_clocks: 0,
+    findings: &[],
+};
 
+/// `monitor_execute_insn_reg` stands between `translate_off` and `translate_on`.
 const MOR1KX: Core = Core {
     path: "mor1kx/rtl/verilog",
     top: "mor1kx",
     asynchronous: false,
-    never_written: 0,
+    absent: 32,
+    without_reset: 0,
     two_clocks: 0,
     findings: MOR1KX_FINDINGS,
 };
 
-/// `pc_execute_o` is written in a process that waits for the reset and never tests it: an oversight of the core.
+/// Two oversights of the core: the branch of the reset forgets `ctrl_except_dtlb_miss_o` and `ctrl_except_dpagefault_o`, and
+/// `pc_execute_o` is written in a process that waits for the reset and never tests it.
 const MOR1KX_ASYNC: Core = Core {
     path: "mor1kx-async/rtl/verilog",
     top: "mor1kx",
     asynchronous: true,
-    never_written: 0,
+    absent: 32,
+    without_reset: 2,
     two_clocks: 32,
     findings: MOR1KX_FINDINGS,
 };
@@ -221,7 +236,8 @@ fn check(core: &Core) {
 
     let simulated = simulated_registers(core);
     let (elaborated, several) = elaborated_registers(&path, core.top);
-    assert_eq!(elaborated.asynchronous, simulated.asynchronous, "{simulated:?}, {elaborated:?}");
+    let asynchronous = elaborated.asynchronous + core.without_reset;
+    assert_eq!(asynchronous, simulated.asynchronous, "{simulated:?}, {elaborated:?}");
     assert_eq!(elaborated.asynchronous > 0, core.asynchronous);
     assert_eq!(elaborated.nets, simulated.nets);
     assert_eq!(several, core.two_clocks);
@@ -229,7 +245,7 @@ fn check(core: &Core) {
     let resets: u64 = ["set", "reset", "load"].map(|kind| scan.pins(kind, "nets")).iter().sum();
     assert_eq!(resets, u64::from(core.asynchronous));
     assert_eq!(scan.pins("latch-enable", "nets"), 0);
-    let least = simulated.synchronous - core.never_written;
+    let least = simulated.synchronous + core.without_reset - core.absent;
     let most = least + simulated.temporary;
     assert!((least..=most).contains(&elaborated.synchronous), "{simulated:?}, {elaborated:?}");
 }
