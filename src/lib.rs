@@ -160,7 +160,9 @@ fn require_input(request: &Request, loaded: &Loaded) -> Result<(), PathError> {
         None => Ok(()),
         Some(top) => {
             let nearest = names.iter().min_by_key(|name| settings::distance(top, name));
-            let help = match nearest.filter(|name| settings::distance(top, name) <= 3) {
+            // A name with hardly a letter in common is no suggestion.
+            let close = |name: &&&str| settings::distance(top, name) <= 3.min(top.chars().count() / 2);
+            let help = match nearest.filter(close) {
                 Some(nearest) => format!("did you mean `{nearest}`?"),
                 None => "check the spelling, and that its file is among the paths".to_string(),
             };

@@ -610,8 +610,7 @@ impl<'a> Elaborator<'a> {
             ));
         }
         let parent = self.scope(scope).instance;
-        let module = self.builder.instance_module(parent).to_string();
-        let instance = self.builder.instance(Some(parent), label, &module, Some(span));
+        let instance = self.builder.block(parent, label, Some(span));
         Ok(self.inner_scope(scope, name, instance, String::new()))
     }
 

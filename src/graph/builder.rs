@@ -64,8 +64,16 @@ impl GraphBuilder {
             Some(parent) => format!("{}.{name}", self.instances[parent.index()].path),
             None => name.to_string(),
         };
-        self.instances.push(Instance { parent, path, module: module.to_string(), span });
+        self.instances.push(Instance { parent, path, module: module.to_string(), block: false, span });
         InstanceId::new(self.instances.len() - 1)
+    }
+
+    /// Adds a generate block of `parent`.
+    pub fn block(&mut self, parent: InstanceId, name: &str, span: Option<Span>) -> InstanceId {
+        let module = self.instance_module(parent).to_string();
+        let id = self.instance(Some(parent), name, &module, span);
+        self.instances[id.index()].block = true;
+        id
     }
 
     /// The clean constant. An instance must exist.

@@ -171,6 +171,8 @@ pub struct Instance {
     /// Full path from the top: `top.u_core.gen[3].u_cell`.
     pub path: String,
     pub module: String,
+    /// Whether it is a generate block, in which the names of its parent are visible.
+    pub block: bool,
     pub span: Option<crate::source::Span>,
 }
 

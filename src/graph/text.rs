@@ -27,7 +27,8 @@ use crate::source::{FileId, Span};
 pub fn print(graph: &Graph) -> String {
     let mut out = String::new();
     for (index, instance) in graph.instances.iter().enumerate() {
-        let _ = write!(out, "i{index} = instance {} of {}", quoted(&instance.path), quoted(&instance.module));
+        let word = if instance.block { "block" } else { "instance" };
+        let _ = write!(out, "i{index} = {word} {} of {}", quoted(&instance.path), quoted(&instance.module));
         if let Some(parent) = instance.parent {
             let _ = write!(out, " in {parent}");
         }
@@ -198,7 +199,13 @@ pub fn parse(text: &str) -> Result<Parsed, String> {
     }
     let mut parts = Parts::default();
     if labels.instances == 0 {
-        parts.instances.push(Instance { parent: None, path: "top".into(), module: "top".into(), span: None });
+        parts.instances.push(Instance {
+            parent: None,
+            path: "top".into(),
+            module: "top".into(),
+            block: false,
+            span: None,
+        });
     }
     for (number, words) in &lines {
         let mut line = Line { words, at: 0, labels: &labels };
@@ -296,7 +303,7 @@ impl Labels {
             return Err(format!("{label} is declared twice"));
         }
         let counter = match kind.as_str() {
-            "instance" => &mut self.instances,
+            "instance" | "block" => &mut self.instances,
             "net" => &mut self.nets,
             "table" if matches!(rest.first(), Some(Word::Quoted(_))) => &mut self.tables,
             "operator" => &mut self.operators,
@@ -427,7 +434,9 @@ impl Parts {
                 return Err("\"=\" is missing after the label".to_string());
             }
             if line.eat("instance") {
-                self.instance(line)?;
+                self.instance(line, false)?;
+            } else if line.eat("block") {
+                self.instance(line, true)?;
             } else if line.eat("net") {
                 self.net(line)?;
             } else if line.eat("operator") {
@@ -441,11 +450,11 @@ impl Parts {
         if line.done() { Ok(()) } else { Err("the end of the line was expected".to_string()) }
     }
 
-    fn instance(&mut self, line: &mut Line<'_>) -> Result<(), String> {
+    fn instance(&mut self, line: &mut Line<'_>, block: bool) -> Result<(), String> {
         let path = line.text()?;
         let module = if line.eat("of") { line.text()? } else { path.clone() };
         let parent = if line.eat("in") { Some(line.instance()?) } else { None };
-        self.instances.push(Instance { parent, path, module, span: None });
+        self.instances.push(Instance { parent, path, module, block, span: None });
         Ok(())
     }
 

@@ -1,6 +1,6 @@
 //! Witnesses that say only what matters. One lane of a simulation fixes every free node; most of them do not matter for
-//! the waveform of the target. First the values are justified backwards: where a clean constant forces a gate, one such
-//! pin is kept and the others are let go. Then, in cones small enough, each source that is left is dropped when the
+//! the waveform of the target. In all but the smallest cones the values are first justified backwards: where a clean
+//! constant forces a gate, one such pin is kept and the others are let go. Then, in cones small enough, each source that is left is dropped when the
 //! target's waveform stays determined without it, by the algebra lifted to sets of waveforms. Both steps are sound:
 //! whatever the sources let go may hold, the target shows the same three bits.
 
@@ -17,6 +17,10 @@ use crate::graph::GateKind;
 
 /// How many node evaluations the second step may cost per witness.
 const EFFORT: usize = 1 << 14;
+
+/// The second step looks at all nodes behind the target, justified or not, when they are fewer than this: the choice that
+/// a justification makes at each gate by itself may need more signals than the target does.
+const WHOLE: usize = 64;
 
 /// One lane of a simulation.
 pub(super) struct Lane<'a> {
@@ -44,12 +48,16 @@ impl Lane<'_> {
     /// The witness of what the lane shows at `root`.
     pub(super) fn witness(&self, root: Edge) -> Witness {
         let source = self.region.nodes[0] as usize;
-        let kept = self.justified(root);
-        let mut holds: Vec<usize> = kept
-            .iter()
-            .copied()
-            .filter(|&node| node != source && matches!(self.cone.ops[node], Op::Free { .. }))
-            .collect();
+        let frees = |kept: &[usize]| -> Vec<usize> {
+            let free = |&node: &usize| node != source && matches!(self.cone.ops[node], Op::Free { .. });
+            kept.iter().copied().filter(free).collect()
+        };
+        let mut kept = self.behind(root, WHOLE);
+        let mut holds = frees(&kept);
+        if kept.len() >= WHOLE || holds.len().saturating_mul(kept.len()) > EFFORT {
+            kept = self.justified(root);
+            holds = frees(&kept);
+        }
         if holds.len().saturating_mul(kept.len()) <= EFFORT {
             self.drop_idle(root, &kept, &mut holds);
         }
@@ -64,6 +72,24 @@ impl Lane<'_> {
             holds,
             target: (target.i, target.f),
         }
+    }
+
+    /// `root` and all nodes behind it, ascending, as far as they are fewer than `most`.
+    fn behind(&self, root: Edge, most: usize) -> Vec<usize> {
+        let mut heap = BinaryHeap::from([root.node()]);
+        let mut kept: Vec<usize> = Vec::new();
+        while let Some(node) = heap.pop() {
+            if kept.last() == Some(&node) {
+                continue;
+            }
+            kept.push(node);
+            if kept.len() >= most {
+                break;
+            }
+            heap.extend(self.cone.fanin(node).iter().map(|pin| pin.node()));
+        }
+        kept.reverse();
+        kept
     }
 
     /// Nodes whose waveforms together force that of `root`; ascending.
@@ -96,7 +122,8 @@ impl Lane<'_> {
     fn drop_idle(&self, root: Edge, kept: &[usize], holds: &mut Vec<usize>) {
         let mut lifted = Lifted::new(self, kept);
         let mut candidates = holds.clone();
-        candidates.sort_unstable_by_key(|&node| self.cone.origin[node]);
+        // A signal that many gates read is worth more than one of them, so those that few read go first.
+        candidates.sort_by_cached_key(|&node| (lifted.readers(node), self.cone.origin[node]));
         candidates.retain(|&candidate| lifted.stays_determined_without(candidate, root.node()));
         holds.retain(|node| !candidates.contains(node));
     }
@@ -126,6 +153,12 @@ impl<'a> Lifted<'a> {
         }
         let sets = kept.iter().map(|&node| only(lane.wave(Edge::new(node, false)))).collect();
         Self { cone, kept, sets, pins, starts, dirty: vec![false; kept.len()] }
+    }
+
+    /// How many of the kept nodes' pins read `node`.
+    fn readers(&self, node: usize) -> usize {
+        let at = self.kept.binary_search(&node).ok();
+        self.pins.iter().filter(|(pin, _)| *pin == at).count()
     }
 
     /// Drops `candidate` if `root` keeps its one waveform without it, and tells whether it did.

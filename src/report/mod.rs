@@ -3,6 +3,7 @@
 //! reads the environment. The same report always renders to the same bytes.
 
 pub mod flatten;
+mod held;
 pub mod json;
 mod summary;
 pub mod text;

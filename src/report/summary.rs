@@ -94,6 +94,8 @@ fn pins(report: &Report, text: &mut String) {
         }
     }
     line("together", pins.total());
+    // What was not asked is no less worth saying than what was not read.
+    text.push_str("  asked of each: whether a change of one signal alone can glitch it, not of several together\n");
 }
 
 /// Whether the run passes, and why not.

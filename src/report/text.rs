@@ -7,8 +7,9 @@ use codespan_reporting::files::{Error, Files};
 use codespan_reporting::term::termcolor::Buffer;
 use codespan_reporting::term::{self, Config};
 
+use super::held::held;
 use super::{Message, Report, summary, waveform};
-use crate::rules::{Finding, Severity};
+use crate::rules::{Finding, Hazard, Severity};
 use crate::source::{FileId, SourceSet, Span};
 
 /// How the text is to look.
@@ -31,8 +32,8 @@ impl Default for Style {
 /// Findings beyond the first of one net are one line each; so many of them.
 const SHOWN_HAZARDS: usize = 6;
 
-/// The most held signals named in such a line.
-const SHOWN_HELD: usize = 4;
+/// With more held signals than this, such a line leaves their values to the JSON.
+const SHOWN_HELD: usize = 3;
 
 /// Columns of a wrapped note.
 const WIDTH: usize = 100;
@@ -115,8 +116,14 @@ fn of_finding(sources: &SourceSet, finding: &Finding) -> Diagnostic<FileId> {
         .with_notes(notes)
 }
 
-/// Sentences broken into lines of a readable length. A word is never broken, so that names can be searched for.
+/// Sentences broken into lines of a readable length. A word is never broken, so that names can be searched for; nor is
+/// what stands on a line of its own.
 fn wrapped(text: &str) -> String {
+    let lines: Vec<String> = text.split('\n').map(wrapped_line).collect();
+    lines.join("\n")
+}
+
+fn wrapped_line(text: &str) -> String {
     let mut lines: Vec<String> = vec![String::new()];
     for word in text.split(' ') {
         match lines.last_mut() {
@@ -137,7 +144,7 @@ fn others(finding: &Finding) -> String {
     let mut lines = vec!["and by other changes:".to_string()];
     for hazard in rest.iter().take(SHOWN_HAZARDS) {
         let on = if hazard.net == finding.net { String::new() } else { format!(" on {}", hazard.net) };
-        lines.push(format!("  {}{on} by {}: {}", hazard.kind, hazard.changes.join(", "), held(hazard)));
+        lines.push(format!("  {}{on} by {}{}", hazard.kind, hazard.changes.join(", "), conditions(hazard)));
     }
     if rest.len() > SHOWN_HAZARDS {
         lines.push(format!("  and {} more, all in the JSON output", rest.len() - SHOWN_HAZARDS));
@@ -145,19 +152,17 @@ fn others(finding: &Finding) -> String {
     lines.join("\n")
 }
 
-/// "while a = 1, b = 0".
-fn held(hazard: &crate::rules::Hazard) -> String {
-    let held: Vec<&(String, bool)> = hazard.before.iter().filter(|(name, _)| !hazard.changes.contains(name)).collect();
-    if held.is_empty() {
-        return "whatever the others do".to_string();
+/// ": while a = 1, b = 0", when that is short enough.
+fn conditions(hazard: &Hazard) -> String {
+    let held = held(hazard);
+    match held.len() {
+        0 => ", whatever the others do".to_string(),
+        1..=SHOWN_HELD => {
+            let shown: Vec<String> = held.iter().map(|one| format!("{} = {}", one.name, one.value())).collect();
+            format!(": while {}", shown.join(", "))
+        }
+        more => format!(", while {more} others hold (see the JSON output)"),
     }
-    let shown: Vec<String> =
-        held.iter().take(SHOWN_HELD).map(|(name, value)| format!("{name} = {}", u8::from(*value))).collect();
-    let more = match held.len().saturating_sub(SHOWN_HELD) {
-        0 => String::new(),
-        more => format!(" and {more} more hold"),
-    };
-    format!("while {}{more}", shown.join(", "))
 }
 
 fn of_message(sources: &SourceSet, message: &Message) -> Diagnostic<FileId> {

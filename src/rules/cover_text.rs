@@ -6,18 +6,23 @@ use super::names;
 use crate::graph::{Graph, InstanceId, NodeId};
 use crate::hazard::Cover;
 
+/// Stands for logic that has no name of its own in the design.
+const PRESENT: &str = "<present logic>";
+
 /// The cover of a pin: a net to be read in place of the present one. `None` when a literal has no name in the design.
 pub(super) fn of(graph: &Graph, target: NodeId, cover: &Cover) -> Option<CoverText> {
-    let old = names::verilog(graph, target, names::instance(graph, target))?;
+    let scope = names::instance(graph, target);
+    let old = names::verilog(graph, target, scope)?;
+    let present = if names::is_made(graph, target) { PRESENT } else { &old };
     let name: String = old.chars().map(|c| if c.is_ascii_alphanumeric() { c } else { '_' }).collect();
-    let name = name.trim_end_matches('_');
-    text(graph, target, cover, &old, &format!("wire {name}_covered"))
+    let name = name.trim_matches('_');
+    text(graph, target, cover, present, &format!("wire {name}_covered"))
 }
 
 /// The cover of a loop: the terms must stand inside the feedback, so the net itself is assigned.
 pub(super) fn of_loop(graph: &Graph, target: NodeId, cover: &Cover) -> Option<CoverText> {
     let name = names::verilog(graph, target, names::instance(graph, target))?;
-    text(graph, target, cover, "<present logic>", &format!("assign {name}"))
+    text(graph, target, cover, PRESENT, &format!("assign {name}"))
 }
 
 /// `<left> = <terms over present>;`
@@ -26,7 +31,13 @@ fn text(graph: &Graph, target: NodeId, cover: &Cover, present: &str, left: &str)
     let term = |literals: &Vec<(NodeId, bool)>, operator: &str| -> Option<String> {
         let literals: Option<Vec<String>> =
             literals.iter().map(|&(node, positive)| literal(graph, node, positive, scope)).collect();
-        Some(literals?.join(operator))
+        let literals = literals?;
+        // A term without literals is the constant that the net keeps whatever its signals do.
+        Some(match (literals.is_empty(), operator) {
+            (false, _) => literals.join(operator),
+            (true, " & ") => "1'b1".to_string(),
+            (true, _) => "1'b0".to_string(),
+        })
     };
     let products: Option<Vec<String>> = cover.products.iter().map(|literals| term(literals, " & ")).collect();
     let sums: Option<Vec<String>> = cover.sums.iter().map(|literals| term(literals, " | ")).collect();

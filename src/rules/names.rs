@@ -5,6 +5,9 @@
 use crate::graph::{Graph, InstanceId, NodeId, NodeKind, SourceKind};
 use crate::source::Span;
 
+/// How many nodes are looked at to find the net near one that has no name.
+const NEAR: usize = 64;
+
 /// The first declared wire that `node` drives directly, or `node` itself when it is one.
 pub(super) fn wire_of(graph: &Graph, node: NodeId) -> Option<NodeId> {
     if graph.node_name(node).is_some() {
@@ -25,8 +28,8 @@ pub(super) fn name(graph: &Graph, node: NodeId) -> String {
     let instance = &graph.instances[graph.site(node).instance.index()].path;
     let what = match graph.kind(node) {
         NodeKind::Const(value) => return format!("1'b{}", u8::from(value)),
-        NodeKind::Unknown => "unknown constant",
-        NodeKind::Source(SourceKind::Input) => "unnamed input",
+        NodeKind::Unknown => return format!("{instance}.<unknown value{}>", of_reader(graph, node)),
+        NodeKind::Source(SourceKind::Input) => return format!("{instance}.<outside value{}>", of_reader(graph, node)),
         NodeKind::Source(SourceKind::FlipFlop) => "unnamed flip-flop",
         NodeKind::Source(SourceKind::Latch) => "unnamed latch",
         NodeKind::Source(SourceKind::BlackBox) => "output of a module without text",
@@ -39,6 +42,36 @@ pub(super) fn name(graph: &Graph, node: NodeId) -> String {
         }
     };
     format!("{instance}.<{what}>")
+}
+
+/// " of bus[0]": the nearest net that depends on a node without a name of its own, such as the port that is driven from
+/// outside as well.
+fn of_reader(graph: &Graph, node: NodeId) -> String {
+    let mut met = vec![node];
+    let mut next = 0;
+    while let Some(&here) = met.get(next) {
+        next += 1;
+        if is_wire(graph, here)
+            && let Some(name) = graph.node_name(here)
+        {
+            return format!(" of {}{}", graph.nets[name.net.index()].name, name.suffix);
+        }
+        if met.len() < NEAR {
+            let readers = graph.fanout(here).iter().filter(|reader| !met.contains(reader));
+            let readers: Vec<NodeId> = readers.copied().collect();
+            met.extend(readers);
+        }
+    }
+    String::new()
+}
+
+/// Whether the net that `node` drives is a name of our own for an enable or the like that the text does not name. Such
+/// a name is that of the cell's variable with a word behind it.
+pub(super) fn is_made(graph: &Graph, node: NodeId) -> bool {
+    let Some(name) = wire_of(graph, node).and_then(|wire| graph.node_name(wire)) else { return true };
+    let net = &graph.nets[name.net.index()];
+    let Some((variable, _)) = net.name.rsplit_once('.') else { return false };
+    graph.nets.iter().any(|other| other.instance == net.instance && other.name == variable)
 }
 
 /// Where the net that `node` drives is declared.
@@ -55,28 +88,50 @@ pub(super) fn instance(graph: &Graph, node: NodeId) -> InstanceId {
     }
 }
 
-/// The net of `node` as it may be written in Verilog inside `scope`: by the name of an equal net declared there, or by
-/// its full name when there is none. `None` when the node has no name at all.
+/// The net of `node` as it may be written in Verilog inside `scope`: by the name of an equal net that is visible there,
+/// or by its full name when there is none. `None` when the node has no name at all.
 pub(super) fn verilog(graph: &Graph, node: NodeId, scope: InstanceId) -> Option<String> {
+    let scopes = visible(graph, scope);
     let root = graph.root(node);
     let mut open = vec![root];
-    let mut first = None;
+    let mut nearest: Option<(usize, String)> = None;
     // Wires that follow a root form a tree, so that every one of them is met once.
     while let Some(here) = open.pop() {
         if let Some(name) = graph.node_name(here) {
             let net = &graph.nets[name.net.index()];
-            if net.instance == scope {
-                return Some(format!("{}{}", identifier(&net.name), name.suffix));
-            }
-            let path = &graph.instances[net.instance.index()].path;
-            if first.is_none() {
-                first = Some(format!("{path}.{}{}", identifier(&net.name), name.suffix));
+            let depth = scopes.iter().position(|&scope| scope == net.instance);
+            let depth = depth.filter(|&depth| !hidden(graph, &net.name, &scopes[..depth]));
+            let text = format!("{}{}", identifier(&net.name), name.suffix);
+            let found = match depth {
+                Some(0) => return Some(text),
+                Some(depth) => (depth, text),
+                None => (usize::MAX, format!("{}.{text}", graph.instances[net.instance.index()].path)),
+            };
+            if nearest.as_ref().is_none_or(|nearest| found.0 < nearest.0) {
+                nearest = Some(found);
             }
         }
         let readers = graph.fanout(here).iter().rev().copied();
         open.extend(readers.filter(|&reader| reader != here && graph.kind(reader) == NodeKind::Wire));
     }
-    first
+    nearest.map(|(_, text)| text)
+}
+
+/// The instances whose names are visible in `scope`: itself and, from a generate block, the blocks and the module around
+/// it, from the inside out.
+fn visible(graph: &Graph, scope: InstanceId) -> Vec<InstanceId> {
+    let mut scopes = vec![scope];
+    let mut instance = &graph.instances[scope.index()];
+    while let Some(parent) = instance.parent.filter(|_| instance.block) {
+        scopes.push(parent);
+        instance = &graph.instances[parent.index()];
+    }
+    scopes
+}
+
+/// Whether a net of an inner scope has this name as well.
+fn hidden(graph: &Graph, name: &str, inner: &[InstanceId]) -> bool {
+    !inner.is_empty() && graph.nets.iter().any(|net| inner.contains(&net.instance) && net.name == name)
 }
 
 /// A name as Verilog wants it: escaped unless it is a simple identifier.

@@ -78,9 +78,10 @@ fn judge_level(graph: &Graph, uses: &[Use], active: bool, kind: HazardKind) -> (
     } else if kind == towards {
         (Severity::Error, format!("{acts} {cells} although no {acted} is asserted{}", words::short_pulse(uses)))
     } else {
+        let whose = if words::cell_count(uses) == 1 { "its" } else { "their" };
         (
             Severity::Warning,
-            format!("releases {cells} from {state} for a moment: a clock edge just then changes their state"),
+            format!("releases {cells} from {state} for a moment: a clock edge just then changes {whose} state"),
         )
     }
 }

@@ -15,6 +15,14 @@ pub(super) fn count(number: usize, noun: &str) -> String {
     }
 }
 
+/// How many cells hang on a net, however many of their pins do.
+pub(super) fn cell_count(uses: &[Use]) -> usize {
+    let mut ids: Vec<usize> = uses.iter().map(|one| one.cell).collect();
+    ids.sort_unstable();
+    ids.dedup();
+    ids.len()
+}
+
 /// "17 flip-flops", "1 latch", "3 flip-flops and 2 latches".
 pub(super) fn cells(graph: &Graph, uses: &[Use]) -> String {
     let mut ids: Vec<usize> = uses.iter().map(|one| one.cell).collect();
@@ -39,7 +47,7 @@ pub(super) fn can(kind: HazardKind, what: &str) -> String {
     match kind {
         HazardKind::Static0 => format!("can pulse high {what}"),
         HazardKind::Static1 => format!("can pulse low {what}"),
-        HazardKind::Dynamic => format!("can switch more than once {what}"),
+        HazardKind::Dynamic => format!("can switch {what} more than once"),
     }
 }
 
@@ -84,7 +92,5 @@ pub(super) fn worse(first: (Severity, String), second: (Severity, String)) -> (S
 
 /// What a pulse too short for its pins does, if there are several.
 pub(super) fn short_pulse(uses: &[Use]) -> &'static str {
-    let mut cells = uses.iter().map(|one| one.cell);
-    let first = cells.next();
-    if cells.any(|cell| Some(cell) != first) { "; a short pulse may take some of them and miss others" } else { "" }
+    if cell_count(uses) > 1 { "; a short pulse may take some of them and miss others" } else { "" }
 }

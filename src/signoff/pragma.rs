@@ -75,8 +75,8 @@ fn collect_file(file: &SourceFile, collected: &mut Collected) {
                 let message = format!("{why}; the comment has no effect");
                 let diagnostic = Diagnostic::new(Kind::SignoffInvalid, "sign-off comment", message, Some(at))
                     .with_help(
-                        "write `// stillwire: signoff RULE[, RULE] \"reason\" [by NAME] [until YYYY-MM-DD]` or \
-                     `// stillwire: watch \"reason\"`",
+                        "write `// stillwire: signoff RULE[, RULE] \"reason\" [by NAME] [until YYYY-MM-DD]`\n  \
+                         or `// stillwire: watch \"reason\"`",
                     );
                 collected.diagnostics.push(diagnostic);
             }

@@ -28,3 +28,4 @@ mod signoff;
 mod simulator;
 mod sources;
 mod transport;
+mod wording;

@@ -238,16 +238,25 @@ impl Converter<'_> {
             let then = self.statement_or_null(then);
             let end = otherwise.as_ref().map_or(then.span, |stmt| stmt.span);
             let span = self.span(keyword).to(end);
-            let kind =
-                StmtKind::If { cond: self.condition(&cond.nodes.1), then: Box::new(then), otherwise, unique: None };
+            let kind = StmtKind::If { cond: self.head_condition(cond), then: Box::new(then), otherwise, unique: None };
             otherwise = Some(Box::new(Stmt { kind, attributes: Vec::new(), span }));
         }
         StmtKind::If {
-            cond: self.condition(&cond.nodes.1),
+            cond: self.head_condition(cond),
             then: Box::new(self.statement_or_null(then)),
             otherwise,
             unique: unique.as_ref().map(unique_of),
         }
+    }
+
+    /// The condition of an `if`; its place includes the parentheses, so that the head of the statement ends behind them.
+    fn head_condition(&self, cond: &sv::Paren<sv::CondPredicate>) -> Expr {
+        Expr { span: self.span(cond), ..self.condition(&cond.nodes.1) }
+    }
+
+    /// The subject of a `case`, with the parentheses likewise.
+    fn subject(&self, subject: &sv::Paren<sv::CaseExpression>) -> Expr {
+        Expr { span: self.span(subject), ..self.expression(&subject.nodes.1.nodes.0) }
     }
 
     fn case(&self, statement: &sv::CaseStatement) -> StmtKind {
@@ -275,7 +284,7 @@ impl Converter<'_> {
                     sv::CaseKeyword::Casez(_) => CaseKind::Casez,
                     sv::CaseKeyword::Casex(_) => CaseKind::Casex,
                 };
-                let subject = self.expression(&subject.nodes.1.nodes.0);
+                let subject = self.subject(subject);
                 Case { kind, unique: unique.as_ref().map(unique_of), subject, arms, default }
             }
             sv::CaseStatement::Inside(x) => {
@@ -293,7 +302,7 @@ impl Converter<'_> {
                         sv::CaseInsideItem::Default(x) => default = Some(Box::new(self.statement_or_null(&x.nodes.2))),
                     }
                 }
-                let subject = self.expression(&subject.nodes.1.nodes.0);
+                let subject = self.subject(subject);
                 Case { kind: CaseKind::Inside, unique: unique.as_ref().map(unique_of), subject, arms, default }
             }
             sv::CaseStatement::Matches(_) => return StmtKind::Unsupported("case matches".to_string()),
