@@ -19,8 +19,24 @@ const ENDS: [(HazardKind, &[(bool, bool)]); 3] = [
     (HazardKind::Dynamic, &[(false, true), (true, false)]),
 ];
 
-/// Asks the solver every open question of a source.
-pub(super) fn prove(search: &Search, subject: &mut Subject) -> Vec<Found> {
+/// Effort that all sources of one decision share, in conflicts times the nodes encoded when they happen; a conflict in
+/// a large cone costs as many steps. About half a minute of one core.
+const EFFORT: u64 = 400_000_000;
+
+/// What a source may spend at least, so that small cones get their full budget among however many sources.
+const LEAST_EFFORT: u64 = 4_000_000;
+
+/// What is tried for each question even when the effort of its source is spent.
+const LEAST_CONFLICTS: u64 = 20;
+
+/// What one of `subjects` sources may spend. It depends on nothing that happens meanwhile, for the sake of equal results
+/// on any number of threads.
+pub(super) fn effort(subjects: usize) -> u64 {
+    (EFFORT / subjects.max(1) as u64).max(LEAST_EFFORT)
+}
+
+/// Asks the solver every open question of a source, for at most about `effort`; see [`effort`].
+pub(super) fn prove(search: &Search, subject: &mut Subject, mut effort: u64) -> Vec<Found> {
     let cone = search.cone;
     let region = Region::new(cone, subject.source, &search.live);
     let mut found = Vec::new();
@@ -43,7 +59,11 @@ pub(super) fn prove(search: &Search, subject: &mut Subject) -> Vec<Found> {
         let Some(hazard) = wave.h else { continue };
 
         let mut ask = |encoder: &mut Encoder<Batsat>, assumptions: &[Literal], subject: &mut Subject| {
-            let answer = encoder.solver.solve(assumptions, search.options.conflicts);
+            let size = encoder.size.max(1) as u64;
+            let before = encoder.solver.conflicts();
+            let most = (effort / size).max(LEAST_CONFLICTS).min(search.options.conflicts);
+            let answer = encoder.solver.solve(assumptions, most);
+            effort = effort.saturating_sub((encoder.solver.conflicts() - before).saturating_mul(size));
             match answer {
                 Answer::Unsatisfiable => encoder.forbid(assumptions),
                 Answer::Open => {}

@@ -214,7 +214,8 @@ impl Search<'_> {
         for subject in subjects.iter_mut() {
             subject.questions.sort_by_key(|question| (measures[question.root].nodes, question.root));
         }
-        self.each(subjects, prove::prove);
+        let effort = prove::effort(subjects.len());
+        self.each(subjects, |search, subject| prove::prove(search, subject, effort));
         // What one source left open is settled when another has shown it.
         if self.options.one_per_kind {
             let known = std::mem::take(&mut self.known);

@@ -44,6 +44,9 @@ pub(super) trait Solver: Default {
     /// Looks for a model in which all assumptions hold, for at most about `conflicts` conflicts.
     fn solve(&mut self, assumptions: &[Literal], conflicts: u64) -> Answer;
 
+    /// The conflicts of all questions so far.
+    fn conflicts(&self) -> u64;
+
     /// The value in the last model; variables that do not matter there are `false`.
     fn value(&self, literal: Literal) -> bool;
 }
@@ -111,6 +114,10 @@ impl Solver for Batsat {
         }
     }
 
+    fn conflicts(&self) -> u64 {
+        self.solver.cb().conflicts.get()
+    }
+
     fn value(&self, literal: Literal) -> bool {
         self.solver.value_lit(self.outer(literal)) == lbool::TRUE
     }
@@ -157,6 +164,7 @@ mod tests {
         }
         assert_eq!(solver.solve(&[], 10), Answer::Open);
         assert_eq!(solver.solve(&[], 10), Answer::Open, "each question has its own budget");
+        assert!((20..100).contains(&solver.conflicts()), "conflicts of all questions: {}", solver.conflicts());
         assert_eq!(solver.solve(&[], 1_000_000), Answer::Unsatisfiable);
     }
 
