@@ -214,7 +214,7 @@ fn missing_assignment_makes_a_latch() {
     assert_eq!([latches("t.l"), latches("t.m"), latches("t.n")], [1, 1, 0]);
     let cell = t.cells("t.l")[0];
     assert!(matches!(cell.kind, CellKind::Latch { active: true, .. }));
-    assert_eq!(cell.inferred_from.map(|span| t.sources.slice(span).to_string()).as_deref(), Some("if (en"));
+    assert_eq!(cell.inferred_from.map(|span| t.sources.slice(span).to_string()).as_deref(), Some("if (en)"));
     let CellKind::Latch { enable, active } = t.cells("t.m")[0].kind else { panic!("a latch") };
     for s in 0..4u64 {
         let mut known = HashMap::from([(t.wire("t.s[0]"), s & 1 == 1), (t.wire("t.s[1]"), s & 2 == 2)]);
