@@ -5,7 +5,7 @@ use std::rc::Rc;
 
 use super::bits::{self, Bit, extend};
 use super::blast;
-use super::context::{Elaborator, Outcome, unsupported, wrong};
+use super::context::{Elaborator, Outcome, Storage, unsupported, wrong};
 use super::place::{Resolved, Want};
 use super::scope::{ScopeId, Symbol};
 use super::statement::Point;
@@ -156,13 +156,13 @@ impl<'a> Elaborator<'a> {
         let inner = self.inner_scope(scope, &function.name.name, self.instance, prefix);
         let mut locals = Vec::new();
         for ((arg, value), ty) in function.args.iter().zip(values).zip(&frame.args) {
-            let local = self.add_local(&arg.name.name, Rc::clone(ty), arg.name.span);
+            let local = self.add_local(&arg.name.name, Rc::clone(ty), arg.name.span, Storage::Local);
             self.declare(inner, &arg.name.name, Symbol::Variable(local));
             self.environment.set((local, false), value);
             locals.push(local);
         }
         let result = frame.result.as_ref().map(|ty| {
-            let local = self.add_local(&function.name.name, Rc::clone(ty), function.name.span);
+            let local = self.add_local(&function.name.name, Rc::clone(ty), function.name.span, Storage::Local);
             self.declare(inner, &function.name.name, Symbol::Variable(local));
             local
         });
@@ -171,7 +171,7 @@ impl<'a> Elaborator<'a> {
         self.points.push(Point::Call(function.name.name.clone()));
         let depth = self.points.len() - 1;
         let outcome = self.in_scope(inner, |this| {
-            this.declare_all(inner, &function.locals, true)?;
+            this.declare_all(inner, &function.locals, Storage::Local)?;
             this.initialise_locals(inner, &function.locals)?;
             this.execute_all(&function.body)
         });
@@ -238,7 +238,8 @@ impl<'a> Elaborator<'a> {
                 (None, Some(default)) => self.in_scope(scope, |this| this.eval_self(default))?,
                 (None, None) => return Err(wrong(format!("argument `{}` is missing", formal.name), span)),
             };
-            let local = self.add_local(&formal.name, Type::vector(bits.len().max(1), signed), formal.span);
+            let local =
+                self.add_local(&formal.name, Type::vector(bits.len().max(1), signed), formal.span, Storage::Local);
             self.declare(inner, &formal.name, Symbol::Variable(local));
             self.environment.set((local, false), bits);
         }

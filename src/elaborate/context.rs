@@ -44,6 +44,8 @@ pub(super) enum Storage {
     Variable,
     /// Lives only in the process or function that is being executed.
     Local,
+    /// A variable of a package or of the compilation unit, which has no wires.
+    Package,
     /// Too large to be laid out bit by bit.
     Memory,
 }
@@ -141,7 +143,7 @@ impl<'a> Elaborator<'a> {
         let tops = library.tops(&request.tops, &mut diagnostics);
         let mut this = Self::new(library, diagnostics);
         for unit in units {
-            let outcome = this.declare_all(this.unit, &unit.items, true);
+            let outcome = this.declare_all(this.unit, &unit.items, Storage::Package);
             this.survive(outcome);
         }
         for name in &tops.tops {
@@ -259,14 +261,14 @@ impl<'a> Elaborator<'a> {
     }
 
     /// A variable of a function or of a loop header.
-    pub fn add_local(&mut self, name: &str, ty: Rc<Type>, span: Span) -> VariableId {
+    pub fn add_local(&mut self, name: &str, ty: Rc<Type>, span: Span, storage: Storage) -> VariableId {
         let instance = self.instance;
         self.add_variable(Variable {
             name: name.to_string(),
             ty,
             instance,
             span,
-            storage: Storage::Local,
+            storage,
             net: None,
             wires: Vec::new(),
             is_port: false,

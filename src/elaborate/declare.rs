@@ -1,13 +1,14 @@
 //! Declarations: enters the names of a scope and lays out its nets and variables. Names that are worked out on first use
 //! come first, so that a net may use a function or parameter that stands below it.
 
-use std::collections::HashMap;
+use std::collections::{HashMap, HashSet};
 use std::rc::Rc;
 
 use super::context::{Elaborator, Outcome, Storage, Variable, VariableId, unsupported, wrong};
 use super::place::MAX_MEMORY;
 use super::scope::{Lazy, ScopeId, Symbol};
 use super::types::Type;
+use crate::diagnostic::{Diagnostic, Kind};
 use crate::source::Span;
 use crate::syntax::ast::{
     DataType, DataTypeKind, Declarator, Dim, Ident, Import, Item, ItemKind, NetKind, Package, Param, ParamKind,
@@ -53,12 +54,12 @@ impl<'a> Elaborator<'a> {
         let package: &'a Package = package;
         let scope = self.inner_scope(self.unit, &name.name, self.instance, format!("{}::", name.name));
         self.packages.insert(name.name.clone(), scope);
-        self.declare_all(scope, &package.items, true)?;
+        self.declare_all(scope, &package.items, Storage::Package)?;
         Ok(scope)
     }
 
-    /// Enters everything that `items` declare. Variables of functions and packages are `local`: they have no wires.
-    pub fn declare_all(&mut self, scope: ScopeId, items: &'a [Item], local: bool) -> Outcome<()> {
+    /// Enters everything that `items` declare. `home` is the storage of their variables; only [`Storage::Variable`] has wires.
+    pub fn declare_all(&mut self, scope: ScopeId, items: &'a [Item], home: Storage) -> Outcome<()> {
         for item in items {
             match &item.kind {
                 ItemKind::Import(imports) | ItemKind::Export(imports)
@@ -85,14 +86,14 @@ impl<'a> Elaborator<'a> {
                 ItemKind::Var { ty, .. } | ItemKind::Net { ty, .. } | ItemKind::PortDecl { ty, .. } => {
                     self.in_scope(scope, |this| this.declare_enum_members(scope, ty))?;
                 }
-                ItemKind::GenBlock(block) if !block.scoped => self.declare_all(scope, &block.items, local)?,
+                ItemKind::GenBlock(block) if !block.scoped => self.declare_all(scope, &block.items, home)?,
                 ItemKind::Modport { name, .. } => {
                     self.declare(scope, &name.name, Symbol::Scope(scope));
                 }
                 _ => {}
             }
         }
-        self.in_scope(scope, |this| this.declare_variables(scope, items, local))
+        self.in_scope(scope, |this| this.declare_variables(scope, items, home))
     }
 
     fn declare_parameter(&mut self, scope: ScopeId, param: &'a Param) -> Outcome<()> {
@@ -113,7 +114,7 @@ impl<'a> Elaborator<'a> {
         Ok(())
     }
 
-    fn declare_variables(&mut self, scope: ScopeId, items: &'a [Item], local: bool) -> Outcome<()> {
+    fn declare_variables(&mut self, scope: ScopeId, items: &'a [Item], home: Storage) -> Outcome<()> {
         let has_ports = items.iter().any(|item| matches!(item.kind, ItemKind::PortDecl { .. }));
         let mut bodies: HashMap<&str, Body<'a>> = HashMap::new();
         if has_ports {
@@ -128,6 +129,12 @@ impl<'a> Elaborator<'a> {
                 }
             }
         }
+        let mut ports: HashSet<&str> = HashSet::new();
+        for item in items {
+            if let ItemKind::PortDecl { names, .. } = &item.kind {
+                ports.extend(names.iter().map(|declarator| declarator.name.name.as_str()));
+            }
+        }
         for item in items {
             match &item.kind {
                 ItemKind::PortDecl { net, ty, names, is_var, .. } => {
@@ -139,23 +146,25 @@ impl<'a> Elaborator<'a> {
                 ItemKind::Net { net, ty, names } => {
                     for declarator in names {
                         let ty = self.declared_type(ty, &declarator.dims, declarator.name.span)?;
-                        self.declare_variable(scope, &declarator.name, ty, Storage::Net(*net))?;
+                        self.declare_body_variable(scope, &mut ports, &declarator.name, ty, Storage::Net(*net))?;
                     }
                 }
                 ItemKind::Var { ty, names } => {
-                    if matches!(ty.kind, DataTypeKind::Event | DataTypeKind::Real | DataTypeKind::String) && !local {
+                    if matches!(ty.kind, DataTypeKind::Event | DataTypeKind::Real | DataTypeKind::String)
+                        && home == Storage::Variable
+                    {
                         // Of use only in simulation; whatever uses them fails by itself.
                         self.skip("variable of a type for simulation");
                         continue;
                     }
                     for declarator in names {
                         let ty = self.declared_type(ty, &declarator.dims, declarator.name.span)?;
-                        if local {
-                            let name = &declarator.name;
-                            let id = self.add_local(&name.name, ty, name.span);
-                            self.declare(scope, &name.name, Symbol::Variable(id));
+                        if home == Storage::Variable {
+                            self.declare_body_variable(scope, &mut ports, &declarator.name, ty, home)?;
                         } else {
-                            self.declare_variable(scope, &declarator.name, ty, Storage::Variable)?;
+                            let name = &declarator.name;
+                            let id = self.add_local(&name.name, ty, name.span, home);
+                            self.declare(scope, &name.name, Symbol::Variable(id));
                         }
                     }
                 }
@@ -194,6 +203,35 @@ impl<'a> Elaborator<'a> {
             (None, None) => Storage::Net(NetKind::Wire),
         };
         self.declare_variable(scope, name, full, storage)?;
+        Ok(())
+    }
+
+    /// A net or variable of a body. One declaration may repeat the name of a non-ANSI port (`ports` holds those not yet
+    /// repeated); any other repetition is an error in the source. What is declared the same is taken as one.
+    fn declare_body_variable(
+        &mut self,
+        scope: ScopeId,
+        ports: &mut HashSet<&str>,
+        name: &Ident,
+        ty: Rc<Type>,
+        storage: Storage,
+    ) -> Outcome<()> {
+        let known = match self.scope(scope).names.get(&name.name) {
+            Some(&Symbol::Variable(id)) if !ports.remove(name.name.as_str()) => Some(id),
+            _ => None,
+        };
+        if let Some(id) = known {
+            let (first, same) = (self.variable(id).span, self.variable(id).ty.width == ty.width);
+            let message = format!("`{}` is declared twice", name.name);
+            if !same {
+                let message = format!("{message} and with different widths");
+                let twice = Diagnostic::new(Kind::Incomplete, "declaration", message, Some(name.span));
+                return Err(Box::new(twice.with_also(first, "first declared here")));
+            }
+            let twice = Diagnostic::new(Kind::Note, "declaration", message, Some(name.span));
+            self.report(twice.with_also(first, "first declared here").with_help("both are taken as one"));
+        }
+        self.declare_variable(scope, name, ty, storage)?;
         Ok(())
     }
 

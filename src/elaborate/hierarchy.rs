@@ -134,7 +134,7 @@ impl<'a> Elaborator<'a> {
         let before = std::mem::replace(&mut self.instance, instance);
         let outcome = self.in_scope(scope, |this| -> Outcome<()> {
             this.declare_ports(scope, module, outer, connections)?;
-            this.declare_all(scope, &module.items, false)?;
+            this.declare_all(scope, &module.items, Storage::Variable)?;
             this.list_ports(scope, module)?;
             this.items(scope, &module.items)
         });
@@ -592,7 +592,7 @@ impl<'a> Elaborator<'a> {
     ) -> Outcome<()> {
         let name = self.block_name(scope, block, number);
         if name.is_empty() {
-            self.declare_all(scope, &block.items, false)?;
+            self.declare_all(scope, &block.items, Storage::Variable)?;
             return self.remaining_items(scope, &block.items, generates);
         }
         let inner = self.generate_scope(scope, &name, &name, block.span)?;
@@ -618,7 +618,8 @@ impl<'a> Elaborator<'a> {
         let (here, instance) = (self.here, self.instance);
         self.here = inner;
         self.instance = self.scope(inner).instance;
-        let outcome = self.declare_all(inner, &block.items, false).and_then(|()| self.items(inner, &block.items));
+        let outcome =
+            self.declare_all(inner, &block.items, Storage::Variable).and_then(|()| self.items(inner, &block.items));
         self.here = here;
         self.instance = instance;
         outcome

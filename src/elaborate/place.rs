@@ -130,6 +130,9 @@ impl<'a> Elaborator<'a> {
 
     pub fn resolve_symbol(&mut self, symbol: Symbol<'a>, span: Span) -> Outcome<Resolved<'a>> {
         Ok(match symbol {
+            Symbol::Variable(id) if self.variable(id).storage == Storage::Package => {
+                return Err(unsupported("variable of a package", span));
+            }
             Symbol::Variable(id) => {
                 let ty = Rc::clone(&self.variable(id).ty);
                 Resolved::Place(Place { base: Base::Variable(id), steps: Vec::new(), ty })

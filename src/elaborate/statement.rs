@@ -302,7 +302,8 @@ impl<'a> Elaborator<'a> {
             None => outer.clone(),
         };
         let scope = self.inner_scope(self.here, label.unwrap_or(""), instance, prefix);
-        self.declare_all(scope, decls, self.call_depth > 0)?;
+        let home = if self.call_depth > 0 { Storage::Local } else { Storage::Variable };
+        self.declare_all(scope, decls, home)?;
         self.block_scopes.insert(key, scope);
         Ok(scope)
     }
@@ -327,7 +328,7 @@ impl<'a> Elaborator<'a> {
         if let Some(&super::scope::Symbol::Variable(id)) = self.scope(scope).names.get(name) {
             return id;
         }
-        let id = self.add_local(name, ty, span);
+        let id = self.add_local(name, ty, span, Storage::Local);
         self.declare(scope, name, super::scope::Symbol::Variable(id));
         id
     }

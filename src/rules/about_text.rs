@@ -1,5 +1,6 @@
-//! Findings that are about a text and not about a net: `unsupported-construct`, the bookkeeping rules, and what else the front end has to say. A limit of ours looks like any other finding: it has
-//! a rule, a place and a cure, and it is never silent, because whatever lies behind it was not analysed.
+//! Findings that are about a text and not about a net: `unsupported-construct`, the bookkeeping rules, and what else the
+//! front end has to say. A limit of ours looks like any other finding: it has a rule, a place and a cure, and it is never
+//! silent, because whatever lies behind it was not analysed.
 
 use super::finding::{Finding, Rule, Severity, TraceStep, Verdict};
 use super::fingerprint;
@@ -59,7 +60,7 @@ pub(crate) fn bookkeeping(
 }
 
 /// A finding that is about a text and not about a net.
-fn plain(rule: Rule, severity: Severity, message: String, at: Option<Span>, fingerprint: String) -> Finding {
+pub(super) fn plain(rule: Rule, severity: Severity, message: String, at: Option<Span>, fingerprint: String) -> Finding {
     Finding {
         rule,
         severity,

@@ -11,6 +11,7 @@ mod evidence;
 mod finding;
 mod fingerprint;
 mod latch_enable_hazard;
+mod missing_module;
 mod names;
 mod pages;
 mod pins;
@@ -114,7 +115,9 @@ pub fn run(graph: &Graph, watches: &[Watch], options: &Options) -> Outcome {
         tasks.push(Box::new(move || combinational_loop::finding(graph, verdict, endpoints)));
     }
     let found: Vec<Option<Finding>> = tasks.par_iter().map(|task| task()).collect();
-    Outcome { findings: found.into_iter().flatten().collect(), pins: coverage, loops: loops.len() }
+    let mut findings: Vec<Finding> = found.into_iter().flatten().collect();
+    findings.extend(missing_module::findings(graph, &pins, &seen));
+    Outcome { findings, pins: coverage, loops: loops.len() }
 }
 
 type PinRule = fn(&Graph, &TargetVerdict, &[pins::Use], &Options) -> Option<Finding>;

@@ -415,3 +415,30 @@ fn endless_and_oversized_input_ends_with_a_clear_error() {
         assert!(start.elapsed() < Duration::from_secs(10), "{expected}: {:?}", start.elapsed());
     }
 }
+
+#[test]
+fn a_name_declared_twice_is_reported_and_a_port_of_the_old_style_is_not() {
+    clean("module t(q, a); output q; input a; reg q; always @* q = a; endmodule");
+    let messages = |text: &str| {
+        let t = run(text, &["t"]);
+        t.diagnostics.iter().map(|one| (one.kind, one.message.clone())).collect::<Vec<_>>()
+    };
+    let twice = messages("module t(input a, output reg q); wire q; always @* q = a; endmodule");
+    assert_eq!(twice, [(Kind::Note, "`q` is declared twice".to_string())]);
+    let thrice = messages("module t(q, a); output q; input a; reg q; wire q; always @* q = a; endmodule");
+    assert_eq!(thrice, [(Kind::Note, "`q` is declared twice".to_string())]);
+    let different = messages("module t(input a, output q); wire [3:0] q; assign q = a; endmodule");
+    assert_eq!(different, [(Kind::Incomplete, "`q` is declared twice and with different widths".to_string())]);
+}
+
+#[test]
+fn a_variable_of_a_package_is_not_taken_for_an_unknown() {
+    let t = run(
+        "package p; logic v; endpackage
+         module t(input clk, a, output logic q); import p::*;
+         always @(posedge clk or posedge v) if (v) q <= 0; else q <= a; endmodule",
+        &["t"],
+    );
+    let messages: Vec<_> = t.diagnostics.iter().map(|one| (one.kind, one.construct.as_str())).collect();
+    assert_eq!(messages, [(Kind::Unsupported, "variable of a package")]);
+}

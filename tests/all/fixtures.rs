@@ -96,6 +96,7 @@ fixtures! {
     hierarchy
     latch_enable
     latch_enable_safe
+    missing_module
     loops
     selection
     set_reset_direction
