@@ -345,8 +345,9 @@ impl<'a> Elaborator<'a> {
 
     fn report_conflict(&mut self, id: VariableId, drivers: &[Driver]) {
         let variable = self.variable(id);
-        let message = format!("`{}` has several drivers; it is taken as unknown", variable.name);
-        let mut diagnostic = Diagnostic::new(Kind::Note, "multiple drivers", message, Some(variable.span));
+        let message = format!("`{}` has several drivers that are always on; its value is unknown", variable.name);
+        let mut diagnostic = Diagnostic::new(Kind::Incomplete, "multiple drivers", message, Some(variable.span))
+            .with_help("leave one driver, or declare the net as `wand` or `wor` if they are meant to be joined");
         for span in drivers.iter().filter_map(|driver| driver.span).take(4) {
             diagnostic = diagnostic.with_also(span, "driven here");
         }

@@ -96,8 +96,8 @@ fixtures! {
     hierarchy
     latch_enable
     latch_enable_safe
-    missing_module
     loops
+    missing_module
     selection
     set_reset_direction
     set_reset_safe
