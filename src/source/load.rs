@@ -84,6 +84,11 @@ pub fn load(request: &Request, environment: Environment<'_>, progress: Progress<
         reader.diagnostics.push(Diagnostic::new(Kind::Note, "file list", message, None));
     }
 
+    for folder in request.include.iter().chain(&list.include).filter(|folder| !folder.is_dir()) {
+        let message = format!("the include folder `{}` does not exist", folder.display());
+        reader.diagnostics.push(Diagnostic::new(Kind::Note, "include folder", message, None));
+    }
+
     let mut list_macros = macros(list.defines.iter().chain(&request.defines));
     let mut planned = Vec::new();
     for path in &list.files {
