@@ -282,10 +282,10 @@ impl Behaviour {
                 continue;
             }
             let mut forced = rest.iter().filter(|(change, _)| change.input(input) == active).filter_map(|step| step.1);
-            if let Some(value) = forced.next() {
-                if forced.all(|next| next == value) {
-                    return Some(SetReset { input, active, value });
-                }
+            if let Some(value) = forced.next()
+                && forced.all(|next| next == value)
+            {
+                return Some(SetReset { input, active, value });
             }
         }
         None

@@ -44,7 +44,7 @@ pub(super) fn name(graph: &Graph, node: NodeId) -> String {
     format!("{instance}.<{what}>")
 }
 
-/// " of bus[0]": the nearest net that depends on a node without a name of its own, such as the port that is driven from
+/// `" of bus[0]"`: the nearest net that depends on a node without a name of its own, such as the port that is driven from
 /// outside as well.
 fn of_reader(graph: &Graph, node: NodeId) -> String {
     let mut met = vec![node];

@@ -119,10 +119,12 @@ impl Written {
                 .filter(|&(_, pin)| pin == Pin::Gate(index))
                 .map(|(reader, _)| reader)
                 .collect();
-            if let [reader] = readers[..] {
-                if self.forms[index] == Form::Assign && self.forms[reader] == Form::Assign && random.chance(60) {
-                    self.forms[index] = Form::Inline;
-                }
+            if let [reader] = readers[..]
+                && self.forms[index] == Form::Assign
+                && self.forms[reader] == Form::Assign
+                && random.chance(60)
+            {
+                self.forms[index] = Form::Inline;
             }
         }
     }

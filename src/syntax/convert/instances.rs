@@ -41,10 +41,10 @@ impl Converter<'_> {
             sv::ListOfPortConnections::Ordered(x) => {
                 let connections = x.nodes.0.contents();
                 // `m u ();` reaches us as one connection left out.
-                if let [only] = connections.as_slice() {
-                    if only.nodes.1.is_none() {
-                        return Vec::new();
-                    }
+                if let [only] = connections.as_slice()
+                    && only.nodes.1.is_none()
+                {
+                    return Vec::new();
                 }
                 let connections = connections.into_iter();
                 connections

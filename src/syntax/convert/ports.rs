@@ -196,10 +196,10 @@ impl Converter<'_> {
 
     pub(super) fn nonansi_ports(&self, list: &sv::ListOfPorts) -> Ports {
         let ports = list.nodes.0.nodes.1.contents();
-        if let [sv::Port::NonNamed(only)] = ports.as_slice() {
-            if only.nodes.0.is_none() {
-                return Ports::None;
-            }
+        if let [sv::Port::NonNamed(only)] = ports.as_slice()
+            && only.nodes.0.is_none()
+        {
+            return Ports::None;
         }
         Ports::NonAnsi(ports.into_iter().map(|port| self.port_ref(port)).collect())
     }

@@ -135,10 +135,11 @@ impl Converter<'_> {
                 Some(direction) => tf_direction(direction),
                 None => before.map_or(Direction::Input, |before| before.direction),
             };
-            if !direction_written && is_bare(&ty) {
-                if let Some(before) = before {
-                    ty = before.ty.clone();
-                }
+            if !direction_written
+                && is_bare(&ty)
+                && let Some(before) = before
+            {
+                ty = before.ty.clone();
             }
             if is_bare(&ty) {
                 ty.span = name.span;
