@@ -45,12 +45,26 @@ impl<'a> Elaborator<'a> {
             ProcessKind::Always if process.sensitivity.is_none() => {
                 Err(unsupported("always without an event control at its head", span))
             }
-            _ => self.level_process(&process.body),
+            _ => self.check_levels(events).and_then(|()| self.level_process(&process.body)),
         };
         if let Err(diagnostic) = outcome {
             self.report(*diagnostic);
             self.opaque_process(&process.body);
         }
+    }
+
+    /// A process whose list names only levels is plain logic or a latch of what it reads. Waiting for a named event or
+    /// guarding the wake-up makes it something else.
+    fn check_levels(&mut self, events: &'a [Event]) -> Outcome<()> {
+        for event in events {
+            if event.iff.is_some() {
+                return Err(unsupported("`iff` in an event control", event.span));
+            }
+            if self.size(&event.expr).is_err() {
+                return Err(unsupported("event control with something that is no net or variable", event.span));
+            }
+        }
+        Ok(())
     }
 
     /// Executes a body under assumptions about its conditions; what it leaves in each variable.

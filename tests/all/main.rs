@@ -20,6 +20,7 @@ mod paths;
 mod pipeline;
 mod published;
 mod random_circuits;
+mod random_modules;
 mod reading;
 mod report;
 mod robustness;

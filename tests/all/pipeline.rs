@@ -125,3 +125,28 @@ pub fn hazards(finding: &Value, instance: &str) -> Vec<Hazard> {
 pub fn pairs(hazards: &[Hazard]) -> BTreeSet<(String, String)> {
     hazards.iter().map(|hazard| (hazard.changes.join("+"), hazard.kind.clone())).collect()
 }
+
+/// Nothing of this may pass as clean: what the net really does is not known.
+#[test]
+fn net_with_several_drivers_makes_the_run_incomplete() {
+    let source = "module t(input a, b, d, output reg q); wire c; assign c = a; assign c = b;\n\
+                  always @(posedge c) q <= d; endmodule\n";
+    assert_incomplete(source, "multiple drivers");
+}
+
+#[test]
+fn process_that_waits_for_a_named_event_is_no_plain_logic() {
+    let source = "module t(input d, output reg q); event e; always @(e) q = d; endmodule\n";
+    assert_incomplete(source, "event control with something that is no net or variable");
+}
+
+#[track_caller]
+fn assert_incomplete(source: &str, construct: &str) {
+    let folder = tempfile::tempdir().expect("a temporary folder");
+    let file = folder.path().join("t.v");
+    std::fs::write(&file, source).expect("written");
+    let scan = scan(&[&file], &[]);
+    assert_eq!(scan.exit, 3, "{}", scan.text);
+    assert_eq!(scan.json["complete"], false);
+    assert_eq!(scan.json["coverage"]["unsupported"][0]["construct"], construct);
+}

@@ -116,27 +116,27 @@ fn ports(flat: &str, top: &str) -> Vec<Port> {
 }
 
 /// What to compare, and how.
-struct Trial {
+pub struct Trial<'t> {
     /// Files and folders given to the product.
-    paths: Vec<PathBuf>,
+    pub paths: Vec<PathBuf>,
     /// Options for both: include folders and defines.
-    options: Vec<String>,
+    pub options: Vec<String>,
     /// Files given to the simulator.
-    files: Vec<PathBuf>,
-    top: String,
-    cycles: usize,
+    pub files: Vec<PathBuf>,
+    pub top: String,
+    pub cycles: usize,
     /// A reset comes about every so many cycles.
-    reset_every: usize,
+    pub reset_every: usize,
     /// Verilog expressions for inputs that would do nothing interesting with plain random values.
-    stimuli: Vec<(&'static str, &'static str)>,
+    pub stimuli: Vec<(&'static str, &'static str)>,
     /// Outputs that are compared, but are constant or mostly unknown since the default parameters switch their unit off.
-    quiet: Vec<&'static str>,
+    pub quiet: Vec<&'t str>,
     /// Whether all storage starts with the same random values on both sides. Designs that never reset their storage need
     /// it: a simulator takes the else branch of an unknown condition, which no gate does.
-    preset: bool,
+    pub preset: bool,
     /// What the simulator calls unnamed generate blocks where it departs from IEEE 1364-2005, 12.4.3: it counts an else
     /// branch as a construct of its own.
-    renamed: Vec<(&'static str, &'static str)>,
+    pub renamed: Vec<(&'static str, &'static str)>,
 }
 
 /// What both simulations assign to their storage at the beginning.
@@ -148,7 +148,7 @@ struct Preset {
 
 /// The registers of the flattened form, each with the variable of the original that it stands for: the net that it
 /// drives. A name that the original does not have is an error of the simulator.
-fn preset(flat: &str, trial: &Trial) -> Preset {
+fn preset(flat: &str, trial: &Trial<'_>) -> Preset {
     let registers: BTreeSet<&str> =
         flat.lines().filter_map(|line| line.strip_prefix("  reg ")?.strip_suffix(';')).collect();
     let mut random = Random::new(11);
@@ -171,14 +171,14 @@ fn preset(flat: &str, trial: &Trial) -> Preset {
 
 /// How many output bits were compared.
 #[derive(Debug, Default)]
-struct Counts {
-    compared: usize,
+pub struct Counts {
+    pub compared: usize,
     original_unknown: usize,
     flat_unknown: usize,
 }
 
 /// The bench: it prints all outputs in binary after the inputs have changed and after each clock edge.
-fn bench(trial: &Trial, ports: &[Port], preset: &str) -> String {
+fn bench(trial: &Trial<'_>, ports: &[Port], preset: &str) -> String {
     let mut text = String::from("`timescale 1ns/1ns\nmodule bench;\n  integer seed = 7, cycle;\n");
     for port in ports {
         let kind = if port.direction == "input" { "reg" } else { "wire" };
@@ -238,7 +238,7 @@ fn bench(trial: &Trial, ports: &[Port], preset: &str) -> String {
 }
 
 /// Runs one trial: the counts, or what is wrong.
-fn run(trial: &Trial) -> Result<Counts, String> {
+pub fn run(trial: &Trial<'_>) -> Result<Counts, String> {
     let flat = Command::new(env!("CARGO_BIN_EXE_stillwire"))
         .arg("flatten")
         .args(&trial.paths)
@@ -279,7 +279,7 @@ fn run(trial: &Trial) -> Result<Counts, String> {
     compare(trial, &outputs, &original, &flat)
 }
 
-fn compare(trial: &Trial, outputs: &[&Port], original: &[String], flat: &[String]) -> Result<Counts, String> {
+fn compare(trial: &Trial<'_>, outputs: &[&Port], original: &[String], flat: &[String]) -> Result<Counts, String> {
     if original.len() != flat.len() || original.len() < trial.cycles {
         return Err(format!("{} and {} lines for {} cycles", original.len(), flat.len(), trial.cycles));
     }
@@ -371,7 +371,7 @@ const INSTRUCTION: &str = "($unsigned($random(seed)) % 10 == 0) ? $random(seed) 
     {$random(seed), 7'b0} | ({7'h33, 7'h13, 7'h03, 7'h23, 7'h63, 7'h6f, 7'h67, 7'h37, 7'h17, 7'h13} \
     >> (7 * ($unsigned($random(seed)) % 10)) & 7'h7f)";
 
-fn core(name: &str, files: &[&str], top: &str, stimuli: Vec<(&'static str, &'static str)>) -> Trial {
+fn core(name: &str, files: &[&str], top: &str, stimuli: Vec<(&'static str, &'static str)>) -> Trial<'static> {
     let folder = outside::data().join(name);
     let files: Vec<PathBuf> = files.iter().map(|file| folder.join(file)).collect();
     Trial {
@@ -399,7 +399,7 @@ fn verilog_files(folder: &str) -> Vec<PathBuf> {
 
 #[track_caller]
 #[allow(clippy::print_stdout, reason = "how much was compared belongs to the result of an outside check")]
-fn check_core(trial: &Trial) {
+fn check_core(trial: &Trial<'_>) {
     match run(trial) {
         Ok(counts) => println!("{}: {counts:?}", trial.top),
         Err(message) => panic!("{}: {message}", trial.top),
