@@ -144,7 +144,10 @@ fn process_that_waits_for_a_named_event_is_no_plain_logic() {
 
 #[track_caller]
 fn assert_incomplete(source: &str) -> Scan {
-    let scan = scan_text(source);
+    let folder = tempfile::tempdir().expect("a temporary folder");
+    let file = folder.path().join("t.v");
+    std::fs::write(&file, source).expect("written");
+    let scan = scan(&[&file], &[]);
     assert_eq!(scan.exit, 3, "{}", scan.text);
     assert_eq!(scan.json["complete"], false);
     scan
