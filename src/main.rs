@@ -180,11 +180,18 @@ fn folder_of(file: &Path) -> &Path {
     file.parent().filter(|folder| !folder.as_os_str().is_empty()).unwrap_or(Path::new("."))
 }
 
-/// Nobody ever sees half a file: it is written beside its place and renamed.
+/// Nobody ever sees half a file: it is written beside its place and renamed. A link keeps pointing where it does, and what
+/// is no file (a device, a pipe) is written to as it is, since a rename would replace it.
 fn write_beside_and_rename(file: &Path, contents: &str) -> Result<(), PathError> {
-    let name = file.file_name().unwrap_or_default().to_string_lossy().into_owned();
-    let beside = folder_of(file).join(format!(".{name}.{}", std::process::id()));
-    let result = std::fs::write(&beside, contents).and_then(|()| std::fs::rename(&beside, file));
+    let special = std::fs::metadata(file).is_ok_and(|known| !known.is_file() && !known.is_dir());
+    let place = std::fs::canonicalize(file).unwrap_or_else(|_| file.to_path_buf());
+    let name = place.file_name().unwrap_or_default().to_string_lossy().into_owned();
+    let beside = folder_of(&place).join(format!(".{name}.{}", std::process::id()));
+    let result = if special {
+        std::fs::write(file, contents)
+    } else {
+        std::fs::write(&beside, contents).and_then(|()| std::fs::rename(&beside, &place))
+    };
     result.map_err(|error| {
         let _ = std::fs::remove_file(&beside);
         let message = format!("the output `{}` cannot be written: {error}", file.display());

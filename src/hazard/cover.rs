@@ -81,7 +81,7 @@ fn refuse_open(verdict: &TargetVerdict) -> Result<(), Withheld> {
         None => Ok(()),
         Some(Undecided::Loop) => Err(Withheld::Loop),
         Some(Undecided::Budget) if reasons.any(|reason| reason == Undecided::Loop) => Err(Withheld::Loop),
-        Some(Undecided::Budget) => Err(Withheld::Undecided),
+        Some(Undecided::Budget | Undecided::Undriven) => Err(Withheld::Undecided),
     }
 }
 

@@ -43,6 +43,9 @@ pub enum Undecided {
     Budget,
     /// The change reaches the target through a combinational loop.
     Loop,
+    /// Nothing drives the target: what it shows is not in the design. Said by whoever asks about a pin; the decision itself
+    /// takes an undriven net as a constant.
+    Undriven,
 }
 
 /// All that is known about one source against one target. Kinds in neither list are proven clean.

@@ -43,8 +43,8 @@ impl PinCoverage {
         })
     }
 
-    /// Counts one net of this kind. `None` stands for a net that cannot change by itself: a constant, an undriven net or
-    /// a source, which is clean by definition.
+    /// Counts one net of this kind. `None` stands for a net that is clean by definition: a constant, a source, or an
+    /// undriven bit of an output.
     pub(super) fn count<'a>(&mut self, kind: PinKind, verdicts: impl IntoIterator<Item = Option<&'a TargetVerdict>>) {
         let count = &mut self.counts[kind as usize];
         count.nets += 1;

@@ -8,7 +8,7 @@ use std::collections::BTreeSet;
 
 use super::cover_text;
 use super::finding::{CoverText, Finding, Hazard, Pin, Rule, Severity, TraceStep, Verdict};
-use super::{fingerprint, names, words};
+use super::{fingerprint, names, pins, words};
 use crate::graph::{Graph, InstanceId, NodeId, NodeKind};
 use crate::hazard::{self, HazardKind, Options, Path, Paths, TargetVerdict, Undecided, Witness};
 use crate::source::Span;
@@ -40,6 +40,7 @@ pub(super) fn finding(
     let root = verdict.target;
     let net = names::name(graph, root);
     let hazards = ranked(graph, verdict, subject.judge);
+    let undriven = pins::is_undriven(graph, root);
     let sources: BTreeSet<NodeId> = hazards.iter().map(|ranked| ranked.source).collect();
     let mut finding = Finding {
         rule: subject.rule,
@@ -72,10 +73,13 @@ pub(super) fn finding(
         finding.notes.extend(note);
     } else {
         finding.message = format!("not decided: whether {} can glitch", subject.what);
-        finding.trace.push(TraceStep { at: finding.at, text: format!("`{net}` is driven here") });
+        let done = if undriven { "declared" } else { "driven" };
+        finding.trace.push(TraceStep { at: finding.at, text: format!("`{net}` is {done} here") });
     }
-    finding.notes.extend(undecided(graph, verdict, options));
-    finding.notes.push(subject.cure.to_string());
+    finding.notes.extend(undecided(graph, verdict));
+    if !undriven {
+        finding.notes.push(subject.cure.to_string());
+    }
     Some(finding)
 }
 
@@ -159,9 +163,9 @@ pub(super) fn hazard_text(graph: &Graph, target: NodeId, kind: HazardKind, witne
 }
 
 /// One sentence per reason why questions about this target stayed open.
-fn undecided(graph: &Graph, verdict: &TargetVerdict, options: &Options) -> Vec<String> {
+fn undecided(graph: &Graph, verdict: &TargetVerdict) -> Vec<String> {
     let mut notes = Vec::new();
-    for reason in [Undecided::Budget, Undecided::Loop] {
+    for reason in [Undecided::Budget, Undecided::Loop, Undecided::Undriven] {
         let open = |why: &(HazardKind, Undecided)| why.1 == reason;
         let pairs: Vec<_> = verdict.pairs.iter().filter(|pair| pair.undecided.iter().any(open)).collect();
         let Some(first) = pairs.first() else { continue };
@@ -172,14 +176,18 @@ fn undecided(graph: &Graph, verdict: &TargetVerdict, options: &Options) -> Vec<S
         };
         notes.push(match reason {
             Undecided::Budget => format!(
-                "undecided for {who}: no proof within {} solver conflicts; this is not a pass. Drive the pin from a \
-                 flip-flop, or split the logic in front of it",
-                options.conflicts
+                "undecided for {who}: no proof within the budget of the solver; this is not a pass. Drive the pin from \
+                 a flip-flop, or split the logic in front of it"
             ),
             Undecided::Loop => format!(
                 "undecided for {who}: the change passes a combinational loop, behind which nothing can be proven; this \
                  is not a pass. Break the loop first (rule combinational-loop)"
             ),
+            Undecided::Undriven => {
+                "undecided because nothing drives this net: it may float, and what it shows is not in \
+                                    the design; this is not a pass. Connect it, or tie it to a constant"
+                    .to_string()
+            }
         });
     }
     notes

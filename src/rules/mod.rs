@@ -63,7 +63,9 @@ pub fn run(graph: &Graph, watches: &[Watch], options: &Options) -> Outcome {
     let outputs: Vec<_> = graph.ports.iter().filter(|port| port.direction != PortDirection::Input).collect();
 
     let pin_roots = [&pins.controls, &pins.clocks, &pins.enables].into_iter().flat_map(|nets| nets.keys().copied());
-    let verdicts = decided(graph, pin_roots.chain(watched.iter().map(|&(_, root)| root)), &listing);
+    let roots: BTreeSet<NodeId> = pin_roots.chain(watched.iter().map(|&(_, root)| root)).collect();
+    let mut verdicts = decided(graph, roots.iter().copied(), &listing);
+    verdicts.extend(roots.into_iter().filter(|&root| pins::is_undriven(graph, root)).map(pins::undriven));
     let bits = outputs.iter().flat_map(|port| &graph.nets[port.net.index()].bits);
     let outside_verdicts = decided(graph, bits.map(|&bit| graph.root(bit)), &outside);
     let loops = hazard::loops(graph, options);

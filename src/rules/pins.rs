@@ -6,7 +6,7 @@ use std::collections::BTreeMap;
 use super::finding::{Pin, PinKind};
 use super::names;
 use crate::graph::{Cell, CellKind, Edge, Graph, NodeId, NodeKind};
-use crate::hazard::TargetVerdict;
+use crate::hazard::{HazardKind, Pair, TargetVerdict, Undecided};
 
 /// One cell's use of a net.
 #[derive(Clone, Copy, PartialEq, Eq, Debug)]
@@ -75,6 +75,20 @@ pub(super) fn collect(graph: &Graph) -> Pins {
 pub(super) fn is_driven_by_logic(graph: &Graph, root: NodeId) -> bool {
     matches!(graph.kind(root), NodeKind::Gate(_) | NodeKind::Table(_) | NodeKind::OpIn(_) | NodeKind::OpOut(_))
         || (graph.kind(root) == NodeKind::Wire && !graph.fanin(root).is_empty())
+}
+
+/// Whether nothing drives the net, or nothing but an `x` or `z` literal. The decision takes such a net as a constant, and
+/// so it may be inside a cone; but a pin that hangs on one is not clean, it is unknown.
+pub(super) fn is_undriven(graph: &Graph, root: NodeId) -> bool {
+    graph.kind(root) == NodeKind::Unknown || (graph.kind(root) == NodeKind::Wire && graph.fanin(root).is_empty())
+}
+
+/// The verdict on an undriven pin.
+pub(super) fn undriven(root: NodeId) -> (NodeId, TargetVerdict) {
+    let undecided = [HazardKind::Static0, HazardKind::Static1, HazardKind::Dynamic];
+    let undecided = undecided.map(|kind| (kind, Undecided::Undriven)).to_vec();
+    let pairs = vec![Pair { source: root, hazards: Vec::new(), undecided }];
+    (root, TargetVerdict { target: root, sources: 0, pairs })
 }
 
 /// The kind that stands for all uses of a net.

@@ -192,3 +192,35 @@ fn hostile_input_stays_within_two_gigabytes() {
         assert!(peak > 0 && peak < MEMORY_KB, "{peak} kB");
     }
 }
+
+/// An output may be a pipe or a device: renaming a file over it would put a plain file into its place.
+#[test]
+#[cfg(unix)]
+fn an_output_that_is_no_plain_file_stays_what_it_is() {
+    use std::os::unix::fs::FileTypeExt;
+    let folder = tempfile::tempdir().expect("a temporary folder");
+    let (pipe, plain, link) = (folder.path().join("pipe"), folder.path().join("plain"), folder.path().join("link"));
+    assert!(Command::new("mkfifo").arg(&pipe).status().expect("mkfifo starts").success());
+    std::fs::write(&plain, "old").expect("written");
+    std::os::unix::fs::symlink(&plain, &link).expect("linked");
+    let reader = std::thread::spawn({
+        let pipe = pipe.clone();
+        move || std::fs::read_to_string(pipe).expect("readable")
+    });
+    let lock = concat!(env!("CARGO_MANIFEST_DIR"), "/fixtures/lock");
+    let status = Command::new(env!("CARGO_BIN_EXE_stillwire"))
+        .args(["scan", lock])
+        .arg("--write")
+        .arg(format!("json:{}", pipe.display()))
+        .arg("--write")
+        .arg(format!("json:{}", link.display()))
+        .output()
+        .expect("the program starts")
+        .status;
+    assert_eq!(status.code(), Some(1));
+    assert!(std::fs::metadata(&pipe).expect("there").file_type().is_fifo(), "the pipe is still one");
+    let text = reader.join().expect("read to the end");
+    assert!(text.contains("stillwire-findings/1"));
+    assert!(std::fs::symlink_metadata(&link).expect("there").is_symlink(), "the link is still one");
+    assert_eq!(std::fs::read_to_string(&plain).expect("readable"), text);
+}
