@@ -39,16 +39,7 @@ impl<S: Solver> Clauses<S> {
         match live.as_slice() {
             [] => self.one,
             &[pin] => pin,
-            _ => {
-                let all = self.solver.variable();
-                let mut clause = vec![all];
-                for &pin in &live {
-                    self.solver.clause(&[!all, pin]);
-                    clause.push(!pin);
-                }
-                self.solver.clause(&clause);
-                all
-            }
+            live => self.solver.conjunction(live),
         }
     }
 
@@ -63,12 +54,7 @@ impl<S: Solver> Clauses<S> {
                 return y.inverted_if(x == self.one);
             }
         }
-        let sum = self.solver.variable();
-        self.solver.clause(&[!sum, a, b]);
-        self.solver.clause(&[!sum, !a, !b]);
-        self.solver.clause(&[sum, !a, b]);
-        self.solver.clause(&[sum, a, !b]);
-        sum
+        self.solver.difference(a, b)
     }
 
     /// The logic of `nodes`, which stand in topological order; `leaf` gives the values of leaves. Combinations without

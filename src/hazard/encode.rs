@@ -90,7 +90,7 @@ impl<'a, S: Solver> Encoder<'a, S> {
                 for &pin in pins {
                     sum = Some(match sum {
                         None => pin,
-                        Some(sum) => self.xor(sum, pin),
+                        Some(sum) => self.solver.difference(sum, pin),
                     });
                 }
                 sum.unwrap_or(!self.one)
@@ -103,26 +103,10 @@ impl<'a, S: Solver> Encoder<'a, S> {
     }
 
     fn and(&mut self, pins: &[Literal]) -> Literal {
-        if let &[pin] = pins {
-            return pin;
+        match pins {
+            &[pin] => pin,
+            pins => self.solver.conjunction(pins),
         }
-        let all = self.solver.variable();
-        let mut clause = vec![all];
-        for &pin in pins {
-            self.solver.clause(&[!all, pin]);
-            clause.push(!pin);
-        }
-        self.solver.clause(&clause);
-        all
-    }
-
-    fn xor(&mut self, a: Literal, b: Literal) -> Literal {
-        let sum = self.solver.variable();
-        self.solver.clause(&[!sum, a, b]);
-        self.solver.clause(&[!sum, !a, !b]);
-        self.solver.clause(&[sum, !a, b]);
-        self.solver.clause(&[sum, a, !b]);
-        sum
     }
 
     /// A table's value, and whether no row gives it.
@@ -234,7 +218,7 @@ impl<'a, S: Solver> Encoder<'a, S> {
             self.solver.clause(&broken);
         }
         // Not the clean change of a single pin with a clean change of the result.
-        let differs = self.xor(i, f);
+        let differs = self.solver.difference(i, f);
         let (_, ungiven_before) = self.first_fit(table, &initial);
         let (_, ungiven_after) = self.first_fit(table, &last);
         let otherwise = [hazards, &[!differs, ungiven_before, ungiven_after]].concat();

@@ -49,6 +49,28 @@ pub(super) trait Solver: Default {
 
     /// The value in the last model; variables that do not matter there are `false`.
     fn value(&self, literal: Literal) -> bool;
+
+    /// A variable that is 1 when all pins are (Tseitin's clauses, 1968).
+    fn conjunction(&mut self, pins: &[Literal]) -> Literal {
+        let all = self.variable();
+        let mut clause = vec![all];
+        for &pin in pins {
+            self.clause(&[!all, pin]);
+            clause.push(!pin);
+        }
+        self.clause(&clause);
+        all
+    }
+
+    /// A variable that is 1 when exactly one of the two is.
+    fn difference(&mut self, a: Literal, b: Literal) -> Literal {
+        let sum = self.variable();
+        self.clause(&[!sum, a, b]);
+        self.clause(&[!sum, !a, !b]);
+        self.clause(&[sum, !a, b]);
+        self.clause(&[sum, a, !b]);
+        sum
+    }
 }
 
 /// Counts conflicts by the clauses learnt from them.
