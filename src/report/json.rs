@@ -78,6 +78,7 @@ struct FindingOut<'a> {
     loop_: Option<LoopOut<'a>>,
     notes: &'a [String],
     fingerprint: &'a str,
+    family: &'a str,
     signoff: Option<SignoffOut<'a>>,
 }
 
@@ -235,6 +236,7 @@ fn finding_out<'a>(finding: &'a Finding, place: &impl Fn(Option<Span>) -> Option
         loop_: finding.loop_.as_ref().map(|found| LoopOut { nets: &found.nets, behaviour: &found.behaviour }),
         notes: &finding.notes,
         fingerprint: &finding.fingerprint,
+        family: &finding.family,
         signoff: finding.signoff.as_ref().map(|signoff| SignoffOut {
             reason: &signoff.reason,
             by: signoff.by.as_deref(),

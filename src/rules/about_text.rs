@@ -3,7 +3,7 @@
 //! silent, because whatever lies behind it was not analysed.
 
 use super::finding::{Finding, Rule, Severity, TraceStep, Verdict};
-use super::fingerprint;
+use super::fingerprint::{self, Identity};
 use crate::diagnostic::{Diagnostic, Kind};
 use crate::report::Message;
 use crate::source::Span;
@@ -37,8 +37,8 @@ pub fn say(diagnostic: &Diagnostic) -> Said {
         notes.push("what depends on it was not analysed; the run is incomplete".to_string());
     }
     let trace = diagnostic.also.iter().map(|(at, text)| TraceStep { at: Some(*at), text: text.clone() }).collect();
-    let fingerprint = fingerprint::of_text(rule, &[&diagnostic.construct, &diagnostic.message]);
-    let mut finding = plain(rule, severity, diagnostic.message.clone(), diagnostic.at, fingerprint);
+    let identity = fingerprint::of_text(rule, &[&diagnostic.construct, &diagnostic.message]);
+    let mut finding = plain(rule, severity, diagnostic.message.clone(), diagnostic.at, identity);
     finding.trace = trace;
     finding.notes = notes;
     Said::Finding(Box::new(finding))
@@ -53,14 +53,14 @@ pub(crate) fn bookkeeping(
     cure: &str,
     reason: &str,
 ) -> Finding {
-    let fingerprint = fingerprint::of_text(rule, &[&message, reason]);
-    let mut finding = plain(rule, severity, message, Some(at), fingerprint);
+    let identity = fingerprint::of_text(rule, &[&message, reason]);
+    let mut finding = plain(rule, severity, message, Some(at), identity);
     finding.notes.push(format!("to do: {cure}"));
     finding
 }
 
 /// A finding that is about a text and not about a net.
-pub(super) fn plain(rule: Rule, severity: Severity, message: String, at: Option<Span>, fingerprint: String) -> Finding {
+pub(super) fn plain(rule: Rule, severity: Severity, message: String, at: Option<Span>, identity: Identity) -> Finding {
     Finding {
         rule,
         severity,
@@ -77,7 +77,8 @@ pub(super) fn plain(rule: Rule, severity: Severity, message: String, at: Option<
         cover: None,
         loop_: None,
         notes: Vec::new(),
-        fingerprint,
+        fingerprint: identity.fingerprint,
+        family: identity.family,
         signoff: None,
     }
 }

@@ -40,6 +40,7 @@ pub(super) fn finding(graph: &Graph, verdict: &LoopVerdict, endpoints: &BTreeSet
     let undecided = loss_open || verdict.behaviours.iter().any(|behaviour| behaviour.kind == BehaviourKind::Undecided);
     let size = words::count(nets.len().max(1), "net");
     let mut message = format!("combinational loop of {size} through `{net}` {what}");
+    let identity = fingerprint::of_cone(graph, Rule::CombinationalLoop, &net, &[start]);
     let mut finding = Finding {
         rule: Rule::CombinationalLoop,
         severity,
@@ -59,7 +60,8 @@ pub(super) fn finding(graph: &Graph, verdict: &LoopVerdict, endpoints: &BTreeSet
             behaviour: verdict.behaviours.iter().map(|behaviour| behaviour.kind.name()).collect(),
         }),
         notes: verdict.behaviours.iter().map(|behaviour| explain(graph, behaviour)).collect(),
-        fingerprint: fingerprint::of_cone(graph, Rule::CombinationalLoop, &net, &[start]),
+        fingerprint: identity.fingerprint,
+        family: identity.family,
         signoff: None,
     };
     if let Some(loss) = &verdict.loses_state {

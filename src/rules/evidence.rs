@@ -42,6 +42,7 @@ pub(super) fn finding(
     let hazards = ranked(graph, verdict, subject.judge);
     let undriven = pins::is_undriven(graph, root);
     let sources: BTreeSet<NodeId> = hazards.iter().map(|ranked| ranked.source).collect();
+    let identity = fingerprint::of_cone(graph, subject.rule, &net, &[root]);
     let mut finding = Finding {
         rule: subject.rule,
         severity: Severity::Warning,
@@ -58,7 +59,8 @@ pub(super) fn finding(
         cover: None,
         loop_: None,
         notes: Vec::new(),
-        fingerprint: fingerprint::of_cone(graph, subject.rule, &net, &[root]),
+        fingerprint: identity.fingerprint,
+        family: identity.family,
         signoff: None,
     };
     if let Some(lead) = hazards.first() {

@@ -195,5 +195,7 @@ pub struct Finding {
     pub notes: Vec<String>,
     /// 32 hexadecimal digits over the rule, the hierarchical names and the structure of the cone.
     pub fingerprint: String,
+    /// The same without the place in the hierarchy: equal for this finding in every instance of its module.
+    pub family: String,
     pub signoff: Option<Signoff>,
 }

@@ -1,14 +1,16 @@
-//! A name for a finding that survives edits elsewhere: 32 hexadecimal digits over the rule, the hierarchical name of the
-//! net and the structure of its cone (kinds and connections in pin order, names of the sources). Lines, files, names of
-//! inner nets and the cells behind the net do not enter, so that moving code keeps the ledger valid while a change of
-//! the logic makes the finding a new one.
+//! Two names for a finding that survive edits elsewhere, 32 hexadecimal digits each. The fingerprint is over the rule, the
+//! hierarchical name of the net and the structure of its cone (kinds and connections in pin order, names of the
+//! sources). The family is the same without the place in the hierarchy: it says the module and the names within it, so
+//! that one mistake in a module has one family however often the module is used. Lines, files, names of inner nets and
+//! the cells behind the net enter neither, so that moving code keeps the ledger valid while a change of the logic makes
+//! the finding a new one.
 
 use std::collections::HashMap;
 use std::collections::hash_map::Entry;
 
 use super::Rule;
 use super::names;
-use crate::graph::{Graph, NodeId, NodeKind, SourceKind, Symbol};
+use crate::graph::{Graph, InstanceId, NodeId, NodeKind, SourceKind, Symbol};
 
 /// FNV-1a with 128 bits (Fowler, Noll, Vo; parameters of RFC 9923): small, stable and without a key.
 #[derive(Clone, Copy)]
@@ -43,29 +45,85 @@ impl Fnv {
     }
 }
 
-/// The fingerprint of a finding on the nets driven by `roots`, called `net`.
-pub(super) fn of_cone(graph: &Graph, rule: Rule, net: &str, roots: &[NodeId]) -> String {
-    let mut memo = HashMap::new();
-    let mut hash = Fnv::new().text(rule.name()).text(net);
-    for &root in roots {
-        hash = hash.number(cone(graph, root, &mut memo));
-    }
-    hash.hex()
+/// What tells one finding from another; see the module documentation.
+#[derive(Clone, PartialEq, Eq, Debug)]
+pub(crate) struct Identity {
+    pub fingerprint: String,
+    pub family: String,
 }
 
-/// The fingerprint of a finding that is about a text and not about a net.
-pub(crate) fn of_text(rule: Rule, texts: &[&str]) -> String {
-    texts.iter().fold(Fnv::new().text(rule.name()), |hash, text| hash.text(text)).hex()
+/// The identity of a finding on the nets driven by `roots`, called `net`.
+pub(super) fn of_cone(graph: &Graph, rule: Rule, net: &str, roots: &[NodeId]) -> Identity {
+    let fingerprint = Fnv::new().text(rule.name()).text(net);
+    let fingerprint = cones(graph, fingerprint, roots, |node, _, _| names::name(graph, node));
+    let wire = roots.first().and_then(|&root| names::wire_of(graph, root));
+    let family = Fnv::new().text(rule.name()).text(&wire.map_or(String::new(), |wire| within_module(graph, wire)));
+    // A source goes by the name that its reader's module has for it, and by a number, because two such names may be one net.
+    let family = cones(graph, family, roots, |_, reads, number| format!("{number} {}", within_module(graph, reads)));
+    Identity { fingerprint: fingerprint.hex(), family: family.hex() }
+}
+
+/// The identity of a finding that is about a text and not about a net.
+pub(crate) fn of_text(rule: Rule, texts: &[&str]) -> Identity {
+    let hex = texts.iter().fold(Fnv::new().text(rule.name()), |hash, text| hash.text(text)).hex();
+    Identity { fingerprint: hex.clone(), family: hex }
+}
+
+/// The name of a node as its module's text has it: the module, the generate blocks without their indices, the net.
+fn within_module(graph: &Graph, node: NodeId) -> String {
+    let (instance, net) = match graph.node_name(node) {
+        Some(name) => {
+            let net = &graph.nets[name.net.index()];
+            (net.instance, format!("{}{}", net.name, name.suffix))
+        }
+        None => (graph.site(node).instance, String::new()),
+    };
+    format!("{}.{net}", module_path(graph, instance))
+}
+
+/// The module of an instance and the generate blocks within it, which are written once however often they are repeated.
+fn module_path(graph: &Graph, instance: InstanceId) -> String {
+    let mut blocks = Vec::new();
+    let mut here = &graph.instances[instance.index()];
+    while let Some(parent) = here.parent.filter(|_| here.block) {
+        let parent = &graph.instances[parent.index()];
+        let label = here.path.strip_prefix(parent.path.as_str()).unwrap_or(&here.path);
+        blocks.push(label.trim_start_matches('.').split('[').next().unwrap_or_default());
+        here = parent;
+    }
+    blocks.push(&here.module);
+    blocks.reverse();
+    blocks.join(".")
+}
+
+/// Adds the hashes of the cones of `roots`. `source` names a source by itself, by the node through which it is first
+/// read, and by the number of sources met before.
+fn cones(graph: &Graph, hash: Fnv, roots: &[NodeId], source: impl Fn(NodeId, NodeId, usize) -> String) -> Fnv {
+    let mut memo = HashMap::new();
+    let mut met = 0;
+    let mut source = |node: NodeId, reads: NodeId| {
+        met += 1;
+        source(node, reads, met)
+    };
+    roots.iter().fold(hash, |hash, &root| hash.number(cone(graph, root, &mut memo, &mut source)))
 }
 
 /// The hash of the cone of `root`: each node's from those of its fan-in. `memo` keeps `None` for a node whose fan-in is
 /// still being hashed; meeting such a node again means a loop, which enters as a mark of its own.
-fn cone(graph: &Graph, root: NodeId, memo: &mut HashMap<NodeId, Option<u128>>) -> u128 {
-    let root = graph.root(root);
-    let mut stack = vec![(root, false)];
-    while let Some((node, ready)) = stack.pop() {
+fn cone(
+    graph: &Graph,
+    root: NodeId,
+    memo: &mut HashMap<NodeId, Option<u128>>,
+    source: &mut impl FnMut(NodeId, NodeId) -> String,
+) -> u128 {
+    let start = graph.root(root);
+    let mut stack = vec![(start, root, false)];
+    while let Some((node, reads, ready)) = stack.pop() {
         if ready {
             let mut hash = own(graph, node);
+            if let NodeKind::Source(_) = graph.kind(node) {
+                hash = hash.text(&source(node, reads));
+            }
             for &input in graph.fanin(node) {
                 let input = memo.get(&graph.root(input)).copied().flatten();
                 hash = hash.number(input.unwrap_or(u128::MAX));
@@ -73,15 +131,15 @@ fn cone(graph: &Graph, root: NodeId, memo: &mut HashMap<NodeId, Option<u128>>) -
             memo.insert(node, Some(hash.0));
         } else if let Entry::Vacant(slot) = memo.entry(node) {
             slot.insert(None);
-            stack.push((node, true));
-            let inputs = graph.fanin(node).iter().rev().map(|&input| graph.root(input));
-            stack.extend(inputs.filter(|input| !memo.contains_key(input)).map(|input| (input, false)));
+            stack.push((node, reads, true));
+            let inputs = graph.fanin(node).iter().rev().map(|&input| (graph.root(input), input));
+            stack.extend(inputs.filter(|(root, _)| !memo.contains_key(root)).map(|(root, input)| (root, input, false)));
         }
     }
-    memo.get(&root).copied().flatten().unwrap_or(u128::MAX)
+    memo.get(&start).copied().flatten().unwrap_or(u128::MAX)
 }
 
-/// The hash of what a node is, without its fan-in.
+/// The hash of what a node is, without its fan-in and without the name of a source.
 fn own(graph: &Graph, node: NodeId) -> Fnv {
     let hash = Fnv::new();
     match graph.kind(node) {
@@ -89,16 +147,13 @@ fn own(graph: &Graph, node: NodeId) -> Fnv {
         NodeKind::Unknown => hash.text("unknown"),
         // A wire that is its own root is undriven, or part of a ring of wires.
         NodeKind::Wire => hash.text("undriven"),
-        NodeKind::Source(kind) => {
-            let kind = match kind {
-                SourceKind::Input => "input",
-                SourceKind::FlipFlop => "flip-flop",
-                SourceKind::Latch => "latch",
-                SourceKind::BlackBox => "black box",
-                SourceKind::Memory => "memory",
-            };
-            hash.text(kind).text(&names::name(graph, node))
-        }
+        NodeKind::Source(kind) => hash.text(match kind {
+            SourceKind::Input => "input",
+            SourceKind::FlipFlop => "flip-flop",
+            SourceKind::Latch => "latch",
+            SourceKind::BlackBox => "black box",
+            SourceKind::Memory => "memory",
+        }),
         NodeKind::Gate(gate) => hash.text(gate.name()),
         NodeKind::Table(table) => {
             let mut hash = hash.text("table");

@@ -50,7 +50,8 @@ pub(super) fn output(graph: &Graph, port: &Port, verdicts: &Verdicts, options: &
         finding.bits = Some((ends[0].min(ends[1]), ends[0].max(ends[1])));
     }
     let roots: Vec<NodeId> = net.bits.iter().map(|&bit| graph.root(bit)).collect();
-    finding.fingerprint = fingerprint::of_cone(graph, Rule::ReconvergentInversion, &name, &roots);
+    let identity = fingerprint::of_cone(graph, Rule::ReconvergentInversion, &name, &roots);
+    (finding.fingerprint, finding.family) = (identity.fingerprint, identity.family);
     finding.instance = path.clone();
     finding.net = name;
     for verdict in bits.iter().filter_map(|&bit| of_bit(net.bits[bit])) {

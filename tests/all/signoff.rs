@@ -121,6 +121,7 @@ fn scene(text: &str) -> (SourceSet, Graph, Finding) {
         loop_: None,
         notes: Vec::new(),
         fingerprint: String::new(),
+        family: String::new(),
         signoff: None,
     };
     (sources, builder.freeze(), finding)
