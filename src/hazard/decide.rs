@@ -167,6 +167,6 @@ impl Extent {
             pair.undecided.sort_unstable();
         }
         pairs.retain(|pair| !pair.hazards.is_empty() || !pair.undecided.is_empty());
-        TargetVerdict { target, sources: self.sources, pairs }
+        TargetVerdict { target, sources: self.sources, pairs, ..TargetVerdict::clean(target) }
     }
 }

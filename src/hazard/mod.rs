@@ -8,6 +8,7 @@ mod decide;
 mod encode;
 mod enumerate;
 mod function;
+pub mod launch;
 mod loops;
 mod options;
 mod order;
@@ -29,5 +30,8 @@ pub use decide::decide;
 pub use loops::{Behaviour, BehaviourKind, LoopVerdict, StateLoss, loops};
 pub use options::Options;
 pub use paths::paths;
-pub use verdict::{Cover, HazardKind, Pair, Path, PathStep, Paths, TargetVerdict, Undecided, Witness};
+pub use verdict::{
+    Cause, Cover, HazardKind, Launch, LaunchHazard, OpenLaunch, Pair, Path, PathStep, Paths, Reach, Step,
+    TargetVerdict, Undecided, Witness,
+};
 pub use wave::{Wave, waveform};

@@ -34,6 +34,84 @@ pub struct Witness {
     pub holds: Vec<(NodeId, bool)>,
     /// The target before and after.
     pub target: (bool, bool),
+    /// The event that makes the sources change, where it is known; see [`super::launch`]. Under it, `changes` are what
+    /// moves in the step (or steps) that show the hazard.
+    pub launch: Option<Launch>,
+}
+
+/// The step of an event at which a target shows its hazard.
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug)]
+pub enum Step {
+    /// While the change of the root travels and all flip-flops hold.
+    First,
+    /// While the cells that the change reached take their next values.
+    Second,
+    /// Each step is clean, but the second takes back what the first did: the pulse is as short as the cells are fast.
+    Both,
+}
+
+/// Whether another arrangement of gates could be free of the hazard.
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug)]
+pub enum Cause {
+    /// The function of the target has the same value all the way; a hazard-free cover exists for this transition.
+    Logic,
+    /// The function itself passes through the other value between the two end points.
+    Function,
+}
+
+/// The event behind a witness: which root moves, and what moves with it.
+#[derive(Clone, PartialEq, Eq, Debug)]
+pub struct Launch {
+    /// The source that starts the event.
+    pub root: NodeId,
+    /// Whether the root rises.
+    pub rises: bool,
+    pub step: Step,
+    pub cause: Cause,
+    /// The sources in front of the target that move in the first step, with their value before; sorted by node. The root
+    /// is among them when it reaches the target.
+    pub first: Vec<(NodeId, bool)>,
+    /// Those that move in the second step, with their value between the steps; sorted by node.
+    pub second: Vec<(NodeId, bool)>,
+    /// Outputs of latches that pass their data in the step that shows the hazard, so that what lies in front of them is
+    /// part of the target's logic; the sources in this witness are those in front of them. Sorted.
+    pub passing: Vec<NodeId>,
+    /// Outputs of latches that do anything at all in the step that shows the hazard, because their data moves while they
+    /// open or close. They count among the sources that move. Sorted.
+    pub raced: Vec<NodeId>,
+    /// Sources outside the target's logic that must have these values for the event to happen; sorted by node.
+    pub conditions: Vec<(NodeId, bool)>,
+    /// The target before, between and after the two steps.
+    pub target: [bool; 3],
+}
+
+/// For which states a claim was made.
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug, Default)]
+pub enum Reach {
+    /// Any settled state: a hazard is shown from a state that nobody checked to occur; a clean verdict holds whatever the
+    /// state.
+    #[default]
+    AnyState,
+    /// Only states that the flip-flops can come to from their reset values.
+    ReachableStates,
+}
+
+/// A hazard of a launch that no change of a single source explains.
+#[derive(Clone, PartialEq, Eq, Debug)]
+pub struct LaunchHazard {
+    pub kind: HazardKind,
+    /// Has its [`Launch`].
+    pub witness: Witness,
+    pub reach: Reach,
+}
+
+/// A launch that stayed undecided.
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Debug)]
+pub struct OpenLaunch {
+    pub root: NodeId,
+    /// Whether the root rises.
+    pub rises: bool,
+    pub reason: Undecided,
 }
 
 /// Why a question stayed open.
@@ -66,12 +144,30 @@ pub struct TargetVerdict {
     pub sources: usize,
     /// The pairs that are not clean, sorted by source.
     pub pairs: Vec<Pair>,
+    /// What launches show beyond the pairs; see [`super::launch`]. Empty where nobody asked about launches.
+    pub launches: Vec<LaunchHazard>,
+    /// Launches that stayed undecided; sorted.
+    pub open_launches: Vec<OpenLaunch>,
+    /// What the verdict as a whole rests on.
+    pub reach: Reach,
 }
 
 impl TargetVerdict {
+    /// Of a target that no source reaches.
+    pub fn clean(target: NodeId) -> Self {
+        Self {
+            target,
+            sources: 0,
+            pairs: Vec::new(),
+            launches: Vec::new(),
+            open_launches: Vec::new(),
+            reach: Reach::AnyState,
+        }
+    }
+
     /// Every question answered, none with a hazard.
     pub fn is_clean(&self) -> bool {
-        self.pairs.is_empty()
+        self.pairs.is_empty() && self.launches.is_empty() && self.open_launches.is_empty()
     }
 }
 

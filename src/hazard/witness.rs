@@ -71,6 +71,7 @@ impl Lane<'_> {
             changes: vec![(self.cone.origin[source], simulate::bit(&self.values[source], self.lane))],
             holds,
             target: (target.i, target.f),
+            launch: None,
         }
     }
 

@@ -88,7 +88,7 @@ pub(super) fn undriven(root: NodeId) -> (NodeId, TargetVerdict) {
     let undecided = [HazardKind::Static0, HazardKind::Static1, HazardKind::Dynamic];
     let undecided = undecided.map(|kind| (kind, Undecided::Undriven)).to_vec();
     let pairs = vec![Pair { source: root, hazards: Vec::new(), undecided }];
-    (root, TargetVerdict { target: root, sources: 0, pairs })
+    (root, TargetVerdict { pairs, ..TargetVerdict::clean(root) })
 }
 
 /// The kind that stands for all uses of a net.

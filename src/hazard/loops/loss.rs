@@ -160,7 +160,7 @@ fn original(cut: &Cut, witness: &Witness) -> Witness {
         list.sort_unstable();
         list
     };
-    Witness { changes: back(&witness.changes), holds: back(&witness.holds), target: witness.target }
+    Witness { changes: back(&witness.changes), holds: back(&witness.holds), target: witness.target, launch: None }
 }
 
 /// Terms of the next-state function that keep the state, proven by asking again for losses at this node.
