@@ -31,6 +31,9 @@ pub enum Command {
         #[arg(value_parser = rule)]
         rule: Rule,
     },
+    /// Keep the file of the findings that were known when the tool was adopted; `scan --ledger` fails only on others.
+    #[command(subcommand)]
+    Ledger(Ledger),
     /// Write the gate graph, or the fan-in of one net, as structural Verilog on standard output.
     Flatten(Flatten),
 }
@@ -68,12 +71,32 @@ pub struct Scan {
     /// Write the findings to a file as well, or to standard output with `-`; FORMAT is json; may be repeated
     #[arg(long, value_name = "FORMAT:FILE", value_parser = output)]
     pub write: Vec<Output>,
+    /// Fail only on findings that are not in this ledger (see `stillwire ledger write`)
+    #[arg(long, value_name = "FILE")]
+    pub ledger: Option<PathBuf>,
     /// The lowest severity that fails the run [default: error]
     #[arg(long, value_name = "SEVERITY")]
     pub gate: Option<Level>,
     /// The lowest severity that is printed as text; the rest is counted [default: warning]
     #[arg(long, value_name = "SEVERITY")]
     pub show: Option<Level>,
+}
+
+#[derive(Subcommand, Debug)]
+pub enum Ledger {
+    /// Record today's findings, all but those that are signed off.
+    Write(LedgerRun),
+    /// Drop the entries whose finding is gone; nothing is added.
+    Prune(LedgerRun),
+}
+
+#[derive(Args, Debug)]
+pub struct LedgerRun {
+    #[command(flatten)]
+    pub input: Input,
+    /// The ledger
+    #[arg(long, value_name = "FILE", default_value = "stillwire-ledger.toml")]
+    pub ledger: PathBuf,
 }
 
 #[derive(Args, Debug)]

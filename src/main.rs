@@ -13,6 +13,7 @@ use stillwire::cli::{self, Cli, Command, Format, Input, Output};
 use stillwire::report::{json, text};
 use stillwire::rules::{self, Severity};
 use stillwire::settings::{self, Settings};
+use stillwire::signoff::ledger::Ledger;
 use stillwire::source::{self, Exclude, PathError};
 use stillwire::{Request, Scan, Stage};
 
@@ -29,6 +30,7 @@ fn main() -> ExitCode {
             Ok(0)
         }
         Command::Flatten(arguments) => flatten(&arguments),
+        Command::Ledger(command) => ledger(&command),
     };
     let code = result.unwrap_or_else(|error| {
         complain(&format!("error: {}\n  help: {}\n", error.message, error.help));
@@ -40,8 +42,13 @@ fn main() -> ExitCode {
 fn scan(arguments: &cli::Scan) -> Result<u8, PathError> {
     let settings = read_settings(&arguments.input)?;
     check_outputs(&arguments.write)?;
+    let ledger = arguments.ledger.as_deref().map(|file| Ok((file, read_ledger(file)?))).transpose()?;
     let request = request(&arguments.input, &settings);
-    let scan = with_progress(|progress| stillwire::scan(&request, &environment, progress))?;
+    let mut scan = with_progress(|progress| stillwire::scan(&request, &environment, progress))?;
+    if let Some((file, ledger)) = ledger {
+        let used = ledger.apply(&file.to_string_lossy(), &mut scan.report.findings);
+        scan.report.ledger = Some(used);
+    }
 
     let gate = arguments.gate.map(Severity::from).or(settings.gate).unwrap_or(Severity::Error);
     let show = arguments.show.map(Severity::from).or(settings.show).unwrap_or(Severity::Warning);
@@ -64,6 +71,55 @@ fn scan(arguments: &cli::Scan) -> Result<u8, PathError> {
         }
     }
     Ok(scan.report.exit_code(gate))
+}
+
+/// Writes or prunes the ledger. An incomplete run records what it found, and drops nothing: what was not read is not gone.
+fn ledger(command: &cli::Ledger) -> Result<u8, PathError> {
+    let (cli::Ledger::Write(arguments) | cli::Ledger::Prune(arguments)) = command;
+    let settings = read_settings(&arguments.input)?;
+    check_output(&arguments.ledger)?;
+    let known = match command {
+        cli::Ledger::Write(_) => None,
+        cli::Ledger::Prune(_) => Some(read_ledger(&arguments.ledger)?),
+    };
+    let request = request(&arguments.input, &settings);
+    let mut scan = with_progress(|progress| stillwire::scan(&request, &environment, progress))?;
+    let file = arguments.ledger.display();
+    let complete = scan.report.complete();
+    let (ledger, said) = match known {
+        None => {
+            let ledger = Ledger::of(&scan.report.findings);
+            let said = format!("{file}: {} written\n", entries(ledger.entries().len()));
+            (ledger, said)
+        }
+        Some(known) if complete => {
+            let used = known.apply(&file.to_string(), &mut scan.report.findings);
+            let said = format!("{file}: {} dropped, {} left\n", entries(used.gone.len()), used.remaining);
+            (known.pruned(&used), said)
+        }
+        Some(known) => (known, format!("{file}: nothing dropped, because the run is incomplete\n")),
+    };
+    write_beside_and_rename(&arguments.ledger, &ledger.render())?;
+    print(&said);
+    if !complete {
+        complain("warning: part of the input was not analysed; run `stillwire scan` to see what\n");
+    }
+    Ok(if complete { 0 } else { INCOMPLETE })
+}
+
+fn entries(count: usize) -> String {
+    if count == 1 { "1 entry".to_string() } else { format!("{count} entries") }
+}
+
+fn read_ledger(file: &Path) -> Result<Ledger, PathError> {
+    let text = std::fs::read_to_string(file).map_err(|error| {
+        let message = format!("the ledger `{}` cannot be read: {error}", file.display());
+        PathError::new(message, "write it with `stillwire ledger write`, or check the path")
+    })?;
+    Ledger::parse(&text).map_err(|problem| {
+        let message = format!("the ledger `{}` is damaged: {problem}", file.display());
+        PathError::new(message, "take it from version control, or write it anew with `stillwire ledger write`")
+    })
 }
 
 fn flatten(arguments: &cli::Flatten) -> Result<u8, PathError> {
@@ -162,16 +218,18 @@ fn check_outputs(outputs: &[Output]) -> Result<(), PathError> {
     if outputs.iter().filter(|output| output.file.is_none()).count() > 1 {
         return Err(PathError::new("two outputs go to standard output", "write one of them to a file"));
     }
-    for file in outputs.iter().filter_map(|output| output.file.as_deref()) {
-        if file.is_dir() {
-            let message = format!("the output `{}` is a folder", file.display());
-            return Err(PathError::new(message, "name a file in it"));
-        }
-        let folder = folder_of(file);
-        if !folder.is_dir() {
-            let message = format!("the folder `{}` of the output does not exist", folder.display());
-            return Err(PathError::new(message, "make it first"));
-        }
+    outputs.iter().filter_map(|output| output.file.as_deref()).try_for_each(check_output)
+}
+
+fn check_output(file: &Path) -> Result<(), PathError> {
+    if file.is_dir() {
+        let message = format!("the output `{}` is a folder", file.display());
+        return Err(PathError::new(message, "name a file in it"));
+    }
+    let folder = folder_of(file);
+    if !folder.is_dir() {
+        let message = format!("the folder `{}` of the output does not exist", folder.display());
+        return Err(PathError::new(message, "make it first"));
     }
     Ok(())
 }

@@ -6,7 +6,8 @@ use std::collections::BTreeMap;
 use serde::Serialize;
 
 use super::{Message, Report};
-use crate::rules::{self, Finding, NetCount, PinKind};
+use crate::rules::{Finding, NetCount, PinKind};
+use crate::signoff::ledger;
 use crate::source::{SourceSet, Span};
 
 /// The report as JSON, indented, with a final line end.
@@ -20,6 +21,7 @@ pub fn render(report: &Report, sources: &SourceSet) -> String {
         findings: report.findings.iter().map(|finding| finding_out(finding, &place)).collect(),
         messages: report.messages.iter().map(|message| message_out(message, &place)).collect(),
         coverage: coverage_out(report, &place),
+        ledger: report.ledger.as_ref().map(ledger_out),
     };
     let mut text = serde_json::to_string_pretty(&document).unwrap_or_default();
     text.push('\n');
@@ -35,6 +37,14 @@ struct Document<'a> {
     findings: Vec<FindingOut<'a>>,
     messages: Vec<MessageOut<'a>>,
     coverage: CoverageOut<'a>,
+    ledger: Option<LedgerOut<'a>>,
+}
+
+#[derive(Serialize)]
+struct LedgerOut<'a> {
+    file: &'a str,
+    remaining: usize,
+    gone: &'a [ledger::Entry],
 }
 
 /// 1-based; columns count characters; the end is the first character behind the place.
@@ -80,6 +90,7 @@ struct FindingOut<'a> {
     fingerprint: &'a str,
     family: &'a str,
     signoff: Option<SignoffOut<'a>>,
+    known: bool,
 }
 
 #[derive(Serialize)]
@@ -198,10 +209,7 @@ fn finding_out<'a>(finding: &'a Finding, place: &impl Fn(Option<Span>) -> Option
     FindingOut {
         rule: finding.rule.name(),
         severity: finding.severity.name(),
-        verdict: match finding.verdict {
-            rules::Verdict::Proven => "proven",
-            rules::Verdict::Undecided => "undecided",
-        },
+        verdict: finding.verdict.name(),
         message: &finding.message,
         at: place(finding.at),
         trace: finding.trace.iter().map(|step| StepOut { at: place(step.at), text: &step.text }).collect(),
@@ -242,7 +250,12 @@ fn finding_out<'a>(finding: &'a Finding, place: &impl Fn(Option<Span>) -> Option
             by: signoff.by.as_deref(),
             until: signoff.until.as_deref(),
         }),
+        known: finding.known,
     }
+}
+
+fn ledger_out(used: &ledger::Use) -> LedgerOut<'_> {
+    LedgerOut { file: &used.file, remaining: used.remaining, gone: &used.gone }
 }
 
 fn values(values: &[(String, bool)]) -> BTreeMap<&str, u8> {

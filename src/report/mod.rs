@@ -12,6 +12,7 @@ mod waveform;
 use std::collections::BTreeMap;
 
 use crate::rules::{Finding, PinCoverage, Severity, Verdict};
+use crate::signoff::ledger;
 use crate::source::Span;
 
 /// All that a scan has to say.
@@ -19,11 +20,13 @@ use crate::source::Span;
 pub struct Report {
     /// Names of the analysed top modules, sorted.
     pub tops: Vec<String>,
-    /// Sorted by [`crate::rules::sort`]; signed-off findings are among them.
+    /// Sorted by [`crate::rules::sort`]; accepted findings are among them.
     pub findings: Vec<Finding>,
     /// What the front end wants to say beside the findings.
     pub messages: Vec<Message>,
     pub coverage: Coverage,
+    /// What the ledger did, when there is one.
+    pub ledger: Option<ledger::Use>,
 }
 
 /// Something worth knowing that is no finding: a duplicate module, an empty file.
@@ -79,9 +82,9 @@ impl Report {
             && coverage.pins.open_questions == 0
     }
 
-    /// Whether a finding that nobody signed off is at least as bad as `gate`.
+    /// Whether a finding that nobody accepted is at least as bad as `gate`.
     pub fn fails(&self, gate: Severity) -> bool {
-        self.findings.iter().any(|finding| finding.signoff.is_none() && finding.severity >= gate)
+        self.findings.iter().any(|finding| !finding.is_accepted() && finding.severity >= gate)
     }
 
     /// The exit code of the design's section 2: 1 findings at or above the gate, 3 incomplete, 0 otherwise.

@@ -6,6 +6,7 @@ use std::fmt::Write;
 use super::Report;
 use super::text::Style;
 use crate::rules::{PinKind, Severity};
+use crate::signoff::ledger;
 
 /// The most names listed of black boxes, benches and the like.
 const SHOWN_NAMES: usize = 8;
@@ -17,6 +18,9 @@ pub(super) fn render(report: &Report, style: &Style) -> String {
     let mut text = String::new();
     let coverage = &report.coverage;
     let _ = writeln!(text, "{}", findings(report, style));
+    if let Some(ledger) = &report.ledger {
+        let _ = writeln!(text, "{}", known(ledger));
+    }
     pins(report, &mut text);
     if coverage.loops > 0 {
         let _ = writeln!(text, "  combinational loops found: {}", coverage.loops);
@@ -49,7 +53,7 @@ pub(super) fn render(report: &Report, style: &Style) -> String {
 /// "1 error, 2 warnings; not shown: 3 notes; signed off: 1".
 fn findings(report: &Report, style: &Style) -> String {
     let open = |severity: Severity| {
-        report.findings.iter().filter(|finding| finding.signoff.is_none() && finding.severity == severity).count()
+        report.findings.iter().filter(|finding| !finding.is_accepted() && finding.severity == severity).count()
     };
     let messages = |severity: Severity| report.messages.iter().filter(|message| message.severity == severity).count();
     let mut shown = Vec::new();
@@ -70,6 +74,29 @@ fn findings(report: &Report, style: &Style) -> String {
     let signed_off = report.findings.iter().filter(|finding| finding.signoff.is_some()).count();
     if signed_off > 0 {
         let _ = write!(line, "; signed off: {signed_off}");
+    }
+    let known = report.findings.iter().filter(|finding| finding.known && finding.signoff.is_none()).count();
+    if known > 0 {
+        let _ = write!(line, "; known in the ledger: {known}");
+    }
+    line
+}
+
+/// "ledger known.toml: 12 entries remain, 2 are gone ...".
+fn known(ledger: &ledger::Use) -> String {
+    let remaining = match ledger.remaining {
+        1 => "1 entry remains".to_string(),
+        remaining => format!("{remaining} entries remain"),
+    };
+    let mut line = format!("  ledger {}: {remaining}", ledger.file);
+    match ledger.gone.as_slice() {
+        [] => {}
+        [one] => {
+            let _ = write!(line, ", 1 is gone (`{}`); drop it with `stillwire ledger prune`", one.net);
+        }
+        gone => {
+            let _ = write!(line, ", {} are gone; drop them with `stillwire ledger prune`", gone.len());
+        }
     }
     line
 }
@@ -101,7 +128,7 @@ fn pins(report: &Report, text: &mut String) {
 /// Whether the run passes, and why not.
 fn result(report: &Report, style: &Style) -> String {
     let gate = style.gate.name();
-    let failing = report.findings.iter().filter(|finding| finding.signoff.is_none() && finding.severity >= style.gate);
+    let failing = report.findings.iter().filter(|finding| !finding.is_accepted() && finding.severity >= style.gate);
     let failing = failing.count();
     let mut text = match failing {
         0 => format!("result: nothing at or above `{gate}`"),

@@ -2,6 +2,8 @@
 //! witness as a small waveform, what it does to the cells, the cure. Colours are the caller's choice. Everything that
 //! is shortened says by how much; the whole is in the JSON.
 
+use std::collections::HashMap;
+
 use codespan_reporting::diagnostic::{Diagnostic, Label, Severity as Level};
 use codespan_reporting::files::{Error, Files};
 use codespan_reporting::term::termcolor::Buffer;
@@ -35,6 +37,12 @@ const SHOWN_HAZARDS: usize = 6;
 /// With more held signals than this, such a line leaves their values to the JSON.
 const SHOWN_HELD: usize = 3;
 
+/// So many findings are shown in full, those of one family as one.
+const SHOWN_GROUPS: usize = 100;
+
+/// So many further nets of a family are named.
+const SHOWN_NETS: usize = 4;
+
 /// Columns of a wrapped note.
 const WIDTH: usize = 100;
 
@@ -46,8 +54,8 @@ pub fn render(report: &Report, sources: &SourceSet, style: &Style) -> String {
     let mut buffer = if style.colours { Buffer::ansi() } else { Buffer::no_color() };
     let config = Config { before_label_lines: 0, after_label_lines: 0, ..Config::default() };
     let files = Excerpts { sources };
-    let shown = report.findings.iter().filter(|finding| finding.signoff.is_none() && finding.severity >= style.show);
-    let findings = shown.map(|finding| of_finding(sources, finding));
+    let groups = families(report.findings.iter().filter(|one| !one.is_accepted() && one.severity >= style.show));
+    let findings = groups.iter().take(SHOWN_GROUPS).map(|group| of_group(sources, group));
     let messages = report.messages.iter().filter(|message| message.severity >= style.show);
     let messages = messages.map(|message| of_message(sources, message));
     for diagnostic in findings.chain(messages) {
@@ -55,8 +63,44 @@ pub fn render(report: &Report, sources: &SourceSet, style: &Style) -> String {
         let _ = term::emit(&mut buffer, &config, &files, &diagnostic);
     }
     let mut text = String::from_utf8_lossy(buffer.as_slice()).into_owned();
+    if let Some(rest) = groups.get(SHOWN_GROUPS..).filter(|rest| !rest.is_empty()) {
+        let left_out: usize = rest.iter().map(Vec::len).sum();
+        text.push_str(&format!(
+            "... and {left_out} more findings like these, not shown here; all are in every `--write` output. A ledger makes \
+             an old tree's findings known, so that only new ones are shown (see `stillwire ledger --help`).\n\n"
+        ));
+    }
     text.push_str(&summary::render(report, style));
     text
+}
+
+/// The findings by family, the worst and first of each in front, in the order in which the families first occur.
+fn families<'a>(findings: impl Iterator<Item = &'a Finding>) -> Vec<Vec<&'a Finding>> {
+    let mut groups: Vec<Vec<&Finding>> = Vec::new();
+    let mut known: HashMap<(&str, Severity), usize> = HashMap::new();
+    for finding in findings {
+        let group = *known.entry((&finding.family, finding.severity)).or_insert(groups.len());
+        match groups.get_mut(group) {
+            Some(group) => group.push(finding),
+            None => groups.push(vec![finding]),
+        }
+    }
+    groups
+}
+
+/// The first finding of a family, and the nets of the others.
+fn of_group(sources: &SourceSet, group: &[&Finding]) -> Diagnostic<FileId> {
+    let mut diagnostic = of_finding(sources, group[0]);
+    let rest = &group[1..];
+    if !rest.is_empty() {
+        let nets: Vec<String> = rest.iter().take(SHOWN_NETS).map(|finding| format!("  {}", finding.net)).collect();
+        let mut note = format!("the same on {} more:\n{}", rest.len(), nets.join("\n"));
+        if rest.len() > SHOWN_NETS {
+            note.push_str(&format!("\n  and {} more, all in the JSON output", rest.len() - SHOWN_NETS));
+        }
+        diagnostic.notes.push(note);
+    }
+    diagnostic
 }
 
 fn level(severity: Severity) -> Level {

@@ -36,7 +36,7 @@ pub fn say(diagnostic: &Diagnostic) -> Said {
     if rule == Rule::UnsupportedConstruct {
         notes.push("what depends on it was not analysed; the run is incomplete".to_string());
     }
-    let trace = diagnostic.also.iter().map(|(at, text)| TraceStep { at: Some(*at), text: text.clone() }).collect();
+    let trace = diagnostic.also.iter().map(|(at, text)| TraceStep::new(Some(*at), text)).collect();
     let identity = fingerprint::of_text(rule, &[&diagnostic.construct, &diagnostic.message]);
     let mut finding = plain(rule, severity, diagnostic.message.clone(), diagnostic.at, identity);
     finding.trace = trace;
@@ -80,5 +80,6 @@ pub(super) fn plain(rule: Rule, severity: Severity, message: String, at: Option<
         fingerprint: identity.fingerprint,
         family: identity.family,
         signoff: None,
+        known: false,
     }
 }

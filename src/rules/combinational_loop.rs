@@ -63,6 +63,7 @@ pub(super) fn finding(graph: &Graph, verdict: &LoopVerdict, endpoints: &BTreeSet
         fingerprint: identity.fingerprint,
         family: identity.family,
         signoff: None,
+        known: false,
     };
     if let Some(loss) = &verdict.loses_state {
         message.push_str(&format!("; a change of `{}` alone can lose the value", names::name(graph, loss.source)));
@@ -192,15 +193,13 @@ fn trace(graph: &Graph, ring: &[NodeId], at: Option<Span>) -> Vec<TraceStep> {
             Some(wire) => format!(", drives `{}`", names::name(graph, wire)),
             None => String::new(),
         };
-        steps.push(TraceStep { at: place, text: format!("{number}: {}{drives}", words::gate(graph, node)) });
+        steps.push(TraceStep::new(place, format!("{number}: {}{drives}", words::gate(graph, node))));
     }
     if steps.len() > SHOWN_STEPS {
         let left_out = steps.len() - SHOWN_STEPS;
         steps.truncate(SHOWN_STEPS);
-        steps.push(TraceStep {
-            at,
-            text: format!("and {} more on the way back here, not shown", words::count(left_out, "place")),
-        });
+        let text = format!("and {} more on the way back here, not shown", words::count(left_out, "place"));
+        steps.push(TraceStep::new(at, text));
     }
     steps
 }

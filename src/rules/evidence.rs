@@ -62,6 +62,7 @@ pub(super) fn finding(
         fingerprint: identity.fingerprint,
         family: identity.family,
         signoff: None,
+        known: false,
     };
     if let Some(lead) = hazards.first() {
         finding.severity = lead.severity;
@@ -76,7 +77,7 @@ pub(super) fn finding(
     } else {
         finding.message = format!("not decided: whether {} can glitch", subject.what);
         let done = if undriven { "declared" } else { "driven" };
-        finding.trace.push(TraceStep { at: finding.at, text: format!("`{net}` is {done} here") });
+        finding.trace.push(TraceStep::new(finding.at, format!("`{net}` is {done} here")));
     }
     finding.notes.extend(undecided(graph, verdict));
     if !undriven {
@@ -210,7 +211,8 @@ fn trace(graph: &Graph, target: NodeId, source: NodeId, paths: &Paths, at: Optio
         }
         for (letter, hop) in hops.into_iter().enumerate() {
             let letter = char::from(b'a' + (letter % 26) as u8);
-            steps.push(TraceStep { at: hop.at, text: format!("{}{letter}: {}", number + 1, hop.text) });
+            let text = format!("{}{letter}: {}", number + 1, hop.text);
+            steps.push(TraceStep { way: Some(number as u8 + 1), ..TraceStep::new(hop.at, text) });
         }
     }
     let meet = words::gate(graph, paths.meet);
@@ -236,14 +238,14 @@ fn trace(graph: &Graph, target: NodeId, source: NodeId, paths: &Paths, at: Optio
     let target_name = names::name(graph, target);
     let between = paths.tail.iter().filter(|&&node| node != paths.meet && counts_as_gate(graph, node)).count();
     if between == 0 && meet_place == at {
-        steps.push(TraceStep { at, text: joined });
+        steps.push(TraceStep::new(at, joined));
     } else {
-        steps.push(TraceStep { at: meet_place, text: joined });
+        steps.push(TraceStep::new(meet_place, joined));
         let way = match between {
             0 => "the pulse reaches".to_string(),
             _ => format!("{} further, the pulse reaches", words::count(between, "gate")),
         };
-        steps.push(TraceStep { at, text: format!("{way} `{target_name}`") });
+        steps.push(TraceStep::new(at, format!("{way} `{target_name}`")));
     }
     steps
 }
@@ -259,10 +261,10 @@ fn stem(graph: &Graph, source: NodeId, paths: &Paths) -> TraceStep {
     let wire = names::wire_of(graph, paths.stem);
     if wire.is_none() && !matches!(graph.kind(paths.stem), NodeKind::Source(_)) {
         let text = format!("the output of {} {does}", words::gate(graph, paths.stem));
-        return TraceStep { at: place(graph, paths.stem), text };
+        return TraceStep::new(place(graph, paths.stem), text);
     }
     let wire = wire.and_then(|wire| graph.span(wire));
-    TraceStep { at: wire.or_else(|| place(graph, paths.stem)), text: format!("`{name}`{also} {does}") }
+    TraceStep::new(wire.or_else(|| place(graph, paths.stem)), format!("`{name}`{also} {does}"))
 }
 
 /// A gate to the reader: wires do not count, an operator counts once, at its exit.

@@ -19,6 +19,10 @@ impl Severity {
             Severity::Error => "error",
         }
     }
+
+    pub fn from_name(name: &str) -> Option<Severity> {
+        [Severity::Note, Severity::Warning, Severity::Error].into_iter().find(|severity| severity.name() == name)
+    }
 }
 
 /// Every rule there is, each with a page `rules/<name>.md`.
@@ -73,11 +77,33 @@ pub enum Verdict {
     Undecided,
 }
 
+impl Verdict {
+    pub fn name(self) -> &'static str {
+        match self {
+            Verdict::Proven => "proven",
+            Verdict::Undecided => "undecided",
+        }
+    }
+
+    pub fn from_name(name: &str) -> Option<Verdict> {
+        [Verdict::Proven, Verdict::Undecided].into_iter().find(|verdict| verdict.name() == name)
+    }
+}
+
 /// A numbered place on the way of the change, or another place worth showing.
 #[derive(Clone, PartialEq, Eq, Debug)]
 pub struct TraceStep {
     pub at: Option<Span>,
     pub text: String,
+    /// The way of the change that this place is on, 1 or 2; `None` where both run, and where there are no ways.
+    pub way: Option<u8>,
+}
+
+impl TraceStep {
+    /// A place that is on no way by itself.
+    pub fn new(at: Option<Span>, text: impl Into<String>) -> Self {
+        Self { at, text: text.into(), way: None }
+    }
 }
 
 #[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug)]
@@ -198,4 +224,13 @@ pub struct Finding {
     /// The same without the place in the hierarchy: equal for this finding in every instance of its module.
     pub family: String,
     pub signoff: Option<Signoff>,
+    /// Whether the ledger has it.
+    pub known: bool,
+}
+
+impl Finding {
+    /// Whether somebody accepted it, by a sign-off or in the ledger: it is reported and fails nothing.
+    pub fn is_accepted(&self) -> bool {
+        self.signoff.is_some() || self.known
+    }
 }

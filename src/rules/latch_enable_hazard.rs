@@ -41,7 +41,7 @@ fn missing_assignments(graph: &Graph, uses: &[Use]) -> Vec<TraceStep> {
         0 => format!("no assignment to `{name}` here, so it is a latch"),
         _ => format!("no assignment to `{name}` and {more} more here, so they are latches"),
     };
-    places.into_iter().map(|(at, name, more)| TraceStep { at: Some(at), text: text(name, more) }).collect()
+    places.into_iter().map(|(at, name, more)| TraceStep::new(Some(at), text(name, more))).collect()
 }
 
 fn judge(graph: &Graph, uses: &[Use], kind: HazardKind) -> (Severity, String) {

@@ -69,7 +69,7 @@ fn finding(graph: &Graph, module: &str, boxes: &[&BlackBox], sensitive: &BTreeMa
         .iter()
         .take(SHOWN)
         .filter(|one| instance(one).span != at)
-        .map(|one| TraceStep { at: instance(one).span, text: format!("also `{}`", instance(one).path) })
+        .map(|one| TraceStep::new(instance(one).span, format!("also `{}`", instance(one).path)))
         .collect();
     if boxes.len() > SHOWN {
         finding.notes.push(format!("{} instances in all, {SHOWN} are shown", boxes.len()));

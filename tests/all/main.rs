@@ -13,6 +13,7 @@ mod fixtures;
 mod flatten;
 mod formula;
 mod graph;
+mod ledger;
 mod loops;
 mod operators;
 mod outside;

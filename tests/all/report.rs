@@ -97,7 +97,7 @@ fn reset_selector(covered: bool) -> (SourceSet, Report) {
     let graph = scene.builder.freeze();
     let Outcome { findings, pins, loops } = rules::run(&graph, &[], &Options::default());
     let coverage = Coverage { files_read: 1, modules_elaborated: 1, pins, loops, ..Coverage::default() };
-    let report = Report { tops: vec!["top".to_string()], findings, messages: Vec::new(), coverage };
+    let report = Report { tops: vec!["top".to_string()], findings, coverage, ..Report::default() };
     (scene.sources, report)
 }
 

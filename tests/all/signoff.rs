@@ -123,6 +123,7 @@ fn scene(text: &str) -> (SourceSet, Graph, Finding) {
         fingerprint: String::new(),
         family: String::new(),
         signoff: None,
+        known: false,
     };
     (sources, builder.freeze(), finding)
 }
