@@ -47,6 +47,10 @@ pub struct Input {
     /// A top module; may be repeated [default: every module that nobody instantiates]
     #[arg(long, value_name = "NAME")]
     pub top: Vec<String>,
+    /// Set a parameter of the top modules to a constant expression, a text in quotes, or a member of its enumeration by
+    /// name; may be repeated
+    #[arg(long, value_name = "NAME=VALUE", value_parser = parameter_value)]
+    pub set: Vec<(String, String)>,
     /// A folder to look for included files in; may be repeated
     #[arg(short = 'I', value_name = "DIR")]
     pub include: Vec<PathBuf>,
@@ -161,12 +165,23 @@ fn rule(text: &str) -> Result<Rule, String> {
     })
 }
 
+fn parameter_value(text: &str) -> Result<(String, String), String> {
+    match text.split_once('=') {
+        Some((name, value)) if is_name(name.trim()) => Ok((name.trim().to_string(), value.to_string())),
+        Some((name, _)) => Err(format!("`{name}` is no name of a parameter")),
+        None => Err("write it as NAME=VALUE, such as WIDTH=8".to_string()),
+    }
+}
+
+fn is_name(name: &str) -> bool {
+    let mut letters = name.chars();
+    letters.next().is_some_and(|first| first.is_ascii_alphabetic() || first == '_')
+        && letters.all(|letter| letter.is_ascii_alphanumeric() || matches!(letter, '_' | '$'))
+}
+
 fn macro_definition(text: &str) -> Result<(String, Option<String>), String> {
     let (name, value) = define(text);
-    let mut letters = name.chars();
-    let good = letters.next().is_some_and(|first| first.is_ascii_alphabetic() || first == '_')
-        && letters.all(|letter| letter.is_ascii_alphanumeric() || matches!(letter, '_' | '$'));
-    if good { Ok((name, value)) } else { Err(format!("`{name}` is no name of a macro")) }
+    if is_name(&name) { Ok((name, value)) } else { Err(format!("`{name}` is no name of a macro")) }
 }
 
 #[cfg(test)]

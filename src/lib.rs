@@ -18,6 +18,7 @@ pub mod rules;
 pub mod settings;
 pub mod signoff;
 pub mod source;
+pub mod spelling;
 pub mod syntax;
 
 use std::collections::BTreeSet;
@@ -34,6 +35,8 @@ pub struct Request {
     pub source: source::Request,
     /// Top modules; empty means every module that nobody instantiates.
     pub tops: Vec<String>,
+    /// Values for parameters of the tops, as names and the texts of expressions.
+    pub given: Vec<(String, String)>,
     /// The day on which sign-offs are judged.
     pub today: Date,
     /// Number of threads, 0 for one per core. It never changes the result.
@@ -129,7 +132,12 @@ fn front_end(
     require_input(request, &loaded)?;
     progress(Stage::Elaborating);
     let units = std::mem::take(&mut loaded.units);
-    let (design, more) = elaborate::elaborate(&units, &elaborate::Request { tops: request.tops.clone() });
+    let given = request.given.iter().map(|(name, value)| source::given(name, value, &mut loaded.sources));
+    let given = given.collect::<Result<Vec<_>, PathError>>()?;
+    let (design, more) = elaborate::elaborate(&units, &elaborate::Request { tops: request.tops.clone(), given });
+    if let Some(elaborate::Misuse { message, help }) = design.misuse.first() {
+        return Err(PathError::new(message, help));
+    }
     if cfg!(debug_assertions) {
         let violations = graph::check(&design.graph);
         assert!(violations.is_empty(), "the graph is unsound:\n{}", violations.join("\n"));
@@ -159,10 +167,7 @@ fn require_input(request: &Request, loaded: &Loaded) -> Result<(), PathError> {
     match request.tops.iter().find(|top| !names.contains(top.as_str())) {
         None => Ok(()),
         Some(top) => {
-            let nearest = names.iter().min_by_key(|name| settings::distance(top, name));
-            // A name with hardly a letter in common is no suggestion.
-            let close = |name: &&&str| settings::distance(top, name) <= 3.min(top.chars().count() / 2);
-            let help = match nearest.filter(close) {
+            let help = match spelling::nearest(top, names.iter().copied()) {
                 Some(nearest) => format!("did you mean `{nearest}`?"),
                 None => "check the spelling, and that its file is among the paths".to_string(),
             };

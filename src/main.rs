@@ -166,6 +166,7 @@ fn request(input: &Input, settings: &Settings) -> Request {
             exclude: Exclude { root: settings.folder.clone(), patterns: settings.exclude.clone() },
         },
         tops: if input.top.is_empty() { settings.top.clone() } else { input.top.clone() },
+        given: input.set.clone(),
         today: jiff::Zoned::now().date(),
         threads: input.threads.map_or(0, usize::from),
     }

@@ -10,6 +10,7 @@ use toml::{Table, Value};
 
 use crate::rules::Severity;
 use crate::source::PathError;
+use crate::spelling::distance;
 
 /// The name that is looked for.
 pub const FILE_NAME: &str = "stillwire.toml";
@@ -78,22 +79,6 @@ fn unknown_key(path: &Path, key: &str) -> PathError {
         format!("the keys are {}", KEYS.map(|key| format!("`{key}`")).join(", "))
     };
     PathError::new(format!("{}: unknown key `{key}`", path.display()), help)
-}
-
-/// How many letters must be put in, left out or exchanged to make one word of the other (Levenshtein).
-pub fn distance(left: &str, right: &str) -> usize {
-    let right: Vec<char> = right.chars().collect();
-    let mut row: Vec<usize> = (0..=right.len()).collect();
-    for (index, letter) in left.chars().enumerate() {
-        let mut diagonal = row[0];
-        row[0] = index + 1;
-        for (column, &other) in right.iter().enumerate() {
-            let exchanged = diagonal + usize::from(letter != other);
-            diagonal = row[column + 1];
-            row[column + 1] = exchanged.min(row[column] + 1).min(diagonal + 1);
-        }
-    }
-    row[right.len()]
 }
 
 /// One entry while it is read.
@@ -176,10 +161,5 @@ mod tests {
         assert!(error("gate = \"fatal\"").contains("the value of `gate` is wrong; write `\"error\"`"));
         assert!(error("top = 1").contains("write a text or a list of texts"));
         assert!(error("\ntop = ").contains("project/stillwire.toml:2: "));
-    }
-
-    #[test]
-    fn distances() {
-        assert_eq!((distance("", "abc"), distance("kitten", "sitting"), distance("top", "top")), (3, 3, 0));
     }
 }

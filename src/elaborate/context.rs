@@ -14,11 +14,11 @@ use super::ports::PortInfo;
 use super::scope::{Lazy, Scope, ScopeId};
 use super::statement::Point;
 use super::types::Type;
-use super::{Design, Request};
+use super::{Design, Misuse, Request};
 use crate::define_id;
 use crate::diagnostic::{Diagnostic, Kind};
 use crate::graph::{GraphBuilder, InstanceId, NetId, NodeId, Site};
-use crate::source::Span;
+use crate::source::{Given, Span};
 use crate::syntax::ast::{self, NetKind};
 
 /// A result whose error nobody has reported yet.
@@ -97,6 +97,9 @@ pub(super) struct Elaborator<'a> {
     pub external: HashMap<NodeId, NodeId>,
     pub pulls: HashMap<NodeId, bool>,
     pub diagnostics: Vec<Diagnostic>,
+    /// Values that the user set for parameters of the tops.
+    pub given: &'a [Given],
+    pub misuse: Vec<Misuse>,
     pub skipped: BTreeMap<String, usize>,
     /// `defparam` values by full hierarchical name.
     pub overrides: HashMap<String, super::scope::Constant>,
@@ -137,11 +140,12 @@ pub(super) struct Elaborator<'a> {
 
 impl<'a> Elaborator<'a> {
     /// Elaborates everything. See [`super::elaborate`].
-    pub fn run(units: &'a [ast::Unit], request: &Request) -> (Design, Vec<Diagnostic>) {
+    pub fn run(units: &'a [ast::Unit], request: &'a Request) -> (Design, Vec<Diagnostic>) {
         let mut diagnostics = Vec::new();
         let library = Library::new(units, &mut diagnostics);
         let tops = library.tops(&request.tops, &mut diagnostics);
-        let mut this = Self::new(library, diagnostics);
+        let mut this = Self::new(library, diagnostics, &request.given);
+        this.check_given(&request.given, &tops.tops);
         for unit in units {
             let outcome = this.declare_all(this.unit, &unit.items, Storage::Package);
             this.survive(outcome);
@@ -166,11 +170,12 @@ impl<'a> Elaborator<'a> {
             benches_left_out: tops.benches,
             skipped: this.skipped,
             opaque_memories: this.opaque_memories,
+            misuse: this.misuse,
         };
         (design, diagnostics)
     }
 
-    fn new(library: Library<'a>, diagnostics: Vec<Diagnostic>) -> Self {
+    fn new(library: Library<'a>, diagnostics: Vec<Diagnostic>, given: &'a [Given]) -> Self {
         let unit = Scope {
             parent: None,
             outer: None,
@@ -204,6 +209,8 @@ impl<'a> Elaborator<'a> {
             external: HashMap::new(),
             pulls: HashMap::new(),
             diagnostics,
+            given,
+            misuse: Vec::new(),
             skipped: BTreeMap::new(),
             overrides: HashMap::new(),
             pin_names: HashMap::new(),

@@ -76,7 +76,7 @@ pub(super) struct Slot {
 }
 
 /// Parameter overrides of an instance, worked out where the instance stands.
-type Overrides<'a> = HashMap<&'a str, &'a Expr>;
+pub(super) type Overrides<'a> = HashMap<&'a str, &'a Expr>;
 
 impl<'a> Elaborator<'a> {
     /// Elaborates a top module.
@@ -85,7 +85,8 @@ impl<'a> Elaborator<'a> {
         let works = self.works.len();
         self.here = self.unit;
         self.depth = 0;
-        match self.module(module, None, instance, &module.name.name, &Overrides::new(), &[]) {
+        let given = self.given_for(module);
+        match self.module(module, None, instance, &module.name.name, &given, &[]) {
             Ok(scope) => {
                 self.tops.push((module.name.name.clone(), scope));
                 self.top_ports(scope, instance);
@@ -181,6 +182,9 @@ impl<'a> Elaborator<'a> {
                             self.in_scope(outer, |this| this.constant(given))?
                         };
                         self.declare_lazy(scope, name, Lazy::Override { ty, dims, value });
+                    } else if let Some(given) = given {
+                        let value = self.given_value(scope, param, given)?;
+                        self.declare_lazy(scope, name, Lazy::Override { ty, dims, value });
                     } else if let Some(value) = default {
                         if in_header {
                             self.declare_lazy(scope, name, Lazy::Value { ty, dims, value });
@@ -191,7 +195,10 @@ impl<'a> Elaborator<'a> {
                 }
                 ParamKind::Type { default } => {
                     let given = overrides.get(name).filter(|_| !param.local).copied();
-                    if let (Some(given), Some(outer)) = (given, outer) {
+                    if let (Some(given), None) = (given, outer) {
+                        let ty = self.given_type(scope, name, given)?;
+                        self.declare_lazy(scope, name, Lazy::DataType(ty));
+                    } else if let (Some(given), Some(outer)) = (given, outer) {
                         match self.in_scope(outer, |this| this.named_type(given))? {
                             Some(ty) => self.declare_lazy(scope, name, Lazy::DataType(ty)),
                             None => return Err(wrong(format!("parameter `{name}` needs a type"), given.span)),

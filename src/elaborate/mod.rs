@@ -17,6 +17,7 @@ mod drivers;
 mod environment;
 mod expr;
 mod gates;
+mod given;
 mod hierarchy;
 mod library;
 mod pattern;
@@ -33,7 +34,10 @@ use std::collections::BTreeMap;
 
 use crate::diagnostic::{Diagnostic, Kind};
 use crate::graph::{Graph, GraphBuilder};
+use crate::source::Given;
 use crate::syntax::ast;
+
+pub use given::Misuse;
 
 /// Expressions nest as deep as the source; the stack of the elaborating thread must hold that. The sizes are tried in
 /// order, in MiB, because a system with little address space refuses the larger ones.
@@ -44,6 +48,8 @@ const STACK_MIB: [usize; 3] = [1024, 512, 256];
 pub struct Request {
     /// Names of the top modules; empty means every module that nobody instantiates.
     pub tops: Vec<String>,
+    /// Values for parameters of the tops; of two for one name the later holds.
+    pub given: Vec<Given>,
 }
 
 /// The elaborated design.
@@ -62,6 +68,8 @@ pub struct Design {
     pub skipped: BTreeMap<String, usize>,
     /// Hierarchical names of the memories above 65,536 bits that are opaque.
     pub opaque_memories: Vec<String>,
+    /// Mistakes in [`Request::given`]; the design is not what was asked for then.
+    pub misuse: Vec<Misuse>,
 }
 
 /// Elaborates what is reached from the tops. See the module documentation.
@@ -93,5 +101,6 @@ fn empty(request: &Request) -> Design {
         benches_left_out: Vec::new(),
         skipped: BTreeMap::new(),
         opaque_memories: Vec::new(),
+        misuse: Vec::new(),
     }
 }

@@ -330,7 +330,7 @@ impl<'a> Elaborator<'a> {
 }
 
 /// Whether a parameter's type says more than a sign.
-fn is_typed(ty: &DataType) -> bool {
+pub(super) fn is_typed(ty: &DataType) -> bool {
     !matches!(ty.kind, ast::DataTypeKind::Implicit) || !ty.packed.is_empty()
 }
 

@@ -9,6 +9,7 @@
 mod chunks;
 mod discover;
 mod filelist;
+mod given;
 mod include;
 mod load;
 mod macros;
@@ -24,6 +25,7 @@ mod texts;
 
 pub use discover::{Exclude, PathError};
 pub use filelist::{Environment, define};
+pub use given::{Given, given};
 pub use load::{Loaded, Progress, Request, load};
 pub use places::Places;
 pub use regions::Region;

@@ -24,7 +24,7 @@ fn run(text: &str, tops: &[&str]) -> Elaborated {
     let loaded = source::on_big_stacks(1, || source::load(&request, &|_| None, &|_, _| {}).expect("loads"));
     let loaded = loaded.expect("threads");
     assert_eq!(loaded.diagnostics, [], "the text parses");
-    let request = Request { tops: tops.iter().map(|top| top.to_string()).collect() };
+    let request = Request { tops: tops.iter().map(|top| top.to_string()).collect(), ..Request::default() };
     let (design, diagnostics) = elaborate(&loaded.units, &request);
     assert_eq!(check(&design.graph), Vec::<String>::new(), "the graph is sound");
     Elaborated { design, diagnostics, sources: loaded.sources }

@@ -12,6 +12,7 @@ mod explorer;
 mod fixtures;
 mod flatten;
 mod formula;
+mod given;
 mod graph;
 mod ledger;
 mod loops;

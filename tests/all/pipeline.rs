@@ -54,7 +54,10 @@ pub fn graph(path: &Path, top: &str) -> Graph {
     let work = || {
         let loaded = load(&request, &|_| None, &|_, _| {}).expect("the path exists");
         assert_eq!(loaded.files_failed, 0, "{:?}", loaded.diagnostics);
-        let (design, _) = elaborate::elaborate(&loaded.units, &elaborate::Request { tops: vec![top.to_string()] });
+        let (design, _) = elaborate::elaborate(
+            &loaded.units,
+            &elaborate::Request { tops: vec![top.to_string()], ..elaborate::Request::default() },
+        );
         assert_eq!((design.modules_failed, design.graph.black_boxes.len()), (0, 0));
         design.graph
     };
