@@ -57,6 +57,16 @@ impl<S: Solver> Clauses<S> {
         self.solver.difference(a, b)
     }
 
+    /// `a` where `select`, else `b`.
+    pub(super) fn mux(&mut self, select: Literal, a: Literal, b: Literal) -> Literal {
+        if a == b {
+            return a;
+        }
+        let upper = self.and(&[select, a]);
+        let lower = self.and(&[!select, b]);
+        self.or(&[upper, lower])
+    }
+
     /// The logic of `nodes`, which stand in topological order; `leaf` gives the values of leaves. Combinations without
     /// a row in a table count as 0.
     pub(super) fn copy(
@@ -74,7 +84,7 @@ impl<S: Solver> Clauses<S> {
                 NodeKind::Gate(kind) => self.gate(kind, &pins),
                 NodeKind::Table(table) => {
                     let promises = Promises::new(&graph.tables[table.index()]);
-                    self.table(&promises, &pins)
+                    self.first_fit(&promises, &pins).0
                 }
                 _ => pins.first().copied().unwrap_or(!self.one),
             });
@@ -92,22 +102,6 @@ impl<S: Solver> Clauses<S> {
             }
         };
         plain.inverted_if(kind.inverts())
-    }
-
-    fn table(&mut self, promises: &Promises, pins: &[Literal]) -> Literal {
-        let mut open = self.one;
-        let mut ones = Vec::new();
-        for (needs, value) in &promises.function {
-            let mut fits = vec![open];
-            fits.extend(needs.iter().zip(pins).filter_map(|(need, &pin)| match need {
-                Need::Value(value) => Some(pin.inverted_if(!value)),
-                Need::Still | Need::Nothing => None,
-            }));
-            let fits = self.and(&fits);
-            ones.extend(value.then_some(fits));
-            open = self.and(&[open, !fits]);
-        }
-        self.or(&ones)
     }
 
     /// The same in three values. A table answers as [`super::rails`] does.

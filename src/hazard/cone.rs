@@ -26,7 +26,7 @@ impl Edge {
         self.0 & 1 == 1
     }
 
-    fn inverted_if(self, inverted: bool) -> Self {
+    pub(super) fn inverted_if(self, inverted: bool) -> Self {
         Self(self.0 ^ u32::from(inverted))
     }
 

@@ -3,6 +3,13 @@
 //! own logic gives them. A target shows a hazard in such an event when one of the steps does, or when the second takes
 //! back what the first did.
 
+mod assume;
 mod assumptions;
+mod cells;
+mod encode;
+mod exact;
+mod fabric;
+mod shown;
 
 pub use assumptions::Assumptions;
+pub use shown::{Shown, shown};

@@ -20,6 +20,7 @@ mod rails;
 mod search;
 mod simulate;
 mod solver;
+mod symbolic;
 mod tables;
 mod verdict;
 mod wave;

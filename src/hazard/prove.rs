@@ -6,11 +6,12 @@ use super::HazardKind;
 use super::Undecided;
 use super::cone::{Cone, Op};
 use super::decide::KindSet;
-use super::encode::{Encoder, Symbolic};
+use super::encode::Encoder;
 use super::parity::Region;
 use super::search::{Found, Search, Subject, noise};
 use super::simulate::{self, Lanes, Response};
 use super::solver::{Answer, Batsat, Literal, Solver};
+use super::symbolic::Symbolic;
 
 /// Each kind by the values of the root before and after; the source rises.
 const ENDS: [(HazardKind, &[(bool, bool)]); 3] = [
@@ -60,10 +61,10 @@ pub(super) fn prove(search: &Search, subject: &mut Subject, mut effort: u64) -> 
 
         let mut ask = |encoder: &mut Encoder<Batsat>, assumptions: &[Literal], subject: &mut Subject| {
             let size = encoder.size.max(1) as u64;
-            let before = encoder.solver.conflicts();
+            let before = encoder.clauses.solver.conflicts();
             let most = (effort / size).max(LEAST_CONFLICTS).min(search.options.conflicts);
-            let answer = encoder.solver.solve(assumptions, most);
-            effort = effort.saturating_sub((encoder.solver.conflicts() - before).saturating_mul(size));
+            let answer = encoder.clauses.solver.solve(assumptions, most);
+            effort = effort.saturating_sub((encoder.clauses.solver.conflicts() - before).saturating_mul(size));
             match answer {
                 Answer::Unsatisfiable => encoder.forbid(assumptions),
                 Answer::Open => {}
@@ -145,7 +146,7 @@ impl Replay {
             }
             let seed = (cone.origin[node].index() as u64) << 24 | self.models << 2;
             let [a, b, c] = [1, 2, 3].map(|part| noise(!(seed | part)));
-            let model = encoder.free(node).map(|literal| encoder.solver.value(literal));
+            let model = encoder.free(node).map(|literal| encoder.clauses.solver.value(literal));
             self.values[node] = match model {
                 _ if node == self.source => simulate::NONE,
                 None => a,

@@ -14,6 +14,7 @@ mod flatten;
 mod formula;
 mod given;
 mod graph;
+mod launch;
 mod ledger;
 mod loops;
 mod operators;
