@@ -24,6 +24,8 @@ pub struct Cone {
     copies: BTreeMap<NodeId, NodeId>,
     cuts: BTreeMap<NodeId, NodeId>,
     originals: Vec<Option<NodeId>>,
+    /// Copies of nodes that never change.
+    statics: Vec<NodeId>,
 }
 
 /// The finished copy and the way back to the graph it was taken from.
@@ -71,6 +73,10 @@ impl Cone {
             copies: members.iter().enumerate().map(|(index, &node)| (node, NodeId::new(index))).collect(),
             cuts: read.iter().enumerate().map(|(index, &node)| (node, NodeId::new(members.len() + index))).collect(),
             originals: members.iter().chain(&read).map(|&node| Some(node)).collect(),
+            statics: (members.iter().chain(&read).enumerate())
+                .filter(|&(_, &node)| graph.is_static(node))
+                .map(|(index, _)| NodeId::new(index))
+                .collect(),
         };
         cone.copy(graph, &members, &read);
         cone
@@ -232,7 +238,8 @@ impl Cone {
             Vec::new(),
             Vec::new(),
             Vec::new(),
-        );
+        )
+        .with_static(self.statics);
         FrozenCone { graph, copies: self.copies, originals: self.originals }
     }
 }

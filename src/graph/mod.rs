@@ -41,6 +41,8 @@ pub struct Graph {
     pub cells: Vec<Cell>,
     pub ports: Vec<Port>,
     pub black_boxes: Vec<BlackBox>,
+    /// Per node: whether it is declared never to change. Empty while nothing is.
+    statics: Vec<bool>,
 }
 
 impl Graph {
@@ -60,7 +62,28 @@ impl Graph {
     ) -> Self {
         let fanin = Rows::new(&fanins);
         let fanout = fanin.transposed();
-        Self { kinds, fanin, fanout, sites, names, instances, nets, tables, operators, cells, ports, black_boxes }
+        let statics = Vec::new();
+        Self { kinds, fanin, fanout, sites, names, instances, nets, tables, operators, cells, ports, black_boxes, statics }
+    }
+
+    /// The same graph in which `nodes` never change: an assumption of the designer's. Such a node has an unknown, constant
+    /// value, whatever drives it.
+    pub fn with_static(mut self, nodes: impl IntoIterator<Item = NodeId>) -> Self {
+        for node in nodes {
+            if matches!(self.kinds[node.index()], NodeKind::Const(_)) {
+                continue;
+            }
+            if self.statics.is_empty() {
+                self.statics = vec![false; self.kinds.len()];
+            }
+            self.statics[node.index()] = true;
+        }
+        self
+    }
+
+    /// Whether the node is declared never to change.
+    pub fn is_static(&self, node: NodeId) -> bool {
+        self.statics.get(node.index()).copied().unwrap_or(false)
     }
 
     /// The number of nodes; ids run from 0 to this.

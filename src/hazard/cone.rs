@@ -41,7 +41,7 @@ impl Edge {
 pub(super) enum Op {
     /// The constant 0.
     Zero,
-    /// A source, a node on a loop (both may change), or an unknown constant (which may not).
+    /// A source, a node on a loop (both may change), an unknown constant or a node declared static (which may not).
     Free {
         changes: bool,
     },
@@ -90,6 +90,7 @@ impl Cone {
                 graph.fanin(node).iter().filter_map(|fanin| place[fanin.index()]).collect()
             };
             let edge = match (kind, pins.as_slice()) {
+                _ if graph.is_static(node) => parts.push(node, Op::Free { changes: false }, &[]),
                 _ if looped => parts.push(node, Op::Free { changes: true }, &[]),
                 (NodeKind::Source(_), _) => parts.push(node, Op::Free { changes: true }, &[]),
                 (NodeKind::Const(value), _) => parts.push(node, Op::Zero, &[]).inverted_if(value),

@@ -1,6 +1,7 @@
 //! The hazard decision: for a net and every source that reaches it, whether a change of that source alone can show a
 //! static-0, static-1 or dynamic hazard there, for arbitrary gate and wire delays.
 
+mod assumption;
 mod clauses;
 mod cone;
 mod cover;
@@ -8,6 +9,7 @@ mod decide;
 mod encode;
 mod enumerate;
 mod function;
+mod induction;
 pub mod launch;
 mod loops;
 mod options;
@@ -26,8 +28,10 @@ mod verdict;
 mod wave;
 mod witness;
 
+pub use assumption::{Assumption, AssumptionKind, Counterexample, Doubt, Proof, Standing};
 pub use cover::{Withheld, cover};
 pub use decide::decide;
+pub use induction::try_assumptions;
 pub use loops::{Behaviour, BehaviourKind, LoopVerdict, StateLoss, loops};
 pub use options::Options;
 pub use paths::paths;

@@ -8,7 +8,7 @@ use crate::graph::{Graph, NodeId, NodeKind};
 /// Fan-ins stand before the nodes they drive.
 pub(super) struct Order {
     pub(super) nodes: Vec<NodeId>,
-    /// Per entry of `nodes`: a node on a loop, whose fan-in is not followed. A bit of a net on a loop is not marked: it
+    /// Per entry of `nodes`: a node on a loop or one that is declared static, whose fan-in is not followed. A bit of a net on a loop is not marked: it
     /// passes the value of the gate that drives it, so that gate and net stay one.
     pub(super) looped: Vec<bool>,
 }
@@ -34,7 +34,8 @@ impl Order {
         let mut order = Self { nodes: Vec::new(), looped: Vec::new() };
         let mut path: Vec<(NodeId, usize)> = Vec::new();
         let cut = |node: NodeId| {
-            components.is_some_and(|components| components.component_of(node).is_some())
+            graph.is_static(node)
+                || components.is_some_and(|components| components.component_of(node).is_some())
                 && (graph.kind(node) != NodeKind::Wire || graph.kind(graph.root(node)) == NodeKind::Wire)
         };
         for &root in roots {
@@ -78,10 +79,12 @@ impl Order {
             if std::mem::replace(&mut seen[node.index()], true) {
                 continue;
             }
-            if matches!(graph.kind(node), NodeKind::Source(_)) {
+            if matches!(graph.kind(node), NodeKind::Source(_)) && !graph.is_static(node) {
                 sources.push(node);
             }
-            open.extend_from_slice(graph.fanin(node));
+            if !graph.is_static(node) {
+                open.extend_from_slice(graph.fanin(node));
+            }
         }
         sources.sort_unstable();
         sources

@@ -118,7 +118,8 @@ impl<'a> Evaluator<'a> {
 
 /// Whether a node takes its value from outside the logic.
 pub(super) fn is_leaf(graph: &Graph, node: NodeId) -> bool {
-    graph.fanin(node).is_empty() && !matches!(graph.kind(node), NodeKind::Const(_) | NodeKind::Table(_))
+    graph.is_static(node)
+        || graph.fanin(node).is_empty() && !matches!(graph.kind(node), NodeKind::Const(_) | NodeKind::Table(_))
 }
 
 fn gate(kind: GateKind, pins: &[Rails]) -> Rails {
