@@ -7,6 +7,8 @@
 // The types of the parser nest deeper than the default limit allows rustdoc to follow.
 #![recursion_limit = "512"]
 
+pub mod assumptions;
+pub mod cells;
 pub mod cli;
 pub mod diagnostic;
 pub mod elaborate;
@@ -21,12 +23,13 @@ pub mod source;
 pub mod spelling;
 pub mod syntax;
 
-use std::collections::BTreeSet;
+use std::collections::{BTreeMap, BTreeSet};
 
 use jiff::civil::Date;
 
 use diagnostic::{Diagnostic, Kind};
 use report::{Coverage, LeftOut, Report};
+use rules::{Rule, Severity};
 use source::{Environment, Loaded, PathError, SourceSet};
 
 /// What to analyse.
@@ -37,6 +40,10 @@ pub struct Request {
     pub tops: Vec<String>,
     /// Values for parameters of the tops, as names and the texts of expressions.
     pub given: Vec<(String, String)>,
+    /// What the settings declare about nets.
+    pub assumptions: Vec<assumptions::Declaration>,
+    /// Severities that all findings of a rule get.
+    pub severities: BTreeMap<Rule, Severity>,
     /// The day on which sign-offs are judged.
     pub today: Date,
     /// Number of threads, 0 for one per core. It never changes the result.
@@ -71,22 +78,51 @@ pub struct Scan {
 /// Paths, file lists or tops that lead nowhere: nothing was analysed.
 pub fn scan(request: &Request, environment: Environment<'_>, progress: Progress<'_>) -> Result<Scan, PathError> {
     on_big_stacks(request, || {
-        let (loaded, design, diagnostics) = front_end(request, environment, progress)?;
+        let (loaded, mut design, diagnostics) = front_end(request, environment, progress)?;
         progress(Stage::Deciding);
         let pragmas = signoff::collect(&loaded.sources);
         let (watches, unplaced) = signoff::watches(&design.graph, &loaded.sources, &pragmas.watches);
-        let outcome = rules::run(&design.graph, &watches, &hazard::Options::default());
+        let options = hazard::Options::default();
+        let assumed = resolved(request, &loaded, &design)?;
+        let assumed = assumptions::apply(&design.graph, &loaded.sources, assumed, &pragmas.assumptions, &options);
+        design.graph = design.graph.with_static(assumed.in_force.fixed.iter().copied());
+        let outcome = rules::run(&design.graph, &watches, &options);
         let mut report = report_on_input(&loaded, &design, diagnostics.iter().chain(&pragmas.diagnostics));
         report.coverage.pins = outcome.pins;
         report.coverage.loops = outcome.loops;
         report.findings.extend(outcome.findings);
         report.findings.extend(unplaced);
+        report.findings.extend(assumed.findings);
+        report.coverage.assumptions = assumed.listed;
         let applied =
             signoff::apply(&design.graph, &loaded.sources, &pragmas.signoffs, &mut report.findings, request.today);
         report.findings.extend(applied.findings);
         report.messages.extend(applied.messages);
+        for finding in &mut report.findings {
+            finding.severity = request.severities.get(&finding.rule).copied().unwrap_or(finding.severity);
+        }
+        report.coverage.severities = request.severities.clone();
         Ok(finished(report, loaded.sources))
     })
+}
+
+/// The nets that the assumptions of the settings speak about. A name that fits nothing is a mistake of usage, unless the net
+/// may lie in what could not be read.
+fn resolved(
+    request: &Request,
+    loaded: &Loaded,
+    design: &elaborate::Design,
+) -> Result<Vec<assumptions::Resolved>, PathError> {
+    let whole = loaded.files_failed == 0 && design.modules_failed == 0;
+    let mut resolved = Vec::new();
+    for declaration in &request.assumptions {
+        match assumptions::resolve(&design.graph, std::slice::from_ref(declaration)) {
+            Ok(found) => resolved.extend(found),
+            Err(error) if whole => return Err(error),
+            Err(_) => {}
+        }
+    }
+    Ok(resolved)
 }
 
 /// The gate graph as structural Verilog, or the fan-in of one net, with a report on what was read.

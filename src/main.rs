@@ -166,7 +166,10 @@ fn request(input: &Input, settings: &Settings) -> Request {
             exclude: Exclude { root: settings.folder.clone(), patterns: settings.exclude.clone() },
         },
         tops: if input.top.is_empty() { settings.top.clone() } else { input.top.clone() },
-        given: input.set.clone(),
+        // A value of the command line comes later and so holds.
+        given: settings.set.iter().chain(&input.set).cloned().collect(),
+        assumptions: settings.assumptions.clone(),
+        severities: settings.severities.clone(),
         today: jiff::Zoned::now().date(),
         threads: input.threads.map_or(0, usize::from),
     }

@@ -63,7 +63,21 @@ impl Graph {
         let fanin = Rows::new(&fanins);
         let fanout = fanin.transposed();
         let statics = Vec::new();
-        Self { kinds, fanin, fanout, sites, names, instances, nets, tables, operators, cells, ports, black_boxes, statics }
+        Self {
+            kinds,
+            fanin,
+            fanout,
+            sites,
+            names,
+            instances,
+            nets,
+            tables,
+            operators,
+            cells,
+            ports,
+            black_boxes,
+            statics,
+        }
     }
 
     /// The same graph in which `nodes` never change: an assumption of the designer's. Such a node has an unknown, constant

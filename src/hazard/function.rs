@@ -39,7 +39,10 @@ impl Function {
     pub(super) fn new(graph: &Graph, target: NodeId, options: &Options) -> Self {
         let mut evaluator = Evaluator::new(graph, &[target]);
         let variables = evaluator.leaves();
-        let written = variables.iter().map(|&node| matches!(graph.kind(node), NodeKind::Source(_)) || graph.is_static(node)).collect();
+        let written = variables
+            .iter()
+            .map(|&node| matches!(graph.kind(node), NodeKind::Source(_)) || graph.is_static(node))
+            .collect();
         let count = variables.len();
         let form = if count <= options.exhaustive_sources {
             let (mut zeros, mut ones) = (Vec::new(), Vec::new());

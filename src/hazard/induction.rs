@@ -312,9 +312,13 @@ impl<'a> Design<'a> {
         if order.looped.contains(&true) {
             return Standing::Trusted(Doubt::Loop);
         }
-        targets.extend(self.groups.iter().zip(usable).filter(|(_, usable)| **usable).flat_map(|(group, _)| {
-            group.assumption.nodes.iter().copied()
-        }));
+        targets.extend(
+            self.groups
+                .iter()
+                .zip(usable)
+                .filter(|(_, usable)| **usable)
+                .flat_map(|(group, _)| group.assumption.nodes.iter().copied()),
+        );
         let mut state = State::new();
         let values = frames.copy(&targets, &mut state);
         for (group, _) in self.groups.iter().zip(usable).filter(|(_, usable)| **usable) {

@@ -36,7 +36,7 @@ impl Order {
         let cut = |node: NodeId| {
             graph.is_static(node)
                 || components.is_some_and(|components| components.component_of(node).is_some())
-                && (graph.kind(node) != NodeKind::Wire || graph.kind(graph.root(node)) == NodeKind::Wire)
+                    && (graph.kind(node) != NodeKind::Wire || graph.kind(graph.root(node)) == NodeKind::Wire)
         };
         for &root in roots {
             if state[root.index()] != UNSEEN {

@@ -6,6 +6,7 @@ use std::collections::BTreeMap;
 use serde::Serialize;
 
 use super::{Message, Report};
+use crate::assumptions::{Listed, Origin};
 use crate::rules::{Finding, NetCount, PinKind};
 use crate::signoff::ledger;
 use crate::source::{SourceSet, Span};
@@ -158,6 +159,19 @@ struct CoverageOut<'a> {
     open_questions: usize,
     loops: Loops,
     left_out: LeftOutOut<'a>,
+    assumptions: Vec<AssumptionOut<'a>>,
+    severities: BTreeMap<&'static str, &'static str>,
+}
+
+#[derive(Serialize)]
+struct AssumptionOut<'a> {
+    kind: &'static str,
+    nets: &'a [String],
+    reason: &'a str,
+    standing: &'static str,
+    why: &'static str,
+    at: Option<Place>,
+    settings: Option<String>,
 }
 
 #[derive(Serialize)]
@@ -300,5 +314,23 @@ fn coverage_out<'a>(report: &'a Report, place: &impl Fn(Option<Span>) -> Option<
             benches: &coverage.left_out.benches,
             opaque_memories: &coverage.left_out.opaque_memories,
         },
+        assumptions: coverage.assumptions.iter().map(|assumption| assumption_out(assumption, place)).collect(),
+        severities: coverage.severities.iter().map(|(rule, severity)| (rule.name(), severity.name())).collect(),
+    }
+}
+
+fn assumption_out<'a>(assumption: &'a Listed, place: &impl Fn(Option<Span>) -> Option<Place>) -> AssumptionOut<'a> {
+    let (at, settings) = match &assumption.origin {
+        Origin::Comment(at) => (place(Some(*at)), None),
+        Origin::Settings { file, line } => (None, Some(format!("{file}:{line}"))),
+    };
+    AssumptionOut {
+        kind: assumption.kind.name(),
+        nets: &assumption.nets,
+        reason: &assumption.reason,
+        standing: assumption.standing(),
+        why: assumption.why(),
+        at,
+        settings,
     }
 }

@@ -11,7 +11,8 @@ mod waveform;
 
 use std::collections::BTreeMap;
 
-use crate::rules::{Finding, PinCoverage, Severity, Verdict};
+use crate::assumptions::Listed;
+use crate::rules::{Finding, PinCoverage, Rule, Severity, Verdict};
 use crate::signoff::ledger;
 use crate::source::Span;
 
@@ -55,6 +56,10 @@ pub struct Coverage {
     pub pins: PinCoverage,
     pub loops: usize,
     pub left_out: LeftOut,
+    /// What the designer declared about nets, and how it stands to the design.
+    pub assumptions: Vec<Listed>,
+    /// Rules whose severity the settings fix.
+    pub severities: BTreeMap<Rule, Severity>,
 }
 
 /// What was passed over on purpose.

@@ -5,6 +5,7 @@ use std::fmt::Write;
 
 use super::Report;
 use super::text::Style;
+use crate::assumptions::Listed;
 use crate::rules::{PinKind, Severity};
 use crate::signoff::ledger;
 
@@ -45,6 +46,9 @@ pub(super) fn render(report: &Report, style: &Style) -> String {
     if !left_out.regions.is_empty() {
         let _ = writeln!(text, "  translate_off regions left out: {}", left_out.regions.len());
     }
+    assumptions(report, &mut text);
+    let severities = coverage.severities.iter().map(|(rule, severity)| format!("{} {}", rule.name(), severity.name()));
+    list("severities fixed by the settings", &severities.collect::<Vec<_>>(), &mut text);
     let _ = writeln!(text, "{}", result(report, style));
     let _ = writeln!(text, "{CAUTION}");
     text
@@ -123,6 +127,32 @@ fn pins(report: &Report, text: &mut String) {
     line("together", pins.total());
     // What was not asked is no less worth saying than what was not read.
     text.push_str("  asked of each: whether a change of one signal alone can glitch it, not of several together\n");
+}
+
+/// What the verdicts rest on besides the design; those taken on trust come first.
+fn assumptions(report: &Report, text: &mut String) {
+    let mut listed: Vec<&Listed> = report.coverage.assumptions.iter().collect();
+    if listed.is_empty() {
+        return;
+    }
+    let count = |standing: &str| listed.iter().filter(|one| one.standing() == standing).count();
+    let (checked, trusted, contradicted) = (count("checked"), count("trusted"), count("contradicted"));
+    let _ = write!(text, "  assumptions: {trusted} taken on trust, {checked} checked");
+    if contradicted > 0 {
+        let _ = write!(text, ", {contradicted} contradicted and not used");
+    }
+    text.push('\n');
+    listed.sort_by_key(|one| ["trusted", "contradicted", "checked"].iter().position(|word| *word == one.standing()));
+    for one in listed.iter().take(SHOWN_NAMES) {
+        let nets = match one.nets.as_slice() {
+            [first, rest @ ..] if rest.len() > 1 => format!("{first} and {} more", rest.len()),
+            nets => nets.join(" and "),
+        };
+        let _ = writeln!(text, "    {} {nets}; {}; \"{}\"", one.kind.name(), one.why(), one.reason);
+    }
+    if listed.len() > SHOWN_NAMES {
+        let _ = writeln!(text, "    and {} more, all of them in the JSON", listed.len() - SHOWN_NAMES);
+    }
 }
 
 /// Whether the run passes, and why not.

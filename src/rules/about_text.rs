@@ -4,7 +4,9 @@
 
 use super::finding::{Finding, Rule, Severity, TraceStep, Verdict};
 use super::fingerprint::{self, Identity};
+use super::names;
 use crate::diagnostic::{Diagnostic, Kind};
+use crate::graph::{Graph, NetId, NodeId};
 use crate::report::Message;
 use crate::source::Span;
 
@@ -57,6 +59,24 @@ pub(crate) fn bookkeeping(
     let mut finding = plain(rule, severity, message, Some(at), identity);
     finding.notes.push(format!("to do: {cure}"));
     finding
+}
+
+/// A finding that is about a declared net and not about hazards on it.
+pub(crate) fn about_net(graph: &Graph, rule: Rule, severity: Severity, net: NetId, message: String) -> Finding {
+    let declared = &graph.nets[net.index()];
+    let instance = &graph.instances[declared.instance.index()].path;
+    let name = format!("{instance}.{}", declared.name);
+    let identity = fingerprint::of_net(graph, rule, net, &name);
+    let mut finding = plain(rule, severity, message, Some(declared.span), identity);
+    finding.declared = Some(declared.span);
+    finding.instance = instance.clone();
+    finding.net = name;
+    finding
+}
+
+/// What the reader calls a node.
+pub(crate) fn net_name(graph: &Graph, node: NodeId) -> String {
+    names::name(graph, node)
 }
 
 /// A finding that is about a text and not about a net.

@@ -37,10 +37,11 @@ pub enum Rule {
     SignoffStale,
     SignoffExpired,
     UnsupportedConstruct,
+    AssumptionContradicted,
 }
 
 impl Rule {
-    pub const ALL: [Rule; 9] = [
+    pub const ALL: [Rule; 10] = [
         Rule::CombinationalLoop,
         Rule::ReconvergentInversion,
         Rule::SetResetHazard,
@@ -50,6 +51,7 @@ impl Rule {
         Rule::SignoffStale,
         Rule::SignoffExpired,
         Rule::UnsupportedConstruct,
+        Rule::AssumptionContradicted,
     ];
 
     pub fn name(self) -> &'static str {
@@ -63,6 +65,7 @@ impl Rule {
             Rule::SignoffStale => "signoff-stale",
             Rule::SignoffExpired => "signoff-expired",
             Rule::UnsupportedConstruct => "unsupported-construct",
+            Rule::AssumptionContradicted => "assumption-contradicted",
         }
     }
 

@@ -10,7 +10,7 @@ use std::collections::hash_map::Entry;
 
 use super::Rule;
 use super::names;
-use crate::graph::{Graph, InstanceId, NodeId, NodeKind, SourceKind, Symbol};
+use crate::graph::{Graph, InstanceId, NetId, NodeId, NodeKind, SourceKind, Symbol};
 
 /// FNV-1a with 128 bits (Fowler, Noll, Vo; parameters of RFC 9923): small, stable and without a key.
 #[derive(Clone, Copy)]
@@ -67,6 +67,14 @@ pub(super) fn of_cone(graph: &Graph, rule: Rule, net: &str, roots: &[NodeId]) ->
 pub(crate) fn of_text(rule: Rule, texts: &[&str]) -> Identity {
     let hex = texts.iter().fold(Fnv::new().text(rule.name()), |hash, text| hash.text(text)).hex();
     Identity { fingerprint: hex.clone(), family: hex }
+}
+
+/// The identity of a finding that is about a declared net called `name`, whatever drives it.
+pub(super) fn of_net(graph: &Graph, rule: Rule, net: NetId, name: &str) -> Identity {
+    let net = &graph.nets[net.index()];
+    let within = format!("{}.{}", module_path(graph, net.instance), net.name);
+    let family = Fnv::new().text(rule.name()).text(&within).hex();
+    Identity { fingerprint: Fnv::new().text(rule.name()).text(name).hex(), family }
 }
 
 /// The name of a node as its module's text has it: the module, the generate blocks without their indices, the net.

@@ -28,8 +28,8 @@ use crate::graph::{Graph, NetId, NodeId, PortDirection};
 use crate::hazard::{self, Options, TargetVerdict};
 use crate::source::Span;
 
-pub(crate) use about_text::bookkeeping;
 pub use about_text::{Said, say};
+pub(crate) use about_text::{about_net, bookkeeping, net_name};
 pub use coverage::{NetCount, PinCoverage};
 pub use finding::{CoverText, Finding, Hazard, LoopText, Pin, PinKind, Rule, Severity, Signoff, TraceStep, Verdict};
 pub use pages::page;

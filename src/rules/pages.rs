@@ -13,6 +13,7 @@ pub fn page(rule: Rule) -> &'static str {
         Rule::SignoffInvalid => include_str!("../../rules/signoff-invalid.md"),
         Rule::SignoffStale => include_str!("../../rules/signoff-stale.md"),
         Rule::SignoffExpired => include_str!("../../rules/signoff-expired.md"),
+        Rule::AssumptionContradicted => include_str!("../../rules/assumption-contradicted.md"),
         Rule::UnsupportedConstruct => include_str!("../../rules/unsupported-construct.md"),
     }
 }

@@ -1,5 +1,6 @@
 //! Sign-off: what the designer says in comments about findings. `// stillwire: signoff RULE[, RULE] "reason" [by NAME]
-//! [until YYYY-MM-DD]` accepts findings, `// stillwire: watch "reason"` marks a net that must not glitch. Comments are
+//! [until YYYY-MM-DD]` accepts findings, `// stillwire: watch "reason"` marks a net that must not glitch, `// stillwire:
+//! static "reason"` and its sisters declare what [`crate::assumptions`] makes use of. Comments are
 //! found in the original texts by a scanner that knows strings and block comments, so that neither a string nor
 //! commented-out code can suppress anything. Findings of the time before the tool was adopted stand in the ledger instead.
 //!
@@ -12,5 +13,5 @@ mod pragma;
 mod watch;
 
 pub use apply::{Applied, apply};
-pub use pragma::{Collected, SignoffPragma, WatchPragma, collect};
-pub use watch::watches;
+pub use pragma::{AssumptionPragma, Collected, SignoffPragma, WatchPragma, collect};
+pub use watch::{declared_on, watches};

@@ -1,10 +1,11 @@
-//! The two comments that Stillwire understands, from text to data. The grammar is small and strict: what deviates is an
+//! The comments that Stillwire understands, from text to data. The grammar is small and strict: what deviates is an
 //! error with a place and takes no effect, because a sign-off that is misread could hide a defect.
 
 use jiff::civil::Date;
 
 use super::comments::{Comment, comments};
 use crate::diagnostic::{Diagnostic, Kind};
+use crate::hazard::AssumptionKind;
 use crate::rules::{Rule, Signoff};
 use crate::source::{FileId, SourceFile, SourceSet, Span};
 
@@ -29,11 +30,22 @@ pub struct WatchPragma {
     pub reason: String,
 }
 
+/// `// stillwire: static ...` and its sisters, understood.
+#[derive(Clone, PartialEq, Eq, Debug)]
+pub struct AssumptionPragma {
+    pub at: Span,
+    /// The line of the declaration it speaks about, 1-based.
+    pub line: usize,
+    pub kind: AssumptionKind,
+    pub reason: String,
+}
+
 /// Everything that the comments of all files say.
 #[derive(Clone, PartialEq, Eq, Debug, Default)]
 pub struct Collected {
     pub signoffs: Vec<SignoffPragma>,
     pub watches: Vec<WatchPragma>,
+    pub assumptions: Vec<AssumptionPragma>,
     /// One per comment that was meant for us and is not understood.
     pub diagnostics: Vec<Diagnostic>,
 }
@@ -71,12 +83,14 @@ fn collect_file(file: &SourceFile, collected: &mut Collected) {
         match parsed {
             Ok(Parsed::Signoff(signoff)) => collected.signoffs.push(signoff),
             Ok(Parsed::Watch(watch)) => collected.watches.push(watch),
+            Ok(Parsed::Assumption(assumption)) => collected.assumptions.push(assumption),
             Err(why) => {
                 let message = format!("{why}; the comment has no effect");
                 let diagnostic = Diagnostic::new(Kind::SignoffInvalid, "sign-off comment", message, Some(at))
                     .with_help(
                         "write `// stillwire: signoff RULE[, RULE] \"reason\" [by NAME] [until YYYY-MM-DD]`\n  \
-                         or `// stillwire: watch \"reason\"`",
+                         or `// stillwire: watch \"reason\"`,\n  or `// stillwire: static \"reason\"`, likewise `one-hot`, \
+                         `mutually-exclusive`, `one-bit-changing`",
                     );
                 collected.diagnostics.push(diagnostic);
             }
@@ -97,7 +111,10 @@ fn body<'a>(comment: &Comment<'a>) -> Option<Result<&'a str, String>> {
     let rest = lower.strip_prefix("stillwire")?;
     let command = rest.trim_start_matches([' ', '\t', ':', '-', ',']);
     let meant = rest.trim_start().starts_with(':')
-        || ["signoff", "sign-off", "watch"].iter().any(|word| command.split_whitespace().next() == Some(*word));
+        || ["signoff", "sign-off", "watch"]
+            .into_iter()
+            .chain(AssumptionKind::ALL.iter().map(|kind| kind.name()))
+            .any(|word| command.split_whitespace().next() == Some(word));
     if !meant {
         return None;
     }
@@ -111,22 +128,32 @@ fn body<'a>(comment: &Comment<'a>) -> Option<Result<&'a str, String>> {
 enum Parsed {
     Signoff(SignoffPragma),
     Watch(WatchPragma),
+    Assumption(AssumptionPragma),
 }
 
 fn parse(body: &str, at: Span, line: usize) -> Result<Parsed, String> {
     let (command, rest) = body.split_once(char::is_whitespace).unwrap_or((body, ""));
     match command {
         "signoff" => parse_signoff(rest.trim(), at, line).map(Parsed::Signoff),
-        "watch" => {
-            let (before, reason, after) = quoted(rest)?;
-            if !before.is_empty() || !after.is_empty() {
-                return Err("`watch` takes a reason in double quotes and nothing else".to_string());
-            }
-            Ok(Parsed::Watch(WatchPragma { at, line, reason }))
-        }
+        "watch" => Ok(Parsed::Watch(WatchPragma { at, line, reason: reason_alone(command, rest)? })),
         "" => Err("a command is missing".to_string()),
-        other => Err(format!("there is no command `{other}`")),
+        other => match AssumptionKind::from_name(other) {
+            Some(kind) => {
+                let reason = reason_alone(command, rest)?;
+                Ok(Parsed::Assumption(AssumptionPragma { at, line, kind, reason }))
+            }
+            None => Err(format!("there is no command `{other}`")),
+        },
     }
+}
+
+/// The reason of a command that takes nothing else.
+fn reason_alone(command: &str, rest: &str) -> Result<String, String> {
+    let (before, reason, after) = quoted(rest)?;
+    if !before.is_empty() || !after.is_empty() {
+        return Err(format!("`{command}` takes a reason in double quotes and nothing else"));
+    }
+    Ok(reason)
 }
 
 fn parse_signoff(text: &str, at: Span, line: usize) -> Result<SignoffPragma, String> {

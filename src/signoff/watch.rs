@@ -11,13 +11,7 @@ use crate::source::{FileId, SourceSet};
 /// marks nothing although its file was analysed, because a net that is thought to be watched and is not is worse than
 /// none.
 pub fn watches(graph: &Graph, sources: &SourceSet, pragmas: &[WatchPragma]) -> (Vec<Watch>, Vec<Finding>) {
-    let mut declared: BTreeMap<(FileId, usize), Vec<NetId>> = BTreeMap::new();
-    if !pragmas.is_empty() {
-        for (index, net) in graph.nets.iter().enumerate() {
-            let line = sources.file(net.span.file).line_column(net.span.start).0;
-            declared.entry((net.span.file, line)).or_default().push(NetId::new(index));
-        }
-    }
+    let declared = if pragmas.is_empty() { BTreeMap::new() } else { declared_on(graph, sources) };
     let analysed = analysed_files(graph);
     let mut watches = Vec::new();
     let mut findings = Vec::new();
@@ -38,6 +32,16 @@ pub fn watches(graph: &Graph, sources: &SourceSet, pragmas: &[WatchPragma]) -> (
         }
     }
     (watches, findings)
+}
+
+/// The nets declared on each line.
+pub fn declared_on(graph: &Graph, sources: &SourceSet) -> BTreeMap<(FileId, usize), Vec<NetId>> {
+    let mut declared: BTreeMap<(FileId, usize), Vec<NetId>> = BTreeMap::new();
+    for (index, net) in graph.nets.iter().enumerate() {
+        let line = sources.file(net.span.file).line_column(net.span.start).0;
+        declared.entry((net.span.file, line)).or_default().push(NetId::new(index));
+    }
+    declared
 }
 
 /// The files that something in the graph comes from. Comments elsewhere cannot be judged.

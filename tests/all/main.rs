@@ -1,5 +1,6 @@
 //! The one integration binary: fixtures, end-to-end runs and checks against outside references.
 
+mod assumptions;
 mod constructs;
 mod convert;
 mod cores;

@@ -67,5 +67,6 @@ pages! {
     signoff_invalid SignoffInvalid
     signoff_stale SignoffStale
     signoff_expired SignoffExpired
+    assumption_contradicted AssumptionContradicted
     unsupported_construct UnsupportedConstruct
 }
