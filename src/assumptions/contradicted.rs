@@ -17,7 +17,7 @@ pub(super) fn finding(graph: &Graph, resolved: &Resolved, listed: &Listed, examp
     let mut finding = about_net(graph, Rule::AssumptionContradicted, Severity::Error, resolved.first, message);
     let place = match &listed.origin {
         Origin::Comment(at) => {
-            finding.trace.push(TraceStep { at: Some(*at), text: "assumed here".to_string() });
+            finding.trace.push(TraceStep::new(Some(*at), "assumed here"));
             String::new()
         }
         Origin::Settings { file, line } => format!(" ({file}:{line})"),
