@@ -116,9 +116,10 @@ pub fn parse(text: &str, path: &Path) -> Result<Settings, PathError> {
 }
 
 type Lines = Vec<usize>;
+type Defines = Vec<(String, Option<String>)>;
 
 /// A list of `NAME` and `NAME=VALUE`, or a table of names and values.
-fn defines(entry: &Entry<'_>) -> Result<(Vec<(String, Option<String>)>, Lines), PathError> {
+fn defines(entry: &Entry<'_>) -> Result<(Defines, Lines), PathError> {
     let DeValue::Table(table) = entry.value else {
         let lines = entry.lines()?;
         return Ok(lines.into_iter().map(|(text, line)| (crate::source::define(&text), line)).unzip());
