@@ -72,7 +72,7 @@ pub struct Input {
 pub struct Scan {
     #[command(flatten)]
     pub input: Input,
-    /// Write the findings to a file as well, or to standard output with `-`; FORMAT is json; may be repeated
+    /// Write the findings to a file as well, or to standard output with `-`; FORMAT is json or sarif; may be repeated
     #[arg(long, value_name = "FORMAT:FILE", value_parser = output)]
     pub write: Vec<Output>,
     /// Fail only on findings that are not in this ledger (see `stillwire ledger write`)
@@ -133,7 +133,11 @@ impl From<Level> for Severity {
 #[derive(Clone, Copy, PartialEq, Eq, Debug)]
 pub enum Format {
     Json,
+    Sarif,
 }
+
+/// The formats with their names.
+const FORMATS: [(&str, Format); 2] = [("json", Format::Json), ("sarif", Format::Sarif)];
 
 /// One `--write`.
 #[derive(Clone, PartialEq, Eq, Debug)]
@@ -147,9 +151,9 @@ fn output(text: &str) -> Result<Output, String> {
     let Some((format, file)) = text.split_once(':') else {
         return Err("write it as FORMAT:FILE, such as json:findings.json".to_string());
     };
-    let format = match format {
-        "json" => Format::Json,
-        other => return Err(format!("the format `{other}` is not known; there is json")),
+    let Some(&(_, format)) = FORMATS.iter().find(|(name, _)| *name == format) else {
+        let names = FORMATS.map(|(name, _)| name).join(", ");
+        return Err(format!("the format `{format}` is not known; there are {names}"));
     };
     match file {
         "" => Err("the file is missing; `-` is standard output".to_string()),

@@ -10,7 +10,7 @@ use std::time::Duration;
 use clap::Parser;
 use indicatif::{ProgressBar, ProgressDrawTarget, ProgressStyle};
 use stillwire::cli::{self, Cli, Command, Format, Input, Output};
-use stillwire::report::{json, text};
+use stillwire::report::{json, sarif, text};
 use stillwire::rules::{self, Severity};
 use stillwire::settings::{self, Settings};
 use stillwire::signoff::ledger::Ledger;
@@ -64,6 +64,7 @@ fn scan(arguments: &cli::Scan) -> Result<u8, PathError> {
     for output in &arguments.write {
         let rendered = match output.format {
             Format::Json => json::render(&scan.report, &scan.sources),
+            Format::Sarif => sarif::render(&scan.report, &scan.sources),
         };
         match &output.file {
             None => print(&rendered),

@@ -5,6 +5,7 @@
 pub mod flatten;
 mod held;
 pub mod json;
+pub mod sarif;
 mod summary;
 pub mod text;
 mod waveform;

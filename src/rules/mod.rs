@@ -32,7 +32,7 @@ pub use about_text::{Said, say};
 pub(crate) use about_text::{about_net, bookkeeping, net_name};
 pub use coverage::{NetCount, PinCoverage};
 pub use finding::{CoverText, Finding, Hazard, LoopText, Pin, PinKind, Rule, Severity, Signoff, TraceStep, Verdict};
-pub use pages::page;
+pub use pages::{page, summary};
 
 /// A net that the designer marked with `// stillwire: watch`.
 #[derive(Clone, PartialEq, Eq, Debug)]

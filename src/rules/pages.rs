@@ -2,6 +2,12 @@
 
 use super::Rule;
 
+/// What a rule finds, in the words of its page's first paragraph.
+pub fn summary(rule: Rule) -> String {
+    let paragraph = page(rule).split("\n\n").find_map(|paragraph| paragraph.strip_prefix("**What.** "));
+    paragraph.unwrap_or_default().replace('\n', " ")
+}
+
 /// The page of a rule as Markdown. Every example in it is tested in both directions.
 pub fn page(rule: Rule) -> &'static str {
     match rule {

@@ -29,6 +29,8 @@ mod reading;
 mod report;
 mod robustness;
 mod rule_pages;
+mod sarif;
+
 mod signoff;
 mod simulator;
 mod sources;
