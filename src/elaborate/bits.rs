@@ -31,6 +31,18 @@ pub(super) struct Guarded {
     pub data: Bit,
     /// The statement that leaves the bit unassigned when its condition does not hold.
     pub from: Option<Span>,
+    /// What was decided before anything else, when that makes the bit a constant.
+    pub preset: Option<Preset>,
+}
+
+/// The form of an asynchronous control: while `condition` has the value `when` the bit is the constant `value`, otherwise it
+/// is `rest`, which is only there at times.
+#[derive(Clone, Copy, PartialEq, Eq, Debug)]
+pub(super) struct Preset {
+    pub condition: NodeId,
+    pub when: bool,
+    pub value: Bit,
+    pub rest: Bit,
 }
 
 impl Bit {
@@ -198,11 +210,11 @@ impl Elaborator<'_> {
             Bit::Held if held => (Bit::Zero, None, None),
             Bit::Z if !held => (Bit::Zero, None, None),
             Bit::Partial(index) if held => {
-                let Guarded { enable, data, from } = self.guarded[index as usize];
+                let Guarded { enable, data, from, .. } = self.guarded[index as usize];
                 (enable, Some(data), from)
             }
             Bit::Tri(index) if !held => {
-                let Guarded { enable, data, from } = self.guarded[index as usize];
+                let Guarded { enable, data, from, .. } = self.guarded[index as usize];
                 (enable, Some(data), from)
             }
             other => (Bit::One, Some(other), None),
@@ -218,7 +230,19 @@ impl Elaborator<'_> {
             (Some(data), None) | (None, Some(data)) => data,
             (None, None) => return then,
         };
-        self.guard(enable, data, from_a.or(from_b).or(site.span), held)
+        let bit = self.guard(enable, data, from_a.or(from_b).or(site.span), held);
+        if let (Bit::Partial(index), Bit::Node(condition)) = (bit, condition) {
+            self.guarded[index as usize].preset = match (then, otherwise) {
+                (Bit::Zero | Bit::One, Bit::Partial(_)) => {
+                    Some(Preset { condition, when: true, value: then, rest: otherwise })
+                }
+                (Bit::Partial(_), Bit::Zero | Bit::One) => {
+                    Some(Preset { condition, when: false, value: otherwise, rest: then })
+                }
+                _ => None,
+            };
+        }
+        bit
     }
 
     /// A bit that is `data` while `enable` is 1 and otherwise held or undriven.
@@ -229,7 +253,7 @@ impl Elaborator<'_> {
             Bit::Zero => Bit::Z,
             _ => {
                 let index = self.guarded.len() as u32;
-                self.guarded.push(Guarded { enable, data, from });
+                self.guarded.push(Guarded { enable, data, from, preset: None });
                 if held { Bit::Partial(index) } else { Bit::Tri(index) }
             }
         }

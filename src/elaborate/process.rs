@@ -5,7 +5,7 @@
 use std::collections::{BTreeMap, BTreeSet, HashMap, HashSet};
 use std::rc::Rc;
 
-use super::bits::Bit;
+use super::bits::{Bit, Preset};
 use super::context::{Elaborator, Outcome, Storage, VariableId, unsupported};
 use super::drivers::{Pending, PendingKind, Rung};
 use super::environment::{Environment, Mode};
@@ -123,16 +123,11 @@ impl<'a> Elaborator<'a> {
 
     fn level_process(&mut self, body: &'a Stmt) -> Outcome<()> {
         let results = self.run_body(body, Mode::Level, HashMap::new())?;
-        let latches = results.values().any(|(bits, _)| bits.iter().any(|bit| matches!(bit, Bit::Partial(_))));
-        let mut ladder = Vec::new();
-        if latches {
-            self.latch_ladder(body, &results, &mut ladder)?;
-        }
         for (id, (bits, blocking_only)) in results {
             for (offset, &bit) in bits.iter().enumerate() {
                 let kind = match bit {
                     Bit::Held => continue,
-                    Bit::Partial(_) => self.latch(id, offset, bit, &ladder),
+                    Bit::Partial(_) => self.latch(id, bit),
                     bit => PendingKind::Value(bit),
                 };
                 self.pend(id, offset, kind, blocking_only);
@@ -141,56 +136,17 @@ impl<'a> Elaborator<'a> {
         Ok(())
     }
 
-    /// The rungs of a leading if-ladder, each with what the body does when it is taken and when it is not.
-    fn latch_ladder(
-        &mut self,
-        body: &'a Stmt,
-        all: &Results,
-        ladder: &mut Vec<(Condition, Results, Results)>,
-    ) -> Outcome<()> {
-        let mut assumed: HashMap<NodeId, bool> = HashMap::new();
-        let mut at = leading_if(body);
-        while let Some((condition, otherwise)) = at {
-            self.environment = Environment::new(Mode::Level);
-            let bit = self.eval_condition(condition)?;
-            let Bit::Node(node) = bit else { break };
-            let taken = with_assumption(&assumed, node, true);
-            let taken = self.run_body(body, Mode::Level, taken)?;
-            assumed.insert(node, false);
-            let rest = self.run_body(body, Mode::Level, assumed.clone())?;
-            // Only a rung that sets something to a constant can be a control.
-            let sets = taken.iter().any(|(id, (bits, _))| {
-                all.contains_key(id) && bits.iter().any(|bit| matches!(bit, Bit::Zero | Bit::One))
-            });
-            if !sets {
-                break;
-            }
-            ladder.push((Condition { node }, taken, rest));
-            at = otherwise.and_then(leading_if);
-        }
-        self.environment = Environment::default();
-        Ok(())
-    }
-
-    /// A latch bit: rungs that set it to a constant become controls as long as something is left to be latched.
-    fn latch(
-        &mut self,
-        id: VariableId,
-        offset: usize,
-        mut bit: Bit,
-        ladder: &[(Condition, Results, Results)],
-    ) -> PendingKind {
-        let at = |results: &Results| results.get(&id).map_or(Bit::Held, |(bits, _)| bits[offset]);
+    /// A latch bit: conditions that make it a constant whatever else holds become controls, as long as something is left to
+    /// be latched.
+    fn latch(&mut self, id: VariableId, mut bit: Bit) -> PendingKind {
         let mut rungs = Vec::new();
-        for (condition, taken, rest) in ladder {
-            let (value, rest) = (at(taken), at(rest));
-            if !matches!(value, Bit::Zero | Bit::One) || !matches!(rest, Bit::Partial(_)) {
-                break;
-            }
-            let (net, active) = self.pin(condition.node, id, if value == Bit::One { "set" } else { "reset" });
+        while let Bit::Partial(index) = bit
+            && let Some(Preset { condition, when, value, rest }) = self.guarded[index as usize].preset
+        {
+            let (net, level) = self.pin(condition, id, if value == Bit::One { "set" } else { "reset" });
             let site = self.site(self.variable(id).span);
             let value = self.node(value, site);
-            rungs.push(Rung { net, active, value });
+            rungs.push(Rung { net, active: level == when, value });
             bit = rest;
         }
         let (enable, data, from) = self.split(bit, true);

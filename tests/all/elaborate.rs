@@ -257,6 +257,34 @@ fn constant_rung_of_a_latch_is_a_control() {
     assert_eq!((t.name(enable).as_str(), active), ("t.en", true));
 }
 
+/// Wherever it is decided, and whichever branch it is: the form of a latch with an asynchronous control of its own.
+#[test]
+fn controls_of_latches_behind_other_statements() {
+    let t = clean(
+        "module t(input rst_n, set, d, input [2:0] en, output reg [2:0] q, output reg p, z);
+         integer k;
+         always @* begin
+           z = 1'b0;
+           for (k = 0; k < 3; k = k + 1) if (~rst_n) q[k] = 1'b0; else if (en[k] == 1'b1) q[k] = d;
+         end
+         always @* if (rst_n) begin if (set) p = 1'b1; else if (en[0]) p = d; end else p = 1'b0;
+         endmodule",
+    );
+    for k in 0..3 {
+        let [cell] = t.cells(&format!("t.q[{k}]"))[..] else { panic!("one cell") };
+        let [control] = cell.controls.as_slice() else { panic!("one control") };
+        assert_eq!((t.name(control.net).as_str(), control.active), ("t.rst_n", false));
+        let CellKind::Latch { enable, active } = cell.kind else { panic!("a latch") };
+        assert_eq!((t.name(enable), active), (format!("t.en[{k}]"), true));
+    }
+    let [cell] = t.cells("t.p")[..] else { panic!("one cell") };
+    let controls: Vec<(String, bool)> =
+        cell.controls.iter().map(|control| (t.name(control.net).to_string(), control.active)).collect();
+    assert_eq!(controls, [("t.rst_n".to_string(), false), ("t.set".to_string(), true)]);
+    assert!(matches!(cell.kind, CellKind::Latch { enable, active: true } if t.name(enable) == "t.en[0]"));
+    assert_eq!(t.cells("t.z").len(), 0);
+}
+
 #[test]
 fn loop_counters_make_no_cells() {
     let t = clean(
