@@ -89,6 +89,7 @@ pub fn scan(request: &Request, environment: Environment<'_>, progress: Progress<
         let outcome = rules::run(&design.graph, &watches, &options);
         let mut report = report_on_input(&loaded, &design, diagnostics.iter().chain(&pragmas.diagnostics));
         report.coverage.pins = outcome.pins;
+        report.coverage.cells = outcome.cells;
         report.coverage.loops = outcome.loops;
         report.findings.extend(outcome.findings);
         report.findings.extend(unplaced);

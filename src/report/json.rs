@@ -157,6 +157,7 @@ struct CoverageOut<'a> {
     black_boxes: Vec<BlackBoxOut<'a>>,
     pins: BTreeMap<&'static str, CountOut>,
     open_questions: usize,
+    cells: Cells,
     loops: Loops,
     left_out: LeftOutOut<'a>,
     assumptions: Vec<AssumptionOut<'a>>,
@@ -184,6 +185,14 @@ struct Files {
 struct Modules {
     elaborated: usize,
     failed: usize,
+}
+
+/// Stored bits.
+#[derive(Serialize)]
+#[serde(rename_all = "kebab-case")]
+struct Cells {
+    flip_flops: usize,
+    latches: usize,
 }
 
 #[derive(Serialize)]
@@ -307,6 +316,7 @@ fn coverage_out<'a>(report: &'a Report, place: &impl Fn(Option<Span>) -> Option<
             .collect(),
         pins: PinKind::ALL.into_iter().map(count).collect(),
         open_questions: coverage.pins.open_questions,
+        cells: Cells { flip_flops: coverage.cells.flip_flops, latches: coverage.cells.latches },
         loops: Loops { found: coverage.loops },
         left_out: LeftOutOut {
             regions: coverage.left_out.regions.iter().filter_map(|&span| place(Some(span))).collect(),

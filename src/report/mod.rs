@@ -13,7 +13,7 @@ mod waveform;
 use std::collections::BTreeMap;
 
 use crate::assumptions::Listed;
-use crate::rules::{Finding, PinCoverage, Rule, Severity, Verdict};
+use crate::rules::{CellCount, Finding, PinCoverage, Rule, Severity, Verdict};
 use crate::signoff::ledger;
 use crate::source::Span;
 
@@ -55,6 +55,7 @@ pub struct Coverage {
     /// Modules without text and their number of instances, by name.
     pub black_boxes: BTreeMap<String, usize>,
     pub pins: PinCoverage,
+    pub cells: CellCount,
     pub loops: usize,
     pub left_out: LeftOut,
     /// What the designer declared about nets, and how it stands to the design.

@@ -23,6 +23,10 @@ pub(super) fn render(report: &Report, style: &Style) -> String {
         let _ = writeln!(text, "{}", known(ledger));
     }
     pins(report, &mut text);
+    let (flip_flops, latches) = (coverage.cells.flip_flops, coverage.cells.latches);
+    if flip_flops + latches > 0 {
+        let _ = writeln!(text, "  stored: {} in flip-flops, {latches} in latches", number(flip_flops, "bit"));
+    }
     if coverage.loops > 0 {
         let _ = writeln!(text, "  combinational loops found: {}", coverage.loops);
     }

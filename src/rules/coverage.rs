@@ -1,8 +1,31 @@
 //! How many nets were looked at, by kind of pin. Each net that was asked about falls into exactly one of the three
 //! verdicts, so the three always add up to the number of nets: an undecided net can never pass as a clean one.
 
+use std::collections::BTreeSet;
+
 use super::PinKind;
+use crate::graph::{CellKind, Graph, NodeId};
 use crate::hazard::TargetVerdict;
+
+/// How many bits are stored, by kind of cell. A bit that several clocks load is one bit.
+#[derive(Clone, Copy, PartialEq, Eq, Debug, Default)]
+pub struct CellCount {
+    pub flip_flops: usize,
+    pub latches: usize,
+}
+
+impl CellCount {
+    pub(super) fn of(graph: &Graph) -> Self {
+        let bits = |wanted: fn(CellKind) -> bool| {
+            let outputs = graph.cells.iter().filter(|cell| wanted(cell.kind)).map(|cell| cell.output);
+            outputs.collect::<BTreeSet<NodeId>>().len()
+        };
+        Self {
+            flip_flops: bits(|kind| matches!(kind, CellKind::FlipFlop { .. })),
+            latches: bits(|kind| matches!(kind, CellKind::Latch { .. })),
+        }
+    }
+}
 
 /// The verdicts on the nets of one kind of pin.
 #[derive(Clone, Copy, PartialEq, Eq, Debug, Default)]

@@ -30,7 +30,7 @@ use crate::source::Span;
 
 pub use about_text::{Said, say};
 pub(crate) use about_text::{about_net, bookkeeping, net_name};
-pub use coverage::{NetCount, PinCoverage};
+pub use coverage::{CellCount, NetCount, PinCoverage};
 pub use finding::{CoverText, Finding, Hazard, LoopText, Pin, PinKind, Rule, Severity, Signoff, TraceStep, Verdict};
 pub use pages::{page, summary};
 
@@ -47,6 +47,7 @@ pub struct Outcome {
     /// By rule and place in the graph; [`sort`] puts them into the order of the report.
     pub findings: Vec<Finding>,
     pub pins: PinCoverage,
+    pub cells: CellCount,
     /// Combinational loops found.
     pub loops: usize,
 }
@@ -119,7 +120,7 @@ pub fn run(graph: &Graph, watches: &[Watch], options: &Options) -> Outcome {
     let found: Vec<Option<Finding>> = tasks.par_iter().map(|task| task()).collect();
     let mut findings: Vec<Finding> = found.into_iter().flatten().collect();
     findings.extend(missing_module::findings(graph, &pins, &seen));
-    Outcome { findings, pins: coverage, loops: loops.len() }
+    Outcome { findings, pins: coverage, cells: CellCount::of(graph), loops: loops.len() }
 }
 
 type PinRule = fn(&Graph, &TargetVerdict, &[pins::Use], &Options) -> Option<Finding>;

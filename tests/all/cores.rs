@@ -9,7 +9,7 @@ use std::process::Command;
 use stillwire::graph::{CellKind, NodeId};
 
 use crate::outside::data;
-use crate::pipeline::{graph, scan};
+use crate::pipeline::{Scan, graph, scan};
 
 /// A core and what is known about it.
 struct Core {
@@ -199,6 +199,22 @@ fn elaborated_registers(path: &Path, top: &str) -> (Registers, usize) {
     (Registers { nets: nets.len(), asynchronous, synchronous, temporary: 0 }, several)
 }
 
+/// Rule, severity, net and hazard kinds of each finding, sorted.
+pub fn findings(scan: &Scan) -> Vec<(String, String, String, BTreeSet<String>)> {
+    let mut found: Vec<_> = scan
+        .findings()
+        .iter()
+        .map(|finding| {
+            let text = |key: &str| finding[key].as_str().unwrap_or_default().to_string();
+            let hazards = finding["hazards"].as_array().map_or(&[][..], Vec::as_slice);
+            let kinds = hazards.iter().filter_map(|hazard| hazard["kind"].as_str()).map(str::to_string).collect();
+            (text("rule"), text("severity"), text("net"), kinds)
+        })
+        .collect();
+    found.sort();
+    found
+}
+
 #[track_caller]
 fn check(core: &Core) {
     let path = data().join(core.path);
@@ -210,17 +226,7 @@ fn check(core: &Core) {
         assert_eq!(scan.pins(kind, "undecided"), 0, "{kind}");
     }
 
-    let mut found: Vec<(String, String, String, BTreeSet<String>)> = scan
-        .findings()
-        .iter()
-        .map(|finding| {
-            let text = |key: &str| finding[key].as_str().unwrap_or_default().to_string();
-            let hazards = finding["hazards"].as_array().map_or(&[][..], Vec::as_slice);
-            let kinds = hazards.iter().filter_map(|hazard| hazard["kind"].as_str()).map(str::to_string).collect();
-            (text("rule"), text("severity"), text("net"), kinds)
-        })
-        .collect();
-    found.sort();
+    let found = findings(&scan);
     let mut reviewed: Vec<_> = core
         .findings
         .iter()

@@ -21,7 +21,14 @@ pub struct Scan {
 /// Scans `paths` with further arguments.
 #[track_caller]
 pub fn scan(paths: &[&Path], arguments: &[&str]) -> Scan {
+    scan_in(&[], paths, arguments)
+}
+
+/// The same with environment variables set, for file lists that use them.
+#[track_caller]
+pub fn scan_in(environment: &[(&str, &Path)], paths: &[&Path], arguments: &[&str]) -> Scan {
     let output = Command::new(env!("CARGO_BIN_EXE_stillwire"))
+        .envs(environment.iter().copied())
         .arg("scan")
         .args(paths)
         .args(["--write", "json:-"])

@@ -95,8 +95,8 @@ fn reset_selector(covered: bool) -> (SourceSet, Report) {
         range: None,
     });
     let graph = scene.builder.freeze();
-    let Outcome { findings, pins, loops } = rules::run(&graph, &[], &Options::default());
-    let coverage = Coverage { files_read: 1, modules_elaborated: 1, pins, loops, ..Coverage::default() };
+    let Outcome { findings, pins, cells, loops } = rules::run(&graph, &[], &Options::default());
+    let coverage = Coverage { files_read: 1, modules_elaborated: 1, pins, cells, loops, ..Coverage::default() };
     let report = Report { tops: vec!["top".to_string()], findings, coverage, ..Report::default() };
     (scene.sources, report)
 }
@@ -170,6 +170,7 @@ fn json_has_every_field_of_the_schema() {
     for kind in ["clock", "set", "reset", "load", "latch-enable", "watch", "output"] {
         assert_eq!(keys(&value["coverage"]["pins"][kind]), ["clean", "hazard", "nets", "undecided"], "{kind}");
     }
+    assert_eq!(value["coverage"]["cells"], serde_json::json!({ "flip-flops": 1, "latches": 0 }));
     assert_eq!(value["coverage"]["loops"]["found"], 0);
 }
 
