@@ -19,6 +19,10 @@ fetch:
 bench:
     STILLWIRE_DATA=$(tests/outside/fetch) cargo bench --profile dev --bench iscas85 --bench scan_ratio
 
+# Looks for crashes of the front end, for so many seconds.
+fuzz SECONDS="60" *ARGS:
+    cargo bench --profile dev --bench fuzz -- --seconds {{SECONDS}} {{ARGS}}
+
 lint:
     cargo fmt --check
     cargo clippy --all-targets -- -D warnings

@@ -181,7 +181,26 @@ fn front_end(
     }
     let mut diagnostics = std::mem::take(&mut loaded.diagnostics);
     diagnostics.extend(more);
+    require_tops(&loaded, &design, &diagnostics)?;
     Ok((loaded, design, diagnostics))
+}
+
+/// A run without any top, in which nothing else went wrong, has looked at nothing and must not end as a clean one.
+fn require_tops(loaded: &Loaded, design: &elaborate::Design, diagnostics: &[Diagnostic]) -> Result<(), PathError> {
+    let explained = diagnostics.iter().any(|diagnostic| diagnostic.kind == Kind::Incomplete);
+    if !design.tops.is_empty() || loaded.files_failed > 0 || explained {
+        return Ok(());
+    }
+    let help = "add the files of the design, or name a module with `--top`";
+    Err(match design.benches_left_out.as_slice() {
+        [] => PathError::new("nothing to analyse: there are interfaces or programs, but no module", help),
+        [bench, ..] => {
+            let message = format!(
+                "nothing to analyse: no module is left besides test benches, which have no ports, such as `{bench}`"
+            );
+            PathError::new(message, help)
+        }
+    })
 }
 
 /// Nothing to read and tops that nobody defines are mistakes of usage, as long as every file could be read.

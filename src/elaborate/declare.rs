@@ -146,7 +146,12 @@ impl<'a> Elaborator<'a> {
                 ItemKind::Net { net, ty, names } => {
                     for declarator in names {
                         let ty = self.declared_type(ty, &declarator.dims, declarator.name.span)?;
-                        self.declare_body_variable(scope, &mut ports, &declarator.name, ty, Storage::Net(*net))?;
+                        // Outside of modules there is no instance that a wire could belong to.
+                        if home == Storage::Package {
+                            self.add_named_local(scope, &declarator.name, ty, home);
+                        } else {
+                            self.declare_body_variable(scope, &mut ports, &declarator.name, ty, Storage::Net(*net))?;
+                        }
                     }
                 }
                 ItemKind::Var { ty, names } => {
@@ -162,9 +167,7 @@ impl<'a> Elaborator<'a> {
                         if home == Storage::Variable {
                             self.declare_body_variable(scope, &mut ports, &declarator.name, ty, home)?;
                         } else {
-                            let name = &declarator.name;
-                            let id = self.add_local(&name.name, ty, name.span, home);
-                            self.declare(scope, &name.name, Symbol::Variable(id));
+                            self.add_named_local(scope, &declarator.name, ty, home);
                         }
                     }
                 }
@@ -172,6 +175,11 @@ impl<'a> Elaborator<'a> {
             }
         }
         Ok(())
+    }
+
+    fn add_named_local(&mut self, scope: ScopeId, name: &'a Ident, ty: Rc<Type>, home: Storage) {
+        let id = self.add_local(&name.name, ty, name.span, home);
+        self.declare(scope, &name.name, Symbol::Variable(id));
     }
 
     /// A non-ANSI port: its own declaration and that of the net or variable of the same name together.

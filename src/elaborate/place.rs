@@ -131,7 +131,7 @@ impl<'a> Elaborator<'a> {
     pub fn resolve_symbol(&mut self, symbol: Symbol<'a>, span: Span) -> Outcome<Resolved<'a>> {
         Ok(match symbol {
             Symbol::Variable(id) if self.variable(id).storage == Storage::Package => {
-                return Err(unsupported("variable of a package", span));
+                return Err(unsupported("net or variable declared outside of modules", span));
             }
             Symbol::Variable(id) => {
                 let ty = Rc::clone(&self.variable(id).ty);

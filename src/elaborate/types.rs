@@ -335,9 +335,9 @@ impl<'a> Elaborator<'a> {
     }
 
     pub fn range(&mut self, left: &'a Expr, right: &'a Expr) -> Outcome<Range> {
-        let limit = 1i64 << 40;
+        let limit = 1u64 << 40;
         let ends = [self.constant_i64(left)?, self.constant_i64(right)?];
-        if ends.iter().any(|end| end.abs() > limit) {
+        if ends.iter().any(|end| end.unsigned_abs() > limit) {
             return Err(too_wide(left.span.to(right.span)));
         }
         Ok(Range { left: ends[0], right: ends[1] })

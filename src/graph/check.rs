@@ -13,6 +13,8 @@
 //! - instances come after their parent and extend its path;
 //! - outputs of black boxes are sources of that kind.
 
+use std::collections::HashSet;
+
 use super::{Cell, CellKind, GateKind, Graph, InstanceId, NetId, NodeId, NodeKind, SourceKind, Symbol};
 
 /// All violations, in order of the tables; empty for a sound graph.
@@ -116,14 +118,16 @@ impl Checker<'_> {
 
     fn names(&mut self) {
         let graph = self.graph;
+        // One set for all: a net may have a million bits.
+        let listed: HashSet<(NetId, NodeId)> = (graph.nets.iter().enumerate())
+            .flat_map(|(index, net)| net.bits.iter().map(move |&bit| (NetId::new(index), bit)))
+            .collect();
         for node in graph.nodes() {
             let Some(name) = graph.node_name(node) else { continue };
             if graph.kind(node) != NodeKind::Wire {
                 self.report(format!("{node} is named but no wire"));
             }
-            if self.net_exists(name.net, &format!("the net of {node}"))
-                && !graph.nets[name.net.index()].bits.contains(&node)
-            {
+            if self.net_exists(name.net, &format!("the net of {node}")) && !listed.contains(&(name.net, node)) {
                 self.report(format!("{node} is named after {}, which does not list it", name.net));
             }
         }

@@ -477,5 +477,5 @@ fn a_variable_of_a_package_is_not_taken_for_an_unknown() {
         &["t"],
     );
     let messages: Vec<_> = t.diagnostics.iter().map(|one| (one.kind, one.construct.as_str())).collect();
-    assert_eq!(messages, [(Kind::Unsupported, "variable of a package")]);
+    assert_eq!(messages, [(Kind::Unsupported, "net or variable declared outside of modules")]);
 }
