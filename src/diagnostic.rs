@@ -9,12 +9,24 @@ use crate::source::Span;
 pub enum Kind {
     /// Worth knowing, nothing is lost (a second module of the same name, a region left out on purpose).
     Note,
+    /// Nothing is lost for certain, but it is probably a mistake and must be seen.
+    Warning,
     /// A construct we do not support: what it touches is opaque, the run is incomplete.
     Unsupported,
     /// Part of the input could not be read or elaborated: the run is incomplete.
     Incomplete,
     /// The user's sign-off comment is malformed (rule `signoff-invalid`).
     SignoffInvalid,
+}
+
+/// Something that the sources name and that is not among them.
+#[derive(Clone, PartialEq, Eq, PartialOrd, Ord, Hash, Debug)]
+pub enum Missing {
+    Include(String),
+    Macro(String),
+    Package(String),
+    /// A module, interface or primitive.
+    Module(String),
 }
 
 /// A message with a place. `message` stands alone as one sentence; `help` says what to do.
@@ -28,17 +40,33 @@ pub struct Diagnostic {
     /// Further places, each with its own text.
     pub also: Vec<(Span, String)>,
     pub help: Option<String>,
+    /// What is missing, so that the place where it is can be searched and named.
+    pub missing: Option<Box<Missing>>,
 }
 
 impl Diagnostic {
     /// A diagnostic without further places or help.
     pub fn new(kind: Kind, construct: impl Into<String>, message: impl Into<String>, at: Option<Span>) -> Self {
-        Self { kind, construct: construct.into(), message: message.into(), at, also: Vec::new(), help: None }
+        Self {
+            kind,
+            construct: construct.into(),
+            message: message.into(),
+            at,
+            also: Vec::new(),
+            help: None,
+            missing: None,
+        }
     }
 
     /// The same with a sentence about what to do.
     pub fn with_help(mut self, help: impl Into<String>) -> Self {
         self.help = Some(help.into());
+        self
+    }
+
+    /// The same about something that is missing.
+    pub fn about_missing(mut self, missing: Missing) -> Self {
+        self.missing = Some(Box::new(missing));
         self
     }
 

@@ -78,7 +78,7 @@ pub struct Scan {
 /// Paths, file lists or tops that lead nowhere: nothing was analysed.
 pub fn scan(request: &Request, environment: Environment<'_>, progress: Progress<'_>) -> Result<Scan, PathError> {
     on_big_stacks(request, || {
-        let (loaded, mut design, diagnostics) = front_end(request, environment, progress)?;
+        let (mut loaded, mut design, diagnostics) = front_end(request, environment, progress)?;
         progress(Stage::Deciding);
         let pragmas = signoff::collect(&loaded.sources);
         let (watches, unplaced) = signoff::watches(&design.graph, &loaded.sources, &pragmas.watches);
@@ -86,7 +86,13 @@ pub fn scan(request: &Request, environment: Environment<'_>, progress: Progress<
         let assumed = resolved(request, &loaded, &design)?;
         let assumed = assumptions::apply(&design.graph, &loaded.sources, assumed, &pragmas.assumptions, &options);
         design.graph = design.graph.with_static(assumed.in_force.fixed.iter().copied());
-        let outcome = rules::run(&design.graph, &watches, &options);
+        let mut outcome = rules::run(&design.graph, &watches, &options);
+        let missing: BTreeSet<&str> = design.graph.black_boxes.iter().map(|one| one.module.as_str()).collect();
+        for module in missing {
+            if let Some(place) = loaded.nearby.module(module) {
+                rules::name_place(&mut outcome.findings, module, &place);
+            }
+        }
         let mut report = report_on_input(&loaded, &design, diagnostics.iter().chain(&pragmas.diagnostics));
         report.coverage.pins = outcome.pins;
         report.coverage.cells = outcome.cells;
@@ -171,7 +177,7 @@ fn front_end(
     let units = std::mem::take(&mut loaded.units);
     let given = request.given.iter().map(|(name, value)| source::given(name, value, &mut loaded.sources));
     let given = given.collect::<Result<Vec<_>, PathError>>()?;
-    let (design, more) = elaborate::elaborate(&units, &elaborate::Request { tops: request.tops.clone(), given });
+    let (design, mut more) = elaborate::elaborate(&units, &elaborate::Request { tops: request.tops.clone(), given });
     if let Some(elaborate::Misuse { message, help }) = design.misuse.first() {
         return Err(PathError::new(message, help));
     }
@@ -179,6 +185,7 @@ fn front_end(
         let violations = graph::check(&design.graph);
         assert!(violations.is_empty(), "the graph is unsound:\n{}", violations.join("\n"));
     }
+    loaded.nearby.hint(&mut more);
     let mut diagnostics = std::mem::take(&mut loaded.diagnostics);
     diagnostics.extend(more);
     require_tops(&loaded, &design, &diagnostics)?;
@@ -260,7 +267,7 @@ fn report_on_input<'a>(
         match diagnostic.kind {
             Kind::Unsupported => coverage.unsupported.push((diagnostic.construct.clone(), diagnostic.at)),
             Kind::Incomplete => coverage.incomplete = true,
-            Kind::Note | Kind::SignoffInvalid => {}
+            Kind::Note | Kind::Warning | Kind::SignoffInvalid => {}
         }
         match rules::say(diagnostic) {
             rules::Said::Finding(finding) => report.findings.push(*finding),

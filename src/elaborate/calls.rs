@@ -54,6 +54,9 @@ impl<'a> Elaborator<'a> {
         match self.resolve(callee, want)? {
             Resolved::Symbol(Symbol::Function(function, scope)) => Ok(Callee::Function(function, scope)),
             Resolved::Symbol(Symbol::Let(item, scope)) => Ok(Callee::Let(item, scope)),
+            Resolved::Symbol(Symbol::Simulation { what, .. }) => {
+                Err(unsupported(format!("value of a {what} in logic"), callee.span))
+            }
             _ => Err(wrong("a call of something that is no function or task", callee.span)),
         }
     }

@@ -89,6 +89,8 @@ pub(super) struct Elaborator<'a> {
     pub environment: Environment,
     /// Conditions whose value is assumed while a process is executed for one state of its asynchronous controls.
     pub assumed: HashMap<NodeId, bool>,
+    /// Nets whose value is known while a process is executed for one state of the signals in its edge list.
+    pub forced: HashMap<NodeId, bool>,
     pub drivers: HashMap<NodeId, Vec<Driver>>,
     pub pending: Vec<Pending>,
     /// Pairs of wires that are one net: inout ports and bidirectional switches.
@@ -149,6 +151,7 @@ impl<'a> Elaborator<'a> {
         for unit in units {
             let outcome = this.declare_all(this.unit, &unit.items, Storage::Package);
             this.survive(outcome);
+            this.count_skipped(unit);
         }
         for name in &tops.tops {
             if let Some(&module) = this.library.modules.get(name.as_str()) {
@@ -203,6 +206,7 @@ impl<'a> Elaborator<'a> {
             instance: InstanceId::new(0),
             environment: Environment::default(),
             assumed: HashMap::new(),
+            forced: HashMap::new(),
             drivers: HashMap::new(),
             pending: Vec::new(),
             aliases: Vec::new(),

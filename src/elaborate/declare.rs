@@ -8,7 +8,7 @@ use super::context::{Elaborator, Outcome, Storage, Variable, VariableId, unsuppo
 use super::place::MAX_MEMORY;
 use super::scope::{Lazy, ScopeId, Symbol};
 use super::types::Type;
-use crate::diagnostic::{Diagnostic, Kind};
+use crate::diagnostic::{Diagnostic, Kind, Missing};
 use crate::source::Span;
 use crate::syntax::ast::{
     DataType, DataTypeKind, Declarator, Dim, Ident, Import, Item, ItemKind, NetKind, Package, Param, ParamKind,
@@ -49,7 +49,8 @@ impl<'a> Elaborator<'a> {
             return Ok(scope);
         }
         let Some(&package) = self.library.packages.get(name.name.as_str()) else {
-            return Err(wrong(format!("there is no package `{}`", name.name), name.span));
+            let missing = wrong(format!("there is no package `{}`", name.name), name.span);
+            return Err(Box::new(missing.about_missing(Missing::Package(name.name.clone()))));
         };
         let package: &'a Package = package;
         let scope = self.inner_scope(self.unit, &name.name, self.instance, format!("{}::", name.name));
@@ -89,6 +90,9 @@ impl<'a> Elaborator<'a> {
                 ItemKind::GenBlock(block) if !block.scoped => self.declare_all(scope, &block.items, home)?,
                 ItemKind::Modport { name, .. } => {
                     self.declare(scope, &name.name, Symbol::Scope(scope));
+                }
+                ItemKind::Simulation { what, name, inert } => {
+                    self.declare(scope, &name.name, Symbol::Simulation { what, inert: *inert });
                 }
                 _ => {}
             }
@@ -155,14 +159,13 @@ impl<'a> Elaborator<'a> {
                     }
                 }
                 ItemKind::Var { ty, names } => {
-                    if matches!(ty.kind, DataTypeKind::Event | DataTypeKind::Real | DataTypeKind::String)
-                        && home == Storage::Variable
-                    {
-                        // Of use only in simulation; whatever uses them fails by itself.
-                        self.skip("variable of a type for simulation");
-                        continue;
-                    }
                     for declarator in names {
+                        if home == Storage::Variable
+                            && let Some(symbol) = self.simulation_variable(ty, &declarator.dims)
+                        {
+                            self.declare_simulation(scope, &declarator.name, symbol);
+                            continue;
+                        }
                         let ty = self.declared_type(ty, &declarator.dims, declarator.name.span)?;
                         if home == Storage::Variable {
                             self.declare_body_variable(scope, &mut ports, &declarator.name, ty, home)?;
@@ -257,7 +260,7 @@ impl<'a> Elaborator<'a> {
         if self.scope(scope).names.contains_key(&name.name) {
             return Err(wrong(format!("`{}` is declared twice", name.name), name.span));
         }
-        if ty.width == 0 {
+        if ty.width == 0 || !ty.has_bits() {
             return Err(unsupported("net or variable of this type", name.span));
         }
         let (instance, label) = (self.scope(scope).instance, format!("{}{}", self.scope(scope).prefix, name.name));

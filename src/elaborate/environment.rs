@@ -6,7 +6,7 @@ use std::collections::{BTreeMap, BTreeSet};
 
 use super::bits::Bit;
 use super::context::{Elaborator, Storage, VariableId};
-use crate::graph::Site;
+use crate::graph::{NodeId, Site};
 
 /// A variable and whether the value is that of nonblocking assignments, which is seen by nobody until the end.
 pub(super) type Key = (VariableId, bool);
@@ -110,8 +110,13 @@ impl Elaborator<'_> {
             Storage::Variable if self.environment.mode == Mode::Initial => {
                 self.base_value(id)[low..low + width].to_vec()
             }
-            _ => variable.wires[low..low + width].iter().map(|&wire| Bit::Node(wire)).collect(),
+            _ => variable.wires[low..low + width].iter().map(|&wire| self.net_bit(wire)).collect(),
         }
+    }
+
+    /// A net as an expression reads it.
+    fn net_bit(&self, wire: NodeId) -> Bit {
+        self.forced.get(&wire).map_or(Bit::Node(wire), |&value| value.into())
     }
 
     /// A bit as an expression sees it: where the process has not assigned it, the net itself.
@@ -120,7 +125,7 @@ impl Elaborator<'_> {
         if enable == Bit::One {
             return bit;
         }
-        let wire = self.variable(id).wires.get(at).map_or(Bit::X, |&wire| Bit::Node(wire));
+        let wire = self.variable(id).wires.get(at).map_or(Bit::X, |&wire| self.net_bit(wire));
         match data {
             Some(data) => self.select(enable, data, wire, site),
             None => wire,

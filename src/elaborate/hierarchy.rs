@@ -348,15 +348,23 @@ impl<'a> Elaborator<'a> {
                     self.conditional(scope, item, *generates)?;
                 }
                 ItemKind::Module(module) => {
-                    self.report(*unsupported("module declared inside a module", module.name.span));
+                    if module.kind == ModuleKind::Program {
+                        self.skip("program");
+                    } else {
+                        self.report(*unsupported("module declared inside a module", module.name.span));
+                    }
                 }
                 ItemKind::Bind { .. } => self.report(*unsupported("bind", item.span)),
                 ItemKind::ElabTask { name } => {
                     if matches!(name.as_str(), "$fatal" | "$error") {
                         return Err(wrong(format!("the design itself reports {name} here"), item.span));
                     }
+                    self.skip(name);
                 }
-                ItemKind::Skipped(what) => self.skip(what),
+                // A program is counted where it is declared.
+                ItemKind::Skipped(_)
+                    if self.scope(scope).module.is_some_and(|module| module.kind == ModuleKind::Program) => {}
+                ItemKind::Skipped(what) | ItemKind::Simulation { what, .. } => self.skip(what),
                 ItemKind::Unsupported(what) => self.report(*unsupported(what, item.span)),
                 ItemKind::Param(_)
                 | ItemKind::Typedef { .. }
@@ -476,6 +484,10 @@ impl<'a> Elaborator<'a> {
         params: &'a [Connection],
         instances: &'a [Instance],
     ) -> Outcome<()> {
+        if let Some(Symbol::Simulation { what, .. }) = self.in_scope(scope, |this| this.find(&name.name)) {
+            self.skip(what);
+            return Ok(());
+        }
         for instance in instances {
             for connection in &instance.connections {
                 let (Connection::Ordered(Some(value), _) | Connection::Named { value: Some(value), .. }) = connection

@@ -64,6 +64,9 @@ impl<'a> Elaborator<'a> {
             Resolved::Symbol(Symbol::Opaque) => {
                 Err(wrong("a name inside a module that is missing or could not be elaborated", expr.span))
             }
+            Resolved::Symbol(Symbol::Simulation { what, .. }) => {
+                Err(unsupported(format!("value of a {what} in logic"), expr.span))
+            }
             Resolved::Symbol(_) => Err(wrong("this name is not a value", expr.span)),
         }
     }
@@ -173,6 +176,7 @@ impl<'a> Elaborator<'a> {
                 place.select(field.offset as i64, field.ty.width);
                 Ok(Resolved::Place(place))
             }
+            Resolved::Symbol(Symbol::Simulation { .. }) => Ok(base),
             Resolved::Symbol(Symbol::Opaque) => {
                 Err(wrong("a name inside a module that is missing or could not be elaborated", name.span))
             }
@@ -190,7 +194,7 @@ impl<'a> Elaborator<'a> {
                     None => Err(wrong(format!("there is no instance or block with index {number}"), span)),
                 }
             }
-            Resolved::Symbol(Symbol::Opaque) => Ok(base),
+            Resolved::Symbol(Symbol::Opaque | Symbol::Simulation { .. }) => Ok(base),
             _ => Err(wrong("an index into something that is no array", span)),
         }
     }

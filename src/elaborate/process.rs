@@ -1,5 +1,5 @@
 //! Processes: which always blocks make flip-flops, which latches, which plain logic. A process with an edge list is
-//! executed once for each state of its asynchronous controls, taken from the leading if-ladder, and once for the clock;
+//! executed once for each state of its asynchronous controls ([`super::controls`] finds them) and once for the clock;
 //! every other process is executed once, and what it does not assign on every path is a latch.
 
 use std::collections::{BTreeMap, BTreeSet, HashMap, HashSet};
@@ -7,21 +7,23 @@ use std::rc::Rc;
 
 use super::bits::{Bit, Preset};
 use super::context::{Elaborator, Outcome, Storage, VariableId, unsupported};
+use super::controls::{Roles, Signal};
 use super::drivers::{Pending, PendingKind, Rung};
 use super::environment::{Environment, Mode};
 use super::scope::ScopeId;
+use super::simulation::only_simulates;
 use crate::diagnostic::{Diagnostic, Kind};
 use crate::graph::{Edge, NodeId, NodeKind, SourceKind};
 use crate::source::Span;
 use crate::syntax::ast::{self, Event, Process, ProcessKind, Sensitivity, Stmt, StmtKind};
 
 /// What a process leaves in each variable, and whether only blocking assignments wrote it.
-type Results = BTreeMap<VariableId, (Vec<Bit>, bool)>;
+pub(super) type Results = BTreeMap<VariableId, (Vec<Bit>, bool)>;
 
-/// One condition of the leading if-ladder that asynchronous controls decide.
+/// One condition that asynchronous controls decide.
 #[derive(Clone, Copy)]
-struct Condition {
-    node: NodeId,
+pub(super) struct Condition {
+    pub node: NodeId,
 }
 
 impl<'a> Elaborator<'a> {
@@ -48,6 +50,10 @@ impl<'a> Elaborator<'a> {
             _ => self.check_levels(events).and_then(|()| self.level_process(&process.body)),
         };
         if let Err(diagnostic) = outcome {
+            if only_simulates(&process.body) {
+                self.skip("process for simulation");
+                return;
+            }
             self.report(*diagnostic);
             self.opaque_process(&process.body);
         }
@@ -68,7 +74,7 @@ impl<'a> Elaborator<'a> {
     }
 
     /// Executes a body under assumptions about its conditions; what it leaves in each variable.
-    fn run_body(&mut self, body: &'a Stmt, mode: Mode, assumed: HashMap<NodeId, bool>) -> Outcome<Results> {
+    pub fn run_body(&mut self, body: &'a Stmt, mode: Mode, assumed: HashMap<NodeId, bool>) -> Outcome<Results> {
         self.environment = Environment::new(mode);
         self.assumed = assumed;
         self.strict = false;
@@ -159,54 +165,42 @@ impl<'a> Elaborator<'a> {
     }
 
     fn edge_process(&mut self, events: &'a [Event], body: &'a Stmt) -> Outcome<()> {
-        self.environment = Environment::new(Mode::Edge);
-        let mut signals: Vec<(NodeId, Edge, Span)> = Vec::new();
-        for event in events {
-            if event.iff.is_some() {
-                return Err(unsupported("`iff` in an event control", event.span));
-            }
-            let (bits, _) = self.eval_self(&event.expr)?;
-            let site = self.site(event.span);
-            let node = self.node(bits.first().copied().unwrap_or(Bit::X), site);
-            let (net, active) = self.builder.strip_inverters(node);
-            let edge = match (event.edge, active) {
-                (Some(ast::Edge::Posedge), true) | (Some(ast::Edge::Negedge), false) => Edge::Posedge,
-                (Some(ast::Edge::Both) | None, _) => Edge::Both,
-                _ => Edge::Negedge,
-            };
-            if !signals.iter().any(|&(other, other_edge, _)| other == net && other_edge == edge) {
-                signals.push((net, edge, event.span));
-            }
-        }
-        let mut conditions: Vec<Condition> = Vec::new();
-        let mut remaining = signals.clone();
-        let mut at = if signals.len() > 1 { leading_if(body) } else { None };
-        while let Some((condition, otherwise)) = at
-            && remaining.len() > 1
-        {
-            self.environment = Environment::new(Mode::Edge);
-            let bit = self.eval_condition(condition)?;
-            let Bit::Node(node) = bit else { break };
-            let support = self.support(node);
-            let listed = |wire: &NodeId| signals.iter().any(|(net, ..)| net == wire);
-            if support.is_empty() || !support.iter().all(listed) {
-                break;
-            }
-            let (net, active) = self.builder.strip_inverters(node);
-            if let Some(&(_, edge, span)) = signals.iter().find(|&&(signal, ..)| signal == net)
-                && (edge == Edge::Posedge) != active
-                && edge != Edge::Both
-            {
-                return Err(unsupported("asynchronous control tested against the edge it is listed with", span));
-            }
-            remaining.retain(|(net, ..)| !support.contains(net));
-            conditions.push(Condition { node });
-            at = otherwise.and_then(leading_if);
-        }
+        let signals = self.edge_signals(events)?;
         let span = events.iter().map(|event| event.span).reduce(Span::to).unwrap_or(body.span);
-        if remaining.is_empty() {
-            let what = "edge list that leaves no clock beside the asynchronous controls";
-            return Err(unsupported(what, span));
+        let ladder = self.ladder(&signals, body)?;
+        let roles = if signals.len() > 1 && (ladder.doubt.is_some() || ladder.remaining.len() != 1) {
+            match (self.roles_by_state(&signals, body), ladder.doubt) {
+                (Ok(Some(roles)), _) => Some(roles),
+                (Ok(None), None) => None,
+                (Ok(None), Some(doubt)) | (Err(_), Some(doubt)) => return Err(doubt),
+                (Err(problem), None) => return Err(problem),
+            }
+        } else {
+            None
+        };
+        let Roles { clocks, conditions, runs, main } = match roles {
+            Some(roles) => roles,
+            None => self.roles_of_ladder(ladder.conditions, ladder.remaining, body, span)?,
+        };
+        if clocks.len() > 1 {
+            self.several_clocks(&clocks, &runs, &main, span)?;
+        }
+        let main = self.guarded(main, &clocks)?;
+        let clocks: Vec<(NodeId, Edge)> = clocks.iter().map(|signal| (signal.net, signal.edge)).collect();
+        self.flip_flops(&clocks, &conditions, &runs, &main, body.span);
+        Ok(())
+    }
+
+    /// What the body does in each rung of its leading if-ladder, and when none is taken.
+    fn roles_of_ladder(
+        &mut self,
+        conditions: Vec<Condition>,
+        clocks: Vec<Signal<'a>>,
+        body: &'a Stmt,
+        span: Span,
+    ) -> Outcome<Roles<'a>> {
+        if clocks.is_empty() {
+            return Err(unsupported("edge list that leaves no clock beside the asynchronous controls", span));
         }
         let mut assumed = HashMap::new();
         let mut runs = Vec::new();
@@ -214,13 +208,45 @@ impl<'a> Elaborator<'a> {
             runs.push(self.run_body(body, Mode::Edge, self.with_condition(&assumed, condition.node, true))?);
             assumed = self.with_condition(&assumed, condition.node, false);
         }
-        let main = self.run_body(body, Mode::Edge, assumed)?;
-        if remaining.len() > 1 {
-            self.several_clocks(&remaining, &runs, &main, span)?;
+        let forced = match clocks.as_slice() {
+            [clock] => clock.wire.into_iter().collect(),
+            _ => HashMap::new(),
+        };
+        let main = self.run_forced(body, assumed, forced)?;
+        Ok(Roles { clocks, conditions, runs, main })
+    }
+
+    /// Executes a clocked body while the nets in `forced` have known values.
+    pub fn run_forced(
+        &mut self,
+        body: &'a Stmt,
+        assumed: HashMap<NodeId, bool>,
+        forced: HashMap<NodeId, bool>,
+    ) -> Outcome<Results> {
+        self.forced = forced;
+        let results = self.run_body(body, Mode::Edge, assumed);
+        self.forced.clear();
+        results
+    }
+
+    /// The clocked branch under the `iff` of its clock: without it the flip-flops hold.
+    fn guarded(&mut self, mut main: Results, clocks: &[Signal<'a>]) -> Outcome<Results> {
+        let Some(guard) = clocks.iter().find_map(|clock| clock.guard) else { return Ok(main) };
+        if clocks.len() > 1 {
+            return Err(unsupported("`iff` at one of several clocks", guard.span));
         }
-        let clocks: Vec<(NodeId, Edge)> = remaining.iter().map(|&(net, edge, _)| (net, edge)).collect();
-        self.flip_flops(&clocks, &conditions, &runs, &main, body.span);
-        Ok(())
+        self.environment = Environment::new(Mode::Edge);
+        let condition = self.eval_condition(guard)?;
+        let site = self.site(guard.span);
+        for (&id, (bits, _)) in &mut main {
+            for (offset, bit) in bits.iter_mut().enumerate() {
+                let held = self.variable(id).wires.get(offset).map_or(Bit::X, |&wire| Bit::Node(wire));
+                if *bit != held {
+                    *bit = self.select(condition, *bit, held, site);
+                }
+            }
+        }
+        Ok(main)
     }
 
     /// Assumes a condition, and the signal itself when the condition is nothing but that signal or its inverse.
@@ -232,22 +258,13 @@ impl<'a> Elaborator<'a> {
     /// Edges that the body never tests all clock the flip-flops, as the standard says; the reader is told, since one of them
     /// may have been meant as a control. A body that reads such a signal would see it change with its own edge, which
     /// is neither a clock nor a control.
-    fn several_clocks(
-        &mut self,
-        clocks: &[(NodeId, Edge, Span)],
-        runs: &[Results],
-        main: &Results,
-        span: Span,
-    ) -> Outcome<()> {
-        let mut seen: HashSet<NodeId> = HashSet::new();
-        for (bits, _) in runs.iter().chain([main]).flat_map(BTreeMap::values) {
-            for &bit in bits {
-                let Bit::Node(node) = bit else { continue };
-                self.support_into(node, &mut seen);
-            }
-        }
-        if clocks.iter().any(|(net, ..)| seen.contains(net)) {
+    fn several_clocks(&mut self, clocks: &[Signal<'a>], runs: &[Results], main: &Results, span: Span) -> Outcome<()> {
+        let seen = self.read_by(runs.iter().chain([main]));
+        if clocks.iter().any(|signal| seen.contains(&signal.net)) {
             return Err(unsupported("edge list with more than one signal that could be the clock", span));
+        }
+        if let Some(expression) = clocks.iter().find(|signal| self.inner(signal.net)) {
+            return Err(unsupported("edge of an expression beside other edges", expression.span));
         }
         let message = format!("{} signals clock these flip-flops: none of them is tested as a control", clocks.len());
         self.report(Diagnostic::new(Kind::Note, "several clocks", message, Some(span)));
@@ -339,7 +356,7 @@ impl<'a> Elaborator<'a> {
     }
 
     /// The nets that a condition depends on.
-    fn support(&self, node: NodeId) -> BTreeSet<NodeId> {
+    pub fn support(&self, node: NodeId) -> BTreeSet<NodeId> {
         let mut seen = HashSet::new();
         self.support_into(node, &mut seen);
         seen.retain(|&node| !self.inner(node) && !matches!(self.builder.kind(node), NodeKind::Const(_)));
@@ -347,7 +364,7 @@ impl<'a> Elaborator<'a> {
     }
 
     /// Whether a node is logic, not a net or source.
-    fn inner(&self, node: NodeId) -> bool {
+    pub fn inner(&self, node: NodeId) -> bool {
         matches!(
             self.builder.kind(node),
             NodeKind::Gate(_) | NodeKind::Table(_) | NodeKind::OpIn(_) | NodeKind::OpOut(_)
@@ -355,7 +372,7 @@ impl<'a> Elaborator<'a> {
     }
 
     /// Collects all nodes of the logic in front of a node, up to and including nets and sources.
-    fn support_into(&self, node: NodeId, seen: &mut HashSet<NodeId>) {
+    pub fn support_into(&self, node: NodeId, seen: &mut HashSet<NodeId>) {
         let mut stack = vec![node];
         while let Some(node) = stack.pop() {
             if seen.insert(node) && self.inner(node) {
@@ -436,7 +453,7 @@ fn with_assumption(assumed: &HashMap<NodeId, bool>, node: NodeId, value: bool) -
 }
 
 /// The first if of a body, behind leading assignments: its condition and its else branch.
-fn leading_if(body: &Stmt) -> Option<(&ast::Expr, Option<&Stmt>)> {
+pub(super) fn leading_if(body: &Stmt) -> Option<(&ast::Expr, Option<&Stmt>)> {
     match &body.kind {
         StmtKind::If { cond, otherwise, .. } => Some((cond, otherwise.as_deref())),
         StmtKind::Block { body, .. } => {

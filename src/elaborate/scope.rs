@@ -51,6 +51,12 @@ pub(super) enum Symbol<'a> {
     Genvar,
     /// A black box or a primitive: there, but nothing in it can be named.
     Opaque,
+    /// Something that only simulation uses, in the words of the coverage. To assign it or to call it as a statement does
+    /// nothing that synthesises if it is inert.
+    Simulation {
+        what: &'a str,
+        inert: bool,
+    },
 }
 
 define_id!(LazyId, "z", "A parameter, type or enumeration member that is worked out on first use.");

@@ -202,10 +202,13 @@ impl<'a> Elaborator<'a> {
                 return Ok(exits);
             }
             StmtKind::Call(call) => match &call.kind {
-                ExprKind::SystemCall { name, .. } => self.skip(name),
-                ExprKind::Call { callee, args } => {
-                    self.call(callee, args, call.span)?;
-                }
+                ExprKind::SystemCall { name, .. } => return Err(unsupported(format!("system task {name}"), call.span)),
+                ExprKind::Call { callee, args } => match self.inert(callee) {
+                    Some(what) => self.skip(what),
+                    None => {
+                        self.call(callee, args, call.span)?;
+                    }
+                },
                 ExprKind::Cast(_, inner) => {
                     self.eval_self(inner)?;
                 }
@@ -470,6 +473,10 @@ impl<'a> Elaborator<'a> {
 /// Assignments.
 impl<'a> Elaborator<'a> {
     pub fn assign(&mut self, assignment: &'a Assignment) -> Outcome<()> {
+        if let Some(what) = self.inert(&assignment.target) {
+            self.skip(what);
+            return Ok(());
+        }
         let targets = self.targets(&assignment.target)?;
         let width: usize = targets.iter().map(|place| place.ty.width).sum();
         let site = self.site(assignment.span);

@@ -128,6 +128,16 @@ impl Type {
         }
     }
 
+    /// Whether every part of it is made of bits: a real number or a text is not.
+    pub fn has_bits(&self) -> bool {
+        match &self.shape {
+            Shape::Scalar | Shape::Enum { .. } => true,
+            Shape::Array { element, .. } => element.has_bits(),
+            Shape::Struct { fields, .. } => fields.iter().all(|field| field.ty.has_bits()),
+            Shape::Real | Shape::Text | Shape::Void => false,
+        }
+    }
+
     /// The outermost index range, of an array.
     pub fn range(&self) -> Option<Range> {
         match &self.shape {

@@ -19,7 +19,14 @@ pub fn render(report: &Report, sources: &SourceSet) -> String {
         version: env!("CARGO_PKG_VERSION"),
         tops: &report.tops,
         complete: report.complete(),
-        findings: report.findings.iter().map(|finding| finding_out(finding, &place)).collect(),
+        findings: report
+            .findings
+            .iter()
+            .map(|finding| FindingOut {
+                macro_at: place(finding.at.and_then(|at| sources.macro_behind(at))),
+                ..finding_out(finding, &place)
+            })
+            .collect(),
         messages: report.messages.iter().map(|message| message_out(message, &place)).collect(),
         coverage: coverage_out(report, &place),
         ledger: report.ledger.as_ref().map(ledger_out),
@@ -78,6 +85,8 @@ struct FindingOut<'a> {
     verdict: &'static str,
     message: &'a str,
     at: Option<Place>,
+    /// Where the macro is defined whose use `at` is.
+    macro_at: Option<Place>,
     trace: Vec<StepOut<'a>>,
     instance: &'a str,
     net: &'a str,
@@ -235,6 +244,7 @@ fn finding_out<'a>(finding: &'a Finding, place: &impl Fn(Option<Span>) -> Option
         verdict: finding.verdict.name(),
         message: &finding.message,
         at: place(finding.at),
+        macro_at: None,
         trace: finding.trace.iter().map(|step| StepOut { at: place(step.at), text: &step.text }).collect(),
         instance: &finding.instance,
         net: &finding.net,

@@ -137,6 +137,9 @@ fn of_finding(sources: &SourceSet, finding: &Finding) -> Diagnostic<FileId> {
     for (at, text) in places {
         place(sources, at, &text, false, &mut labels, &mut notes);
     }
+    if let Some(defined) = finding.at.and_then(|at| sources.macro_behind(at)) {
+        place(sources, defined, "the text comes from this macro", false, &mut labels, &mut notes);
+    }
     if let Some(lead) = finding.hazards.first() {
         notes.push(waveform::render(lead));
         notes.push(wrapped(&format!("effect: {}", lead.harm)));

@@ -21,9 +21,10 @@ pub enum Said {
 /// note; input that could not be read or elaborated is a warning, so that it shows without being asked for.
 pub fn say(diagnostic: &Diagnostic) -> Said {
     let (rule, severity) = match diagnostic.kind {
-        Kind::Note => {
+        Kind::Note | Kind::Warning => {
+            let is_note = diagnostic.kind == Kind::Note;
             return Said::Message(Message {
-                severity: Severity::Note,
+                severity: if is_note { Severity::Note } else { Severity::Warning },
                 text: diagnostic.message.clone(),
                 at: diagnostic.at,
                 also: diagnostic.also.clone(),

@@ -58,13 +58,7 @@ fn finding(graph: &Graph, module: &str, boxes: &[&BlackBox], sensitive: &BTreeMa
     };
     let instance = |one: &BlackBox| &graph.instances[one.instance.index()];
     let at = boxes.first().and_then(|one| instance(one).span);
-    let mut finding = plain(
-        Rule::UnsupportedConstruct,
-        severity,
-        message,
-        at,
-        fingerprint::of_text(Rule::UnsupportedConstruct, &["missing module", module]),
-    );
+    let mut finding = plain(Rule::UnsupportedConstruct, severity, message, at, identity(module));
     finding.trace = boxes
         .iter()
         .take(SHOWN)
@@ -85,6 +79,18 @@ fn finding(graph: &Graph, module: &str, boxes: &[&BlackBox], sensitive: &BTreeMa
             .to_string(),
     );
     finding
+}
+
+/// Tells in the finding about `module` where its text is.
+pub(crate) fn name_place(findings: &mut [Finding], module: &str, place: &str) {
+    let fingerprint = identity(module).fingerprint;
+    for finding in findings.iter_mut().filter(|finding| finding.fingerprint == fingerprint) {
+        finding.notes.insert(0, place.to_string());
+    }
+}
+
+fn identity(module: &str) -> fingerprint::Identity {
+    fingerprint::of_text(Rule::UnsupportedConstruct, &["missing module", module])
 }
 
 /// The roots that a change of one of `nodes` reaches without passing a cell.

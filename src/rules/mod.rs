@@ -32,6 +32,7 @@ pub use about_text::{Said, say};
 pub(crate) use about_text::{about_net, bookkeeping, net_name};
 pub use coverage::{CellCount, NetCount, PinCoverage};
 pub use finding::{CoverText, Finding, Hazard, LoopText, Pin, PinKind, Rule, Severity, Signoff, TraceStep, Verdict};
+pub(crate) use missing_module::name_place;
 pub use pages::{page, summary};
 
 /// A net that the designer marked with `// stillwire: watch`.

@@ -39,8 +39,11 @@ pub fn given(name: &str, value: &str, sources: &mut SourceSet) -> Result<Given, 
     // one instance.
     let pieces = chunks(&text.text);
     let [piece] = pieces.as_slice() else { return Err(wrong()) };
-    let (unit, _) = parse(&text, piece, file, false).map_err(|_| wrong())?;
-    let value_of = only_override(unit).filter(|(parameter, _)| parameter == name);
+    let parsed = parse(&text, piece, file, false);
+    if !parsed.failures.is_empty() {
+        return Err(wrong());
+    }
+    let value_of = only_override(parsed.unit).filter(|(parameter, _)| parameter == name);
     let (name, parsed) = value_of.ok_or_else(wrong)?;
     Ok(Given { name, text: value.to_string(), value: parsed })
 }

@@ -16,6 +16,7 @@ use super::discover::{Exclude, PathError, discover};
 use super::filelist::{Environment, FileList};
 use super::include::IncludeSearch;
 use super::macros::{Macro, Macros};
+use super::nearby::Nearby;
 use super::origin::MappedText;
 use super::preprocess::preprocess;
 use super::regions::Region;
@@ -27,7 +28,7 @@ use crate::syntax::ast;
 /// What to read.
 #[derive(Clone, Default, Debug)]
 pub struct Request {
-    /// Files and folders; when there is neither a path nor a list, the current folder.
+    /// Files and folders, and file lists with the suffix `.f`; when there is neither a path nor a list, the current folder.
     pub paths: Vec<PathBuf>,
     /// File lists, which form one compilation order with shared macros.
     pub lists: Vec<PathBuf>,
@@ -52,6 +53,8 @@ pub struct Loaded {
     pub files_read: usize,
     /// Files that could not be read or parsed, wholly or in part.
     pub files_failed: usize,
+    /// Knows where missing things are.
+    pub nearby: Nearby,
 }
 
 /// Reads everything that `request` names. `environment` answers the variables of file lists.
@@ -59,19 +62,26 @@ pub struct Loaded {
 /// # Errors
 /// A path, a file list or a file named by one that does not exist.
 pub fn load(request: &Request, environment: Environment<'_>, progress: Progress<'_>) -> Result<Loaded, PathError> {
+    // `.f` is what file lists are called; as Verilog such a file would only be one syntax error.
+    let is_list = |path: &&PathBuf| path.extension().is_some_and(|extension| extension == "f") && path.is_file();
+    let (lists, paths): (Vec<&PathBuf>, Vec<&PathBuf>) = request.paths.iter().partition(is_list);
     let mut list = FileList::default();
-    for path in &request.lists {
+    for path in request.lists.iter().chain(lists.iter().copied()) {
         list.read(path, environment)?;
     }
-    let current = [PathBuf::from(".")];
-    let use_current = request.paths.is_empty() && request.lists.is_empty();
-    let found = discover(if use_current { &current } else { &request.paths }, &request.exclude)?;
+    let mut paths: Vec<PathBuf> = paths.into_iter().cloned().collect();
+    if request.paths.is_empty() && request.lists.is_empty() {
+        paths.push(PathBuf::from("."));
+    }
+    let found = discover(&paths, &request.exclude)?;
 
     let folders = request.include.iter().chain(&list.include).cloned().collect();
     let listed = list.files.iter().chain(&list.library_files).filter(|path| path.is_file()).cloned();
+    let tree: Vec<PathBuf> = found.tree.into_iter().chain(listed).collect();
     let mut reader = Reader {
         texts: Texts::default(),
-        search: IncludeSearch::new(folders, found.tree.into_iter().chain(listed).collect()),
+        search: IncludeSearch::new(folders, tree.clone()),
+        nearby: Nearby::new(paths.iter().chain(&list.files).cloned().collect(), tree),
         units: Vec::new(),
         included: BTreeMap::new(),
         failed: BTreeSet::new(),
@@ -79,6 +89,11 @@ pub fn load(request: &Request, environment: Environment<'_>, progress: Progress<
         diagnostics: found.diagnostics,
         progress,
     };
+    for path in lists {
+        let message = format!("`{}` is read as a file list", path.display());
+        let note = Diagnostic::new(Kind::Note, "file list", message, None);
+        reader.diagnostics.push(note.with_help(format!("give it with `-f {}` to say so", path.display())));
+    }
     for ignored in &list.ignored {
         let message = format!("{ignored} means nothing here and is ignored");
         reader.diagnostics.push(Diagnostic::new(Kind::Note, "file list", message, None));
@@ -86,7 +101,8 @@ pub fn load(request: &Request, environment: Environment<'_>, progress: Progress<
 
     for folder in request.include.iter().chain(&list.include).filter(|folder| !folder.is_dir()) {
         let message = format!("the include folder `{}` does not exist", folder.display());
-        reader.diagnostics.push(Diagnostic::new(Kind::Note, "include folder", message, None));
+        let warning = Diagnostic::new(Kind::Warning, "include folder", message, None);
+        reader.diagnostics.push(warning.with_help("check its spelling; relative ones count from the current folder"));
     }
 
     let mut list_macros = macros(list.defines.iter().chain(&request.defines));
@@ -122,6 +138,7 @@ struct Planned {
 struct Reader<'a> {
     texts: Texts,
     search: IncludeSearch,
+    nearby: Nearby,
     units: Vec<(FileId, ast::Unit)>,
     /// Which units included a file.
     included: BTreeMap<FileId, BTreeSet<FileId>>,
@@ -149,12 +166,17 @@ impl Reader<'_> {
             self.diagnostics.push(Diagnostic::new(Kind::Note, "file", message, Some(at)));
         }
         let preprocessed = preprocess(&mut self.texts, &self.search, macros, file);
+        self.failures.extend(preprocessed.problems.into_iter().map(|problem| (file, problem)));
         for included in preprocessed.included {
             self.included.entry(included).or_default().insert(file);
         }
         match preprocessed.text {
             Ok(text) => {
-                let chunks = chunks(&text.text);
+                let all = chunks(&text.text);
+                let lost = text.gaps.iter().filter_map(|&gap| all.iter().position(|chunk| gap < chunk.end));
+                let lost: BTreeSet<usize> = lost.collect();
+                let kept = all.into_iter().enumerate().filter(|(index, _)| !lost.contains(index));
+                let chunks = kept.map(|(_, chunk)| chunk).collect();
                 Some(Planned { file, text, chunks })
             }
             Err(diagnostic) => {
@@ -185,16 +207,9 @@ impl Reader<'_> {
         for unit in &planned {
             let mut whole = ast::Unit::default();
             for result in results.by_ref().take(unit.chunks.len()) {
-                match result {
-                    Ok((part, diagnostics)) => {
-                        whole.modules.extend(part.modules);
-                        whole.packages.extend(part.packages);
-                        whole.udps.extend(part.udps);
-                        whole.items.extend(part.items);
-                        self.diagnostics.extend(diagnostics);
-                    }
-                    Err(diagnostic) => self.failures.push((unit.file, *diagnostic)),
-                }
+                whole.append(result.unit);
+                self.diagnostics.extend(result.diagnostics);
+                self.failures.extend(result.failures.into_iter().map(|failure| (unit.file, failure)));
             }
             self.units.push((unit.file, whole));
         }
@@ -266,9 +281,12 @@ impl Reader<'_> {
                 diagnostics.push(failure);
             }
         }
+        self.nearby.hint(&mut diagnostics);
+        self.texts.set.sort_macro_uses();
         Loaded {
             files_read: self.texts.set.files.len(),
             files_failed: self.failed.len(),
+            nearby: self.nearby,
             sources: self.texts.set,
             units: self.units.into_iter().map(|(_, unit)| unit).collect(),
             diagnostics,

@@ -4,6 +4,7 @@
 //! Invariant: segments are sorted by their start and cover the text without gaps, because every byte is pushed together
 //! with its origin.
 
+use super::reshape::Piece;
 use super::{FileId, Places, Span};
 
 #[derive(Clone, Copy, Debug)]
@@ -20,6 +21,8 @@ struct Segment {
 pub struct MappedText {
     pub text: String,
     segments: Vec<Segment>,
+    /// Offsets at which text is missing: what stands there does not mean what it says.
+    pub gaps: Vec<usize>,
 }
 
 impl MappedText {
@@ -43,6 +46,47 @@ impl MappedText {
             self.segments.push(Segment { start: self.text.len() as u32, origin, verbatim: false });
         }
         self.text.push_str(text);
+    }
+
+    /// Notes that text is missing here, which stands for the place `origin`.
+    pub fn push_gap(&mut self, origin: Span) {
+        self.gaps.push(self.text.len());
+        self.push_whole(" ", origin);
+    }
+
+    /// The text with `pieces` instead of the bytes from `start` on, which is what their offsets count from. Everything
+    /// keeps its place.
+    pub fn with_pieces(&self, start: usize, pieces: &[Piece]) -> MappedText {
+        let mut out = MappedText::default();
+        for piece in pieces {
+            match piece {
+                Piece::Kept(range) => self.copy_into(&mut out, start + range.start, start + range.end),
+                Piece::Word(word, at) => {
+                    if let Some(origin) = self.byte(start + at) {
+                        out.push_whole(word, origin);
+                    }
+                }
+            }
+        }
+        out
+    }
+
+    fn copy_into(&self, out: &mut MappedText, start: usize, end: usize) {
+        let first = self.segments.partition_point(|segment| segment.start as usize <= start).saturating_sub(1);
+        for (index, segment) in self.segments.iter().enumerate().skip(first) {
+            let from = start.max(segment.start as usize);
+            let until = self.segments.get(index + 1).map_or(self.text.len(), |next| next.start as usize).min(end);
+            if from >= until {
+                return;
+            }
+            let text = &self.text[from..until];
+            if segment.verbatim {
+                let into = from - segment.start as usize;
+                out.push_verbatim(text, segment.origin.file, segment.origin.start as usize + into);
+            } else {
+                out.push_whole(text, segment.origin);
+            }
+        }
     }
 
     /// The original place of one byte; `None` only for an empty text. Past the end it is the last byte's place.
@@ -113,5 +157,21 @@ mod tests {
         assert_eq!(place(5, 3), Some((14, 18)));
         assert_eq!(place(0, 14), Some((10, 20)));
         assert_eq!(place(13, 1), Some((19, 20)));
+    }
+
+    #[test]
+    fn pieces_keep_their_places() {
+        let file = FileId::new(0);
+        let mut text = MappedText::default();
+        text.push_verbatim("ab cd ", file, 10);
+        text.push_whole("macro", Span { file, start: 16, end: 18 });
+        text.push_verbatim(" ef", file, 18);
+        let moved = text.with_pieces(1, &[Piece::Kept(11..13), Piece::Word("new", 2), Piece::Kept(3..8)]);
+        assert_eq!(moved.text, "efnewd mac");
+        let place = |offset, len| moved.place(offset, len).map(|span| (span.start, span.end));
+        assert_eq!(place(0, 2), Some((19, 21)));
+        assert_eq!(place(2, 3), Some((13, 14)));
+        assert_eq!(place(5, 1), Some((14, 15)));
+        assert_eq!(place(7, 3), Some((16, 18)));
     }
 }

@@ -1,32 +1,79 @@
 //! Parses one piece of a preprocessed text and converts its concrete tree, which is dropped at once: it takes hundreds of
 //! bytes for each byte of source. Only this file and the converter know the parser.
 //!
-//! Sources older than SystemVerilog use its keywords as names (`bit`, `do`, `final`), so a piece of a `.v` file that does
+//! A piece that the parser refuses is tried again in another form ([`reshape()`]) and, when something in it is not closed, part
+//! by part ([`unclosed`]). Sources older than SystemVerilog use its keywords as names (`bit`, `do`, `final`), so a piece of a `.v` file that does
 //! not parse is tried again with the keywords of IEEE 1364-2005.
 
 use std::panic::{AssertUnwindSafe, catch_unwind};
 
 use super::chunks::{Chunk, Refusal};
 use super::origin::{ChunkPlaces, MappedText};
+use super::reshape::reshape;
+use super::unclosed;
 use super::{FileId, Span};
 use crate::diagnostic::{Diagnostic, Kind};
 use crate::syntax::{ast, convert};
 
 const OLD_KEYWORDS: &str = "`begin_keywords \"1364-2005\" ";
 
+/// What one piece of a text gives.
+#[derive(Default)]
+pub struct Parsed {
+    pub unit: ast::Unit,
+    pub diagnostics: Vec<Diagnostic>,
+    /// Why a part of the piece, or all of it, is left out.
+    pub failures: Vec<Diagnostic>,
+}
+
 /// Parses `chunk` of `text`, which belongs to `file`.
-///
-/// # Errors
-/// The one diagnostic of a piece that cannot be parsed.
-pub fn parse(
-    text: &MappedText,
-    chunk: &Chunk,
-    file: FileId,
-    may_be_old: bool,
-) -> Result<(ast::Unit, Vec<Diagnostic>), Box<Diagnostic>> {
+pub fn parse(text: &MappedText, chunk: &Chunk, file: FileId, may_be_old: bool) -> Parsed {
     if let Some(refusal) = chunk.refused {
-        return Err(refused(text, refusal, file));
+        return Parsed { failures: vec![*refused(text, refusal, file)], ..Parsed::default() };
     }
+    let failure = match parse_any_form(text, chunk, file, may_be_old) {
+        Ok((unit, diagnostics)) => return Parsed { unit, diagnostics, failures: Vec::new() },
+        Err(failure) => failure,
+    };
+    let Some(parts) = unclosed::parts(&text.text[chunk.start..chunk.end]) else {
+        return Parsed { failures: vec![*failure], ..Parsed::default() };
+    };
+    let mut parsed = Parsed::default();
+    for part in parts {
+        if let Some(keyword) = part.unclosed {
+            let at = text.place(chunk.start + keyword.start, keyword.len());
+            parsed.failures.push(not_closed(&text.text[chunk.start..][keyword], at));
+            continue;
+        }
+        let prefix = [chunk.prefix.as_str(), &part.prefix].concat();
+        let (start, end) = (chunk.start + part.range.start, chunk.start + part.range.end);
+        match parse_any_form(text, &Chunk { start, end, prefix, refused: None }, file, may_be_old) {
+            Ok((unit, diagnostics)) => {
+                parsed.unit.append(unit);
+                parsed.diagnostics.extend(diagnostics);
+            }
+            Err(failure) => parsed.failures.push(*failure),
+        }
+    }
+    parsed
+}
+
+type Attempt = Result<(ast::Unit, Vec<Diagnostic>), Box<Diagnostic>>;
+
+/// Parses a piece as it stands, or else in the form that [`reshape()`] gives it.
+fn parse_any_form(text: &MappedText, chunk: &Chunk, file: FileId, may_be_old: bool) -> Attempt {
+    let first = parse_any_age(text, chunk, file, may_be_old);
+    if first.is_ok() {
+        return first;
+    }
+    let Some(pieces) = reshape(&text.text[chunk.start..chunk.end]) else { return first };
+    let text = text.with_pieces(chunk.start, &pieces);
+    let chunk = Chunk { start: 0, end: text.text.len(), prefix: chunk.prefix.clone(), refused: None };
+    // Its error is the one to show: the first one may be about the form that is mended here.
+    parse_any_age(&text, &chunk, file, may_be_old)
+}
+
+fn parse_any_age(text: &MappedText, chunk: &Chunk, file: FileId, may_be_old: bool) -> Attempt {
     let first = parse_behind(&chunk.prefix, text, chunk, file);
     if first.is_ok() || !may_be_old || chunk.prefix.contains("begin_keywords") {
         return first;
@@ -35,12 +82,7 @@ pub fn parse(
     parse_behind(&format!("{OLD_KEYWORDS}{}", chunk.prefix), text, chunk, file).or(first)
 }
 
-fn parse_behind(
-    prefix: &str,
-    text: &MappedText,
-    chunk: &Chunk,
-    file: FileId,
-) -> Result<(ast::Unit, Vec<Diagnostic>), Box<Diagnostic>> {
+fn parse_behind(prefix: &str, text: &MappedText, chunk: &Chunk, file: FileId) -> Attempt {
     let piece = [prefix, &text.text[chunk.start..chunk.end], "\n"].concat();
     let place = |offset: usize| {
         let at = (chunk.start + offset.saturating_sub(prefix.len())).min(chunk.end.saturating_sub(1));
@@ -109,6 +151,12 @@ fn syntax_error(text: &str, offset: usize, span: Span) -> Box<Diagnostic> {
     };
     let help = "the module or package around this place is left out; everything before it was understood";
     Box::new(Diagnostic::new(Kind::Incomplete, "syntax", message, Some(span)).with_help(help))
+}
+
+fn not_closed(keyword: &str, at: Option<Span>) -> Diagnostic {
+    let message = format!("this {keyword} is not closed: its `end{}` is missing", keyword.trim_start_matches("macro"));
+    let help = "it is left out; the modules behind it are analysed as if it were closed before them";
+    Diagnostic::new(Kind::Incomplete, "syntax", message, at).with_help(help)
 }
 
 fn refused(text: &MappedText, refusal: Refusal, file: FileId) -> Box<Diagnostic> {

@@ -14,7 +14,7 @@ use super::origin::MappedText;
 use super::regions::{comment_end, string_end};
 use super::texts::Texts;
 use super::{FileId, Span};
-use crate::diagnostic::{Diagnostic, Kind};
+use crate::diagnostic::{Diagnostic, Kind, Missing};
 
 /// Bytes of expansions and includes that may be scanned for one unit, counted each time.
 const MAX_EXPANSION: usize = 64 << 20;
@@ -24,13 +24,37 @@ const EXPANSION_COST: usize = 100;
 const MAX_INCLUDE_DEPTH: usize = 64;
 /// Files included by one unit, counted each time.
 const MAX_INCLUSIONS: usize = 20_000;
+/// Uses of an unknown macro that are named beside the first.
+const SHOWN_USES: usize = 5;
 /// Macros within macros.
 const MAX_MACRO_DEPTH: usize = 256;
+
+/// Directives of simulators older than the standard that say nothing about the design and have no argument. A macro of
+/// such a name is that macro.
+const OLD_DIRECTIVES: &[&str] = &[
+    "accelerate",
+    "noaccelerate",
+    "autoexpand_vectornets",
+    "expand_vectornets",
+    "noexpand_vectornets",
+    "remove_gatenames",
+    "noremove_gatenames",
+    "remove_netnames",
+    "noremove_netnames",
+    "suppress_faults",
+    "nosuppress_faults",
+    "enable_portfaults",
+    "disable_portfaults",
+    "protect",
+    "endprotect",
+];
 
 /// A preprocessed unit, or why there is none, and the files that it included.
 pub struct Preprocessed {
     pub text: Result<MappedText, Box<Diagnostic>>,
     pub included: Vec<FileId>,
+    /// What is missing; the text has gaps where that may matter.
+    pub problems: Vec<Diagnostic>,
 }
 
 /// Preprocesses one file. `macros` holds the macros in force before and, afterwards, behind it.
@@ -44,9 +68,11 @@ pub fn preprocess(texts: &mut Texts, search: &IncludeSearch, macros: &mut Macros
         active: Vec::new(),
         files: Vec::new(),
         included: Vec::new(),
+        problems: Vec::new(),
+        lost_include: None,
     };
     let result = run.file(file);
-    Preprocessed { text: result.map(|()| run.out), included: run.included }
+    Preprocessed { text: result.map(|()| run.out), included: run.included, problems: run.problems }
 }
 
 type Outcome<T> = Result<T, Box<Diagnostic>>;
@@ -62,6 +88,9 @@ struct Preprocessor<'a> {
     /// Files that are being read, the unit first.
     files: Vec<FileId>,
     included: Vec<FileId>,
+    problems: Vec<Diagnostic>,
+    /// Which of them is the first include that was not found.
+    lost_include: Option<usize>,
 }
 
 /// Where a scanned text stands.
@@ -236,6 +265,8 @@ impl Preprocessor<'_> {
         }
         match name {
             "define" => {
+                let named =
+                    macros::identifier(text, macros::skip_blanks(text.as_bytes(), end)).map_or(end, |(_, end)| end);
                 let (name, mut definition, end) = macros::definition(text, end).map_err(|(at, message)| {
                     failure(
                         scan.origin.span(at, at + 1),
@@ -243,7 +274,7 @@ impl Preprocessor<'_> {
                         "write `define NAME text, or `define NAME(a, b) text",
                     )
                 })?;
-                definition.at = Some(scan.origin.span(at, end));
+                definition.at = Some(scan.origin.span(at, named));
                 self.macros.insert(name, Arc::new(definition));
                 Ok(Next::Skip(end))
             }
@@ -283,10 +314,15 @@ impl Preprocessor<'_> {
             | "delay_mode_distributed"
             | "delay_mode_path"
             | "delay_mode_unit"
-            | "delay_mode_zero" => {
-                let rest = text[end..].find(['\n', '\r']).unwrap_or(text.len() - end);
-                Ok(Next::Skip(end + rest))
+            | "delay_mode_zero" => Ok(Next::Skip(line_end(text, end))),
+            _ if self.macros.contains_key(name) => self.expand(scan, at, name, end).map(Next::Skip),
+            "uselib" => Ok(Next::Skip(line_end(text, end))),
+            "protected" => {
+                let help =
+                    "ask its supplier for readable text, or leave the file out: its modules are then black boxes";
+                Err(failure(span, "what follows is encrypted and cannot be read", help))
             }
+            _ if OLD_DIRECTIVES.contains(&name) => Ok(Next::Skip(end)),
             _ => self.expand(scan, at, name, end).map(Next::Skip),
         }
     }
@@ -309,11 +345,8 @@ impl Preprocessor<'_> {
             {
                 return self.expand(scan, start, &format!("{name}{rest}"), rest_end);
             }
-            let message = format!("the macro `{name}` is not defined here");
-            let help = format!(
-                "define it with `-D {name}`, or list the file that defines it before this one in a file list (`-f`)"
-            );
-            return Err(failure(scan.origin.span(start, end), message, help));
+            self.undefined(name, scan.origin.span(start, end));
+            return Ok(end);
         };
         let open = end + bytes[end..].iter().take_while(|byte| byte.is_ascii_whitespace()).count();
         let has_arguments = bytes.get(open) == Some(&b'(');
@@ -331,6 +364,9 @@ impl Preprocessor<'_> {
             behind = list_end;
         }
         let span = scan.origin.span(start, behind);
+        if let (Origin::File(_), Some(defined)) = (scan.origin, definition.at) {
+            self.texts.set.add_macro_use(span, defined);
+        }
         if self.active.iter().any(|active| active == name) {
             let message = format!("the macro `{name}` expands to itself");
             return Err(self.at_macro(&definition, span, message, "break the circle of definitions"));
@@ -353,6 +389,27 @@ impl Preprocessor<'_> {
         let result = self.scan(&body, Origin::Use(span));
         self.active.pop();
         result.map(|()| behind)
+    }
+
+    /// Leaves a gap for an unknown macro. Behind a missing include that is no message of its own, nor is the second use.
+    fn undefined(&mut self, name: &str, span: Span) {
+        self.out.push_gap(span);
+        let wanted = Missing::Macro(name.to_string());
+        let before = self.problems.iter().position(|problem| problem.missing.as_deref() == Some(&wanted));
+        if let Some(cause) = self.lost_include.or(before).and_then(|index| self.problems.get_mut(index)) {
+            if cause.also.len() < SHOWN_USES {
+                let text = if self.lost_include.is_some() {
+                    format!("`{name}` is not defined: what it stands in is left out")
+                } else {
+                    "also used here".to_string()
+                };
+                cause.also.push((span, text));
+            }
+            return;
+        }
+        let message = format!("the macro `{name}` is not defined here");
+        let help = "the module or package that it stands in is left out";
+        self.problems.push(failure(span, message, help).about_missing(wanted));
     }
 
     fn ends_in_call(&self, definition: &Macro) -> bool {
@@ -393,6 +450,9 @@ impl Preprocessor<'_> {
         let outer = std::mem::take(&mut self.out);
         let result = self.scan(text, Origin::Use(span));
         let inner = std::mem::replace(&mut self.out, outer);
+        if !inner.gaps.is_empty() {
+            self.out.push_gap(span);
+        }
         result.map(|()| inner.text)
     }
 
@@ -417,6 +477,10 @@ impl Preprocessor<'_> {
                 let result = self.expand(scan, at, name, end);
                 let inner = std::mem::replace(&mut self.out, outer);
                 let end = result?;
+                if !inner.gaps.is_empty() {
+                    self.out.push_gap(scan.origin.span(start, end));
+                    return Ok(end);
+                }
                 let name = inner.text.trim();
                 (name.trim_matches(['"', '<', '>']).to_string(), end)
             }
@@ -428,10 +492,11 @@ impl Preprocessor<'_> {
 
     fn include_file(&mut self, name: &str, span: Span) -> Outcome<()> {
         let including = self.files.last().copied().unwrap_or(span.file);
-        let path = self.search.find(name, &self.texts.set.file(including).path).map_err(|problem| match problem {
+        let found = self.search.find(name, &self.texts.set.file(including).path).map_err(|problem| match problem {
             IncludeProblem::Missing => {
                 let message = format!("the included file `{name}` was not found");
-                failure(span, message, "name its folder with `-I`, or scan a tree that contains it")
+                let help = "the rest is read without it, so conditions on its macros may be taken wrongly";
+                Box::new(failure(span, message, help).about_missing(Missing::Include(name.to_string())))
             }
             IncludeProblem::Ambiguous(paths) => {
                 let list: Vec<String> = paths.iter().map(|path| format!("`{}`", path.display())).collect();
@@ -442,7 +507,16 @@ impl Preprocessor<'_> {
                 let message = format!("`{name}` may be any of {}", list.join(", "));
                 failure(span, message, format!("choose one with {}", folders.join(" or ")))
             }
-        })?;
+        });
+        let path = match found {
+            Ok(path) => path,
+            Err(problem) => {
+                self.push(" ", span);
+                self.lost_include.get_or_insert(self.problems.len());
+                self.problems.push(*problem);
+                return Ok(());
+            }
+        };
         let Some(file) = self.texts.read(&path) else {
             let message = format!("the included file `{}` cannot be used", path.display());
             return Err(failure(span, message, "see the message about that file"));
@@ -484,6 +558,10 @@ fn open_condition<'s>(scan: &'s mut Scan<'_>, directive: &str, span: Span) -> Ou
             Err(failure(span, message, "remove it, or write the `ifdef that it belongs to"))
         }
     }
+}
+
+fn line_end(text: &str, at: usize) -> usize {
+    text[at..].find(['\n', '\r']).map_or(text.len(), |rest| at + rest)
 }
 
 /// The offset behind `1ns / 1ps`; unchanged when something else stands there, so that the parser can say so.

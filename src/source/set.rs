@@ -55,6 +55,8 @@ impl SourceFile {
 #[derive(Clone, Debug, Default)]
 pub struct SourceSet {
     pub files: Vec<SourceFile>,
+    /// Where macros with a place are used, and where each is defined; sorted once everything is read.
+    macro_uses: Vec<(Span, Span)>,
 }
 
 /// A span in words that people and other programs use: 1-based lines and columns, the end exclusive as in the span.
@@ -76,6 +78,23 @@ impl SourceSet {
         let line_starts = std::iter::once(0).chain(newlines).collect();
         self.files.push(SourceFile { id, path: path.into(), text, line_starts });
         id
+    }
+
+    pub fn add_macro_use(&mut self, at: Span, defined: Span) {
+        self.macro_uses.push((at, defined));
+    }
+
+    /// Must follow the last use that is added.
+    pub fn sort_macro_uses(&mut self) {
+        self.macro_uses.sort_unstable();
+        self.macro_uses.dedup();
+    }
+
+    /// Where the macro is defined whose use `span` is or lies in: from `` `define `` through its name.
+    pub fn macro_behind(&self, span: Span) -> Option<Span> {
+        let index = self.macro_uses.partition_point(|(at, _)| (at.file, at.start) <= (span.file, span.start));
+        let (at, defined) = *self.macro_uses.get(index.checked_sub(1)?)?;
+        (at.file == span.file && span.end <= at.end && span.start < at.end).then_some(defined)
     }
 
     /// The file of an id that this set gave out.

@@ -32,6 +32,16 @@ pub struct Unit {
     pub items: Vec<Item>,
 }
 
+impl Unit {
+    /// Adds what another part of the same file declares.
+    pub fn append(&mut self, other: Unit) {
+        self.modules.extend(other.modules);
+        self.packages.extend(other.packages);
+        self.udps.extend(other.udps);
+        self.items.extend(other.items);
+    }
+}
+
 #[derive(Clone, Copy, PartialEq, Eq, Debug)]
 pub enum ModuleKind {
     Module,
@@ -346,6 +356,13 @@ pub enum ItemKind {
     /// For simulation only, passed over on purpose; the string is the kind counted in the coverage ("assertion",
     /// "specify block", "initial block with timing", "class", "covergroup").
     Skipped(String),
+    /// A name that only simulation uses: a class, covergroup, checker or DPI import, which is `what`.
+    Simulation {
+        what: String,
+        name: Ident,
+        /// A call of it as a statement changes nothing that synthesises.
+        inert: bool,
+    },
     /// Not supported; the string is the construct in the words of IEEE 1800.
     Unsupported(String),
 }

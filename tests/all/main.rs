@@ -2,6 +2,7 @@
 
 mod assumptions;
 mod constructs;
+mod controls;
 mod convert;
 mod cores;
 mod covers;
@@ -12,6 +13,7 @@ mod elaborate;
 mod explorer;
 mod fixtures;
 mod flatten;
+mod forms;
 mod formula;
 mod fuzz_regressions;
 mod given;
@@ -21,6 +23,7 @@ mod ledger;
 mod loops;
 mod operators;
 mod outside;
+mod passed_over;
 mod paths;
 mod pipeline;
 mod published;

@@ -132,7 +132,7 @@ fn a_file_with_a_mistake_does_not_lose_the_others() {
         ("good.v", "module good; endmodule"),
     ]);
     let loaded = tree.load();
-    assert_eq!(modules(&loaded), ["before", "after", "good"]);
+    assert_eq!(modules(&loaded), ["before", "after", "good", "i"]);
     let mut lost = of_kind(&loaded, Kind::Incomplete);
     lost.sort();
     let expected = [

@@ -37,11 +37,17 @@ impl Converter<'_> {
             sv::PackageOrGenerateItemDeclaration::DataDeclaration(x) => self.data_declaration(x, items),
             sv::PackageOrGenerateItemDeclaration::TaskDeclaration(x) => items.push(self.task(x)),
             sv::PackageOrGenerateItemDeclaration::FunctionDeclaration(x) => items.push(self.function(x)),
-            sv::PackageOrGenerateItemDeclaration::CheckerDeclaration(_) => items.push(self.skipped("checker", span)),
-            sv::PackageOrGenerateItemDeclaration::DpiImportExport(_) => items.push(self.skipped("DPI import", span)),
+            sv::PackageOrGenerateItemDeclaration::CheckerDeclaration(x) => {
+                items.push(self.simulation("checker", &x.nodes.1.nodes.0, true, span));
+            }
+            sv::PackageOrGenerateItemDeclaration::DpiImportExport(x) => items.push(self.dpi(x, span)),
+            sv::PackageOrGenerateItemDeclaration::ClassDeclaration(x) => {
+                items.push(self.simulation("class", &x.nodes.3.nodes.0, false, span));
+            }
+            sv::PackageOrGenerateItemDeclaration::InterfaceClassDeclaration(x) => {
+                items.push(self.simulation("class", &x.nodes.2.nodes.0, false, span));
+            }
             sv::PackageOrGenerateItemDeclaration::ExternConstraintDeclaration(_)
-            | sv::PackageOrGenerateItemDeclaration::ClassDeclaration(_)
-            | sv::PackageOrGenerateItemDeclaration::InterfaceClassDeclaration(_)
             | sv::PackageOrGenerateItemDeclaration::ClassConstructorDeclaration(_) => {
                 items.push(self.skipped("class", span));
             }
@@ -57,14 +63,44 @@ impl Converter<'_> {
                     items.push(self.item(ItemKind::Param(param), span));
                 }
             }
-            sv::PackageOrGenerateItemDeclaration::CovergroupDeclaration(_) => {
-                items.push(self.skipped("covergroup", span));
+            sv::PackageOrGenerateItemDeclaration::CovergroupDeclaration(x) => {
+                items.push(self.simulation("covergroup", &x.nodes.1.nodes.0, true, span));
             }
             sv::PackageOrGenerateItemDeclaration::AssertionItemDeclaration(x) => {
                 items.push(self.assertion_declaration(x));
             }
             sv::PackageOrGenerateItemDeclaration::Empty(_) => {}
         }
+    }
+
+    /// A DPI import, which declares a name, or an export, which declares none.
+    fn dpi(&self, declaration: &sv::DpiImportExport, span: Span) -> Item {
+        let (name, ports) = match declaration {
+            sv::DpiImportExport::ImportFunction(x) => {
+                let (_, _, name, ports) = &x.nodes.4.nodes.0.nodes;
+                (&name.nodes.0, ports)
+            }
+            sv::DpiImportExport::ImportTask(x) => {
+                let (_, name, ports) = &x.nodes.4.nodes.0.nodes;
+                (&name.nodes.0, ports)
+            }
+            sv::DpiImportExport::ExportFunction(_) | sv::DpiImportExport::ExportTask(_) => {
+                return self.skipped("DPI export", span);
+            }
+        };
+        let ports = ports.as_ref().and_then(|ports| ports.nodes.1.as_ref());
+        let ports = ports.map_or(Vec::new(), |ports| ports.nodes.0.contents());
+        let reads = |direction: &Option<sv::TfPortDirection>| match direction {
+            None => true,
+            Some(sv::TfPortDirection::PortDirection(x)) => matches!(**x, sv::PortDirection::Input(_)),
+            Some(sv::TfPortDirection::ConstRef(_)) => true,
+        };
+        let inert = ports.iter().all(|port| reads(&port.nodes.1));
+        self.simulation("DPI import", name, inert, span)
+    }
+
+    pub(super) fn simulation(&self, what: &str, name: &sv::Identifier, inert: bool, span: Span) -> Item {
+        self.item(ItemKind::Simulation { what: what.to_string(), name: self.ident(name), inert }, span)
     }
 
     pub(super) fn assertion_declaration(&self, declaration: &sv::AssertionItemDeclaration) -> Item {

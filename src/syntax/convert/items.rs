@@ -227,14 +227,14 @@ impl Converter<'_> {
             sv::CheckerOrGenerateItem::CheckerOrGenerateItemDeclaration(x) => match &**x {
                 sv::CheckerOrGenerateItemDeclaration::Data(x) => self.data_declaration(&x.nodes.1, items),
                 sv::CheckerOrGenerateItemDeclaration::FunctionDeclaration(x) => items.push(self.function(x)),
-                sv::CheckerOrGenerateItemDeclaration::CheckerDeclaration(_) => {
-                    items.push(self.skipped("checker", span));
+                sv::CheckerOrGenerateItemDeclaration::CheckerDeclaration(x) => {
+                    items.push(self.simulation("checker", &x.nodes.1.nodes.0, true, span));
                 }
                 sv::CheckerOrGenerateItemDeclaration::AssertionItemDeclaration(x) => {
                     items.push(self.assertion_declaration(x));
                 }
-                sv::CheckerOrGenerateItemDeclaration::CovergroupDeclaration(_) => {
-                    items.push(self.skipped("covergroup", span));
+                sv::CheckerOrGenerateItemDeclaration::CovergroupDeclaration(x) => {
+                    items.push(self.simulation("covergroup", &x.nodes.1.nodes.0, true, span));
                 }
                 sv::CheckerOrGenerateItemDeclaration::GenvarDeclaration(x) => items.push(self.genvars(x)),
                 sv::CheckerOrGenerateItemDeclaration::ClockingDeclaration(_)

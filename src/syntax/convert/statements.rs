@@ -162,7 +162,8 @@ impl Converter<'_> {
                 sv::DisableStatement::Block(x) => StmtKind::Disable(self.hierarchical(Scope::None, &x.nodes.1.nodes.0)),
                 sv::DisableStatement::Fork(_) => unsupported("disable fork"),
             },
-            sv::StatementItem::EventTrigger(_) => unsupported("event trigger"),
+            // A process that waits for the event says so itself.
+            sv::StatementItem::EventTrigger(_) => StmtKind::Skipped("event trigger".to_string()),
             sv::StatementItem::LoopStatement(x) => self.loop_statement(x),
             sv::StatementItem::JumpStatement(x) => match &**x {
                 sv::JumpStatement::Return(x) => {

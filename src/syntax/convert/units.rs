@@ -82,7 +82,9 @@ impl Converter<'_> {
                 Ok(udp) => unit.udps.push(udp),
                 Err(item) => unit.items.push(*item),
             },
-            sv::Description::InterfaceClassDeclaration(_) => unit.items.push(self.skipped("class", span)),
+            sv::Description::InterfaceClassDeclaration(x) => {
+                unit.items.push(self.simulation("class", &x.nodes.2.nodes.0, false, span));
+            }
             sv::Description::PackageDeclaration(x) => unit.packages.push(self.package(x)),
             sv::Description::PackageItem(x) => {
                 let (attributes, item) = &x.nodes;

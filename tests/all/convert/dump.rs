@@ -288,6 +288,7 @@ pub fn item(i: &Item) -> String {
         }
         ItemKind::ElabTask { name: n } => format!("elab {n}"),
         ItemKind::Skipped(what) => format!("skipped {what}"),
+        ItemKind::Simulation { what, name, .. } => format!("skipped {what} {}", self::name(name)),
         ItemKind::Unsupported(what) => format!("unsupported {what}"),
     };
     format!("{attributes}({body})")

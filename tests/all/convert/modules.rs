@@ -194,7 +194,7 @@ fn other_design_units() {
             "(Module outer #[] [none] (Module inner #[] [none] ))",
         ]
     );
-    assert_eq!(dump::items(&unit.items), "(typedef t logic) (skipped class) (unsupported configuration)");
+    assert_eq!(dump::items(&unit.items), "(typedef t logic) (skipped class c) (unsupported configuration)");
 }
 
 #[test]
@@ -205,14 +205,17 @@ fn what_only_a_simulator_needs_is_skipped_and_nothing_vanishes() {
         "assert property (@(posedge clk) a |-> b); property q; a; endproperty",
         "(skipped assertion) (skipped assertion)",
     );
-    check_items("covergroup cg @(posedge clk); endgroup class c; endclass", "(skipped covergroup) (skipped class)");
+    check_items(
+        "covergroup cg @(posedge clk); endgroup class c; endclass",
+        "(skipped covergroup cg) (skipped class c)",
+    );
     check_items(
         "clocking cb @(posedge clk); endclocking default disable iff r;",
         "(skipped clocking block) (skipped assertion)",
     );
     check_items(
         "import \"DPI-C\" function int f(input int a); final $display;",
-        "(skipped DPI import) (skipped final procedure)",
+        "(skipped DPI import f) (skipped final procedure)",
     );
     check_items("nettype t w; $error(\"x\");", "(unsupported user-defined net type) (elab $error)");
     check_items("let op(x, y = 2) = x & y;", "(let op [x=_ y=2] (And x y))");
