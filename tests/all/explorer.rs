@@ -69,7 +69,7 @@ impl Glitch {
         }
     }
 
-    fn of(before: bool, after: bool) -> Glitch {
+    pub fn of(before: bool, after: bool) -> Glitch {
         match (before, after) {
             (false, false) => Glitch::Static0,
             (true, true) => Glitch::Static1,
@@ -80,7 +80,7 @@ impl Glitch {
 
 impl Op {
     /// The value at a pin that alone decides the output.
-    fn controlling(self) -> Option<bool> {
+    pub fn controlling(self) -> Option<bool> {
         match self {
             Op::And | Op::Nand => Some(false),
             Op::Or | Op::Nor => Some(true),
@@ -196,7 +196,8 @@ struct Transition {
     after: bool,
 }
 
-const REACHED: u64 = 1 << 63;
+/// The bit of a state that says that the target has reached its final value.
+pub const REACHED: u64 = 1 << 63;
 
 impl Transition {
     /// `None` when no change reaches the target.
@@ -352,7 +353,8 @@ pub struct Seen {
 const DENSE_BITS: u32 = 22;
 
 impl Seen {
-    fn clear(&mut self, bits: u32) {
+    /// Forgets all states; the next ones use bits below `bits`, and bit 63.
+    pub fn clear(&mut self, bits: u32) {
         for word in self.touched.drain(..) {
             self.map[word] = 0;
         }
@@ -370,7 +372,7 @@ impl Seen {
     }
 
     /// Whether the state is new.
-    fn insert(&mut self, state: u64) -> bool {
+    pub fn insert(&mut self, state: u64) -> bool {
         if self.dense {
             let index = (state & !REACHED | (state >> 63) << self.bits) as usize;
             let word = &mut self.map[index / 64];

@@ -1,6 +1,7 @@
 //! The one integration binary: fixtures, end-to-end runs and checks against outside references.
 
 mod assumptions;
+mod catalogue;
 mod constructs;
 mod controls;
 mod convert;

@@ -1,0 +1,419 @@
+//! Exactness of the launch analysis on random circuits: 500 small sequential ones, each written as Verilog, read by the
+//! whole pipeline, and compared net by net with the [`crate::launch_explorer`], which knows neither the product's graph nor
+//! its algebra nor its solver. The circuits have flip-flops of both edges and of several clocks, ripple clocks, clocks
+//! gated by AND, OR and latches, enables (some shared), resets decoded from the state, latches of both phases.
+//!
+//! Compared are, for each net that drives a clock, a control or a latch enable, the pairs of one changing source and a kind,
+//! and the kinds that occur at all. A hazard too few is a false "clean", one too many a false alarm.
+
+use std::collections::{BTreeMap, BTreeSet};
+use std::fmt::Write;
+
+use crate::explorer::{Glitch, Op};
+use crate::launch_explorer::{Cell, Control, Explorer, Machine, Net, Shown, Trigger};
+use crate::pipeline::{Hazard, Scan, hazards, scan_text};
+use crate::random_circuits::Random;
+
+/// How many circuits are compared, and the number of the first.
+const CIRCUITS: u64 = 500;
+const FIRST_SEED: u64 = 1;
+
+/// The most sources of a circuit: every combination of their values is a state to start from.
+const SOURCES: usize = 9;
+
+/// A machine in the making. Gates that latches read must not depend on later latches, so each net knows the latest latch
+/// that it is computed from.
+struct Maker<'a> {
+    random: &'a mut Random,
+    machine: Machine,
+    /// How many of the cells feed others; those behind them only carry the pins under test.
+    core: usize,
+    latches: Vec<bool>,
+}
+
+impl Maker<'_> {
+    fn pick<T: Copy>(&mut self, from: &[T]) -> T {
+        from[self.random.below(from.len())]
+    }
+
+    fn invert(&mut self, net: Net) -> Net {
+        self.machine.gate(Op::Not, &[net])
+    }
+
+    /// The net or its inverse.
+    fn literal(&mut self, net: Net) -> Net {
+        if self.random.chance(40) { self.invert(net) } else { net }
+    }
+
+    /// A source that may be read by cell `reader`.
+    fn source(&mut self, reader: Option<usize>) -> Net {
+        let allowed: Vec<Net> = (0..self.core)
+            .filter(|&cell| match reader {
+                Some(reader) if self.latches[reader] => !self.latches[cell] || cell < reader,
+                _ => true,
+            })
+            .map(Net::Cell)
+            .collect();
+        if allowed.is_empty() || self.random.chance(25) {
+            Net::Input(self.random.below(self.machine.inputs))
+        } else {
+            self.pick(&allowed)
+        }
+    }
+
+    fn two_sources(&mut self, reader: Option<usize>) -> (Net, Net) {
+        let one = self.source(reader);
+        for _ in 0..4 {
+            let other = self.source(reader);
+            if other != one {
+                return (one, other);
+            }
+        }
+        (one, Net::Input(self.machine.inputs - 1))
+    }
+
+    fn operator(&mut self) -> Op {
+        self.pick(&[Op::And, Op::And, Op::Or, Op::Or, Op::Nand, Op::Nor, Op::Xor, Op::Xnor])
+    }
+
+    /// What a cell of the core stores, written so that counters, shift registers and held values are frequent.
+    fn data(&mut self, cell: usize, enable: Net) -> Net {
+        let present = Net::Cell(cell);
+        let latch = self.latches[cell];
+        let plain = match self.random.below(10) {
+            0 | 1 if !latch => self.invert(present),
+            2 if !latch => {
+                let other = self.source(Some(cell));
+                self.machine.gate(Op::Xor, &[present, other])
+            }
+            3 | 4 | 5 => {
+                let source = self.source(Some(cell));
+                self.literal(source)
+            }
+            6 | 7 => {
+                let (one, other) = self.two_sources(Some(cell));
+                let (one, other) = (self.literal(one), self.literal(other));
+                let op = self.operator();
+                self.machine.gate(op, &[one, other])
+            }
+            _ => self.source(Some(cell)),
+        };
+        if !latch && self.random.chance(30) { self.select(enable, plain, present) } else { plain }
+    }
+
+    fn select(&mut self, select: Net, then: Net, otherwise: Net) -> Net {
+        let inverted = self.invert(select);
+        let upper = self.machine.gate(Op::And, &[select, then]);
+        let lower = self.machine.gate(Op::And, &[inverted, otherwise]);
+        self.machine.gate(Op::Or, &[upper, lower])
+    }
+
+    /// The clock of a flip-flop of the core.
+    fn clock(&mut self, cell: usize) -> Trigger {
+        let rising = self.random.chance(75);
+        let net = match self.random.below(20) {
+            0..=11 => Net::Input(0),
+            12 | 13 => Net::Input(1),
+            14 | 15 if cell > 0 => Net::Cell(self.random.below(cell)),
+            16..=18 => self.gated(Some(cell)),
+            _ => Net::Input(0),
+        };
+        Trigger::Clock { net, rising }
+    }
+
+    fn enable(&mut self, cell: usize) -> Trigger {
+        let active = self.random.chance(50);
+        let net = match self.random.below(10) {
+            0..=5 => Net::Input(0),
+            6 | 7 => Net::Input(1),
+            _ => {
+                let allowed: Vec<usize> = (0..self.core).filter(|&one| !self.latches[one] || one < cell).collect();
+                let partner = if allowed.is_empty() { Net::Input(1) } else { Net::Cell(self.pick(&allowed)) };
+                let clock = self.literal(Net::Input(0));
+                let op = self.pick(&[Op::And, Op::Or]);
+                self.machine.gate(op, &[clock, partner])
+            }
+        };
+        Trigger::Enable { net, active }
+    }
+
+    /// A clock behind a gate.
+    fn gated(&mut self, reader: Option<usize>) -> Net {
+        let partner = self.source(reader);
+        let partner = if partner == Net::Input(0) { Net::Input(1) } else { partner };
+        let partner = self.literal(partner);
+        let op = self.pick(&[Op::And, Op::And, Op::Or, Op::Nand]);
+        self.machine.gate(op, &[Net::Input(0), partner])
+    }
+
+    /// A net worth watching: a decode of the state, a selector, a gated clock, sometimes a cell itself.
+    fn target(&mut self) -> Net {
+        match self.random.below(12) {
+            0 | 1 => self.gated(None),
+            2 => {
+                let select = self.source(None);
+                let (then, otherwise) = self.two_sources(None);
+                self.select(select, then, otherwise)
+            }
+            3 => Net::Cell(self.random.below(self.core)),
+            4 => {
+                let (one, other) = self.two_sources(None);
+                self.machine.gate(Op::Xor, &[one, other])
+            }
+            5 | 6 => {
+                let (one, other) = self.two_sources(None);
+                let (one, other) = (self.literal(one), self.literal(other));
+                let joined = self.machine.gate(Op::And, &[one, other]);
+                let (third, fourth) = self.two_sources(None);
+                let (third, fourth) = (self.literal(third), self.literal(fourth));
+                let second = self.machine.gate(Op::And, &[third, fourth]);
+                self.machine.gate(Op::Or, &[joined, second])
+            }
+            _ => {
+                let width = 2 + self.random.below(2);
+                let mut pins: Vec<Net> = Vec::new();
+                for _ in 0..8 {
+                    let source = self.source(None);
+                    if pins.len() < width && !pins.contains(&source) {
+                        pins.push(source);
+                    }
+                }
+                let pins: Vec<Net> = pins.into_iter().map(|pin| self.literal(pin)).collect();
+                let op = self.pick(&[Op::And, Op::And, Op::Or, Op::Nor, Op::Nand]);
+                self.machine.gate(op, &pins)
+            }
+        }
+    }
+
+    /// A decode of the state, an input, or both, as a reset.
+    fn control(&mut self, cell: usize) -> Control {
+        let net = match self.random.below(4) {
+            0 | 1 => Net::Input(self.machine.inputs - 1),
+            _ => {
+                let (one, other) = self.two_sources(Some(cell));
+                let (one, other) = (self.literal(one), self.literal(other));
+                self.machine.gate(Op::And, &[one, other])
+            }
+        };
+        let value = if self.random.chance(85) { Net::Constant(self.random.chance(30)) } else { Net::Input(1) };
+        Control { net, active: self.random.chance(60), value }
+    }
+}
+
+/// The machine of a seed.
+fn machine(seed: u64) -> Machine {
+    let mut random = Random::new(seed);
+    let inputs = 2 + random.below(3);
+    let core = 2 + random.below(4);
+    let tests = (1 + random.below(2)).min(SOURCES - inputs - core.min(SOURCES - inputs - 1));
+    let core = core.min(SOURCES - inputs - tests);
+    let latches: Vec<bool> = (0..core).map(|_| random.chance(25)).collect();
+    let mut maker = Maker { random: &mut random, machine: Machine::new(inputs), core, latches };
+    for cell in 0..core {
+        let trigger = if maker.latches[cell] { maker.enable(cell) } else { maker.clock(cell) };
+        maker.machine.cell(trigger, Net::Constant(false));
+    }
+    let shared = maker.source(None);
+    let shared = match shared {
+        Net::Cell(cell) if maker.latches[cell] => Net::Input(1),
+        other => other,
+    };
+    for cell in 0..core {
+        maker.machine.cells[cell].data = maker.data(cell, shared);
+        if !maker.latches[cell] && maker.random.chance(20) {
+            let control = maker.control(cell);
+            // A net that is clock and control of one cell is no construct that the program reads.
+            if !matches!(maker.machine.cells[cell].trigger, Trigger::Clock { net, .. } if net == control.net) {
+                maker.machine.cells[cell].controls.push(control);
+            }
+        }
+    }
+    for _ in 0..tests {
+        let target = maker.target();
+        let data = Net::Input(maker.random.below(inputs));
+        match maker.random.below(3) {
+            0 => {
+                let rising = maker.random.chance(50);
+                maker.machine.cell(Trigger::Clock { net: target, rising }, data);
+            }
+            1 => {
+                let active = maker.random.chance(50);
+                maker.machine.cell(Trigger::Enable { net: target, active }, data);
+            }
+            _ => {
+                let clock = Net::Input(maker.random.below(2));
+                maker.machine.cell(Trigger::Clock { net: clock, rising: true }, data);
+                let control = Control { net: target, active: maker.random.chance(50), value: Net::Constant(false) };
+                let last = maker.machine.cells.len() - 1;
+                maker.machine.cells[last].controls.push(control);
+            }
+        }
+    }
+    maker.machine
+}
+
+fn name(net: Net) -> String {
+    match net {
+        Net::Input(input) => format!("i{input}"),
+        Net::Cell(cell) => format!("q{cell}"),
+        Net::Gate(gate) => format!("n{gate}"),
+        Net::Constant(value) => format!("1'b{}", u8::from(value)),
+    }
+}
+
+/// The machine as a module of this name.
+fn module(title: &str, machine: &Machine) -> String {
+    let inputs: Vec<String> = (0..machine.inputs).map(|input| name(Net::Input(input))).collect();
+    let mut text = format!("module {title} (input {});\n", inputs.join(", "));
+    for cell in 0..machine.cells.len() {
+        let init = machine.cells[cell].init.map_or(String::new(), |init| format!(" = 1'b{}", u8::from(init)));
+        let _ = writeln!(text, "  reg q{cell}{init};");
+    }
+    for (index, gate) in machine.gates.iter().enumerate() {
+        let pins: Vec<String> = gate.pins.iter().map(|&pin| name(pin)).collect();
+        let expression = match gate.op {
+            Op::Buf => pins[0].clone(),
+            Op::Not => format!("~{}", pins[0]),
+            Op::And => pins.join(" & "),
+            Op::Nand => format!("~({})", pins.join(" & ")),
+            Op::Or => pins.join(" | "),
+            Op::Nor => format!("~({})", pins.join(" | ")),
+            Op::Xor => pins.join(" ^ "),
+            Op::Xnor => format!("~({})", pins.join(" ^ ")),
+        };
+        let _ = writeln!(text, "  wire n{index} = {expression};");
+    }
+    for (index, cell) in machine.cells.iter().enumerate() {
+        let data = name(cell.data);
+        let _ = match cell.trigger {
+            Trigger::Enable { net, active } => {
+                let inversion = if active { "" } else { "!" };
+                writeln!(text, "  always @* if ({inversion}{}) q{index} = {data};", name(net))
+            }
+            Trigger::Clock { net, rising } => writeln!(text, "  {}", flip_flop(index, cell, net, rising)),
+        };
+    }
+    text.push_str("endmodule\n");
+    text
+}
+
+fn flip_flop(index: usize, cell: &Cell, clock: Net, rising: bool) -> String {
+    let edge = |rising: bool| if rising { "posedge" } else { "negedge" };
+    let mut events = format!("{} {}", edge(rising), name(clock));
+    let mut choice = String::new();
+    for control in &cell.controls {
+        let (net, inversion) = (name(control.net), if control.active { "" } else { "!" });
+        let _ = write!(events, " or {} {net}", edge(control.active));
+        let _ = write!(choice, "if ({inversion}{net}) q{index} <= {}; else ", name(control.value));
+    }
+    format!("always @({events}) {choice}q{index} <= {};", name(cell.data))
+}
+
+/// The nets that drive pins, each once.
+fn pin_nets(machine: &Machine) -> BTreeSet<Net> {
+    let mut nets = BTreeSet::new();
+    for cell in &machine.cells {
+        let (Trigger::Clock { net, .. } | Trigger::Enable { net, .. }) = cell.trigger;
+        nets.insert(net);
+        nets.extend(cell.controls.iter().map(|control| control.net));
+    }
+    nets.retain(|net| !matches!(net, Net::Input(_) | Net::Constant(_)));
+    nets
+}
+
+/// What is said about a net: the pairs of a source that changes alone and a kind, and all kinds.
+#[derive(Clone, PartialEq, Eq, Default, Debug)]
+struct Said {
+    pairs: BTreeSet<(String, String)>,
+    kinds: BTreeSet<String>,
+}
+
+impl Said {
+    fn by_explorer(machine: &Machine, shown: &BTreeSet<Shown>) -> Self {
+        let source = |source: usize| match source.checked_sub(machine.inputs) {
+            Some(cell) => name(Net::Cell(cell)),
+            None => name(Net::Input(source)),
+        };
+        let mut said = Self::default();
+        for one in shown {
+            said.kinds.insert(one.kind.name().to_string());
+            if let Some(alone) = one.alone {
+                said.pairs.insert((source(alone), one.kind.name().to_string()));
+            }
+        }
+        said
+    }
+
+    /// A hazard that names one changing source is a pair.
+    fn by_program(hazards: &[Hazard]) -> Self {
+        let kinds = hazards.iter().map(|hazard| hazard.kind.clone()).collect();
+        let single = hazards.iter().filter(|hazard| hazard.changes.len() == 1);
+        let pairs = single.map(|hazard| (hazard.changes[0].clone(), hazard.kind.clone())).collect();
+        Self { pairs, kinds }
+    }
+}
+
+/// The rules that speak about pins.
+const RULES: [&str; 3] = ["clock-hazard", "set-reset-hazard", "latch-enable-hazard"];
+
+/// What the program lists about the pin nets of an instance.
+fn listed(scan: &Scan, instance: &str) -> Result<BTreeMap<String, Vec<Hazard>>, String> {
+    let mut all: BTreeMap<String, Vec<Hazard>> = BTreeMap::new();
+    for finding in scan.findings_in(instance) {
+        if !RULES.iter().any(|rule| finding["rule"] == *rule) {
+            continue;
+        }
+        if finding["verdict"] != "proven" {
+            return Err(format!("{} is undecided: {}", finding["net"], finding["message"]));
+        }
+        let net = finding["net"].as_str().unwrap_or_default();
+        let net = net.strip_prefix(&format!("{instance}.")).unwrap_or(net).to_string();
+        all.entry(net).or_default().extend(hazards(finding, instance));
+    }
+    Ok(all)
+}
+
+/// Compares one circuit; `Err` says what differs.
+fn compare(instance: &str, machine: &Machine, scan: &Scan) -> Result<(), String> {
+    let mut listed = listed(scan, instance)?;
+    let mut explorer = Explorer::new(machine);
+    let mut wrong = String::new();
+    for net in pin_nets(machine) {
+        let shown = explorer.shown(net, |_| true);
+        let expected = Said::by_explorer(machine, &shown);
+        let hazards = listed.remove(&name(net)).unwrap_or_default();
+        let found = Said::by_program(&hazards);
+        if found != expected {
+            let _ = writeln!(wrong, "{}: found {found:?}\n  the explorer {expected:?}\n  from {hazards:?}", name(net));
+            for one in &shown {
+                let _ = writeln!(wrong, "    {one:?}");
+            }
+        }
+    }
+    if !listed.is_empty() {
+        let _ = writeln!(wrong, "unexpected: {listed:?}");
+    }
+    if wrong.is_empty() { Ok(()) } else { Err(wrong) }
+}
+
+#[test]
+fn the_program_finds_exactly_what_the_launch_explorer_finds() {
+    const BATCH: usize = 50;
+    let seeds: Vec<u64> = (FIRST_SEED..FIRST_SEED + CIRCUITS).collect();
+    let mut failures = Vec::new();
+    let mut hazardous = 0;
+    for batch in seeds.chunks(BATCH) {
+        let machines: Vec<(String, Machine)> = batch.iter().map(|&seed| (format!("t{seed}"), machine(seed))).collect();
+        let text: String = machines.iter().map(|(title, machine)| module(title, machine)).collect();
+        let scan = scan_text(&text);
+        for (title, machine) in &machines {
+            hazardous += usize::from(!scan.findings_in(title).is_empty());
+            if let Err(difference) = compare(title, machine, &scan) {
+                failures.push(format!("{difference}\n{}", module(title, machine)));
+            }
+        }
+    }
+    assert!(failures.is_empty(), "{} circuits differ, first:\n{}", failures.len(), failures[0]);
+    // The generator must keep both answers common, or the comparison says little.
+    assert!(hazardous > 150 && hazardous < 450, "{hazardous} hazardous circuits");
+}
