@@ -17,30 +17,39 @@ use crate::pipeline::{Scan, scan};
 
 /// A finding as a fixture speaks about it; the kinds with their causes.
 #[derive(Clone, PartialEq, Eq, Debug)]
-struct Expected {
-    rule: String,
-    severity: String,
-    kinds: BTreeMap<String, Option<String>>,
+pub struct Expected {
+    pub rule: String,
+    pub severity: String,
+    pub kinds: BTreeMap<String, Option<String>>,
 }
 
-/// A module of a fixture: its lines, counted from 1.
+/// A module of a fixture.
 #[derive(Clone, PartialEq, Eq, Debug)]
-struct Module {
-    name: String,
-    lines: std::ops::RangeInclusive<usize>,
+pub struct Module {
+    pub name: String,
+    /// Whether it declares a signal as static.
+    pub is_static: bool,
     quiet: Option<String>,
-    expected: Vec<(usize, Expected)>,
+    /// By line.
+    pub expected: Vec<(usize, Expected)>,
+}
+
+impl Module {
+    /// Whether it is about a loop of gates.
+    pub fn has_loop(&self) -> bool {
+        self.expected.iter().any(|(_, expected)| expected.rule == "combinational-loop")
+    }
 }
 
 /// A file of the catalogue.
-struct Construct {
-    name: String,
+pub struct Construct {
+    pub name: String,
     /// The comment at its top.
     about: String,
-    modules: Vec<Module>,
+    pub modules: Vec<Module>,
 }
 
-fn folder() -> PathBuf {
+pub fn folder() -> PathBuf {
     Path::new(env!("CARGO_MANIFEST_DIR")).join("fixtures/catalogue")
 }
 
@@ -61,10 +70,10 @@ fn parse(name: &str, text: &str) -> Construct {
         let number = index + 1;
         if let Some(rest) = line.strip_prefix("module ") {
             let name = rest.split([' ', '(']).next().unwrap_or_default().to_string();
-            modules.push(Module { name, lines: number..=number, quiet: None, expected: Vec::new() });
+            modules.push(Module { name, is_static: false, quiet: None, expected: Vec::new() });
         }
         let Some(module) = modules.last_mut() else { continue };
-        module.lines = *module.lines.start()..=number;
+        module.is_static |= line.contains("// stillwire: static ");
         if let Some((_, reason)) = line.split_once("//! quiet because ") {
             module.quiet = Some(reason.to_string());
         }
@@ -76,7 +85,7 @@ fn parse(name: &str, text: &str) -> Construct {
 }
 
 /// Every construct, by name.
-fn constructs() -> Vec<Construct> {
+pub fn constructs() -> Vec<Construct> {
     let entries = std::fs::read_dir(folder()).expect("the folder of the catalogue");
     let paths = entries.map(|entry| entry.expect("an entry").path());
     let sources = paths.filter(|path| path.extension().is_some_and(|extension| extension == "v"));

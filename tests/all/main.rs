@@ -2,6 +2,7 @@
 
 mod assumptions;
 mod catalogue;
+mod catalogue_explored;
 mod constructs;
 mod controls;
 mod convert;
@@ -20,6 +21,9 @@ mod fuzz_regressions;
 mod given;
 mod graph;
 mod launch;
+mod launch_delays;
+mod launch_explorer;
+mod launch_reach;
 mod ledger;
 mod loops;
 mod operators;
@@ -30,6 +34,7 @@ mod pipeline;
 mod published;
 mod random_circuits;
 mod random_files;
+mod random_launches;
 mod random_modules;
 mod reading;
 mod registers;
@@ -37,7 +42,6 @@ mod report;
 mod robustness;
 mod rule_pages;
 mod sarif;
-
 mod signoff;
 mod simulator;
 mod sources;

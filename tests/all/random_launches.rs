@@ -309,18 +309,6 @@ fn flip_flop(index: usize, cell: &Cell, clock: Net, rising: bool) -> String {
     format!("always @({events}) {choice}q{index} <= {};", name(cell.data))
 }
 
-/// The nets that drive pins, each once.
-fn pin_nets(machine: &Machine) -> BTreeSet<Net> {
-    let mut nets = BTreeSet::new();
-    for cell in &machine.cells {
-        let (Trigger::Clock { net, .. } | Trigger::Enable { net, .. }) = cell.trigger;
-        nets.insert(net);
-        nets.extend(cell.controls.iter().map(|control| control.net));
-    }
-    nets.retain(|net| !matches!(net, Net::Input(_) | Net::Constant(_)));
-    nets
-}
-
 /// What is said about a net: the pairs of a source that changes alone and a kind, and all kinds.
 #[derive(Clone, PartialEq, Eq, Default, Debug)]
 struct Said {
@@ -378,7 +366,7 @@ fn compare(instance: &str, machine: &Machine, scan: &Scan) -> Result<(), String>
     let mut listed = listed(scan, instance)?;
     let mut explorer = Explorer::new(machine);
     let mut wrong = String::new();
-    for net in pin_nets(machine) {
+    for net in machine.pins() {
         let shown = explorer.shown(net, |_| true);
         let expected = Said::by_explorer(machine, &shown);
         let hazards = listed.remove(&name(net)).unwrap_or_default();
