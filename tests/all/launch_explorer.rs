@@ -12,7 +12,8 @@
 //!
 //! The root may itself be a cell's output that reaches a clock, an enable or a control. Its own step from its old value is
 //! judged in the launch that moves it, so here only the second step and both together are. If its cell is open or under an
-//! active control, the root moves to what the cell wants; a flip-flop moves while its clock rests behind its edge.
+//! active control, the root moves to what the cell wants; a flip-flop moves while its clock rests behind its edge, a closed
+//! latch not at all.
 //!
 //! Invariant: latches read inputs, flip-flops and latches with a lower number only, so no loop runs through open latches.
 
@@ -164,13 +165,14 @@ impl Machine {
     }
 
     /// Whether the output of a cell can be about to change: to what the cell wants; a flip-flop that nothing controls just
-    /// after its edge, while its clock rests at the level behind it; a closed latch at any time, since it may have raced.
+    /// after its edge, while its clock rests at the level behind it; a closed latch never. (One that raced as it closed in a
+    /// second step is a hazard on whatever it drives in that step already.)
     fn can_move(&self, cell: usize, state: u32) -> bool {
         let present = state >> (self.inputs + cell) & 1 == 1;
         match (self.wanted(cell, state), self.cells[cell].trigger) {
             (Some(wanted), _) => wanted != present,
             (None, Trigger::Clock { net, rising }) => self.at(net, state) == rising,
-            (None, Trigger::Enable { .. }) => true,
+            (None, Trigger::Enable { .. }) => false,
         }
     }
 
@@ -218,6 +220,8 @@ pub struct Shown {
     pub kind: Glitch,
     pub when: When,
     pub root: usize,
+    /// Whether the root rises.
+    pub rises: bool,
     /// The sources in front of the target that change in the step, or in both.
     pub changes: BTreeSet<usize>,
     /// Whether it is the clean change of one source that explains the glitch: an input's in the first step, a cell's in the
@@ -257,12 +261,13 @@ impl<'a> Explorer<'a> {
         let machine = self.machine;
         let cone = machine.cone(target);
         let value = |state: u32| machine.at(target, state);
+        let rises = state >> root & 1 == 0;
         for first in self.first(state, root) {
             if root < machine.inputs && self.glitches(target, &first) {
                 let kind = Glitch::of(value(state), value(first.after));
                 let function = self.leaves(target, &first);
                 let changes = bits(first.moved() & cone);
-                shown.insert(Shown { kind, when: When::First, root, changes, alone: Some(root), function });
+                shown.insert(Shown { kind, when: When::First, root, rises, changes, alone: Some(root), function });
             }
             for second in self.second(state, &first) {
                 let [before, between, after] = [state, first.after, second.after].map(value);
@@ -271,12 +276,12 @@ impl<'a> Explorer<'a> {
                     let changes = bits(second.moved() & cone);
                     let alone = self.alone(cone, &second);
                     let function = self.leaves(target, &second);
-                    shown.insert(Shown { kind, when: When::Second, root, changes, alone, function });
+                    shown.insert(Shown { kind, when: When::Second, root, rises, changes, alone, function });
                 }
                 if before != between && between != after {
                     let kind = Glitch::of(before, after);
                     let changes = bits((first.moved() | second.moved()) & cone);
-                    shown.insert(Shown { kind, when: When::Both, root, changes, alone: None, function: Some(true) });
+                    shown.insert(Shown { kind, when: When::Both, root, rises, changes, alone: None, function: Some(true) });
                 }
             }
         }

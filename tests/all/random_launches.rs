@@ -9,9 +9,13 @@
 use std::collections::{BTreeMap, BTreeSet};
 use std::fmt::Write;
 
-use crate::explorer::{Glitch, Op};
-use crate::launch_explorer::{Cell, Control, Explorer, Machine, Net, Shown, Trigger};
-use crate::pipeline::{Hazard, Scan, hazards, scan_text};
+use stillwire::graph::NodeId;
+use stillwire::hazard::{Options, Step, launch};
+
+use crate::explorer::Op;
+use crate::launch_explorer::{Cell, Control, Explorer, Machine, Net, Shown, Trigger, When};
+use crate::launch_reach::Reach;
+use crate::pipeline::{Hazard, Scan, driver, graph, hazards, scan_text};
 use crate::random_circuits::Random;
 
 /// How many circuits are compared, and the number of the first.
@@ -86,7 +90,7 @@ impl Maker<'_> {
                 let other = self.source(Some(cell));
                 self.machine.gate(Op::Xor, &[present, other])
             }
-            3 | 4 | 5 => {
+            3..=5 => {
                 let source = self.source(Some(cell));
                 self.literal(source)
             }
@@ -98,6 +102,8 @@ impl Maker<'_> {
             }
             _ => self.source(Some(cell)),
         };
+        // A register that only ever takes its own value is a constant to the program.
+        let plain = if plain == present { self.invert(plain) } else { plain };
         if !latch && self.random.chance(30) { self.select(enable, plain, present) } else { plain }
     }
 
@@ -228,6 +234,11 @@ fn machine(seed: u64) -> Machine {
             }
         }
     }
+    // Often all flip-flops of the core have a first value, or none.
+    let with_init = [0, 0, 0, 50, 100][maker.random.below(5)];
+    for cell in (0..core).filter(|&cell| !maker.latches[cell]) {
+        maker.machine.cells[cell].init = maker.random.chance(with_init).then(|| maker.random.chance(30));
+    }
     for _ in 0..tests {
         let target = maker.target();
         let data = Net::Input(maker.random.below(inputs));
@@ -261,14 +272,23 @@ fn name(net: Net) -> String {
     }
 }
 
+fn source_name(machine: &Machine, source: usize) -> String {
+    match source.checked_sub(machine.inputs) {
+        Some(cell) => name(Net::Cell(cell)),
+        None => name(Net::Input(source)),
+    }
+}
+
 /// The machine as a module of this name.
 fn module(title: &str, machine: &Machine) -> String {
-    let inputs: Vec<String> = (0..machine.inputs).map(|input| name(Net::Input(input))).collect();
-    let mut text = format!("module {title} (input {});\n", inputs.join(", "));
-    for cell in 0..machine.cells.len() {
-        let init = machine.cells[cell].init.map_or(String::new(), |init| format!(" = 1'b{}", u8::from(init)));
-        let _ = writeln!(text, "  reg q{cell}{init};");
-    }
+    let inputs = (0..machine.inputs).map(|input| format!("input {}", name(Net::Input(input))));
+    // Outputs, because a latch that nobody reads is none to the program.
+    let outputs = machine.cells.iter().zip(0..).map(|(cell, index)| {
+        let init = cell.init.map_or(String::new(), |init| format!(" = 1'b{}", u8::from(init)));
+        format!("output reg q{index}{init}")
+    });
+    let ports: Vec<String> = inputs.chain(outputs).collect();
+    let mut text = format!("module {title} ({});\n", ports.join(", "));
     for (index, gate) in machine.gates.iter().enumerate() {
         let pins: Vec<String> = gate.pins.iter().map(|&pin| name(pin)).collect();
         let expression = match gate.op {
@@ -318,18 +338,18 @@ struct Said {
 
 impl Said {
     fn by_explorer(machine: &Machine, shown: &BTreeSet<Shown>) -> Self {
-        let source = |source: usize| match source.checked_sub(machine.inputs) {
-            Some(cell) => name(Net::Cell(cell)),
-            None => name(Net::Input(source)),
-        };
         let mut said = Self::default();
         for one in shown {
             said.kinds.insert(one.kind.name().to_string());
             if let Some(alone) = one.alone {
-                said.pairs.insert((source(alone), one.kind.name().to_string()));
+                said.pairs.insert((source_name(machine, alone), one.kind.name().to_string()));
             }
         }
         said
+    }
+
+    fn is_within(&self, other: &Self) -> bool {
+        self.pairs.is_subset(&other.pairs) && self.kinds.is_subset(&other.kinds)
     }
 
     /// A hazard that names one changing source is a pair.
@@ -361,18 +381,29 @@ fn listed(scan: &Scan, instance: &str) -> Result<BTreeMap<String, Vec<Hazard>>, 
     Ok(all)
 }
 
-/// Compares one circuit; `Err` says what differs.
-fn compare(instance: &str, machine: &Machine, scan: &Scan) -> Result<(), String> {
+/// Compares one circuit; `Err` says what differs. Where registers have reset values, what the program finds lies between
+/// what is shown from the states that a careless estimate reaches and what is shown from any state; returns how many nets
+/// had one possible answer, and how many there were.
+fn compare(instance: &str, machine: &Machine, scan: &Scan) -> Result<(usize, usize), String> {
     let mut listed = listed(scan, instance)?;
     let mut explorer = Explorer::new(machine);
+    let reach = Reach::of(machine);
     let mut wrong = String::new();
+    let (mut exact, mut nets) = (0, 0);
     for net in machine.pins() {
         let shown = explorer.shown(net, |_| true);
-        let expected = Said::by_explorer(machine, &shown);
+        let most = Said::by_explorer(machine, &shown);
+        let least = Said::by_explorer(machine, &explorer.shown(net, |state| reach.occurs(state)));
+        nets += 1;
+        exact += usize::from(least == most);
         let hazards = listed.remove(&name(net)).unwrap_or_default();
         let found = Said::by_program(&hazards);
-        if found != expected {
-            let _ = writeln!(wrong, "{}: found {found:?}\n  the explorer {expected:?}\n  from {hazards:?}", name(net));
+        if !least.is_within(&found) || !found.is_within(&most) {
+            let _ = writeln!(
+                wrong,
+                "{}: found {found:?}\n  at least {least:?}\n  at most {most:?}\n  from {hazards:?}",
+                name(net)
+            );
             for one in &shown {
                 let _ = writeln!(wrong, "    {one:?}");
             }
@@ -381,7 +412,7 @@ fn compare(instance: &str, machine: &Machine, scan: &Scan) -> Result<(), String>
     if !listed.is_empty() {
         let _ = writeln!(wrong, "unexpected: {listed:?}");
     }
-    if wrong.is_empty() { Ok(()) } else { Err(wrong) }
+    if wrong.is_empty() { Ok((exact, nets)) } else { Err(wrong) }
 }
 
 #[test]
@@ -389,19 +420,76 @@ fn the_program_finds_exactly_what_the_launch_explorer_finds() {
     const BATCH: usize = 50;
     let seeds: Vec<u64> = (FIRST_SEED..FIRST_SEED + CIRCUITS).collect();
     let mut failures = Vec::new();
-    let mut hazardous = 0;
+    let (mut hazardous, mut exact, mut nets) = (0, 0, 0);
     for batch in seeds.chunks(BATCH) {
         let machines: Vec<(String, Machine)> = batch.iter().map(|&seed| (format!("t{seed}"), machine(seed))).collect();
         let text: String = machines.iter().map(|(title, machine)| module(title, machine)).collect();
         let scan = scan_text(&text);
         for (title, machine) in &machines {
             hazardous += usize::from(!scan.findings_in(title).is_empty());
-            if let Err(difference) = compare(title, machine, &scan) {
-                failures.push(format!("{difference}\n{}", module(title, machine)));
+            match compare(title, machine, &scan) {
+                Ok((one, all)) => {
+                    exact += one;
+                    nets += all;
+                }
+                Err(difference) => failures.push(format!("{difference}\n{}", module(title, machine))),
             }
         }
     }
     assert!(failures.is_empty(), "{} circuits differ, first:\n{}", failures.len(), failures[0]);
     // The generator must keep both answers common, or the comparison says little.
     assert!(hazardous > 150 && hazardous < 450, "{hazardous} hazardous circuits");
+    assert!(10 * exact > 9 * nets, "one answer is possible for {exact} of {nets} nets only");
+}
+
+/// The whole relation of root, direction, step and kind, net by net, as the library tells it before anything is selected
+/// for a report. It is about any state: reset values have no part in it.
+#[test]
+fn the_engine_shows_exactly_what_the_launch_explorer_shows() {
+    let mut failures = Vec::new();
+    let mut hazards = 0;
+    for seed in FIRST_SEED..FIRST_SEED + CIRCUITS {
+        let machine = machine(seed);
+        let text = module("t", &machine);
+        let folder = tempfile::tempdir().expect("a temporary folder");
+        let file = folder.path().join("t.v");
+        std::fs::write(&file, &text).expect("the file is written");
+        let graph = graph(&file, "t");
+        let names = (0..machine.sources()).map(|source| source_name(&machine, source));
+        let names: BTreeMap<NodeId, String> =
+            names.map(|name| (driver(&graph, &format!("t.{name}")), name)).collect();
+        let mut explorer = Explorer::new(&machine);
+        for net in machine.pins() {
+            let (found, open) = launch::shown(
+                &graph,
+                driver(&graph, &format!("t.{}", name(net))),
+                &launch::Assumptions::default(),
+                &Options::default(),
+            );
+            let found: BTreeSet<_> = found
+                .iter()
+                .map(|one| (names[&one.root].clone(), one.rises, step(one.step), one.kind.name()))
+                .collect();
+            let expected: BTreeSet<_> = (explorer.shown(net, |_| true).iter())
+                .map(|one| (source_name(&machine, one.root), one.rises, one.when, one.kind.name()))
+                .collect();
+            hazards += expected.len();
+            if !open.is_empty() || found != expected {
+                let more: Vec<_> = found.difference(&expected).collect();
+                let less: Vec<_> = expected.difference(&found).collect();
+                let net = name(net);
+                failures.push(format!("seed {seed}, {net}:\n  false {more:?}\n  missing {less:?}\n  open {open:?}\n{text}"));
+            }
+        }
+    }
+    assert!(failures.is_empty(), "{} nets differ, first:\n{}", failures.len(), failures.join("\n"));
+    assert!(hazards > 1_000, "{hazards} hazards compared");
+}
+
+fn step(step: Step) -> When {
+    match step {
+        Step::First => When::First,
+        Step::Second => When::Second,
+        Step::Both => When::Both,
+    }
 }
