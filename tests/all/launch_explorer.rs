@@ -281,7 +281,15 @@ impl<'a> Explorer<'a> {
                 if before != between && between != after {
                     let kind = Glitch::of(before, after);
                     let changes = bits((first.moved() | second.moved()) & cone);
-                    shown.insert(Shown { kind, when: When::Both, root, rises, changes, alone: None, function: Some(true) });
+                    shown.insert(Shown {
+                        kind,
+                        when: When::Both,
+                        root,
+                        rises,
+                        changes,
+                        alone: None,
+                        function: Some(true),
+                    });
                 }
             }
         }

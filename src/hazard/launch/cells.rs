@@ -172,12 +172,25 @@ impl Encoder<'_> {
     }
 
     /// Writes down that a root which is a cell makes a move that it can make: to the value of its strongest active
-    /// control; else a flip-flop may do anything, and a latch that is open follows its data.
+    /// control; else a latch that is open follows its data, and a flip-flop moves just after its edge, while its clock
+    /// rests at the level behind it.
     pub(super) fn root_can_move(&mut self) {
-        let Role::Cell(cell) = self.fabric.role(self.event.root) else { return };
-        let cell = &self.fabric.cells[cell];
+        let Role::Cell(index) = self.fabric.role(self.event.root) else { return };
+        let cell = &self.fabric.cells[index];
         let output = self.value(Edge::new(cell.node, false));
         self.towards(cell, output, false);
+        let mut reasons: Vec<Literal> = Vec::new();
+        for &(clock, edge) in &cell.clocks {
+            match edge {
+                graph::Edge::Posedge => reasons.push(self.value(clock)),
+                graph::Edge::Negedge => reasons.push(!self.value(clock)),
+                graph::Edge::Both => return,
+            }
+        }
+        if cell.enable.is_none() {
+            reasons.extend(cell.controls.iter().map(|control| self.value(control.net)));
+            self.clauses.solver.clause(&reasons);
+        }
     }
 
     /// The output agrees, or else does not, with what a cell puts there without a clock.
