@@ -60,6 +60,9 @@ pub struct Input {
     /// A file list, with the options +incdir+, +define+, -y, -v and +libext+ inside; may be repeated
     #[arg(short = 'f', value_name = "FILE")]
     pub list: Vec<PathBuf>,
+    /// A Liberty library with the cells of a mapped netlist; may be repeated
+    #[arg(long, value_name = "FILE.lib")]
+    pub cells: Vec<PathBuf>,
     /// The settings file [default: stillwire.toml, looked for upward from the first path]
     #[arg(long, value_name = "FILE")]
     pub settings: Option<PathBuf>,
@@ -72,6 +75,9 @@ pub struct Input {
 pub struct Scan {
     #[command(flatten)]
     pub input: Input,
+    /// Print what is in force, and where each value comes from, as TOML; nothing is analysed
+    #[arg(long)]
+    pub show_settings: bool,
     /// Write the findings to a file as well, or to standard output with `-`; FORMAT is json or sarif; may be repeated
     #[arg(long, value_name = "FORMAT:FILE", value_parser = output)]
     pub write: Vec<Output>,

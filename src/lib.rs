@@ -40,6 +40,10 @@ pub struct Request {
     pub tops: Vec<String>,
     /// Values for parameters of the tops, as names and the texts of expressions.
     pub given: Vec<(String, String)>,
+    /// Liberty libraries.
+    pub libraries: Vec<std::path::PathBuf>,
+    /// What the settings declare about modules.
+    pub cells: Vec<cells::Declaration>,
     /// What the settings declare about nets.
     pub assumptions: Vec<assumptions::Declaration>,
     /// Severities that all findings of a rule get.
@@ -170,6 +174,7 @@ fn front_end(
     environment: Environment<'_>,
     progress: Progress<'_>,
 ) -> Result<(Loaded, elaborate::Design, Vec<Diagnostic>), PathError> {
+    let cells = cells::Cells::new(&request.libraries, &request.cells)?;
     let mut loaded =
         source::load(&request.source, environment, &|done, total| progress(Stage::Reading { done, total }))?;
     require_input(request, &loaded)?;
@@ -177,7 +182,8 @@ fn front_end(
     let units = std::mem::take(&mut loaded.units);
     let given = request.given.iter().map(|(name, value)| source::given(name, value, &mut loaded.sources));
     let given = given.collect::<Result<Vec<_>, PathError>>()?;
-    let (design, mut more) = elaborate::elaborate(&units, &elaborate::Request { tops: request.tops.clone(), given });
+    let asked = elaborate::Request { tops: request.tops.clone(), given, cells };
+    let (design, mut more) = elaborate::elaborate(&units, &asked);
     if let Some(elaborate::Misuse { message, help }) = design.misuse.first() {
         return Err(PathError::new(message, help));
     }
@@ -188,6 +194,7 @@ fn front_end(
     loaded.nearby.hint(&mut more);
     let mut diagnostics = std::mem::take(&mut loaded.diagnostics);
     diagnostics.extend(more);
+    diagnostics.extend(idle_cells(&asked.cells, &design));
     require_tops(&loaded, &design, &diagnostics)?;
     Ok((loaded, design, diagnostics))
 }
@@ -208,6 +215,19 @@ fn require_tops(loaded: &Loaded, design: &elaborate::Design, diagnostics: &[Diag
             PathError::new(message, help)
         }
     })
+}
+
+/// Declarations of cells that stand for nothing: a name may be misspelt.
+fn idle_cells(cells: &cells::Cells, design: &elaborate::Design) -> Vec<Diagnostic> {
+    let used =
+        |name: &str| design.cells.contains_key(name) || design.graph.black_boxes.iter().any(|one| one.module == name);
+    let idle = cells.all_declared().filter(|(name, _)| !used(name));
+    idle.map(|(name, place)| {
+        let message =
+            format!("the cell `{name}` ({place}) stands for no instance: there is none, or the module has a text");
+        Diagnostic::new(Kind::Note, "declared cell", message, None)
+    })
+    .collect()
 }
 
 /// Nothing to read and tops that nobody defines are mistakes of usage, as long as every file could be read.
@@ -252,6 +272,7 @@ fn report_on_input<'a>(
         files_failed: loaded.files_failed,
         modules_elaborated: design.modules_elaborated,
         modules_failed: design.modules_failed,
+        modelled_cells: design.cells.clone(),
         left_out: LeftOut {
             regions: loaded.regions.iter().map(|region| region.at).collect(),
             skipped: design.skipped.clone(),

@@ -41,6 +41,10 @@ fn main() -> ExitCode {
 
 fn scan(arguments: &cli::Scan) -> Result<u8, PathError> {
     let settings = read_settings(&arguments.input)?;
+    if arguments.show_settings {
+        print(&settings::show(&settings, &command_line(arguments)));
+        return Ok(0);
+    }
     check_outputs(&arguments.write)?;
     let ledger = arguments.ledger.as_deref().map(|file| Ok((file, read_ledger(file)?))).transpose()?;
     let request = request(&arguments.input, &settings);
@@ -154,6 +158,20 @@ fn read_settings(input: &Input) -> Result<Settings, PathError> {
     }
 }
 
+/// What the command line says beside the settings.
+fn command_line(arguments: &cli::Scan) -> settings::CommandLine {
+    let input = &arguments.input;
+    settings::CommandLine {
+        top: input.top.clone(),
+        set: input.set.clone(),
+        include: input.include.clone(),
+        define: input.define.clone(),
+        libraries: input.cells.clone(),
+        gate: arguments.gate.map(Severity::from),
+        show: arguments.show.map(Severity::from),
+    }
+}
+
 /// The command line with the settings behind it.
 fn request(input: &Input, settings: &Settings) -> Request {
     // A macro of the command line replaces one of the settings, because the later definition holds.
@@ -169,6 +187,8 @@ fn request(input: &Input, settings: &Settings) -> Request {
         tops: if input.top.is_empty() { settings.top.clone() } else { input.top.clone() },
         // A value of the command line comes later and so holds.
         given: settings.set.iter().chain(&input.set).cloned().collect(),
+        libraries: input.cells.iter().chain(&settings.libraries).cloned().collect(),
+        cells: settings.cells.clone(),
         assumptions: settings.assumptions.clone(),
         severities: settings.severities.clone(),
         today: jiff::Zoned::now().date(),

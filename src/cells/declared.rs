@@ -2,6 +2,8 @@
 
 use std::fmt;
 
+use crate::syntax::ast::Direction;
+
 /// What a user says about modules of some names.
 #[derive(Clone, PartialEq, Eq, Debug)]
 pub struct Declaration {
@@ -23,12 +25,33 @@ pub enum Role {
         select: Vec<PinName>,
         /// By value of the select.
         inputs: Vec<String>,
-        output: String,
+        output: PinName,
     },
     /// A clock gate that is right by construction: the enables are taken up by a latch that is open while the clock is
     /// inactive, and the output is active only while the clock is. An inverted clock pin is active low, and then the
     /// output rests at 1.
-    ClockGate { clock: PinName, enables: Vec<PinName>, output: String },
+    ClockGate { clock: PinName, enables: Vec<PinName>, output: PinName },
+}
+
+impl Declaration {
+    /// The pins of a declaration of pins alone.
+    pub fn pins(&self) -> impl Iterator<Item = (&PinName, PinRole)> {
+        let pins: &[DeclaredPin] = match &self.role {
+            Role::Pins { pins, .. } => pins,
+            _ => &[],
+        };
+        pins.iter().map(|one| (&one.pin, one.role))
+    }
+
+    /// Which way a pin of this name goes, as far as the declaration says.
+    pub fn direction(&self, name: &str) -> Option<Direction> {
+        let Role::Pins { pins, outputs } = &self.role else { return None };
+        if pins.iter().any(|one| one.pin.name == name) {
+            Some(Direction::Input)
+        } else {
+            outputs.iter().any(|output| output == name).then_some(Direction::Output)
+        }
+    }
 }
 
 #[derive(Clone, PartialEq, Eq, Debug)]

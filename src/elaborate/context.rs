@@ -15,6 +15,7 @@ use super::scope::{Lazy, Scope, ScopeId};
 use super::statement::Point;
 use super::types::Type;
 use super::{Design, Misuse, Request};
+use crate::cells::Cells;
 use crate::define_id;
 use crate::diagnostic::{Diagnostic, Kind};
 use crate::graph::{GraphBuilder, InstanceId, NetId, NodeId, Site};
@@ -72,6 +73,9 @@ pub(super) struct Elaborator<'a> {
     pub builder: GraphBuilder,
     pub guarded: Vec<Guarded>,
     pub library: Library<'a>,
+    pub cells: &'a Cells,
+    /// Instances of modelled cells so far, by module.
+    pub cells_used: BTreeMap<String, usize>,
     pub scopes: Vec<Scope<'a>>,
     pub lazies: Vec<(ScopeId, Lazy<'a>)>,
     pub variables: Vec<Variable>,
@@ -146,7 +150,7 @@ impl<'a> Elaborator<'a> {
         let mut diagnostics = Vec::new();
         let library = Library::new(units, &mut diagnostics);
         let tops = library.tops(&request.tops, &mut diagnostics);
-        let mut this = Self::new(library, diagnostics, &request.given);
+        let mut this = Self::new(library, diagnostics, request);
         this.check_given(&request.given, &tops.tops);
         for unit in units {
             let outcome = this.declare_all(this.unit, &unit.items, Storage::Package);
@@ -173,12 +177,13 @@ impl<'a> Elaborator<'a> {
             benches_left_out: tops.benches,
             skipped: this.skipped,
             opaque_memories: this.opaque_memories,
+            cells: this.cells_used,
             misuse: this.misuse,
         };
         (design, diagnostics)
     }
 
-    fn new(library: Library<'a>, diagnostics: Vec<Diagnostic>, given: &'a [Given]) -> Self {
+    fn new(library: Library<'a>, diagnostics: Vec<Diagnostic>, request: &'a Request) -> Self {
         let unit = Scope {
             parent: None,
             outer: None,
@@ -195,6 +200,8 @@ impl<'a> Elaborator<'a> {
             builder: GraphBuilder::new(),
             guarded: Vec::new(),
             library,
+            cells: &request.cells,
+            cells_used: BTreeMap::new(),
             scopes: vec![unit],
             lazies: Vec::new(),
             variables: Vec::new(),
@@ -213,7 +220,7 @@ impl<'a> Elaborator<'a> {
             external: HashMap::new(),
             pulls: HashMap::new(),
             diagnostics,
-            given,
+            given: &request.given,
             misuse: Vec::new(),
             skipped: BTreeMap::new(),
             overrides: HashMap::new(),

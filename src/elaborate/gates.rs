@@ -55,6 +55,7 @@ impl<'a> Elaborator<'a> {
             }
             Work::Connection(connection) => self.connection(connection),
             Work::BlackBox(black_box) => self.black_box(black_box),
+            Work::Cell(cell) => self.cell(cell),
         }
     }
 

@@ -5,6 +5,7 @@ use std::collections::{BTreeMap, BTreeSet, HashMap};
 use std::rc::Rc;
 
 use super::bits::to_value;
+use super::cells::CellWork;
 use super::context::{Elaborator, Outcome, Storage, VariableId, unsupported, wrong};
 use super::ports::{Actual, BlackBoxWork, ConnectionWork};
 use super::scope::{Constant, Lazy, Scope, ScopeId, Symbol};
@@ -66,6 +67,7 @@ pub(super) enum Work<'a> {
     },
     Connection(ConnectionWork<'a>),
     BlackBox(BlackBoxWork<'a>),
+    Cell(CellWork<'a>),
 }
 
 /// Which of an array of instances: its position from the right end, and how many there are.
@@ -545,8 +547,16 @@ impl<'a> Elaborator<'a> {
         }
         let parent = self.scope(scope).instance;
         let node = self.builder.instance(Some(parent), label, &name.name, Some(instance.span));
+        if let Some(model) = self.cells.declared(&name.name) {
+            self.works.push(Work::Cell(CellWork::new(scope, node, model, instance, slot)));
+            return Ok(None);
+        }
         let module = self.library.modules.get(name.name.as_str()).copied();
         let Some(module) = module else {
+            if let Some(model) = self.library_cell(name) {
+                self.works.push(Work::Cell(CellWork::new(scope, node, model, instance, slot)));
+                return Ok(None);
+            }
             self.works.push(Work::BlackBox(BlackBoxWork::missing(scope, node, name, instance, slot)));
             return Ok(None);
         };

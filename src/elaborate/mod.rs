@@ -10,6 +10,7 @@ mod bits;
 pub mod blast;
 mod calls;
 mod case;
+mod cells;
 mod constant;
 mod context;
 mod controls;
@@ -34,6 +35,7 @@ pub mod value;
 
 use std::collections::BTreeMap;
 
+use crate::cells::Cells;
 use crate::diagnostic::{Diagnostic, Kind};
 use crate::graph::{Graph, GraphBuilder};
 use crate::source::Given;
@@ -48,6 +50,8 @@ const STACK_MIB: [usize; 3] = [1024, 512, 256];
 /// What to elaborate.
 #[derive(Clone, Debug, Default)]
 pub struct Request {
+    /// What is known about modules beyond their text.
+    pub cells: Cells,
     /// Names of the top modules; empty means every module that nobody instantiates.
     pub tops: Vec<String>,
     /// Values for parameters of the tops; of two for one name the later holds.
@@ -70,6 +74,8 @@ pub struct Design {
     pub skipped: BTreeMap<String, usize>,
     /// Hierarchical names of the memories above 65,536 bits that are opaque.
     pub opaque_memories: Vec<String>,
+    /// Instances of library cells and of declared selectors and clock gates, by module.
+    pub cells: BTreeMap<String, usize>,
     /// Mistakes in [`Request::given`]; the design is not what was asked for then.
     pub misuse: Vec<Misuse>,
 }
@@ -103,6 +109,7 @@ fn empty(request: &Request) -> Design {
         benches_left_out: Vec::new(),
         skipped: BTreeMap::new(),
         opaque_memories: Vec::new(),
+        cells: BTreeMap::new(),
         misuse: Vec::new(),
     }
 }

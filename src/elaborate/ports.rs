@@ -10,9 +10,11 @@ use super::hierarchy::{Slot, Work};
 use super::place::{Base, Place, Resolved};
 use super::scope::{ScopeId, Symbol};
 use super::types::{Shape, Type};
+use crate::cells::{Declaration, PinRole};
 use crate::diagnostic::{Diagnostic, Kind};
-use crate::graph::{BlackBox, InstanceId, NodeId, Port, PortDirection, Site, SourceKind};
+use crate::graph::{BlackBox, BoxPin, BoxRole, Edge, InstanceId, NodeId, Port, PortDirection, Site, SourceKind};
 use crate::source::Span;
+use crate::spelling::nearest;
 use crate::syntax::ast::{
     AnsiPort, AnsiPortKind, Connection, Direction, Expr, ExprKind, Ident, Instance, ItemKind, Module, ModuleKind, Ports,
 };
@@ -394,7 +396,7 @@ impl<'a> Elaborator<'a> {
         }
     }
 
-    fn actual_places(&mut self, actual: Actual<'a>) -> Outcome<(Vec<Place>, Span)> {
+    pub fn actual_places(&mut self, actual: Actual<'a>) -> Outcome<(Vec<Place>, Span)> {
         match actual {
             Actual::Expr(expr) => Ok((self.targets(expr)?, expr.span)),
             Actual::Name(name, span) => {
@@ -547,8 +549,9 @@ impl<'a> Elaborator<'a> {
     pub fn black_box(&mut self, work: &BlackBoxWork<'a>) {
         self.here = work.scope;
         self.instance = self.scope(work.scope).instance;
-        let mut inputs = Vec::new();
+        let mut inputs: Vec<(String, Vec<NodeId>)> = Vec::new();
         let mut outputs = Vec::new();
+        let declared = self.cells.pins(&work.name.name).filter(|_| work.module.is_none());
         for (index, connection) in work.instance.connections.iter().enumerate() {
             let (actual, label) = match connection {
                 Connection::Ordered(value, _) => (value.as_ref().map(Actual::Expr), index.to_string()),
@@ -565,6 +568,7 @@ impl<'a> Elaborator<'a> {
                 };
                 port.and_then(|port| direction_of(module, port))
             });
+            let known = known.or_else(|| declared.and_then(|declared| declared.direction(&label)));
             let outcome = match known {
                 Some(Direction::Input) => self.black_box_input(actual).map(|bits| inputs.push((label, bits))),
                 Some(_) => self.black_box_output(actual, work).map(|bits| outputs.push((label, bits))),
@@ -575,22 +579,63 @@ impl<'a> Elaborator<'a> {
             };
             self.survive(outcome);
         }
-        self.builder.black_box(BlackBox { module: work.name.name.clone(), instance: work.node, inputs, outputs });
+        let pins = declared.map_or(Vec::new(), |declared| self.declared_pins(declared, &inputs, work));
+        self.builder.black_box(BlackBox { module: work.name.name.clone(), instance: work.node, inputs, outputs, pins });
+    }
+
+    /// The nets at the declared pins of a module without text.
+    fn declared_pins(
+        &mut self,
+        declared: &Declaration,
+        inputs: &[(String, Vec<NodeId>)],
+        work: &BlackBoxWork<'a>,
+    ) -> Vec<BoxPin> {
+        let mut found = Vec::new();
+        for (pin, role) in declared.pins() {
+            let Some((_, nodes)) = inputs.iter().find(|(label, _)| *label == pin.name) else {
+                let help = match nearest(&pin.name, inputs.iter().map(|(label, _)| label.as_str())) {
+                    Some(nearest) => format!("did you mean `{nearest}` in {}:{}?", declared.file, declared.line),
+                    None => "connect the pin by its name, or take it out of the declaration".to_string(),
+                };
+                let message = format!(
+                    "the instance `{}` of `{}` does not connect the declared pin `{}`, so that pin is not checked",
+                    work.instance.name.name, work.name.name, pin.name
+                );
+                let at = Some(work.instance.span);
+                self.report(Diagnostic::new(Kind::Incomplete, "declared pin", message, at).with_help(help));
+                continue;
+            };
+            for &node in nodes {
+                let (net, plain) = self.builder.strip_inverters(node);
+                let active = plain != pin.inverted;
+                let role = match role {
+                    PinRole::Clock => BoxRole::Clock(if active { Edge::Posedge } else { Edge::Negedge }),
+                    PinRole::Set => BoxRole::Set(active),
+                    PinRole::Reset => BoxRole::Reset(active),
+                    PinRole::Enable => BoxRole::Enable(active),
+                };
+                found.push(BoxPin { net, role });
+            }
+        }
+        found
+    }
+
+    /// The value of what is connected to an input, in its own width.
+    pub fn actual_bits(&mut self, actual: Actual<'a>) -> Outcome<Vec<Bit>> {
+        if let Actual::Expr(expr) = actual {
+            return Ok(self.eval_self(expr)?.0);
+        }
+        let (places, span) = self.actual_places(actual)?;
+        let site = self.site(span);
+        let mut bits = Vec::new();
+        for place in &places {
+            bits.extend(self.read_place(place, site)?);
+        }
+        Ok(bits)
     }
 
     fn black_box_input(&mut self, actual: Actual<'a>) -> Outcome<Vec<NodeId>> {
-        let bits = match actual {
-            Actual::Expr(expr) => self.eval_self(expr)?.0,
-            actual => {
-                let (places, span) = self.actual_places(actual)?;
-                let site = self.site(span);
-                let mut bits = Vec::new();
-                for place in &places {
-                    bits.extend(self.read_place(place, site)?);
-                }
-                bits
-            }
-        };
+        let bits = self.actual_bits(actual)?;
         let site = Site { instance: self.instance, span: self.actual_span(actual) };
         let nodes = self.nodes(&bits, site);
         self.used.extend(&nodes);

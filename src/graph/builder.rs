@@ -31,6 +31,7 @@ pub struct GraphBuilder {
     cells: Vec<Cell>,
     ports: Vec<Port>,
     black_boxes: Vec<BlackBox>,
+    clock_gates: Vec<CellId>,
     shared: HashMap<(NodeKind, Vec<NodeId>, Site), NodeId>,
     constants: [Option<NodeId>; 2],
 }
@@ -297,6 +298,11 @@ impl GraphBuilder {
         CellId::new(self.cells.len() - 1)
     }
 
+    /// Marks a latch as part of a clock gate; see [`Graph::is_clock_gate`].
+    pub fn clock_gate(&mut self, cell: CellId) {
+        self.clock_gates.push(cell);
+    }
+
     pub fn port(&mut self, port: Port) {
         self.ports.push(port);
     }
@@ -320,5 +326,6 @@ impl GraphBuilder {
             self.ports,
             self.black_boxes,
         )
+        .with_clock_gates(self.clock_gates)
     }
 }

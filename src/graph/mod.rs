@@ -12,8 +12,8 @@ pub mod text;
 pub use builder::{GraphBuilder, Site};
 pub use check::check;
 pub use node::{
-    BlackBox, Cell, CellId, CellKind, Control, Edge, GateKind, Instance, InstanceId, Net, NetId, NodeId, NodeKind,
-    Operator, OperatorId, Port, PortDirection, SourceKind, Symbol, Table, TableId,
+    BlackBox, BoxPin, BoxRole, Cell, CellId, CellKind, Control, Edge, GateKind, Instance, InstanceId, Net, NetId,
+    NodeId, NodeKind, Operator, OperatorId, Port, PortDirection, SourceKind, Symbol, Table, TableId,
 };
 use rows::Rows;
 
@@ -43,6 +43,8 @@ pub struct Graph {
     pub black_boxes: Vec<BlackBox>,
     /// Per node: whether it is declared never to change. Empty while nothing is.
     statics: Vec<bool>,
+    /// Latches that are part of a clock gate, sorted: their enable is a clock pin.
+    clock_gates: Vec<CellId>,
 }
 
 impl Graph {
@@ -62,7 +64,7 @@ impl Graph {
     ) -> Self {
         let fanin = Rows::new(&fanins);
         let fanout = fanin.transposed();
-        let statics = Vec::new();
+        let (statics, clock_gates) = (Vec::new(), Vec::new());
         Self {
             kinds,
             fanin,
@@ -77,6 +79,7 @@ impl Graph {
             ports,
             black_boxes,
             statics,
+            clock_gates,
         }
     }
 
@@ -92,6 +95,18 @@ impl Graph {
             }
             self.statics[node.index()] = true;
         }
+        self
+    }
+
+    /// Whether a latch is part of a clock gate that is right by construction: its enable is the clock pin of the gate, and
+    /// nothing but the gate behind it sees its output.
+    pub fn is_clock_gate(&self, cell: CellId) -> bool {
+        self.clock_gates.binary_search(&cell).is_ok()
+    }
+
+    fn with_clock_gates(mut self, mut cells: Vec<CellId>) -> Self {
+        cells.sort_unstable();
+        self.clock_gates = cells;
         self
     }
 

@@ -211,4 +211,23 @@ pub struct BlackBox {
     pub inputs: Vec<(String, Vec<NodeId>)>,
     /// Port name (or position) and the source nodes that stand for it.
     pub outputs: Vec<(String, Vec<NodeId>)>,
+    /// The connections at pins that are declared to act like those of flip-flops and latches.
+    pub pins: Vec<BoxPin>,
+}
+
+/// A declared pin of a module without text, one bit.
+#[derive(Clone, Copy, PartialEq, Eq, Debug)]
+pub struct BoxPin {
+    pub net: NodeId,
+    pub role: BoxRole,
+}
+
+/// What a declared pin does; the level is the one at which it acts.
+#[derive(Clone, Copy, PartialEq, Eq, Debug)]
+pub enum BoxRole {
+    Clock(Edge),
+    Set(bool),
+    Reset(bool),
+    /// Transparent or writing while at this level.
+    Enable(bool),
 }

@@ -12,7 +12,8 @@
 //!
 //! Labels are free words when parsed (`y = and a b`) and may be used before their line, so that loops can be written;
 //! ids follow the order of the lines. A text without instances gets one, named `top`. Nothing is folded or shared: the
-//! parsed graph is exactly the text. Places in source files are not part of the form.
+//! parsed graph is exactly the text. Places in source files, declared pins of black boxes and the marks of static nodes and
+//! clock gates are not part of the form.
 
 use std::collections::HashMap;
 use std::fmt::Write;
@@ -575,7 +576,7 @@ impl Parts {
             let name = line.text()?;
             side.push((name, line.nodes()?));
         }
-        self.black_boxes.push(BlackBox { module, instance, inputs, outputs });
+        self.black_boxes.push(BlackBox { module, instance, inputs, outputs, pins: Vec::new() });
         Ok(())
     }
 }

@@ -169,6 +169,7 @@ struct CoverageOut<'a> {
     cells: Cells,
     loops: Loops,
     left_out: LeftOutOut<'a>,
+    modelled_cells: Vec<BlackBoxOut<'a>>,
     assumptions: Vec<AssumptionOut<'a>>,
     severities: BTreeMap<&'static str, &'static str>,
 }
@@ -334,6 +335,11 @@ fn coverage_out<'a>(report: &'a Report, place: &impl Fn(Option<Span>) -> Option<
             benches: &coverage.left_out.benches,
             opaque_memories: &coverage.left_out.opaque_memories,
         },
+        modelled_cells: coverage
+            .modelled_cells
+            .iter()
+            .map(|(module, &instances)| BlackBoxOut { module, instances })
+            .collect(),
         assumptions: coverage.assumptions.iter().map(|assumption| assumption_out(assumption, place)).collect(),
         severities: coverage.severities.iter().map(|(rule, severity)| (rule.name(), severity.name())).collect(),
     }

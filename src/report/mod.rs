@@ -58,6 +58,8 @@ pub struct Coverage {
     pub cells: CellCount,
     pub loops: usize,
     pub left_out: LeftOut,
+    /// Instances of cells from libraries and declarations, by module.
+    pub modelled_cells: BTreeMap<String, usize>,
     /// What the designer declared about nets, and how it stands to the design.
     pub assumptions: Vec<Listed>,
     /// Rules whose severity the settings fix.

@@ -42,6 +42,9 @@ pub(super) fn render(report: &Report, style: &Style) -> String {
     let boxes: Vec<String> =
         coverage.black_boxes.iter().map(|(module, count)| format!("{module} ({count}x)")).collect();
     list("black boxes, outputs taken as clean and free", &boxes, &mut text);
+    let cells: Vec<String> =
+        coverage.modelled_cells.iter().map(|(module, count)| format!("{module} ({count}x)")).collect();
+    list("cells from libraries and settings", &cells, &mut text);
     let left_out = &coverage.left_out;
     list("benches left out", &left_out.benches, &mut text);
     list("memories too large to flatten", &left_out.opaque_memories, &mut text);

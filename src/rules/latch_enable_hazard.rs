@@ -30,7 +30,7 @@ pub(super) fn finding(graph: &Graph, verdict: &TargetVerdict, uses: &[Use], opti
 fn missing_assignments(graph: &Graph, uses: &[Use]) -> Vec<TraceStep> {
     let mut places = Vec::new();
     for one in uses {
-        let cell = &graph.cells[one.cell];
+        let Some(cell) = one.cell.cell(graph) else { continue };
         let Some(at) = cell.inferred_from else { continue };
         match places.iter_mut().find(|(known, _, _)| *known == at) {
             Some((_, _, more)) => *more += 1,

@@ -5,15 +5,40 @@ use std::collections::BTreeMap;
 
 use super::finding::{Pin, PinKind};
 use super::names;
-use crate::graph::{Cell, CellKind, Edge, Graph, NodeId, NodeKind};
+use crate::graph::{BoxPin, BoxRole, Cell, CellId, CellKind, Edge, Graph, NodeId, NodeKind};
 use crate::hazard::{HazardKind, Pair, TargetVerdict, Undecided};
 
 /// One cell's use of a net.
 #[derive(Clone, Copy, PartialEq, Eq, Debug)]
 pub(super) struct Use {
-    /// Index into `graph.cells`.
-    pub cell: usize,
+    pub cell: User,
     pub role: Role,
+}
+
+/// Whose pin it is.
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Debug)]
+pub(super) enum User {
+    /// Index into `graph.cells`.
+    Cell(usize),
+    /// Index into `graph.black_boxes`.
+    Box(usize),
+}
+
+impl User {
+    /// The flip-flop or latch.
+    pub fn cell(self, graph: &Graph) -> Option<&Cell> {
+        match self {
+            User::Cell(cell) => graph.cells.get(cell),
+            User::Box(_) => None,
+        }
+    }
+
+    fn name(self, graph: &Graph) -> String {
+        match self {
+            User::Cell(cell) => names::name(graph, graph.cells[cell].output),
+            User::Box(index) => graph.instances[graph.black_boxes[index].instance.index()].path.clone(),
+        }
+    }
 }
 
 #[derive(Clone, Copy, PartialEq, Eq, Debug)]
@@ -49,10 +74,16 @@ pub(super) struct Pins {
 /// Sorts every pin of every cell under the net that drives it.
 pub(super) fn collect(graph: &Graph) -> Pins {
     let mut pins = Pins::default();
-    for (cell, Cell { kind, controls, .. }) in graph.cells.iter().enumerate() {
+    for (index, Cell { kind, controls, .. }) in graph.cells.iter().enumerate() {
+        let cell = User::Cell(index);
         match *kind {
             CellKind::FlipFlop { clock, edge } => {
                 pins.clocks.entry(graph.root(clock)).or_default().push(Use { cell, role: Role::Clock(edge) });
+            }
+            // The gate behind the latch is active while the latch is closed.
+            CellKind::Latch { enable, active } if graph.is_clock_gate(CellId::new(index)) => {
+                let edge = if active { Edge::Negedge } else { Edge::Posedge };
+                pins.clocks.entry(graph.root(enable)).or_default().push(Use { cell, role: Role::Clock(edge) });
             }
             CellKind::Latch { enable, active } => {
                 pins.enables.entry(graph.root(enable)).or_default().push(Use { cell, role: Role::Enable(active) });
@@ -66,6 +97,17 @@ pub(super) fn collect(graph: &Graph) -> Pins {
             };
             let role = Role::Control { active: control.active, takes };
             pins.controls.entry(graph.root(control.net)).or_default().push(Use { cell, role });
+        }
+    }
+    for (index, black_box) in graph.black_boxes.iter().enumerate() {
+        for &BoxPin { net, role } in &black_box.pins {
+            let (nets, role) = match role {
+                BoxRole::Clock(edge) => (&mut pins.clocks, Role::Clock(edge)),
+                BoxRole::Enable(active) => (&mut pins.enables, Role::Enable(active)),
+                BoxRole::Set(active) => (&mut pins.controls, Role::Control { active, takes: Takes::One }),
+                BoxRole::Reset(active) => (&mut pins.controls, Role::Control { active, takes: Takes::Zero }),
+            };
+            nets.entry(graph.root(net)).or_default().push(Use { cell: User::Box(index), role });
         }
     }
     pins
@@ -121,7 +163,7 @@ pub(super) fn pin(graph: &Graph, uses: &[Use]) -> Pin {
         },
         _ => None,
     };
-    let mut cells: Vec<String> = uses.iter().map(|one| names::name(graph, graph.cells[one.cell].output)).collect();
+    let mut cells: Vec<String> = uses.iter().map(|one| one.cell.name(graph)).collect();
     cells.sort();
     cells.dedup();
     let count = cells.len();
@@ -144,7 +186,7 @@ mod tests {
     use super::*;
 
     fn control(cell: usize, active: bool, takes: Takes) -> Use {
-        Use { cell, role: Role::Control { active, takes } }
+        Use { cell: User::Cell(cell), role: Role::Control { active, takes } }
     }
 
     #[test]

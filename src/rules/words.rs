@@ -1,10 +1,12 @@
 //! Small words that every rule needs: numbers with nouns, quoted names, and what a hazard of a kind looks like.
 
+use std::collections::BTreeSet;
+
 use super::finding::Severity;
-use crate::graph::{CellKind, GateKind, Graph, NodeId, NodeKind};
+use crate::graph::{CellId, CellKind, GateKind, Graph, NodeId, NodeKind};
 use crate::hazard::HazardKind;
 
-use super::pins::Use;
+use super::pins::{Use, User};
 
 /// "1 gate", "3 gates", "no gates".
 pub(super) fn count(number: usize, noun: &str) -> String {
@@ -17,28 +19,30 @@ pub(super) fn count(number: usize, noun: &str) -> String {
 
 /// How many cells hang on a net, however many of their pins do.
 pub(super) fn cell_count(uses: &[Use]) -> usize {
-    let mut ids: Vec<usize> = uses.iter().map(|one| one.cell).collect();
-    ids.sort_unstable();
-    ids.dedup();
-    ids.len()
+    uses.iter().map(|one| one.cell).collect::<BTreeSet<User>>().len()
 }
 
 /// "17 flip-flops", "1 latch", "3 flip-flops and 2 latches".
 pub(super) fn cells(graph: &Graph, uses: &[Use]) -> String {
-    let mut ids: Vec<usize> = uses.iter().map(|one| one.cell).collect();
-    ids.sort_unstable();
-    ids.dedup();
-    let latches = ids.iter().filter(|&&cell| matches!(graph.cells[cell].kind, CellKind::Latch { .. })).count();
-    let flops = ids.len() - latches;
-    let latches = match latches {
-        0 => None,
-        1 => Some("1 latch".to_string()),
-        _ => Some(format!("{latches} latches")),
-    };
-    match (flops, latches) {
-        (0, Some(latches)) => latches,
-        (_, None) => count(flops, "flip-flop"),
-        (_, Some(latches)) => format!("{} and {latches}", count(flops, "flip-flop")),
+    let users: BTreeSet<User> = uses.iter().map(|one| one.cell).collect();
+    let (mut flops, mut latches, mut gates, mut boxes) = (0, 0, 0, 0);
+    for user in users {
+        match user {
+            User::Box(_) => boxes += 1,
+            User::Cell(cell) if graph.is_clock_gate(CellId::new(cell)) => gates += 1,
+            User::Cell(cell) if matches!(graph.cells[cell].kind, CellKind::Latch { .. }) => latches += 1,
+            User::Cell(_) => flops += 1,
+        }
+    }
+    let counts =
+        [(flops, "flip-flop", "s"), (latches, "latch", "es"), (gates, "clock gate", "s"), (boxes, "black box", "es")];
+    let some = counts.into_iter().filter(|(number, ..)| *number > 0);
+    let texts = some.map(|(number, noun, plural)| format!("{number} {noun}{}", if number == 1 { "" } else { plural }));
+    let texts: Vec<String> = texts.collect();
+    match texts.split_last() {
+        None => count(0, "flip-flop"),
+        Some((last, [])) => last.clone(),
+        Some((last, rest)) => format!("{} and {last}", rest.join(", ")),
     }
 }
 

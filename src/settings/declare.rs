@@ -114,7 +114,7 @@ fn cell(source: Text<'_>, table: &DeTable<'_>, at: usize) -> Result<Declaration,
                      most significant first",
                 ));
             }
-            Role::Selector { select, inputs, output: one("output")?.name }
+            Role::Selector { select, inputs, output: one("output")? }
         }
         "clock-gate" => {
             only(&["module", "kind", "clock", "enable", "output"])?;
@@ -122,7 +122,7 @@ fn cell(source: Text<'_>, table: &DeTable<'_>, at: usize) -> Result<Declaration,
             if enables.is_empty() {
                 return Err(missing("enable"));
             }
-            Role::ClockGate { clock: one("clock")?, enables, output: one("output")?.name }
+            Role::ClockGate { clock: one("clock")?, enables, output: one("output")? }
         }
         other => {
             let known = ["pins", "selector", "clock-gate"];

@@ -182,13 +182,13 @@ impl Out<'_> {
                     line("kind", quoted("selector"));
                     line("select", pins(&select.iter().collect::<Vec<_>>()));
                     line("inputs", names(inputs));
-                    line("output", quoted(output));
+                    line("output", pins(&[output]));
                 }
                 Role::ClockGate { clock, enables, output } => {
                     line("kind", quoted("clock-gate"));
                     line("clock", pins(&[clock]));
                     line("enable", pins(&enables.iter().collect::<Vec<_>>()));
-                    line("output", quoted(output));
+                    line("output", pins(&[output]));
                 }
             }
         }

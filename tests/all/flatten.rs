@@ -192,6 +192,7 @@ fn tables_become_primitives_and_black_boxes_instances() {
         instance: inner,
         inputs: vec![("D".into(), vec![a, b])],
         outputs: vec![("Q".into(), vec![out])],
+        pins: Vec::new(),
     });
     let graph = design.builder.freeze();
     expect(

@@ -3,6 +3,7 @@
 mod assumptions;
 mod catalogue;
 mod catalogue_explored;
+mod cells;
 mod constructs;
 mod controls;
 mod convert;
@@ -42,6 +43,7 @@ mod report;
 mod robustness;
 mod rule_pages;
 mod sarif;
+mod settings;
 mod signoff;
 mod simulator;
 mod sources;
