@@ -35,8 +35,11 @@ type Values<'m> = BTreeMap<&'m str, NodeId>;
 
 impl<'a> Elaborator<'a> {
     /// What a library says about a module without text. A cell that the library describes in a way that is not understood is
-    /// reported, and stays without text.
+    /// reported, and stays without text; pins that are declared go before what a library says.
     pub fn library_cell(&mut self, name: &'a Ident) -> Option<&'a Model> {
+        if self.cells.pins(&name.name).is_some() {
+            return None;
+        }
         match self.cells.library(&name.name)? {
             Known::Model(model) => Some(model),
             Known::Refused { why, place } => {

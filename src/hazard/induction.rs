@@ -28,23 +28,22 @@ pub fn try_assumptions(graph: &Graph, assumptions: &[Assumption], options: &Opti
     if assumptions.is_empty() {
         return Vec::new();
     }
-    let design = Design::new(graph, assumptions, options);
+    let mut design = Design::new(graph, assumptions, options);
     let mut standings: Vec<Option<Standing>> = design.impossible();
-    for (index, standing) in standings.iter_mut().enumerate() {
-        if standing.is_none() && design.groups[index].looped {
-            *standing = Some(Standing::Trusted(Doubt::Loop));
-        }
-    }
+    // What is contradicted must not serve as a premise for the others.
+    design.drop_contradicted(&standings);
     for (index, standing) in standings.iter_mut().enumerate() {
         if standing.is_none() {
-            *standing = design.search(index).map(Standing::Contradicted);
+            *standing = if design.groups[index].looped {
+                Some(Standing::Trusted(Doubt::Loop))
+            } else {
+                design.search(index).map(Standing::Contradicted).or_else(|| design.at_start(index))
+            };
         }
     }
-    let usable: Vec<bool> = (standings.iter().zip(&design.groups))
-        .map(|(standing, group)| !group.looped && !matches!(standing, Some(Standing::Contradicted(_))))
-        .collect();
+    design.drop_contradicted(&standings);
     let rest = standings.into_iter().enumerate();
-    rest.map(|(index, standing)| standing.unwrap_or_else(|| design.induction(index, &usable))).collect()
+    rest.map(|(index, standing)| standing.unwrap_or_else(|| design.induction(index))).collect()
 }
 
 /// A register as the steps see it.
@@ -63,6 +62,8 @@ struct Group<'a> {
     /// The sources in front of the nets.
     sources: Vec<NodeId>,
     looped: bool,
+    /// Whether it may serve as a premise.
+    usable: bool,
 }
 
 struct Design<'a> {
@@ -99,12 +100,19 @@ impl<'a> Design<'a> {
                 let order = Order::new(graph, &assumption.nodes);
                 let is_source = |node: &&NodeId| matches!(graph.kind(**node), NodeKind::Source(_));
                 let sources = order.nodes.iter().filter(is_source).copied().collect();
-                Group { assumption, sources, looped: order.looped.contains(&true) }
+                let looped = order.looped.contains(&true);
+                Group { assumption, sources, looped, usable: !looped }
             })
             .collect();
         let of_kind = |assumption: &&Assumption| assumption.kind == AssumptionKind::Static;
         let statics = assumptions.iter().filter(of_kind).flat_map(|one| one.nodes.iter().copied()).collect();
         Self { graph, registers, groups, statics, conflicts: options.conflicts }
+    }
+
+    fn drop_contradicted(&mut self, standings: &[Option<Standing>]) {
+        for (group, standing) in self.groups.iter_mut().zip(standings) {
+            group.usable &= !matches!(standing, Some(Standing::Contradicted(_)));
+        }
     }
 
     fn kind(&self, node: NodeId) -> Option<SourceKind> {
@@ -156,19 +164,16 @@ impl<'a> Design<'a> {
         // The copy before, and whether no control acted in the step from there.
         let mut before: Option<(Values, Literal)> = None;
         let mut start: Option<Values> = None;
+        let mut targets: Vec<NodeId> = first.nodes.clone();
+        for register in closed.values() {
+            targets.extend(register.controls.iter().flat_map(|control| [control.net, control.value]));
+            targets.push(register.data);
+        }
+        let outside = self.environment(&targets);
+        targets.extend(outside.iter().flat_map(|group| group.assumption.nodes.iter().copied()));
         for steps in 0..=DEPTH {
-            let targets: Vec<NodeId> = first
-                .nodes
-                .iter()
-                .copied()
-                .chain(closed.values().flat_map(|register| {
-                    let controls = register.controls.iter().flat_map(|control| [control.net, control.value]);
-                    controls.chain([register.data]).collect::<Vec<_>>()
-                }))
-                .chain(self.environment().flat_map(|group| group.assumption.nodes.iter().copied()))
-                .collect();
             let values = frames.copy(&targets, &mut state);
-            for group in self.environment() {
+            for group in &outside {
                 let holds = frames.holds(group.assumption, &values);
                 frames.clauses.solver.clause(&[holds]);
             }
@@ -210,11 +215,23 @@ impl<'a> Design<'a> {
         None
     }
 
-    /// The assumptions about nets that depend on no register: what the surroundings guarantee.
-    fn environment(&self) -> impl Iterator<Item = &Group<'a>> {
-        self.groups.iter().filter(|group| {
-            !group.looped && group.sources.iter().all(|source| self.kind(*source) == Some(SourceKind::Input))
-        })
+    /// The assumptions about states that share a source with `targets`; the others say nothing about them.
+    fn touching(&self, targets: &[NodeId]) -> Vec<&Group<'a>> {
+        let order = Order::new(self.graph, targets);
+        let sources: BTreeSet<NodeId> = order.nodes.into_iter().filter(|&node| self.kind(node).is_some()).collect();
+        let of_states = |group: &&Group<'a>| {
+            group.usable
+                && matches!(group.assumption.kind, AssumptionKind::OneHot | AssumptionKind::MutuallyExclusive)
+                && group.sources.iter().any(|source| sources.contains(source))
+        };
+        self.groups.iter().filter(of_states).collect()
+    }
+
+    /// Those among them that depend on inputs alone: what the surroundings guarantee.
+    fn environment(&self, targets: &[NodeId]) -> Vec<&Group<'a>> {
+        let mut groups = self.touching(targets);
+        groups.retain(|group| group.sources.iter().all(|source| self.kind(*source) == Some(SourceKind::Input)));
+        groups
     }
 
     /// All registers that the sources depend on, as far as the search may speak about them.
@@ -264,7 +281,7 @@ impl<'a> Design<'a> {
     }
 
     /// Tries the logic alone, then induction.
-    fn induction(&self, index: usize, usable: &[bool]) -> Standing {
+    fn induction(&self, index: usize) -> Standing {
         let group = &self.groups[index];
         let assumption = group.assumption;
         let mut frames = Frames::new(self);
@@ -284,44 +301,22 @@ impl<'a> Design<'a> {
         if flops.is_empty() {
             return Standing::Trusted(Doubt::Environment);
         }
-        if matches!(assumption.kind, AssumptionKind::OneHot | AssumptionKind::MutuallyExclusive) {
-            let (answer, values) = self.broken_at_start(group, usable);
-            match answer {
-                Answer::Unsatisfiable => {}
-                Answer::Satisfiable => {
-                    let known = flops.iter().all(|flop| self.registers[flop].start.is_some());
-                    return match values {
-                        _ if !known => Standing::Trusted(Doubt::NoReset),
-                        values if flops.len() == group.sources.len() => {
-                            Standing::Contradicted(Counterexample::State { steps: 0, values })
-                        }
-                        _ => Standing::Trusted(Doubt::Environment),
-                    };
-                }
-                Answer::Open => return Standing::Trusted(Doubt::Budget),
-            }
+        let mut targets: Vec<NodeId> = Vec::new();
+        for flop in &flops {
+            let register = &self.registers[flop];
+            targets.extend(register.controls.iter().flat_map(|control| [control.net, control.value]));
+            targets.push(register.data);
         }
-        let all = |inside: &dyn Fn(&Register) -> Vec<NodeId>| -> Vec<NodeId> {
-            flops.iter().flat_map(|flop| inside(&self.registers[flop])).collect()
-        };
-        let mut targets = all(&|register| {
-            let controls = register.controls.iter().flat_map(|control| [control.net, control.value]);
-            controls.chain([register.data]).collect()
-        });
         let order = Order::new(self.graph, &targets);
         if order.looped.contains(&true) {
             return Standing::Trusted(Doubt::Loop);
         }
-        targets.extend(
-            self.groups
-                .iter()
-                .zip(usable)
-                .filter(|(_, usable)| **usable)
-                .flat_map(|(group, _)| group.assumption.nodes.iter().copied()),
-        );
+        targets.extend_from_slice(&assumption.nodes);
+        let premises = self.touching(&targets);
+        targets.extend(premises.iter().flat_map(|group| group.assumption.nodes.iter().copied()));
         let mut state = State::new();
         let values = frames.copy(&targets, &mut state);
-        for (group, _) in self.groups.iter().zip(usable).filter(|(_, usable)| **usable) {
+        for group in premises {
             let holds = frames.holds(group.assumption, &values);
             frames.clauses.solver.clause(&[holds]);
         }
@@ -353,8 +348,17 @@ impl<'a> Design<'a> {
         }
     }
 
-    /// Whether the reset state can break the assumption, and the values of its nodes there.
-    fn broken_at_start(&self, group: &Group<'_>, usable: &[bool]) -> (Answer, Vec<(NodeId, bool)>) {
+    /// What the reset state says about an assumption about states; `None` when it satisfies it, or for the other kinds.
+    fn at_start(&self, index: usize) -> Option<Standing> {
+        let group = &self.groups[index];
+        let assumption = group.assumption;
+        if !matches!(assumption.kind, AssumptionKind::OneHot | AssumptionKind::MutuallyExclusive) {
+            return None;
+        }
+        let flops: Vec<&Register> = group.sources.iter().filter_map(|source| self.registers.get(source)).collect();
+        if flops.is_empty() {
+            return None;
+        }
         let mut frames = Frames::new(self);
         let mut state = State::new();
         for source in &group.sources {
@@ -362,23 +366,27 @@ impl<'a> Design<'a> {
                 state.insert(*source, frames.clauses.constant(start));
             }
         }
-        let mut targets = group.assumption.nodes.clone();
-        let outside: Vec<&Group<'_>> = self.environment().collect();
+        let mut targets = assumption.nodes.clone();
+        let outside = self.environment(&targets);
         targets.extend(outside.iter().flat_map(|group| group.assumption.nodes.iter().copied()));
         let values = frames.copy(&targets, &mut state);
-        for (other, _) in self.groups.iter().zip(usable).filter(|(_, usable)| **usable) {
-            if outside.iter().any(|group| std::ptr::eq(*group, other)) {
-                let holds = frames.holds(other.assumption, &values);
-                frames.clauses.solver.clause(&[holds]);
-            }
+        for group in outside {
+            let holds = frames.holds(group.assumption, &values);
+            frames.clauses.solver.clause(&[holds]);
         }
-        let holds = frames.holds(group.assumption, &values);
-        let answer = frames.solve(&[!holds]);
-        let found = match answer {
-            Answer::Satisfiable => frames.model(group.assumption, &values),
-            _ => Vec::new(),
-        };
-        (answer, found)
+        let holds = frames.holds(assumption, &values);
+        match frames.solve(&[!holds]) {
+            Answer::Unsatisfiable => None,
+            Answer::Open => Some(Standing::Trusted(Doubt::Budget)),
+            Answer::Satisfiable if flops.iter().any(|flop| flop.start.is_none()) => {
+                Some(Standing::Trusted(Doubt::NoReset))
+            }
+            Answer::Satisfiable if flops.len() == group.sources.len() => {
+                let values = frames.model(assumption, &values);
+                Some(Standing::Contradicted(Counterexample::State { steps: 0, values }))
+            }
+            Answer::Satisfiable => Some(Standing::Trusted(Doubt::Environment)),
+        }
     }
 }
 

@@ -265,6 +265,10 @@ fn cells_that_are_not_understood_are_said() {
         let said = messages.iter().any(|message| message.contains(why) && message.contains("canal.lib:"));
         assert!(said, "{messages:?}");
         assert_eq!(scan.json["coverage"]["black_boxes"][0]["module"], cell);
+        // Declared pins stand for what was not understood.
+        let declared = format!("[[cell]]\nmodule = \"{cell}\"\nenable = \"A\"\noutput = \"Y\"\n");
+        let scan = scanned(&netlist(cell), &declared);
+        assert_eq!((&scan.json["complete"], scan.pins("latch-enable", "nets")), (&true.into(), 1), "{}", scan.text);
     }
     let scan = scanned("module t (input a, b, output y); NAND2 u (.A(a), .C(b), .Y(y)); endmodule\n", "");
     assert_eq!(scan.json["complete"], false);
@@ -292,4 +296,21 @@ fn broken_libraries_are_refused_with_the_line() {
     assert!(text.contains("error: /x.lib:4: the group `library` of line 1 is not closed"), "{text}");
     assert!(refused("").contains("/x.lib:1: there is no `library (...) { ... }` in it"));
     assert!(refused("module t; endmodule").contains("help: the file must be a Liberty library"));
+}
+
+/// Whatever is cut off or written over, the library is refused or read, and nothing else.
+#[test]
+fn damaged_libraries_do_no_harm() {
+    let text = std::fs::read_to_string(library()).expect("readable");
+    let whole = stillwire::cells::read_library(&text, &library()).expect("a good library");
+    assert_eq!(whole.len(), 15);
+    let mut refused = 0;
+    for at in (0..text.len()).step_by(3).filter(|&at| text.is_char_boundary(at)) {
+        refused += usize::from(stillwire::cells::read_library(&text[..at], &library()).is_err());
+        for letter in ["{", "}", "\"", "(", "\\", ";", "/*"] {
+            let damaged = format!("{}{letter}{}", &text[..at], &text[at..]);
+            refused += usize::from(stillwire::cells::read_library(&damaged, &library()).is_err());
+        }
+    }
+    assert!(refused > 3000, "{refused}");
 }
