@@ -236,6 +236,8 @@ fn request(path: PathBuf) -> Request {
         source: source::Request { paths: vec![path], ..source::Request::default() },
         tops: Vec::new(),
         given: Vec::new(),
+        libraries: Vec::new(),
+        cells: Vec::new(),
         assumptions: Vec::new(),
         severities: std::collections::BTreeMap::new(),
         today: jiff::civil::date(2026, 1, 1),

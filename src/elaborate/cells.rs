@@ -92,7 +92,7 @@ impl<'a> Elaborator<'a> {
                 let floats = self.function(floats, &values, site);
                 let enable = self.builder.not(floats, site);
                 let enable = self.bit(enable);
-                bit = self.guarded(enable, bit);
+                bit = self.floating(enable, bit);
             }
             let outcome = self.drive_pin(actual, bit, work.slot);
             self.survive(outcome);
@@ -292,12 +292,12 @@ impl<'a> Elaborator<'a> {
     }
 
     /// A bit that floats while `enable` is 0.
-    fn guarded(&mut self, enable: Bit, data: Bit) -> Bit {
+    fn floating(&mut self, enable: Bit, data: Bit) -> Bit {
         match enable {
             Bit::One => data,
             Bit::Zero => Bit::Z,
             _ => {
-                self.guarded.push(Guarded { enable, data, from: None });
+                self.guarded.push(Guarded { enable, data, from: None, preset: None });
                 Bit::Tri(self.guarded.len() as u32 - 1)
             }
         }
