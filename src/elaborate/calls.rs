@@ -6,13 +6,13 @@ use std::rc::Rc;
 use super::bits::{self, Bit, extend};
 use super::blast;
 use super::context::{Elaborator, Outcome, Storage, unsupported, wrong};
-use super::place::{Resolved, Want};
+use super::place::{Place, Resolved, Want};
 use super::scope::{ScopeId, Symbol};
 use super::statement::Point;
 use super::types::{Shape, Type};
 use super::value::Value;
 use crate::source::Span;
-use crate::syntax::ast::{CallArg, DataTypeKind, Direction, Expr, ExprKind, Function, Item, ItemKind};
+use crate::syntax::ast::{CallArg, DataTypeKind, Direction, Expr, ExprKind, Function, Ident, Item, ItemKind};
 
 /// How deep functions may call each other.
 const CALL_DEPTH: usize = 512;
@@ -30,14 +30,18 @@ enum Callee<'a> {
     Function(&'a Function, ScopeId),
     Let(&'a Item, ScopeId),
     EnumMethod(Vec<Bit>, Rc<Type>, &'a str),
+    ArrayMethod(Place, &'a Ident),
 }
 
 impl<'a> Elaborator<'a> {
     fn callee(&mut self, callee: &'a Expr, want: Want) -> Outcome<Callee<'a>> {
         if let ExprKind::Member(base, method) = &callee.kind
             && let Ok(Resolved::Place(place)) = self.resolve(base, want)
-            && matches!(place.ty.shape, Shape::Enum { .. })
+            && matches!(place.ty.shape, Shape::Enum { .. } | Shape::Array { .. })
         {
+            if matches!(place.ty.shape, Shape::Array { .. }) {
+                return Ok(Callee::ArrayMethod(place, method));
+            }
             let site = self.site(base.span);
             let value = match want {
                 Want::Value => self.read_place(&place, site)?,
@@ -89,13 +93,17 @@ impl<'a> Elaborator<'a> {
                 None => Err(wrong(format!("`{}` gives no value", function.name.name), span)),
             },
             Callee::Let(item, scope) => {
-                let bits = self.expand_let(item, scope, args, span)?;
-                Ok((bits.len(), false))
+                let (bits, signed) = self.expand_let(item, scope, args, span)?;
+                Ok((bits.len(), signed))
             }
-            Callee::EnumMethod(_, ty, method) => Ok(match method {
-                "num" => (32, true),
-                _ => (ty.width, ty.signed),
-            }),
+            Callee::EnumMethod(_, ty, method) => {
+                let ty = self.enum_method_type(&ty, method);
+                Ok((ty.width, ty.signed))
+            }
+            Callee::ArrayMethod(place, method) => {
+                let (_, ty) = self.reduce(&place, method, Want::Type)?;
+                Ok((ty.width, ty.signed))
+            }
         }
     }
 
@@ -117,7 +125,8 @@ impl<'a> Elaborator<'a> {
     pub fn call(&mut self, callee: &'a Expr, args: &'a [CallArg], span: Span) -> Outcome<Vec<Bit>> {
         match self.callee(callee, Want::Value)? {
             Callee::Function(function, scope) => self.call_function(function, scope, args, span),
-            Callee::Let(item, scope) => self.expand_let(item, scope, args, span),
+            Callee::Let(item, scope) => self.expand_let(item, scope, args, span).map(|(bits, _)| bits),
+            Callee::ArrayMethod(place, method) => self.reduce(&place, method, Want::Value).map(|(bits, _)| bits),
             Callee::EnumMethod(value, ty, method) => self.enum_method(&value, &ty, method, args, span),
         }
     }
@@ -228,7 +237,13 @@ impl<'a> Elaborator<'a> {
         Ok(actuals)
     }
 
-    fn expand_let(&mut self, item: &'a Item, scope: ScopeId, args: &'a [CallArg], span: Span) -> Outcome<Vec<Bit>> {
+    fn expand_let(
+        &mut self,
+        item: &'a Item,
+        scope: ScopeId,
+        args: &'a [CallArg],
+        span: Span,
+    ) -> Outcome<(Vec<Bit>, bool)> {
         let ItemKind::Let { name, args: formals, body } = &item.kind else {
             return Err(wrong("a call of something that is no function", span));
         };
@@ -246,11 +261,10 @@ impl<'a> Elaborator<'a> {
             self.declare(inner, &formal.name, Symbol::Variable(local));
             self.environment.set((local, false), bits);
         }
-        let outcome = self.in_scope(inner, |this| this.eval_self(body));
-        outcome.map(|(bits, _)| bits)
+        self.in_scope(inner, |this| this.eval_self(body))
     }
 
-    fn enum_method(
+    pub fn enum_method(
         &mut self,
         value: &[Bit],
         ty: &Rc<Type>,
@@ -311,6 +325,7 @@ impl<'a> Elaborator<'a> {
             | "$dimensions"
             | "$unpacked_dimensions"
             | "$countones"
+            | "$countbits"
             | "$rtoi"
             | "$ceil"
             | "$floor"
@@ -356,6 +371,31 @@ impl<'a> Elaborator<'a> {
             "$countones" => {
                 let (bits, _) = self.eval_self(arg)?;
                 let nodes = self.nodes(&bits, site);
+                let count = blast::count_ones(&mut self.builder, &nodes, site);
+                return Ok(extend(self.lift_all(&count), 32, false));
+            }
+            "$countbits" => {
+                let (bits, _) = self.eval_self(arg)?;
+                let mut counted = [false; 2];
+                for control in args.iter().skip(1).flatten() {
+                    // Signals are never x or z, so counting these adds nothing.
+                    match self.eval_self(control)?.0.first() {
+                        Some(Bit::Zero) => counted[0] = true,
+                        Some(Bit::One) => counted[1] = true,
+                        Some(Bit::X | Bit::Z) => {}
+                        _ => return Err(unsupported("$countbits of a value that is not constant", control.span)),
+                    }
+                }
+                let mut hits = Vec::with_capacity(bits.len());
+                for bit in bits {
+                    hits.push(match counted {
+                        [true, true] => Bit::One,
+                        [false, true] => bit,
+                        [true, false] => self.not(bit, site),
+                        [false, false] => Bit::Zero,
+                    });
+                }
+                let nodes = self.nodes(&hits, site);
                 let count = blast::count_ones(&mut self.builder, &nodes, site);
                 return Ok(extend(self.lift_all(&count), 32, false));
             }

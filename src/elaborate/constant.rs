@@ -36,7 +36,9 @@ impl<'a> Elaborator<'a> {
             _ => None,
         };
         match symbol {
-            Some(Symbol::Lazy(id)) if !self.is_type(id) => self.force_constant(id, expr.span).map(Some),
+            Some(Symbol::Lazy(id)) if !self.is_type(id) && !self.is_variable(id) => {
+                self.force_constant(id, expr.span).map(Some)
+            }
             _ => Ok(None),
         }
     }

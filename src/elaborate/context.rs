@@ -5,6 +5,7 @@
 use std::collections::{BTreeMap, HashMap, HashSet};
 use std::rc::Rc;
 
+use super::bind::Bind;
 use super::bits::{Bit, Guarded};
 use super::drivers::{Driver, Pending};
 use super::environment::Environment;
@@ -142,6 +143,19 @@ pub(super) struct Elaborator<'a> {
     pub pending_wires: HashSet<NodeId>,
     /// Nodes that black boxes and primitives use, beside what drives wires and cells.
     pub used: Vec<NodeId>,
+    /// Modules declared inside others, by the scope of the instance they stand in.
+    pub nested: HashMap<ScopeId, HashMap<&'a str, &'a ast::Module>>,
+    pub binds: Vec<Bind<'a>>,
+    /// The scopes of labelled blocks of processes, made before anything is executed so that they can be named.
+    pub named_blocks: HashMap<(*const ast::Stmt, ScopeId), ScopeId>,
+    /// The iterators of array methods that are being worked out, with the index of the element.
+    pub iterators: HashMap<VariableId, i64>,
+    /// Which of an array of instances is being elaborated.
+    pub slot: Option<super::hierarchy::Slot>,
+    /// Variables that functions assign which are called outside of processes.
+    pub side_effects: Vec<VariableId>,
+    /// Variables of interfaces at the top whose direction shows only when all drivers are known.
+    pub undirected: Vec<(VariableId, InstanceId, String)>,
 }
 
 impl<'a> Elaborator<'a> {
@@ -157,12 +171,16 @@ impl<'a> Elaborator<'a> {
             this.survive(outcome);
             this.count_skipped(unit);
         }
+        this.outer_items(units, &tops.tops);
         for name in &tops.tops {
             if let Some(&module) = this.library.modules.get(name.as_str()) {
                 this.top(module);
             }
         }
+        this.unused_binds();
         this.do_works();
+        this.direct_interface_ports();
+        this.report_side_effects();
         this.make_cells();
         this.resolve_drivers();
         let mut diagnostics = this.diagnostics;
@@ -192,6 +210,10 @@ impl<'a> Elaborator<'a> {
             prefix: String::new(),
             names: HashMap::new(),
             wildcards: Vec::new(),
+            hidden: HashSet::new(),
+            exports: Vec::new(),
+            exports_all: false,
+            is_modport: false,
             nettype: ast::DefaultNettype::None,
             module: None,
             is_module: false,
@@ -245,6 +267,13 @@ impl<'a> Elaborator<'a> {
             port_wires: HashSet::new(),
             pending_wires: HashSet::new(),
             used: Vec::new(),
+            nested: HashMap::new(),
+            binds: Vec::new(),
+            named_blocks: HashMap::new(),
+            iterators: HashMap::new(),
+            slot: None,
+            side_effects: Vec::new(),
+            undirected: Vec::new(),
         }
     }
 

@@ -4,11 +4,13 @@
 use std::collections::{HashMap, HashSet};
 use std::rc::Rc;
 
+use super::bits::Bit;
 use super::context::{Elaborator, Outcome, Storage, Variable, VariableId, unsupported, wrong};
 use super::place::MAX_MEMORY;
-use super::scope::{Lazy, ScopeId, Symbol};
+use super::scope::{Lazy, LazyId, ScopeId, Symbol};
 use super::types::Type;
 use crate::diagnostic::{Diagnostic, Kind, Missing};
+use crate::graph::{InstanceId, NetId};
 use crate::source::Span;
 use crate::syntax::ast::{
     DataType, DataTypeKind, Declarator, Dim, Ident, Import, Item, ItemKind, NetKind, Package, Param, ParamKind,
@@ -36,7 +38,9 @@ impl<'a> Elaborator<'a> {
                 }
                 Some(name) => {
                     let symbol = self.look_up_in_package(&import.package, name)?;
-                    self.declare(scope, &name.name, symbol);
+                    if self.declare(scope, &name.name, symbol) {
+                        self.scopes[scope.index()].hidden.insert(name.name.clone());
+                    }
                 }
             }
         }
@@ -63,11 +67,8 @@ impl<'a> Elaborator<'a> {
     pub fn declare_all(&mut self, scope: ScopeId, items: &'a [Item], home: Storage) -> Outcome<()> {
         for item in items {
             match &item.kind {
-                ItemKind::Import(imports) | ItemKind::Export(imports)
-                    if imports.iter().all(|import| import.package.name != "*") =>
-                {
-                    self.import(scope, imports)?;
-                }
+                ItemKind::Import(imports) => self.import(scope, imports)?,
+                ItemKind::Export(exports) => self.export(scope, exports)?,
                 ItemKind::Function(function) | ItemKind::Task(function) => {
                     self.declare(scope, &function.name.name, Symbol::Function(function, scope));
                 }
@@ -88,8 +89,8 @@ impl<'a> Elaborator<'a> {
                     self.in_scope(scope, |this| this.declare_enum_members(scope, ty))?;
                 }
                 ItemKind::GenBlock(block) if !block.scoped => self.declare_all(scope, &block.items, home)?,
-                ItemKind::Modport { name, .. } => {
-                    self.declare(scope, &name.name, Symbol::Scope(scope));
+                ItemKind::Module(module) => {
+                    self.nested.entry(scope).or_default().insert(&module.name.name, module);
                 }
                 ItemKind::Simulation { what, name, inert } => {
                     self.declare(scope, &name.name, Symbol::Simulation { what, inert: *inert });
@@ -97,7 +98,33 @@ impl<'a> Elaborator<'a> {
                 _ => {}
             }
         }
-        self.in_scope(scope, |this| this.declare_variables(scope, items, home))
+        self.in_scope(scope, |this| this.declare_variables(scope, items, home))?;
+        for item in items {
+            if let ItemKind::Modport { name, ports, imports } = &item.kind {
+                self.declare_modport(scope, name, ports, imports);
+            }
+        }
+        Ok(())
+    }
+
+    /// Makes a package offer names that it imported.
+    fn export(&mut self, scope: ScopeId, exports: &'a [Import]) -> Outcome<()> {
+        for export in exports {
+            if export.package.name == "*" {
+                self.scopes[scope.index()].exports_all = true;
+                continue;
+            }
+            let package = self.package(&export.package)?;
+            match &export.name {
+                None => self.scopes[scope.index()].exports.push(package),
+                Some(name) => {
+                    let symbol = self.look_up_in_package(&export.package, name)?;
+                    self.declare(scope, &name.name, symbol);
+                    self.scopes[scope.index()].hidden.remove(&name.name);
+                }
+            }
+        }
+        Ok(())
     }
 
     fn declare_parameter(&mut self, scope: ScopeId, param: &'a Param) -> Outcome<()> {
@@ -156,6 +183,13 @@ impl<'a> Elaborator<'a> {
                         } else {
                             self.declare_body_variable(scope, &mut ports, &declarator.name, ty, Storage::Net(*net))?;
                         }
+                    }
+                }
+                ItemKind::Var { ty, .. } if matches!(&ty.kind, DataTypeKind::Named { package: None, name } if self.names_interface(name)) =>
+                    {}
+                ItemKind::Var { ty, names } if home == Storage::Package => {
+                    for declarator in names {
+                        self.declare_lazy(scope, &declarator.name.name, Lazy::Variable { ty, declarator });
                     }
                 }
                 ItemKind::Var { ty, names } => {
@@ -270,11 +304,7 @@ impl<'a> Elaborator<'a> {
             self.opaque_memories.push(format!("{path}.{label}"));
             (None, Vec::new())
         } else {
-            self.check_size(ty.width, name.span)?;
-            let suffixes = ty.suffixes();
-            let scalar = suffixes.first().is_some_and(String::is_empty);
-            let label = self.unique_label(instance, &label);
-            let net = self.builder.net(instance, &label, name.span, suffixes, scalar);
+            let net = self.lay_out(instance, &label, &ty, name.span)?;
             (Some(net), self.builder.net_bits(net).to_vec())
         };
         let id = self.add_variable(Variable {
@@ -289,6 +319,61 @@ impl<'a> Elaborator<'a> {
             init: None,
         });
         self.declare(scope, &name.name, Symbol::Variable(id));
+        Ok(id)
+    }
+
+    fn lay_out(&mut self, instance: InstanceId, label: &str, ty: &Type, span: Span) -> Outcome<NetId> {
+        self.check_size(ty.width, span)?;
+        let suffixes = ty.suffixes();
+        let scalar = suffixes.first().is_some_and(String::is_empty);
+        let label = self.unique_label(instance, label);
+        Ok(self.builder.net(instance, &label, span, suffixes, scalar))
+    }
+
+    /// A variable of a package or of the compilation unit, which all modules share. It belongs to no module, so its nets
+    /// stand in the first top that uses it, named `package::variable`.
+    pub fn shared_variable(&mut self, lazy: LazyId, span: Span) -> Outcome<VariableId> {
+        let (scope, ty, declarator) = match self.lazies[lazy.index()] {
+            (_, Lazy::Laid(id)) => return Ok(id),
+            (scope, Lazy::Variable { ty, declarator }) => (scope, ty, declarator),
+            _ => return Err(wrong("a variable that depends on itself", span)),
+        };
+        let name = &declarator.name;
+        let (label, instance) =
+            (format!("{}::{}", self.scope(scope).name, name.name), self.builder.root(self.instance));
+        self.lazies[lazy.index()].1 = Lazy::Busy;
+        let made = self.in_scope(scope, |this| -> Outcome<(Rc<Type>, Option<Vec<Bit>>)> {
+            let ty = this.declared_type(ty, &declarator.dims, name.span)?;
+            if ty.width == 0 || ty.unpacked_array() && ty.width > MAX_MEMORY {
+                return Err(unsupported("variable of this type outside of a module", name.span));
+            }
+            let init = match &declarator.init {
+                Some(init) => Some(super::bits::from_value(&this.constant_for(init, &ty)?)),
+                None => ty.defaults(),
+            };
+            Ok((ty, init))
+        });
+        let (ty, init) = match made {
+            Ok(made) => made,
+            Err(diagnostic) => {
+                self.lazies[lazy.index()].1 = Lazy::Failed;
+                return Err(diagnostic);
+            }
+        };
+        let net = self.lay_out(instance, &label, &ty, name.span)?;
+        let wires = self.builder.net_bits(net).to_vec();
+        let id = self.add_variable(Variable {
+            name: label,
+            ty,
+            instance,
+            span: name.span,
+            storage: Storage::Variable,
+            net: Some(net),
+            wires,
+            is_port: false,
+            init,
+        });
+        self.lazies[lazy.index()].1 = Lazy::Laid(id);
         Ok(id)
     }
 

@@ -93,6 +93,21 @@ impl<'a> Elaborator<'a> {
         nodes.extend(rungs.iter().flat_map(|rung| [rung.net, rung.value]));
     }
 
+    /// The nodes that others read, or that wires and cells are driven by.
+    pub fn used_nodes(&self) -> HashSet<NodeId> {
+        let mut nodes: Vec<NodeId> = self.used.clone();
+        nodes.extend(self.drivers.values().flatten().flat_map(|driver| {
+            let mut parts = Vec::new();
+            self.parts(driver.value, &mut parts);
+            parts
+        }));
+        for pending in &self.pending {
+            self.pending_parts(&pending.kind, &mut nodes);
+        }
+        let inner = (0..self.builder.len()).flat_map(|index| self.builder.fanin(NodeId::new(index)));
+        nodes.into_iter().chain(inner.copied()).collect()
+    }
+
     /// The variables that processes write with blocking assignments only and that nothing but themselves depends on:
     /// loop counters and scratch values.
     fn scratch_variables(&self) -> HashSet<VariableId> {

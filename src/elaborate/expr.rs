@@ -6,7 +6,8 @@
 use super::bits::{self, Bit, extend};
 use super::blast;
 use super::context::{Elaborator, Outcome, unsupported, wrong};
-use super::place::Want;
+use super::place::{Resolved, Want};
+use super::statement::has_step;
 use super::value::{Logic, MAX_WIDTH, Value};
 use crate::graph::{GateKind, Site};
 use crate::source::Span;
@@ -94,7 +95,11 @@ impl<'a> Elaborator<'a> {
             },
             ExprKind::Inside(..) => (1, false),
             ExprKind::MinTypMax(_, typical, _) => self.size(typical)?,
-            ExprKind::Assign(assignment) => {
+            ExprKind::Reduce { array, method, iterator, with } => {
+                let (bits, signed) = self.reduce_with(array, method, iterator.as_ref(), with, Want::Type)?;
+                (bits.len(), signed)
+            }
+            ExprKind::Assign(assignment) | ExprKind::Postfix(assignment) => {
                 let ty = self.type_of(&assignment.target)?;
                 (ty.width, ty.signed)
             }
@@ -212,6 +217,19 @@ impl<'a> Elaborator<'a> {
                 return Ok(extend(vec![inside], width, false));
             }
             ExprKind::MinTypMax(_, typical, _) => return self.eval(typical, width, signed),
+            ExprKind::Reduce { array, method, iterator, with } => {
+                self.reduce_with(array, method, iterator.as_ref(), with, Want::Value)?.0
+            }
+            ExprKind::Assign(assignment) | ExprKind::Postfix(assignment) if has_step(&assignment.target) => {
+                let what = "assignment or increment in an index of what an expression assigns";
+                return Err(unsupported(what, assignment.target.span));
+            }
+            ExprKind::Postfix(assignment) => {
+                let place = self.place(&assignment.target, Want::Value)?;
+                let before = self.read_place(&place, site)?;
+                self.assign(assignment)?;
+                before
+            }
             ExprKind::Assign(assignment) => {
                 self.assign(assignment)?;
                 let place = self.place(&assignment.target, Want::Value)?;
@@ -449,6 +467,9 @@ impl<'a> Elaborator<'a> {
 
     /// `value inside {a, [b:c]}`: the OR of wildcard equalities and range checks.
     fn eval_inside(&mut self, value: &'a Expr, ranges: &'a [Expr], site: Site) -> Outcome<Bit> {
+        if has_step(value) {
+            return Err(unsupported("assignment or increment in what `inside` compares", value.span));
+        }
         let (width, signed) = self.size(value)?;
         let mut terms = Vec::new();
         for range in ranges {
@@ -515,6 +536,11 @@ impl<'a> Elaborator<'a> {
             ExprKind::Type(ty) => return self.data_type(ty).map(Some),
             ExprKind::Name(name) => self.find(&name.name),
             ExprKind::Scoped { package, name } => Some(self.look_up_in_package(package, name)?),
+            // A type of an interface, through the port.
+            ExprKind::Member(..) => match self.resolve(expr, Want::Type) {
+                Ok(Resolved::Symbol(symbol)) => Some(symbol),
+                _ => None,
+            },
             _ => None,
         };
         match symbol {

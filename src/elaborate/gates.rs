@@ -3,7 +3,7 @@
 use std::rc::Rc;
 
 use super::bits::Bit;
-use super::context::{Elaborator, Outcome, VariableId, unsupported, wrong};
+use super::context::{Elaborator, Outcome, Storage, VariableId, unsupported, wrong};
 use super::environment::{Environment, Mode};
 use super::hierarchy::{Slot, Work};
 use super::scope::ScopeId;
@@ -56,6 +56,34 @@ impl<'a> Elaborator<'a> {
             Work::Connection(connection) => self.connection(connection),
             Work::BlackBox(black_box) => self.black_box(black_box),
             Work::Cell(cell) => self.cell(cell),
+        }
+        self.check_side_effects();
+    }
+
+    /// Outside of processes nothing carries out what a function assigns beside its result.
+    fn check_side_effects(&mut self) {
+        let layers = std::mem::take(&mut self.environment).layers;
+        for &(id, _) in layers.iter().flat_map(|layer| layer.keys()) {
+            if self.variable(id).storage != Storage::Local && !self.side_effects.contains(&id) {
+                self.side_effects.push(id);
+            }
+        }
+    }
+
+    /// Reports the variables that such functions assign, unless nothing reads them, as nothing reads a loop counter.
+    pub fn report_side_effects(&mut self) {
+        let effects = std::mem::take(&mut self.side_effects);
+        if effects.is_empty() {
+            return;
+        }
+        let used = self.used_nodes();
+        for id in effects {
+            let variable = self.variable(id);
+            if variable.is_port || variable.wires.iter().any(|wire| used.contains(wire)) {
+                let what = format!("assignment of `{}` by a function called outside of a process", variable.name);
+                let span = variable.span;
+                self.report(*unsupported(what, span));
+            }
         }
     }
 

@@ -1,29 +1,26 @@
-//! The instance tree: modules with their parameters, generate constructs, instances and instance arrays. What a module
+//! The instance tree: modules with their parameters, instances and instance arrays. What a module
 //! does is only collected here, as work to be done when all instances exist, so that hierarchical names can be resolved.
 
-use std::collections::{BTreeMap, BTreeSet, HashMap};
+use std::collections::{BTreeSet, HashMap, HashSet};
 use std::rc::Rc;
 
-use super::bits::to_value;
 use super::cells::CellWork;
 use super::context::{Elaborator, Outcome, Storage, VariableId, unsupported, wrong};
+use super::library;
 use super::ports::{Actual, BlackBoxWork, ConnectionWork};
-use super::scope::{Constant, Lazy, Scope, ScopeId, Symbol};
-use super::value::Value;
+use super::scope::{Instances, Lazy, Scope, ScopeId, Symbol};
 use crate::diagnostic::{Diagnostic, Kind};
 use crate::graph::InstanceId;
 use crate::source::Span;
 use crate::syntax::ast::{
-    Assignment, Connection, DefaultNettype, Dim, Expr, ExprKind, GateInstance, GateType, GenBlock, GenvarInit, Ident,
-    Instance, Item, ItemKind, Module, ModuleKind, ParamKind, Process,
+    Connection, DefaultNettype, Dim, Expr, ExprKind, GateInstance, GateType, Ident, Instance, Item, ItemKind, Module,
+    ModuleKind, ParamKind, Ports, Process, ProcessKind,
 };
 
 /// Instances may be nested this deep.
 const DEPTH_LIMIT: usize = 200;
 /// So many instances, generate blocks included, may exist.
-const INSTANCE_LIMIT: usize = 1_000_000;
-/// A generate loop may run this often.
-const GENERATE_LIMIT: usize = 1 << 17;
+pub(super) const INSTANCE_LIMIT: usize = 1_000_000;
 
 /// Something a module does.
 pub(super) enum Work<'a> {
@@ -88,7 +85,7 @@ impl<'a> Elaborator<'a> {
         self.here = self.unit;
         self.depth = 0;
         let given = self.given_for(module);
-        match self.module(module, None, instance, &module.name.name, &given, &[]) {
+        match self.module(module, None, self.unit, instance, &module.name.name, &given, &[]) {
             Ok(scope) => {
                 self.tops.push((module.name.name.clone(), scope));
                 self.top_ports(scope, instance);
@@ -110,28 +107,51 @@ impl<'a> Elaborator<'a> {
         }
     }
 
-    /// Elaborates one instance of a module into a scope of its own.
-    fn module(
+    /// The module or interface of a name, and the scope that its declaration stands in: one declared in an enclosing
+    /// module comes before those of all files.
+    pub fn definition(&self, from: ScopeId, name: &str) -> Option<(&'a Module, ScopeId)> {
+        let mut at = Some(from);
+        while let Some(scope) = at {
+            if let Some(&module) = self.nested.get(&scope).and_then(|nested| nested.get(name)) {
+                return Some((module, scope));
+            }
+            at = self.scope(scope).parent;
+        }
+        self.library.modules.get(name).map(|&module| (module, self.unit))
+    }
+
+    /// Elaborates one instance of a module into a scope of its own. `around` is where the module is declared: the
+    /// compilation unit, or the instance of the module that it is nested in.
+    #[allow(clippy::too_many_arguments, reason = "what an instance is made of; a structure would only rename it")]
+    pub fn module(
         &mut self,
         module: &'a Module,
         outer: Option<ScopeId>,
+        around: ScopeId,
         instance: InstanceId,
         name: &str,
         overrides: &Overrides<'a>,
         connections: &[(usize, Actual<'a>)],
     ) -> Outcome<ScopeId> {
         let scope = self.add_scope(Scope {
-            parent: Some(self.unit),
+            parent: Some(around),
             outer,
             instance,
             name: name.to_string(),
             prefix: String::new(),
             names: HashMap::new(),
             wildcards: Vec::new(),
+            hidden: HashSet::new(),
+            exports: Vec::new(),
+            exports_all: false,
+            is_modport: false,
             nettype: module.default_nettype,
             module: Some(module),
             is_module: true,
         });
+        if matches!(module.ports, Ports::Wildcard) {
+            return Err(unsupported("port list (.*) without an extern declaration in the same file", module.name.span));
+        }
         self.import(scope, &module.imports)?;
         self.parameters(scope, module, outer, overrides)?;
         let before = std::mem::replace(&mut self.instance, instance);
@@ -139,7 +159,11 @@ impl<'a> Elaborator<'a> {
             this.declare_ports(scope, module, outer, connections)?;
             this.declare_all(scope, &module.items, Storage::Variable)?;
             this.list_ports(scope, module)?;
-            this.items(scope, &module.items)
+            let path = this.scope_path(scope);
+            this.note_inner_binds(module, &path);
+            this.items(scope, &module.items)?;
+            this.bound_instances(scope, module);
+            Ok(())
         });
         self.instance = before;
         outcome?;
@@ -270,25 +294,34 @@ impl<'a> Elaborator<'a> {
     }
 
     /// Goes through the items of a module or generate block.
-    fn items(&mut self, scope: ScopeId, items: &'a [Item]) -> Outcome<()> {
+    pub fn items(&mut self, scope: ScopeId, items: &'a [Item]) -> Outcome<()> {
         self.defparams(scope, items)?;
-        // Interfaces first: the modules that they are connected to need their names.
-        for item in items {
-            if let ItemKind::Instances { module, params, instances } = &item.kind
-                && self.is_interface(module)
-            {
-                self.instances(scope, module, params, instances)?;
-            }
-        }
+        self.interface_instances(scope, items)?;
         let mut generates = 0;
         self.remaining_items(scope, items, &mut generates)
     }
 
-    fn is_interface(&self, module: &Ident) -> bool {
-        self.library.modules.get(module.name.as_str()).is_some_and(|module| module.kind == ModuleKind::Interface)
+    /// Interfaces come first: the modules that they are connected to need their names.
+    fn interface_instances(&mut self, scope: ScopeId, items: &'a [Item]) -> Outcome<()> {
+        for item in items {
+            match &item.kind {
+                ItemKind::Instances { module, params, instances } if self.is_interface(scope, module) => {
+                    self.instances(scope, module, params, instances)?;
+                }
+                ItemKind::GenBlock(block) if !block.scoped && block.label.is_none() => {
+                    self.interface_instances(scope, &block.items)?;
+                }
+                _ => {}
+            }
+        }
+        Ok(())
     }
 
-    fn remaining_items(&mut self, scope: ScopeId, items: &'a [Item], generates: &mut usize) -> Outcome<()> {
+    fn is_interface(&self, scope: ScopeId, module: &Ident) -> bool {
+        self.definition(scope, &module.name).is_some_and(|(module, _)| module.kind == ModuleKind::Interface)
+    }
+
+    pub fn remaining_items(&mut self, scope: ScopeId, items: &'a [Item], generates: &mut usize) -> Outcome<()> {
         for item in items {
             self.here = scope;
             self.instance = self.scope(scope).instance;
@@ -307,6 +340,11 @@ impl<'a> Elaborator<'a> {
                                 Storage::Net(_) => Work::NetInit { scope, variable, value },
                                 _ => Work::VariableInit { scope, variable, value },
                             });
+                        } else if let Some(variable) = self.own(scope, &declarator.name)
+                            && self.variable(variable).storage == Storage::Variable
+                            && self.variable(variable).init.is_none()
+                        {
+                            self.variables[variable.index()].init = self.variable(variable).ty.defaults();
                         }
                     }
                 }
@@ -317,9 +355,14 @@ impl<'a> Elaborator<'a> {
                     }
                 }
                 ItemKind::Alias(nets) => self.works.push(Work::Alias { scope, nets }),
-                ItemKind::Process(process) => self.works.push(Work::Process { scope, process, span: item.span }),
+                ItemKind::Process(process) => {
+                    if process.kind != ProcessKind::Initial {
+                        self.name_blocks(scope, &process.body);
+                    }
+                    self.works.push(Work::Process { scope, process, span: item.span });
+                }
                 ItemKind::Instances { module, params, instances } => {
-                    if !self.is_interface(module) {
+                    if !self.is_interface(scope, module) {
                         self.instances(scope, module, params, instances)?;
                     }
                 }
@@ -349,14 +392,10 @@ impl<'a> Elaborator<'a> {
                     *generates += 1;
                     self.conditional(scope, item, *generates)?;
                 }
-                ItemKind::Module(module) => {
-                    if module.kind == ModuleKind::Program {
-                        self.skip("program");
-                    } else {
-                        self.report(*unsupported("module declared inside a module", module.name.span));
-                    }
-                }
-                ItemKind::Bind { .. } => self.report(*unsupported("bind", item.span)),
+                ItemKind::Module(module) if module.kind == ModuleKind::Program => self.skip("program"),
+                ItemKind::Module(module) => self.implicit_instance(scope, module, items)?,
+                ItemKind::Bind { .. } if self.scope(scope).is_module => {}
+                ItemKind::Bind { .. } => self.report(*unsupported("bind in a generate block", item.span)),
                 ItemKind::ElabTask { name } => {
                     if matches!(name.as_str(), "$fatal" | "$error") {
                         return Err(wrong(format!("the design itself reports {name} here"), item.span));
@@ -377,10 +416,41 @@ impl<'a> Elaborator<'a> {
                 | ItemKind::Task(_)
                 | ItemKind::Defparam(_)
                 | ItemKind::Modport { .. }
+                | ItemKind::InterfacePort { .. }
                 | ItemKind::Let { .. } => {}
             }
         }
         Ok(())
+    }
+
+    /// A nested module without ports that nobody instantiates stands once where it is declared (IEEE 1800-2017 clause 23.4).
+    fn implicit_instance(&mut self, scope: ScopeId, module: &'a Module, items: &'a [Item]) -> Outcome<()> {
+        let mut named = BTreeSet::new();
+        library::instantiated_here(items, &mut named);
+        let name = module.name.name.as_str();
+        if module.kind != ModuleKind::Module || !library::without_ports(module) || named.contains(name) {
+            return Ok(());
+        }
+        self.count_instance(module.name.span)?;
+        let parent = self.scope(scope).instance;
+        let node = self.builder.instance(Some(parent), name, name, Some(module.name.span));
+        self.depth += 1;
+        let outcome = self.module(module, Some(scope), scope, node, name, &Overrides::new(), &[]);
+        self.depth -= 1;
+        self.here = scope;
+        self.instance = parent;
+        let inner = outcome?;
+        self.declare(scope, name, Symbol::Scope(inner));
+        Ok(())
+    }
+
+    fn count_instance(&mut self, span: Span) -> Outcome<()> {
+        self.instance_count += 1;
+        if self.depth < DEPTH_LIMIT && self.instance_count <= INSTANCE_LIMIT {
+            return Ok(());
+        }
+        self.exhausted = true;
+        Err(wrong(format!("more than {INSTANCE_LIMIT} instances, or nested more than {DEPTH_LIMIT} deep"), span))
     }
 
     fn own(&self, scope: ScopeId, name: &Ident) -> Option<VariableId> {
@@ -439,7 +509,7 @@ impl<'a> Elaborator<'a> {
         Ok(())
     }
 
-    fn path_text(&mut self, expr: &'a Expr) -> Outcome<String> {
+    pub fn path_text(&mut self, expr: &'a Expr) -> Outcome<String> {
         match &expr.kind {
             ExprKind::Name(name) => Ok(name.name.clone()),
             ExprKind::Member(base, name) => Ok(format!("{}.{}", self.path_text(base)?, name.name)),
@@ -479,7 +549,7 @@ impl<'a> Elaborator<'a> {
         Ok(indices.into_iter().enumerate().map(|(position, index)| (Some(Slot { position, count }), index)).collect())
     }
 
-    fn instances(
+    pub fn instances(
         &mut self,
         scope: ScopeId,
         name: &'a Ident,
@@ -505,26 +575,24 @@ impl<'a> Elaborator<'a> {
                 }
                 continue;
             }
-            let mut made: BTreeMap<i64, ScopeId> = BTreeMap::new();
-            let is_array = !instance.dims.is_empty();
+            let mut made = Instances::default();
+            let mut ascending = Vec::new();
+            for dim in &instance.dims {
+                ascending.push(self.in_scope(scope, |this| this.dimension(dim))?.ascending());
+            }
             for (slot, index) in slots {
                 let label: String = index.iter().map(|index| format!("[{index}]")).collect();
                 let label = format!("{}{label}", instance.name.name);
                 let inner = self.instance(scope, name, params, instance, &label, slot)?;
-                match (inner, index.as_slice()) {
-                    (Some(inner), [index]) => {
-                        made.insert(*index, inner);
+                let symbol = inner.map_or(Symbol::Opaque, Symbol::Scope);
+                match index.as_slice() {
+                    [] => {
+                        self.declare(scope, &instance.name.name, symbol);
                     }
-                    (Some(inner), []) => {
-                        self.declare(scope, &instance.name.name, Symbol::Scope(inner));
-                    }
-                    (None, []) => {
-                        self.declare(scope, &instance.name.name, Symbol::Opaque);
-                    }
-                    _ => {}
+                    index => made.enter(index, &ascending, symbol),
                 }
             }
-            if is_array {
+            if !ascending.is_empty() {
                 self.declare(scope, &instance.name.name, Symbol::Scopes(Rc::new(made)));
             }
         }
@@ -551,8 +619,7 @@ impl<'a> Elaborator<'a> {
             self.works.push(Work::Cell(CellWork::new(scope, node, model, instance, slot)));
             return Ok(None);
         }
-        let module = self.library.modules.get(name.name.as_str()).copied();
-        let Some(module) = module else {
+        let Some((module, around)) = self.definition(scope, &name.name) else {
             if let Some(model) = self.library_cell(name) {
                 self.works.push(Work::Cell(CellWork::new(scope, node, model, instance, slot)));
                 return Ok(None);
@@ -573,13 +640,14 @@ impl<'a> Elaborator<'a> {
         self.depth += 1;
         let actuals = self.actuals_of(scope, module, instance);
         let overrides = self.match_overrides(module, params);
-        let outcome = self.module(module, Some(scope), node, label, &overrides, &actuals);
+        self.slot = slot;
+        let outcome = self.module(module, Some(scope), around, node, label, &overrides, &actuals);
         self.depth -= 1;
         self.here = scope;
         self.instance = parent;
         match outcome {
             Ok(inner) => {
-                self.connect(scope, inner, actuals, slot);
+                self.connect(module, scope, inner, actuals, slot);
                 Ok(Some(inner))
             }
             // A limit ends everything; one message is enough.
@@ -591,187 +659,5 @@ impl<'a> Elaborator<'a> {
                 Ok(None)
             }
         }
-    }
-}
-
-/// Generate constructs.
-impl<'a> Elaborator<'a> {
-    fn block_name(&self, scope: ScopeId, block: &GenBlock, number: Option<usize>) -> String {
-        match (&block.label, number) {
-            (Some(label), _) => label.name.clone(),
-            (None, Some(number)) => {
-                // Leading zeros keep the name apart from a declared one.
-                let mut digits = number.to_string();
-                while self.scope(scope).names.contains_key(&format!("genblk{digits}")) {
-                    digits.insert(0, '0');
-                }
-                format!("genblk{digits}")
-            }
-            (None, None) => String::new(),
-        }
-    }
-
-    /// A generate block that stands once.
-    fn block(
-        &mut self,
-        scope: ScopeId,
-        block: &'a GenBlock,
-        number: Option<usize>,
-        generates: &mut usize,
-    ) -> Outcome<()> {
-        let name = self.block_name(scope, block, number);
-        if name.is_empty() {
-            self.declare_all(scope, &block.items, Storage::Variable)?;
-            return self.remaining_items(scope, &block.items, generates);
-        }
-        let inner = self.generate_scope(scope, &name, &name, block.span)?;
-        self.declare(scope, &name, Symbol::Scope(inner));
-        self.block_body(inner, block)
-    }
-
-    fn generate_scope(&mut self, scope: ScopeId, name: &str, label: &str, span: Span) -> Outcome<ScopeId> {
-        self.instance_count += 1;
-        if self.instance_count > INSTANCE_LIMIT {
-            self.exhausted = true;
-            return Err(wrong(
-                format!("the design has more than {INSTANCE_LIMIT} instances and generate blocks"),
-                span,
-            ));
-        }
-        let parent = self.scope(scope).instance;
-        let instance = self.builder.block(parent, label, Some(span));
-        Ok(self.inner_scope(scope, name, instance, String::new()))
-    }
-
-    fn block_body(&mut self, inner: ScopeId, block: &'a GenBlock) -> Outcome<()> {
-        let (here, instance) = (self.here, self.instance);
-        self.here = inner;
-        self.instance = self.scope(inner).instance;
-        let outcome =
-            self.declare_all(inner, &block.items, Storage::Variable).and_then(|()| self.items(inner, &block.items));
-        self.here = here;
-        self.instance = instance;
-        outcome
-    }
-
-    /// A generate if or case. One that stands alone in a branch of another is part of that other construct.
-    fn conditional(&mut self, scope: ScopeId, item: &'a Item, number: usize) -> Outcome<()> {
-        self.here = scope;
-        let chosen: Option<&'a GenBlock> = match &item.kind {
-            ItemKind::GenIf { cond, then, otherwise } => {
-                if self.generate_condition(cond)? {
-                    Some(then)
-                } else {
-                    otherwise.as_ref()
-                }
-            }
-            ItemKind::GenCase { subject, arms, default } => self.generate_case(subject, arms, default.as_ref())?,
-            _ => None,
-        };
-        let Some(block) = chosen else {
-            return Ok(());
-        };
-        if !block.scoped
-            && block.label.is_none()
-            && let [inner] = block.items.as_slice()
-            && matches!(inner.kind, ItemKind::GenIf { .. } | ItemKind::GenCase { .. })
-        {
-            return self.conditional(scope, inner, number);
-        }
-        if block.items.is_empty() {
-            return Ok(());
-        }
-        self.block(scope, block, Some(number), &mut 0)
-    }
-
-    fn generate_condition(&mut self, cond: &'a Expr) -> Outcome<bool> {
-        match self.constant(cond)? {
-            Constant::Bits(value, _) => Ok(value.is_true()),
-            Constant::Real(real) => Ok(real != 0.0),
-        }
-    }
-
-    fn generate_case(
-        &mut self,
-        subject: &'a Expr,
-        arms: &'a [(Vec<Expr>, GenBlock)],
-        default: Option<&'a GenBlock>,
-    ) -> Outcome<Option<&'a GenBlock>> {
-        let (mut width, mut signed) = self.size(subject)?;
-        for label in arms.iter().flat_map(|(labels, _)| labels) {
-            let (label_width, label_signed) = self.size(label)?;
-            width = width.max(label_width);
-            signed &= label_signed;
-        }
-        let value = self.eval(subject, width, signed)?;
-        let Some(value) = to_value(&value, signed) else {
-            return Err(wrong("the subject of a generate case must be constant", subject.span));
-        };
-        for (labels, block) in arms {
-            for label in labels {
-                let bits = self.eval(label, width, signed)?;
-                if to_value(&bits, signed).is_some_and(|label| label.bits == value.bits) {
-                    return Ok(Some(block));
-                }
-            }
-        }
-        Ok(default)
-    }
-
-    fn generate_for(
-        &mut self,
-        scope: ScopeId,
-        init: &'a GenvarInit,
-        cond: &'a Expr,
-        step: &'a Assignment,
-        body: &'a GenBlock,
-        number: usize,
-    ) -> Outcome<()> {
-        self.here = scope;
-        let name = self.block_name(scope, body, Some(number));
-        let mut value = self.constant_i64(&init.value)? as i32;
-        let control = self.inner_scope(scope, "", self.scope(scope).instance, String::new());
-        let lazy = self.add_lazy(control, Lazy::Constant(Constant::integer(value.into())));
-        self.declare(control, &init.name.name, Symbol::Lazy(lazy));
-        self.declare(scope, &name, Symbol::Scopes(Rc::new(BTreeMap::new())));
-        let mut seen = BTreeSet::new();
-        loop {
-            if !self.in_scope(control, |this| this.generate_condition(cond))? {
-                return Ok(());
-            }
-            if !seen.insert(value) || seen.len() > GENERATE_LIMIT {
-                let message = if seen.len() > GENERATE_LIMIT {
-                    format!("a generate loop that does not end within {GENERATE_LIMIT} passes")
-                } else {
-                    format!("a generate loop that does not end: `{}` is {value} again", init.name.name)
-                };
-                return Err(wrong(message, init.name.span.to(cond.span)));
-            }
-            let label = format!("{name}[{value}]");
-            let inner = self.generate_scope(scope, &name, &label, body.span)?;
-            self.declare_constant(inner, &init.name.name, Constant::integer(value.into()));
-            if let Some(Symbol::Scopes(scopes)) = self.scopes[scope.index()].names.get_mut(&name) {
-                Rc::make_mut(scopes).insert(value.into(), inner);
-            }
-            self.block_body(inner, body)?;
-            self.here = scope;
-            value = self.in_scope(control, |this| this.next_genvar(value, step))?;
-            self.lazies[lazy.index()].1 = Lazy::Constant(Constant::integer(value.into()));
-        }
-    }
-
-    fn next_genvar(&mut self, value: i32, step: &'a Assignment) -> Outcome<i32> {
-        let operand = self.constant_i64(&step.value)?;
-        let next = match step.op {
-            None => operand,
-            Some(op) => {
-                let left = Value::from_i64(value.into(), 32, true);
-                let right = Value::from_i64(operand, 32, true);
-                Value::binary(op, &left, &right)
-                    .to_i64()
-                    .ok_or_else(|| wrong("a genvar that becomes unknown", step.span))?
-            }
-        };
-        Ok(next as i32)
     }
 }

@@ -5,7 +5,7 @@ use std::collections::{BTreeMap, BTreeSet, HashMap};
 
 use crate::diagnostic::{Diagnostic, Kind};
 use crate::source::Span;
-use crate::syntax::ast::{Item, ItemKind, Module, ModuleKind, Package, Ports, Udp, Unit};
+use crate::syntax::ast::{Expr, ExprKind, Item, ItemKind, Module, ModuleKind, Package, Ports, Udp, Unit};
 
 #[derive(Default)]
 pub(super) struct Library<'a> {
@@ -14,6 +14,8 @@ pub(super) struct Library<'a> {
     pub udps: HashMap<&'a str, &'a Udp>,
     /// Modules in source order, without the duplicates.
     pub order: Vec<&'a Module>,
+    /// `bind` outside of modules: the target and what is bound.
+    binds: Vec<(&'a Expr, &'a Item)>,
 }
 
 /// The tops, and what was left out.
@@ -31,6 +33,11 @@ impl<'a> Library<'a> {
                 .push(Diagnostic::new(Kind::Note, "duplicate declaration", message, Some(at)).with_also(first, "used"));
         };
         for unit in units {
+            for item in &unit.items {
+                if let ItemKind::Bind { target, item } = &item.kind {
+                    library.binds.push((target, item));
+                }
+            }
             for module in &unit.modules {
                 let name = module.name.name.as_str();
                 match library.modules.get(name) {
@@ -91,6 +98,16 @@ impl<'a> Library<'a> {
                 }
             }
         }
+        for (target, item) in &self.binds {
+            let mut children = BTreeSet::new();
+            instantiated(std::slice::from_ref(*item), &mut children);
+            let name = first_name(target);
+            for child in children {
+                if child != name && self.modules.contains_key(child) {
+                    parents.entry(child).or_default().insert(name);
+                }
+            }
+        }
         let candidates = || self.order.iter().filter(|module| module.kind == ModuleKind::Module);
         let mut benches: BTreeSet<&str> = BTreeSet::new();
         let free = |name: &str, benches: &BTreeSet<&str>| {
@@ -125,31 +142,57 @@ impl<'a> Library<'a> {
     }
 }
 
-fn without_ports(module: &Module) -> bool {
+/// The first name of a path.
+fn first_name(expr: &Expr) -> &str {
+    match &expr.kind {
+        ExprKind::Name(name) => &name.name,
+        ExprKind::Member(base, _) | ExprKind::Index(base, _) => first_name(base),
+        _ => "",
+    }
+}
+
+pub(super) fn without_ports(module: &Module) -> bool {
     match &module.ports {
         Ports::Ansi(ports) => ports.is_empty(),
         Ports::NonAnsi(ports) => ports.is_empty(),
+        Ports::Wildcard => false,
         Ports::None => true,
     }
 }
 
-fn instantiated<'a>(items: &'a [Item], names: &mut BTreeSet<&'a str>) {
+/// The names of all modules that `items` instantiate, those declared among them left out.
+pub(super) fn instantiated<'a>(items: &'a [Item], names: &mut BTreeSet<&'a str>) {
+    let mut found = BTreeSet::new();
+    let mut nested = BTreeSet::new();
+    for item in items {
+        if let ItemKind::Module(module) = &item.kind {
+            nested.insert(module.name.name.as_str());
+            instantiated(&module.items, &mut found);
+        }
+    }
+    instantiated_here(items, &mut found);
+    names.extend(found.difference(&nested));
+}
+
+/// Likewise, without what nested modules instantiate.
+pub(super) fn instantiated_here<'a>(items: &'a [Item], names: &mut BTreeSet<&'a str>) {
     for item in items {
         match &item.kind {
+            ItemKind::Bind { item, .. } => instantiated_here(std::slice::from_ref(item), names),
             ItemKind::Instances { module, .. } => {
                 names.insert(&module.name);
             }
-            ItemKind::GenBlock(block) | ItemKind::GenFor { body: block, .. } => instantiated(&block.items, names),
+            ItemKind::GenBlock(block) | ItemKind::GenFor { body: block, .. } => instantiated_here(&block.items, names),
             ItemKind::GenIf { then, otherwise, .. } => {
-                instantiated(&then.items, names);
+                instantiated_here(&then.items, names);
                 if let Some(otherwise) = otherwise {
-                    instantiated(&otherwise.items, names);
+                    instantiated_here(&otherwise.items, names);
                 }
             }
             ItemKind::GenCase { arms, default, .. } => {
-                arms.iter().for_each(|(_, block)| instantiated(&block.items, names));
+                arms.iter().for_each(|(_, block)| instantiated_here(&block.items, names));
                 if let Some(default) = default {
-                    instantiated(&default.items, names);
+                    instantiated_here(&default.items, names);
                 }
             }
             _ => {}

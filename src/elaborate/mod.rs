@@ -6,6 +6,7 @@
 //! First the instance tree is built and what the modules do is only collected; then, when every hierarchical name can be
 //! resolved, the work is done; then the drivers of each wire are resolved and the cells are made.
 
+mod bind;
 mod bits;
 pub mod blast;
 mod calls;
@@ -19,9 +20,12 @@ mod drivers;
 mod environment;
 mod expr;
 mod gates;
+mod generate;
 mod given;
 mod hierarchy;
+mod interfaces;
 mod library;
+mod methods;
 mod pattern;
 mod place;
 mod ports;

@@ -6,7 +6,7 @@ use std::rc::Rc;
 
 use super::bits::Bit;
 use super::context::{Elaborator, Outcome, Storage, VariableId, unsupported, wrong};
-use super::scope::{Constant, ScopeId, Symbol};
+use super::scope::{Constant, Instances, ScopeId, Symbol};
 use super::types::{Range, Shape, Type};
 use crate::graph::{NodeId, Site, SourceKind};
 use crate::source::Span;
@@ -67,6 +67,10 @@ impl<'a> Elaborator<'a> {
             Resolved::Symbol(Symbol::Simulation { what, .. }) => {
                 Err(unsupported(format!("value of a {what} in logic"), expr.span))
             }
+            Resolved::Symbol(Symbol::Let(..) | Symbol::Function(..)) => {
+                let (bits, ty) = self.call_without_arguments(expr, want)?;
+                Ok(Place { base: Base::Bits(Rc::new(bits)), steps: Vec::new(), ty })
+            }
             Resolved::Symbol(_) => Err(wrong("this name is not a value", expr.span)),
         }
     }
@@ -87,6 +91,11 @@ impl<'a> Elaborator<'a> {
             }
             ExprKind::Member(base, name) => {
                 let base = match &base.kind {
+                    ExprKind::Name(root) if root.name == "$root" => {
+                        let top = self.tops.iter().find(|(top, _)| *top == name.name);
+                        let top = top.ok_or_else(|| wrong(format!("there is no top `{}`", name.name), name.span))?;
+                        return Ok(Resolved::Scope(top.1));
+                    }
                     ExprKind::Name(first) => {
                         let symbol = self
                             .find_upward(&first.name)
@@ -95,7 +104,7 @@ impl<'a> Elaborator<'a> {
                     }
                     _ => self.resolve(base, want)?,
                 };
-                self.resolve_member(base, name)
+                self.resolve_member(base, name, want)
             }
             ExprKind::Index(base, index) => {
                 let base = self.resolve_base(base, want)?;
@@ -103,8 +112,12 @@ impl<'a> Elaborator<'a> {
             }
             ExprKind::Slice { base, kind, left, right } => {
                 let base = self.resolve_base(base, want)?;
-                let Resolved::Place(place) = base else {
-                    return Err(unsupported("slice of an instance array", expr.span));
+                let place = match base {
+                    Resolved::Place(place) => place,
+                    Resolved::Symbol(Symbol::Scopes(all)) if *kind == SliceKind::Constant => {
+                        return self.slice_instances(&all, left, right);
+                    }
+                    _ => return Err(unsupported("this slice of an instance array", expr.span)),
                 };
                 self.slice(place, *kind, left, right, want).map(Resolved::Place)
             }
@@ -136,6 +149,12 @@ impl<'a> Elaborator<'a> {
             Symbol::Variable(id) if self.variable(id).storage == Storage::Package => {
                 return Err(unsupported("net or variable declared outside of modules", span));
             }
+            Symbol::Alias(expr, scope) => return self.in_scope(scope, |this| this.resolve(expr, Want::Value)),
+            Symbol::Lazy(id) if self.is_variable(id) => {
+                let id = self.shared_variable(id, span)?;
+                let ty = Rc::clone(&self.variable(id).ty);
+                Resolved::Place(Place { base: Base::Variable(id), steps: Vec::new(), ty })
+            }
             Symbol::Variable(id) => {
                 let ty = Rc::clone(&self.variable(id).ty);
                 Resolved::Place(Place { base: Base::Variable(id), steps: Vec::new(), ty })
@@ -155,9 +174,9 @@ impl<'a> Elaborator<'a> {
         })
     }
 
-    fn resolve_member(&mut self, base: Resolved<'a>, name: &Ident) -> Outcome<Resolved<'a>> {
+    fn resolve_member(&mut self, base: Resolved<'a>, name: &'a Ident, want: Want) -> Outcome<Resolved<'a>> {
         match base {
-            Resolved::Scope(scope) => match self.scope(scope).names.get(&name.name).cloned() {
+            Resolved::Scope(scope) => match self.name_in(scope, &name.name) {
                 Some(symbol) => self.resolve_symbol(symbol, name.span),
                 None => {
                     let inside = self.scope(scope).name.clone();
@@ -166,6 +185,9 @@ impl<'a> Elaborator<'a> {
             },
             Resolved::Place(mut place) => {
                 let ty = Rc::clone(&place.ty);
+                if let Some(place) = self.method_without_arguments(&place, name, want)? {
+                    return Ok(Resolved::Place(place));
+                }
                 let Shape::Struct { fields, .. } = &ty.shape else {
                     return Err(wrong(format!("`.{}` of something that is no structure", name.name), name.span));
                 };
@@ -184,13 +206,35 @@ impl<'a> Elaborator<'a> {
         }
     }
 
+    /// A name inside an instance, block or interface. A modport names some things of its interface; types and constants
+    /// it need not list.
+    pub fn name_in(&self, scope: ScopeId, name: &str) -> Option<Symbol<'a>> {
+        let inner = self.scope(scope);
+        let around = inner.parent.filter(|_| inner.is_modport);
+        inner.names.get(name).or_else(|| self.scope(around?).names.get(name)).cloned()
+    }
+
+    /// `lanes[2:1]`, with the indices of the slice.
+    fn slice_instances(&mut self, all: &Instances<'a>, left: &'a Expr, right: &'a Expr) -> Outcome<Resolved<'a>> {
+        let range = self.range(left, right)?;
+        let mut part = Instances { ascending: range.ascending(), ..Instances::default() };
+        for position in 0..range.len() {
+            let index = range.index(position);
+            let Some(symbol) = all.elements.get(&index) else {
+                return Err(wrong(format!("there is no instance with index {index}"), left.span.to(right.span)));
+            };
+            part.elements.insert(index, symbol.clone());
+        }
+        Ok(Resolved::Symbol(Symbol::Scopes(Rc::new(part))))
+    }
+
     fn resolve_index(&mut self, base: Resolved<'a>, index: &'a Expr, want: Want, span: Span) -> Outcome<Resolved<'a>> {
         match base {
             Resolved::Place(place) => self.index(place, index, want, span).map(Resolved::Place),
             Resolved::Symbol(Symbol::Scopes(scopes)) => {
                 let number = self.constant_i64(index)?;
-                match scopes.get(&number) {
-                    Some(&scope) => Ok(Resolved::Scope(scope)),
+                match scopes.elements.get(&number).cloned() {
+                    Some(symbol) => self.resolve_symbol(symbol, span),
                     None => Err(wrong(format!("there is no instance or block with index {number}"), span)),
                 }
             }

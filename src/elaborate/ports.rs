@@ -7,6 +7,7 @@ use std::rc::Rc;
 use super::bits::{Bit, extend};
 use super::context::{Elaborator, Outcome, Storage, VariableId, unsupported, wrong};
 use super::hierarchy::{Slot, Work};
+use super::interfaces::InterfacePort;
 use super::place::{Base, Place, Resolved};
 use super::scope::{ScopeId, Symbol};
 use super::types::{Shape, Type};
@@ -16,7 +17,7 @@ use crate::graph::{BlackBox, BoxPin, BoxRole, Edge, InstanceId, NodeId, Port, Po
 use crate::source::Span;
 use crate::spelling::nearest;
 use crate::syntax::ast::{
-    AnsiPort, AnsiPortKind, Connection, Direction, Expr, ExprKind, Ident, Instance, ItemKind, Module, ModuleKind, Ports,
+    AnsiPortKind, Connection, Direction, Expr, ExprKind, Ident, Instance, ItemKind, Module, Ports,
 };
 
 /// A port of an elaborated module.
@@ -32,7 +33,8 @@ pub(super) enum Target<'a> {
     Variable(VariableId),
     /// A port expression such as a concatenation.
     Expr(&'a Expr),
-    Interface,
+    /// An interface, or one of its modports; `None` for an array of interfaces.
+    Interface(Option<ScopeId>),
     Nothing,
 }
 
@@ -93,7 +95,15 @@ fn port_names(module: &Module) -> Vec<Option<&str>> {
     match &module.ports {
         Ports::Ansi(ports) => ports.iter().map(|port| Some(port.name.name.as_str())).collect(),
         Ports::NonAnsi(ports) => ports.iter().map(|port| port.name.as_ref().map(|name| name.name.as_str())).collect(),
-        Ports::None => Vec::new(),
+        Ports::None | Ports::Wildcard => Vec::new(),
+    }
+}
+
+/// The default value of a port.
+fn default_of(module: &Module, port: usize) -> Option<&Expr> {
+    match &module.ports {
+        Ports::Ansi(ports) => ports.get(port)?.default.as_ref(),
+        _ => None,
     }
 }
 
@@ -128,7 +138,7 @@ fn direction_of(module: &Module, port: usize) -> Option<Direction> {
             let name = first_name(ports.get(port)?.expr.as_ref()?)?;
             declared_direction(module, &name.name)
         }
-        Ports::None => None,
+        Ports::None | Ports::Wildcard => None,
     }
 }
 
@@ -143,7 +153,7 @@ impl<'a> Elaborator<'a> {
         connections: &[(usize, Actual<'a>)],
     ) -> Outcome<()> {
         let Ports::Ansi(ports) = &module.ports else {
-            return Ok(());
+            return self.declare_listed_interfaces(scope, module, outer, connections);
         };
         for (index, port) in ports.iter().enumerate() {
             match &port.kind {
@@ -159,7 +169,7 @@ impl<'a> Elaborator<'a> {
                         });
                     }
                 }
-                AnsiPortKind::Interface { interface, .. } => {
+                AnsiPortKind::Interface { interface, modport, .. } => {
                     if let Some(name) = interface
                         && !self.names_interface(name)
                     {
@@ -172,44 +182,12 @@ impl<'a> Elaborator<'a> {
                         self.declare_variable(scope, &port.name, ty, Storage::Variable)?;
                         continue;
                     }
+                    let port = InterfacePort::ansi(port, interface.as_ref(), modport.as_ref());
                     self.bind_interface(scope, port, index, outer, connections)?;
                 }
                 AnsiPortKind::Explicit { .. } => {}
             }
         }
-        Ok(())
-    }
-
-    fn names_interface(&self, name: &Ident) -> bool {
-        self.library.modules.get(name.name.as_str()).is_some_and(|module| module.kind == ModuleKind::Interface)
-    }
-
-    fn bind_interface(
-        &mut self,
-        scope: ScopeId,
-        port: &'a AnsiPort,
-        index: usize,
-        outer: Option<ScopeId>,
-        connections: &[(usize, Actual<'a>)],
-    ) -> Outcome<()> {
-        let actual = connections.iter().find(|(at, _)| *at == index).map(|(_, actual)| *actual);
-        let (Some(outer), Some(actual)) = (outer, actual) else {
-            return Err(unsupported("interface port of a top module, or one that is not connected", port.span));
-        };
-        let resolved = self.in_scope(outer, |this| match actual {
-            Actual::Expr(expr) => this.resolve(expr, super::place::Want::Value),
-            Actual::Name(name, span) => match this.find(name) {
-                Some(symbol) => this.resolve_symbol(symbol, span),
-                None => Err(wrong(format!("`{name}` is not declared"), span)),
-            },
-            Actual::Open => Err(wrong("an interface port that is not connected", port.span)),
-        })?;
-        let symbol = match resolved {
-            Resolved::Scope(interface) => Symbol::Scope(interface),
-            Resolved::Symbol(symbol @ Symbol::Scopes(_)) => symbol,
-            _ => return Err(wrong("something that is no interface connected to an interface port", port.span)),
-        };
-        self.declare(scope, &port.name.name, symbol);
         Ok(())
     }
 
@@ -221,7 +199,8 @@ impl<'a> Elaborator<'a> {
                 this.variables[id.index()].is_port = true;
                 Some(Target::Variable(id))
             }
-            Some(Symbol::Scope(_) | Symbol::Scopes(_)) => Some(Target::Interface),
+            Some(&Symbol::Scope(scope)) => Some(Target::Interface(Some(scope))),
+            Some(Symbol::Scopes(_)) => Some(Target::Interface(None)),
             _ => None,
         };
         match &module.ports {
@@ -242,17 +221,21 @@ impl<'a> Elaborator<'a> {
                         list.push(PortInfo { direction: Direction::Inout, target: Target::Nothing });
                         continue;
                     };
-                    let Some(direction) = direction_of(module, index) else {
-                        return Err(wrong("a port without a direction", port.span));
-                    };
                     let target = match &expr.kind {
                         ExprKind::Name(name) => named(self, &name.name),
                         _ => None,
                     };
+                    if let Some(target @ Target::Interface(_)) = target {
+                        list.push(PortInfo { direction: Direction::Inout, target });
+                        continue;
+                    }
+                    let Some(direction) = direction_of(module, index) else {
+                        return Err(wrong("a port without a direction", port.span));
+                    };
                     list.push(PortInfo { direction, target: target.unwrap_or(Target::Expr(expr)) });
                 }
             }
-            Ports::None => {}
+            Ports::None | Ports::Wildcard => {}
         }
         self.ports.insert(scope, Rc::new(list));
         Ok(())
@@ -274,7 +257,8 @@ impl<'a> Elaborator<'a> {
                 Connection::Ordered(value, span) => {
                     position += 1;
                     let actual = value.as_ref().map_or(Actual::Open, Actual::Expr);
-                    if value.is_none() && position > names.len() {
+                    // An empty place is no connection; `.name()` says that there shall be none, not even the default.
+                    if value.is_none() && (position > names.len() || default_of(module, position - 1).is_some()) {
                         continue;
                     }
                     (Some(position - 1).filter(|&at| at < names.len()), actual, *span)
@@ -316,8 +300,24 @@ impl<'a> Elaborator<'a> {
         actuals
     }
 
-    /// Leaves the connections of an instance for when all instances exist.
-    pub fn connect(&mut self, outer: ScopeId, inner: ScopeId, actuals: Vec<(usize, Actual<'a>)>, slot: Option<Slot>) {
+    /// Leaves the connections of an instance for when all instances exist. An input without one takes its default value.
+    pub fn connect(
+        &mut self,
+        module: &'a Module,
+        outer: ScopeId,
+        inner: ScopeId,
+        actuals: Vec<(usize, Actual<'a>)>,
+        slot: Option<Slot>,
+    ) {
+        let ports = self.ports.get(&inner).cloned().unwrap_or_default();
+        for (index, port) in ports.iter().enumerate() {
+            if let (Some(value), Direction::Input, Target::Variable(variable)) =
+                (default_of(module, index), port.direction, port.target)
+                && !actuals.iter().any(|(at, _)| *at == index)
+            {
+                self.works.push(Work::NetInit { scope: inner, variable, value });
+            }
+        }
         for (port, actual) in actuals {
             let work = ConnectionWork { outer, inner, port, actual, slot };
             self.works.push(super::hierarchy::Work::Connection(work));
@@ -329,7 +329,7 @@ impl<'a> Elaborator<'a> {
 impl<'a> Elaborator<'a> {
     pub fn connection(&mut self, work: &ConnectionWork<'a>) {
         let Some(port) = self.ports.get(&work.inner).and_then(|ports| ports.get(work.port).cloned()) else { return };
-        if matches!(port.target, Target::Interface | Target::Nothing) || matches!(work.actual, Actual::Open) {
+        if matches!(port.target, Target::Interface(_) | Target::Nothing) || matches!(work.actual, Actual::Open) {
             return;
         }
         let inside = match self.inner_wires(work.inner, port.target) {
@@ -375,7 +375,7 @@ impl<'a> Elaborator<'a> {
                 })?;
                 Ok((Type::vector(wires.len(), false), wires))
             }
-            Target::Interface | Target::Nothing => Ok((Type::vector(1, false), Vec::new())),
+            Target::Interface(_) | Target::Nothing => Ok((Type::vector(1, false), Vec::new())),
         }
     }
 
@@ -492,11 +492,7 @@ impl<'a> Elaborator<'a> {
         self.instance = instance;
         let ports = self.ports.get(&scope).cloned().unwrap_or_default();
         for port in ports.iter() {
-            let direction = match port.direction {
-                Direction::Input => PortDirection::Input,
-                Direction::Output => PortDirection::Output,
-                Direction::Inout | Direction::Ref => PortDirection::Inout,
-            };
+            let direction = super::interfaces::direction_of(port.direction);
             let outcome = match port.target {
                 Target::Variable(id) => Ok(vec![id]),
                 Target::Expr(expr) => self.targets(expr).map(|places| {
@@ -505,17 +501,22 @@ impl<'a> Elaborator<'a> {
                         .filter_map(|place| if let Base::Variable(id) = place.base { Some(id) } else { None })
                         .collect()
                 }),
-                Target::Interface | Target::Nothing => Ok(Vec::new()),
+                Target::Interface(None) | Target::Nothing => Ok(Vec::new()),
+                Target::Interface(Some(interface)) => {
+                    self.interface_ports_of_top(interface, instance).map(|()| Vec::new())
+                }
             };
             for id in self.survive(outcome).unwrap_or_default() {
-                self.top_port(id, instance, direction);
+                let name = self.variable(id).name.clone();
+                self.top_port(id, instance, direction, name);
             }
         }
     }
 
-    fn top_port(&mut self, id: VariableId, instance: InstanceId, direction: PortDirection) {
+    pub fn top_port(&mut self, id: VariableId, instance: InstanceId, direction: PortDirection, name: String) {
+        self.variables[id.index()].is_port = true;
         let variable = self.variable(id);
-        let (wires, span, name) = (variable.wires.clone(), variable.span, variable.name.clone());
+        let (wires, span) = (variable.wires.clone(), variable.span);
         let range = match &variable.ty.shape {
             Shape::Array { range, element, .. } if matches!(element.shape, Shape::Scalar) => {
                 Some((range.left, range.right))

@@ -2,7 +2,7 @@
 //! Parameters, types and enumeration members are worked out when they are first used, so that their order in the source
 //! does not matter and a circle is noticed.
 
-use std::collections::{BTreeMap, HashMap};
+use std::collections::{BTreeMap, HashMap, HashSet};
 use std::rc::Rc;
 
 use super::context::{Elaborator, Outcome, VariableId, wrong};
@@ -11,7 +11,7 @@ use super::value::Value;
 use crate::define_id;
 use crate::graph::InstanceId;
 use crate::source::Span;
-use crate::syntax::ast::{self, DataType, Dim, Expr, Ident};
+use crate::syntax::ast::{self, DataType, Declarator, Dim, Expr, Ident};
 
 define_id!(ScopeId, "s", "A scope of names.");
 
@@ -30,6 +30,13 @@ pub(super) struct Scope<'a> {
     pub names: HashMap<String, Symbol<'a>>,
     /// Packages imported as a whole.
     pub wildcards: Vec<ScopeId>,
+    /// Of a package: names that it imported and does not export.
+    pub hidden: HashSet<String>,
+    /// Of a package: packages whose names it exports, and whether it exports all that it imported.
+    pub exports: Vec<ScopeId>,
+    pub exports_all: bool,
+    /// A modport: its names are a choice of those of the interface around it.
+    pub is_modport: bool,
     pub nettype: ast::DefaultNettype,
     /// For a module: its ports in order.
     pub module: Option<&'a ast::Module>,
@@ -45,8 +52,10 @@ pub(super) enum Symbol<'a> {
     Let(&'a ast::Item, ScopeId),
     /// An instance, a generate block, a named block or an interface.
     Scope(ScopeId),
-    /// An instance array or the blocks of a generate loop, by index.
-    Scopes(Rc<BTreeMap<i64, ScopeId>>),
+    /// An instance array or the blocks of a generate loop.
+    Scopes(Rc<Instances<'a>>),
+    /// A name that a modport gives to an expression over the interface.
+    Alias(&'a Expr, ScopeId),
     /// A genvar outside its loop.
     Genvar,
     /// A black box or a primitive: there, but nothing in it can be named.
@@ -57,6 +66,42 @@ pub(super) enum Symbol<'a> {
         what: &'a str,
         inert: bool,
     },
+}
+
+/// The elements of an array of instances or of a generate loop by index; more arrays where there are more dimensions.
+#[derive(Clone, Default, Debug)]
+pub(super) struct Instances<'a> {
+    pub elements: BTreeMap<i64, Symbol<'a>>,
+    /// Whether the left bound is the lower one.
+    pub ascending: bool,
+}
+
+impl<'a> Instances<'a> {
+    /// Enters the element with these indices, making the inner arrays as needed. `ascending` says it of each dimension.
+    pub fn enter(&mut self, index: &[i64], ascending: &[bool], symbol: Symbol<'a>) {
+        self.ascending = ascending.first().copied().unwrap_or(true);
+        match index {
+            [] => {}
+            [at] => {
+                self.elements.insert(*at, symbol);
+            }
+            [at, rest @ ..] => {
+                let inner = self.elements.entry(*at).or_insert_with(|| Symbol::Scopes(Rc::default()));
+                if let Symbol::Scopes(inner) = inner {
+                    Rc::make_mut(inner).enter(rest, ascending.get(1..).unwrap_or_default(), symbol);
+                }
+            }
+        }
+    }
+
+    /// The elements from the left bound to the right one.
+    pub fn in_order(&self) -> Vec<Symbol<'a>> {
+        let mut all: Vec<Symbol<'a>> = self.elements.values().cloned().collect();
+        if !self.ascending {
+            all.reverse();
+        }
+        all
+    }
 }
 
 define_id!(LazyId, "z", "A parameter, type or enumeration member that is worked out on first use.");
@@ -81,6 +126,12 @@ pub(super) enum Lazy<'a> {
     },
     /// A member of an enumeration.
     Member(&'a DataType, String),
+    /// A variable of a package or of the compilation unit, laid out when it is first used.
+    Variable {
+        ty: &'a DataType,
+        declarator: &'a Declarator,
+    },
+    Laid(VariableId),
     Busy,
     Constant(Constant),
     DataType(Rc<Type>),
@@ -127,6 +178,10 @@ impl<'a> Elaborator<'a> {
             prefix,
             names: HashMap::new(),
             wildcards: Vec::new(),
+            hidden: HashSet::new(),
+            exports: Vec::new(),
+            exports_all: false,
+            is_modport: false,
             nettype,
             module: None,
             is_module: false,
@@ -192,13 +247,30 @@ impl<'a> Elaborator<'a> {
                 return Some(symbol.clone());
             }
             for &package in &scope.wildcards {
-                if let Some(symbol) = self.scope(package).names.get(name) {
-                    return Some(symbol.clone());
+                if let Some(symbol) = self.find_in_package(package, name, 0) {
+                    return Some(symbol);
                 }
             }
             at = scope.parent;
         }
         None
+    }
+
+    /// What a package offers under a name: what it declares, and what it exports of its imports.
+    fn find_in_package(&self, package: ScopeId, name: &str, depth: usize) -> Option<Symbol<'a>> {
+        /// Packages that export each other in a circle are left here.
+        const EXPORT_DEPTH: usize = 16;
+        let scope = self.scope(package);
+        if let Some(symbol) = scope.names.get(name)
+            && (scope.exports_all || !scope.hidden.contains(name))
+        {
+            return Some(symbol.clone());
+        }
+        if depth >= EXPORT_DEPTH {
+            return None;
+        }
+        let more = if scope.exports_all { scope.wildcards.as_slice() } else { &[] };
+        scope.exports.iter().chain(more).find_map(|&inner| self.find_in_package(inner, name, depth + 1))
     }
 
     /// The nearest function or task of that name, looking past the variable that a function's name is inside it.
@@ -239,10 +311,7 @@ impl<'a> Elaborator<'a> {
 
     pub fn look_up_in_package(&mut self, package: &Ident, name: &Ident) -> Outcome<Symbol<'a>> {
         let scope = if package.name == "$unit" { self.unit } else { self.package(package)? };
-        self.scope(scope)
-            .names
-            .get(&name.name)
-            .cloned()
+        self.find_in_package(scope, &name.name, 0)
             .ok_or_else(|| wrong(format!("package `{}` has no `{}`", package.name, name.name), name.span))
     }
 
@@ -250,7 +319,7 @@ impl<'a> Elaborator<'a> {
     fn force(&mut self, id: LazyId, span: Span) -> Outcome<Lazy<'a>> {
         let (scope, lazy) = self.lazies[id.index()].clone();
         match lazy {
-            Lazy::Constant(_) | Lazy::DataType(_) => return Ok(lazy),
+            Lazy::Constant(_) | Lazy::DataType(_) | Lazy::Variable { .. } | Lazy::Laid(_) => return Ok(lazy),
             Lazy::Busy => return Err(wrong("a parameter or type that depends on itself", span)),
             Lazy::Failed => return Err(wrong("it depends on a parameter or type that has no value", span)),
             _ => {}
@@ -324,6 +393,11 @@ impl<'a> Elaborator<'a> {
     /// Whether a lazy entry is a type, without working it out.
     pub fn is_type(&self, id: LazyId) -> bool {
         matches!(self.lazies[id.index()].1, Lazy::Type { .. } | Lazy::DataType(_))
+    }
+
+    /// Whether a lazy entry is a variable of a package.
+    pub fn is_variable(&self, id: LazyId) -> bool {
+        matches!(self.lazies[id.index()].1, Lazy::Variable { .. } | Lazy::Laid(_))
     }
 
     /// Runs `work` with another current scope.

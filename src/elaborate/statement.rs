@@ -12,7 +12,9 @@ use super::scope::ScopeId;
 use super::types::Type;
 use crate::graph::{Site, SourceKind};
 use crate::source::Span;
-use crate::syntax::ast::{Assignment, BinaryOp, Expr, ExprKind, ForInit, Item, ItemKind, Stmt, StmtKind, Unique};
+use crate::syntax::ast::{
+    Assignment, BinaryOp, Declarator, Expr, ExprKind, ForInit, Item, ItemKind, Stmt, StmtKind, Unique,
+};
 
 /// How many passes a loop may take whose end depends on signals.
 const VARIABLE_PASSES: usize = 4_096;
@@ -67,6 +69,27 @@ impl Sequence {
     }
 }
 
+fn declarators(item: &Item) -> Option<&Vec<Declarator>> {
+    match &item.kind {
+        ItemKind::Var { names, .. } => Some(names),
+        _ => None,
+    }
+}
+
+/// Whether an expression that is looked at more than once would step a variable more than once.
+pub(super) fn has_step(expr: &Expr) -> bool {
+    match &expr.kind {
+        ExprKind::Assign(_) | ExprKind::Postfix(_) => true,
+        ExprKind::Member(base, _) | ExprKind::Unary(_, base) | ExprKind::Cast(_, base) => has_step(base),
+        ExprKind::Index(base, index) => has_step(base) || has_step(index),
+        ExprKind::Slice { base, left, right, .. } => has_step(base) || has_step(left) || has_step(right),
+        ExprKind::Binary(_, left, right) => has_step(left) || has_step(right),
+        ExprKind::Cond(condition, then, otherwise) => [condition, then, otherwise].iter().any(|part| has_step(part)),
+        ExprKind::Concat(parts) => parts.iter().any(has_step),
+        _ => false,
+    }
+}
+
 /// The head of a statement: from its keyword to the end of its condition.
 pub(super) fn head(statement: Span, condition: Span) -> Span {
     if statement.file == condition.file && statement.start <= condition.end {
@@ -91,14 +114,39 @@ impl<'a> Elaborator<'a> {
 
     pub fn execute_all(&mut self, statements: &'a [Stmt]) -> Outcome<Exits> {
         let mut sequence = Sequence::new();
+        self.execute_into(statements, &mut sequence)?;
+        Ok(sequence.finish(self))
+    }
+
+    /// Executes statements as a part of a sequence; whether what follows can be reached. A block without a name is no more
+    /// than its statements. A jump out of it leads out of the sequence too, so that what it leaves behind is joined
+    /// where it leads to and not earlier: the counter of a loop stays a constant behind a `break` that was not taken.
+    fn execute_into(&mut self, statements: &'a [Stmt], sequence: &mut Sequence) -> Outcome<bool> {
         for statement in statements {
-            let exits = self.execute(statement)?;
-            let site = self.site(statement.span);
-            if !sequence.after(self, exits, site) {
-                break;
+            let goes_on = match &statement.kind {
+                StmtKind::Block { label: None, decls, body } if decls.is_empty() => {
+                    self.step(statement.span)?;
+                    self.execute_into(body, sequence)?
+                }
+                StmtKind::Block { label: None, decls, body } => {
+                    self.step(statement.span)?;
+                    let scope = self.block_scope(statement, None, decls)?;
+                    self.in_scope(scope, |this| {
+                        this.initialise_locals(scope, decls)?;
+                        this.execute_into(body, sequence)
+                    })?
+                }
+                _ => {
+                    let exits = self.execute(statement)?;
+                    let site = self.site(statement.span);
+                    sequence.after(self, exits, site)
+                }
+            };
+            if !goes_on {
+                return Ok(false);
             }
         }
-        Ok(sequence.finish(self))
+        Ok(true)
     }
 
     /// Executes a statement. In a process, one that fails makes what it assigns opaque.
@@ -174,8 +222,11 @@ impl<'a> Elaborator<'a> {
                             .map(|name| self.loop_variable(scope, &name.name, Type::vector(32, true), name.span)),
                     );
                 }
-                let exits =
-                    self.in_scope(scope, |this| this.execute_foreach(&locals, Some(ty), body, statement.span))?;
+                let exits = self.in_scope(scope, |this| -> Outcome<Exits> {
+                    let mut sequence = Sequence::new();
+                    this.execute_foreach(&locals, Some(ty), body, statement.span, &mut sequence)?;
+                    Ok(sequence.finish(this))
+                })?;
                 for local in locals.into_iter().flatten() {
                     self.environment.forget(local);
                 }
@@ -186,13 +237,11 @@ impl<'a> Elaborator<'a> {
             StmtKind::Forever { body } => return self.execute_loop(None, true, &[], body),
             StmtKind::Repeat { count, body } => {
                 let count = self.constant_i64(count)?;
-                let site = self.site(statement.span);
                 self.points.push(Point::Loop);
                 let depth = self.points.len() - 1;
                 let mut sequence = Sequence::new();
                 for _ in 0..count {
-                    let exits = self.execute_pass(body)?;
-                    if !sequence.after(self, exits, site) {
+                    if !self.execute_pass(body, &mut sequence)? {
                         break;
                     }
                 }
@@ -202,6 +251,16 @@ impl<'a> Elaborator<'a> {
                 return Ok(exits);
             }
             StmtKind::Call(call) => match &call.kind {
+                ExprKind::SystemCall { name, args } if name == "$cast" => {
+                    let [Some(target), Some(value)] = args.as_slice() else {
+                        return Err(wrong("$cast needs a target and a value", call.span));
+                    };
+                    let targets = self.targets(target)?;
+                    let width: usize = targets.iter().map(|place| place.ty.width).sum();
+                    let bits = self.eval_assigned(value, width)?;
+                    let site = self.site(call.span);
+                    self.store(&targets, &bits, false, site)?;
+                }
                 ExprKind::SystemCall { name, .. } => return Err(unsupported(format!("system task {name}"), call.span)),
                 ExprKind::Call { callee, args } => match self.inert(callee) {
                     Some(what) => self.skip(what),
@@ -296,9 +355,15 @@ impl<'a> Elaborator<'a> {
     /// The scope of a block with declarations, made when it is first executed.
     fn block_scope(&mut self, statement: &'a Stmt, label: Option<&str>, decls: &'a [Item]) -> Outcome<ScopeId> {
         let key = (std::ptr::from_ref(statement), self.here);
-        if let Some(&scope) = self.block_scopes.get(&key) {
+        if let Some(&scope) = self.named_blocks.get(&key).or_else(|| self.block_scopes.get(&key)) {
             return Ok(scope);
         }
+        let scope = self.make_block_scope(label, decls)?;
+        self.block_scopes.insert(key, scope);
+        Ok(scope)
+    }
+
+    fn make_block_scope(&mut self, label: Option<&str>, decls: &'a [Item]) -> Outcome<ScopeId> {
         let (instance, outer) = (self.scope(self.here).instance, &self.scope(self.here).prefix);
         let prefix = match label {
             Some(label) => format!("{outer}{label}."),
@@ -307,21 +372,76 @@ impl<'a> Elaborator<'a> {
         let scope = self.inner_scope(self.here, label.unwrap_or(""), instance, prefix);
         let home = if self.call_depth > 0 { Storage::Local } else { Storage::Variable };
         self.declare_all(scope, decls, home)?;
-        self.block_scopes.insert(key, scope);
+        for declarator in decls.iter().filter_map(declarators).flatten() {
+            let symbol = self.scope(scope).names.get(&declarator.name.name).cloned();
+            let Some(super::scope::Symbol::Variable(id)) = symbol else { continue };
+            if self.variable(id).storage != Storage::Variable {
+                continue;
+            }
+            let ty = std::rc::Rc::clone(&self.variable(id).ty);
+            self.variables[id.index()].init = match &declarator.init {
+                Some(init) if declarator.once => {
+                    let value = self.in_scope(scope, |this| this.constant_for(init, &ty))?;
+                    Some(bits::from_value(&value))
+                }
+                _ => ty.defaults(),
+            };
+        }
         Ok(scope)
+    }
+
+    /// Makes the scopes of the labelled blocks of a process before it is executed, so that other places can name what is
+    /// declared in them. One that fails is made, and fails, again when it is executed.
+    pub fn name_blocks(&mut self, scope: ScopeId, statement: &'a Stmt) {
+        match &statement.kind {
+            StmtKind::Block { label: Some(label), decls, body } if !decls.is_empty() => {
+                let made = self.in_scope(scope, |this| this.make_block_scope(Some(&label.name), decls));
+                let Ok(inner) = made else { return };
+                self.named_blocks.insert((std::ptr::from_ref(statement), scope), inner);
+                self.declare(scope, &label.name, super::scope::Symbol::Scope(inner));
+                body.iter().for_each(|statement| self.name_blocks(inner, statement));
+            }
+            StmtKind::Block { decls, body, .. } if decls.is_empty() => {
+                body.iter().for_each(|statement| self.name_blocks(scope, statement));
+            }
+            StmtKind::If { then, otherwise, .. } => {
+                self.name_blocks(scope, then);
+                if let Some(otherwise) = otherwise {
+                    self.name_blocks(scope, otherwise);
+                }
+            }
+            StmtKind::Case(case) => {
+                case.arms.iter().for_each(|arm| self.name_blocks(scope, &arm.body));
+                if let Some(default) = &case.default {
+                    self.name_blocks(scope, default);
+                }
+            }
+            _ => {}
+        }
     }
 
     /// Executes the initialisers of variables declared in a block.
     pub fn initialise_locals(&mut self, scope: ScopeId, decls: &'a [Item]) -> Outcome<()> {
-        for item in decls {
-            let ItemKind::Var { names, .. } = &item.kind else { continue };
-            for declarator in names {
-                let symbol = self.scope(scope).names.get(&declarator.name.name).cloned();
-                if let (Some(init), Some(super::scope::Symbol::Variable(id))) = (&declarator.init, symbol) {
+        for declarator in decls.iter().filter_map(declarators).flatten() {
+            let symbol = self.scope(scope).names.get(&declarator.name.name).cloned();
+            let Some(super::scope::Symbol::Variable(id)) = symbol else { continue };
+            let local = self.variable(id).storage == Storage::Local;
+            match &declarator.init {
+                Some(_) if declarator.once && local => {
+                    let what = "static variable with an initial value in a function or task";
+                    return Err(unsupported(what, declarator.name.span));
+                }
+                Some(init) if !declarator.once => {
                     let ty = std::rc::Rc::clone(&self.variable(id).ty);
                     let bits = self.eval_as(init, &ty)?;
                     self.environment.set((id, false), bits);
                 }
+                None if local => {
+                    if let Some(bits) = self.variable(id).ty.defaults() {
+                        self.environment.set((id, false), bits);
+                    }
+                }
+                _ => {}
             }
         }
         Ok(())
@@ -407,12 +527,11 @@ impl<'a> Elaborator<'a> {
                 }
             }
             first = false;
-            let exits = self.execute_pass(body)?;
-            let leaves = !exits.is_empty();
-            if !sequence.after(self, exits, site) {
+            let before = sequence.jumps.len();
+            if !self.execute_pass(body, &mut sequence)? {
                 break;
             }
-            variable_passes += usize::from(leaves);
+            variable_passes += usize::from(sequence.jumps.len() > before);
             if variable_passes > VARIABLE_PASSES {
                 return Err(wrong("a loop whose end depends on signals takes too many passes", body.span));
             }
@@ -426,13 +545,22 @@ impl<'a> Elaborator<'a> {
         Ok(exits)
     }
 
-    fn execute_pass(&mut self, body: &'a Stmt) -> Outcome<Exits> {
+    /// One pass of a loop, as a part of the sequence of all passes; whether another one can follow.
+    fn execute_pass(&mut self, body: &'a Stmt, sequence: &mut Sequence) -> Outcome<bool> {
         self.points.push(Point::Pass);
         let depth = self.points.len() - 1;
-        let mut exits = self.execute(body)?;
+        let mut pass = Sequence::new();
+        let goes_on = self.execute_into(std::slice::from_ref(body), &mut pass)?;
         self.points.truncate(depth);
+        if !pass.jumps.iter().any(|(_, exits, _)| exits.contains_key(&depth)) {
+            sequence.jumps.extend(pass.jumps);
+            return Ok(goes_on);
+        }
+        // A `continue` leads to the end of the pass.
+        let mut exits = pass.finish(self);
         exits.remove(&depth);
-        Ok(exits)
+        let site = self.site(body.span);
+        Ok(sequence.after(self, exits, site))
     }
 
     fn execute_foreach(
@@ -441,9 +569,10 @@ impl<'a> Elaborator<'a> {
         ty: Option<std::rc::Rc<Type>>,
         body: &'a Stmt,
         span: Span,
-    ) -> Outcome<Exits> {
+        outer: &mut Sequence,
+    ) -> Outcome<bool> {
         let Some((&variable, rest)) = variables.split_first() else {
-            return self.execute_pass(body);
+            return self.execute_pass(body, outer);
         };
         let Some((range, element)) = ty.and_then(|ty| Some((ty.range()?, ty.element()))) else {
             return Err(wrong("foreach over something that is no array", span));
@@ -457,16 +586,15 @@ impl<'a> Elaborator<'a> {
                 let number = super::value::Value::from_i64(range.index(position), 32, true);
                 self.environment.set((variable, false), bits::from_value(&number));
             }
-            let exits = self.execute_foreach(rest, element.clone(), body, span)?;
-            let site = self.site(span);
-            if !sequence.after(self, exits, site) {
+            if !self.execute_foreach(rest, element.clone(), body, span, &mut sequence)? {
                 break;
             }
         }
         let mut exits = sequence.finish(self);
         self.points.truncate(depth);
         exits.remove(&depth);
-        Ok(exits)
+        let site = self.site(span);
+        Ok(outer.after(self, exits, site))
     }
 }
 
@@ -476,6 +604,16 @@ impl<'a> Elaborator<'a> {
         if let Some(what) = self.inert(&assignment.target) {
             self.skip(what);
             return Ok(());
+        }
+        if assignment.op.is_some() && has_step(&assignment.target) {
+            let what = "assignment or increment in an index of what a compound assignment changes";
+            return Err(unsupported(what, assignment.target.span));
+        }
+        if matches!(assignment.target.kind, ExprKind::Stream { .. }) {
+            let (places, bits) = self.unpack_stream(&assignment.target, &assignment.value)?;
+            let nonblocking = assignment.nonblocking && self.environment.mode != Mode::Initial;
+            let site = self.site(assignment.span);
+            return self.store(&places, &bits, nonblocking, site);
         }
         let targets = self.targets(&assignment.target)?;
         let width: usize = targets.iter().map(|place| place.ty.width).sum();
@@ -528,7 +666,9 @@ impl<'a> Elaborator<'a> {
                 }
                 return Ok(places);
             }
-            ExprKind::Stream { .. } => return Err(unsupported("streaming on the left of an assignment", target.span)),
+            // Only reached by what asks which variables a statement assigns, or by a connection.
+            ExprKind::Stream { parts, left: false, .. } => parts,
+            ExprKind::Stream { .. } => return Err(unsupported("streaming in this place", target.span)),
             _ => {
                 let place = self.place(target, Want::Value)?;
                 if !matches!(place.base, Base::Variable(_)) {
@@ -546,6 +686,9 @@ impl<'a> Elaborator<'a> {
 
     /// The right side of an assignment to `width` bits.
     pub fn eval_assigned(&mut self, value: &'a Expr, width: usize) -> Outcome<Vec<Bit>> {
+        if matches!(value.kind, ExprKind::Stream { .. }) {
+            return self.eval_stream_into(value, width);
+        }
         let (own, signed) = self.size(value)?;
         let bits = self.eval(value, own.max(width), signed)?;
         Ok(extend(bits, width, signed))
@@ -572,7 +715,14 @@ impl<'a> Elaborator<'a> {
     pub fn poison(&mut self, statement: &'a Stmt) {
         let mut targets = Vec::new();
         collect_targets(statement, &mut targets);
-        for (target, nonblocking) in targets {
+        let parts = targets.into_iter().flat_map(|(target, nonblocking)| {
+            let parts: &'a [Expr] = match &target.kind {
+                ExprKind::Stream { parts, .. } => parts,
+                _ => std::slice::from_ref(target),
+            };
+            parts.iter().map(move |part| (part, nonblocking))
+        });
+        for (target, nonblocking) in parts {
             let places = match self.targets(target) {
                 Ok(places) => places,
                 Err(_) => continue,

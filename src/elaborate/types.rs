@@ -4,6 +4,7 @@
 
 use std::rc::Rc;
 
+use super::bits::Bit;
 use super::context::{Elaborator, Outcome, unsupported, wrong};
 use super::scope::Symbol;
 use super::value::Value;
@@ -69,6 +70,8 @@ pub(super) struct Field {
     pub ty: Rc<Type>,
     /// From the low end of the structure.
     pub offset: usize,
+    /// What a variable starts with that has no initial value of its own.
+    pub default: Option<Value>,
 }
 
 /// See the module documentation.
@@ -119,6 +122,22 @@ impl Type {
         Self::new(shape, self.width, signed, self.two_state)
     }
 
+    /// Whether two types are one, for the keys of assignment patterns.
+    pub fn matches(self: &Rc<Self>, other: &Rc<Self>) -> bool {
+        if Rc::ptr_eq(self, other) {
+            return true;
+        }
+        let same = self.width == other.width && self.signed == other.signed && self.two_state == other.two_state;
+        same && match (&self.shape, &other.shape) {
+            (Shape::Scalar, Shape::Scalar) => true,
+            (
+                Shape::Array { range, element, packed },
+                Shape::Array { range: other_range, element: other_element, packed: other_packed },
+            ) => range.len() == other_range.len() && packed == other_packed && element.matches(other_element),
+            _ => false,
+        }
+    }
+
     /// Whether the value can be used as one vector.
     pub fn integral(&self) -> bool {
         match &self.shape {
@@ -160,6 +179,29 @@ impl Type {
 
     pub fn unpacked_array(&self) -> bool {
         matches!(self.shape, Shape::Array { packed: false, .. })
+    }
+
+    /// The initial bits that the default values of members give; nothing when no member has one.
+    pub fn defaults(&self) -> Option<Vec<Bit>> {
+        let idle = if self.two_state { Bit::Zero } else { Bit::X };
+        match &self.shape {
+            Shape::Array { range, element, .. } => element.defaults().map(|bits| bits.repeat(range.len())),
+            Shape::Struct { fields, .. } => {
+                let mut bits = vec![idle; self.width];
+                let mut any = false;
+                for field in fields {
+                    let inner = field.default.as_ref().map(super::bits::from_value).or_else(|| field.ty.defaults());
+                    if let Some(inner) = inner
+                        && let Some(slot) = bits.get_mut(field.offset..field.offset + inner.len())
+                    {
+                        slot.copy_from_slice(&inner);
+                        any = true;
+                    }
+                }
+                any.then_some(bits)
+            }
+            _ => None,
+        }
     }
 
     /// What follows the name of a net of this type for each bit, least significant first.
@@ -235,7 +277,10 @@ impl<'a> Elaborator<'a> {
             }
             DataTypeKind::TypeOf(expr) => match &expr.kind {
                 ExprKind::Type(ty) => self.data_type(ty)?,
-                _ => self.type_of(expr)?,
+                _ => match self.named_type(expr)? {
+                    Some(ty) => ty,
+                    None => self.type_of(expr)?,
+                },
             },
         })
     }
@@ -255,7 +300,11 @@ impl<'a> Elaborator<'a> {
             let ty = self.with_dims(ty, &member.dims, false, member.name.span)?;
             let offset = if union { 0 } else { width };
             width = if union { width.max(ty.width) } else { width + ty.width };
-            fields.push(Field { name: member.name.name.clone(), ty, offset });
+            let default = match &member.default {
+                Some(value) => Some(self.constant_for(value, &ty)?),
+                None => None,
+            };
+            fields.push(Field { name: member.name.name.clone(), ty, offset, default });
         }
         fields.reverse();
         if width > MAX_NET_WIDTH {

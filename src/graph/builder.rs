@@ -167,6 +167,14 @@ impl GraphBuilder {
         self.instances.get(instance.index()).map_or("", |instance| &instance.path)
     }
 
+    /// The top that an instance stands in.
+    pub fn root(&self, mut instance: InstanceId) -> InstanceId {
+        while let Some(parent) = self.instances.get(instance.index()).and_then(|instance| instance.parent) {
+            instance = parent;
+        }
+        instance
+    }
+
     /// The module that an instance is of.
     pub fn instance_module(&self, instance: InstanceId) -> &str {
         self.instances.get(instance.index()).map_or("", |instance| &instance.module)

@@ -9,7 +9,7 @@
 //! - tables have rows, all of one width, and only 0, 1 or x as output;
 //! - each cell's output is a source of the kind that fits the cell, and of one cell only, unless the cells are one
 //!   flip-flop with several clocks;
-//! - a port of a top belongs to an instance without a parent, as does its net;
+//! - a port of a top belongs to an instance without a parent, and its net stands in that instance or below;
 //! - instances come after their parent and extend its path;
 //! - outputs of black boxes are sources of that kind.
 
@@ -212,11 +212,23 @@ impl Checker<'_> {
                 self.report(format!("port {} belongs to {}, which is no top", port.name, port.instance));
             }
             if self.net_exists(port.net, &format!("the net of port {}", port.name))
-                && graph.nets[port.net.index()].instance != port.instance
+                && !self.stands_in(graph.nets[port.net.index()].instance, port.instance)
             {
-                self.report(format!("port {} and its net {} belong to different instances", port.name, port.net));
+                self.report(format!("the net {} of port {} stands in another top", port.net, port.name));
             }
         }
+    }
+
+    /// Whether an instance is `top` or lies below it, as an interface at a port of a top does.
+    fn stands_in(&self, instance: InstanceId, top: InstanceId) -> bool {
+        let mut at = Some(instance);
+        while let Some(id) = at {
+            if id == top {
+                return true;
+            }
+            at = self.graph.instances.get(id.index()).and_then(|instance| instance.parent);
+        }
+        false
     }
 
     fn instances(&mut self) {

@@ -23,7 +23,7 @@ use super::regions::Region;
 use super::texts::Texts;
 use super::{FileId, SourceSet, Span, parse};
 use crate::diagnostic::{Diagnostic, Kind};
-use crate::syntax::ast;
+use crate::syntax::{ast, externs};
 
 /// What to read.
 #[derive(Clone, Default, Debug)]
@@ -211,6 +211,7 @@ impl Reader<'_> {
                 self.diagnostics.extend(result.diagnostics);
                 self.failures.extend(result.failures.into_iter().map(|failure| (unit.file, failure)));
             }
+            externs::resolve(&mut whole);
             self.units.push((unit.file, whole));
         }
     }

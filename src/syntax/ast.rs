@@ -28,6 +28,8 @@ pub struct Unit {
     pub modules: Vec<Module>,
     pub packages: Vec<Package>,
     pub udps: Vec<Udp>,
+    /// Headers of modules and interfaces declared `extern`.
+    pub externs: Vec<Module>,
     /// Items at compilation-unit scope: typedefs, functions, parameters, imports, binds.
     pub items: Vec<Item>,
 }
@@ -38,6 +40,7 @@ impl Unit {
         self.modules.extend(other.modules);
         self.packages.extend(other.packages);
         self.udps.extend(other.udps);
+        self.externs.extend(other.externs);
         self.items.extend(other.items);
     }
 }
@@ -78,6 +81,9 @@ pub enum Ports {
     Ansi(Vec<AnsiPort>),
     /// `module m (a, b, .c(d), {e, f});`, directions are `ItemKind::PortDecl` items.
     NonAnsi(Vec<PortRef>),
+    /// `module m (.*);`: as an extern declaration says. None is left when the tree of a file is whole, unless there is no such
+    /// declaration.
+    Wildcard,
     /// `module m;` or `module m ();`
     None,
 }
@@ -249,6 +255,8 @@ pub struct Member {
     pub name: Ident,
     pub ty: DataType,
     pub dims: Vec<Dim>,
+    /// What a variable without an initial value of its own starts with.
+    pub default: Option<Expr>,
 }
 
 #[derive(Clone, Debug)]
@@ -264,6 +272,9 @@ pub struct Declarator {
     pub name: Ident,
     pub dims: Vec<Dim>,
     pub init: Option<Expr>,
+    /// In a procedural block: the variable is static, so `init` is its value before time zero and not assigned each time
+    /// the block runs (IEEE 1800-2017 clause 6.21).
+    pub once: bool,
 }
 
 #[derive(Clone, Debug)]
@@ -276,6 +287,12 @@ pub enum ItemKind {
         ty: DataType,
         names: Vec<Declarator>,
         is_var: bool,
+    },
+    /// `bus.master b;` in the body of a module whose port list only names `b`.
+    InterfacePort {
+        interface: Ident,
+        modport: Ident,
+        names: Vec<Declarator>,
     },
     /// A net declaration; `init` of a declarator is a continuous assignment.
     Net {
@@ -336,6 +353,8 @@ pub enum ItemKind {
     Modport {
         name: Ident,
         ports: Vec<ModportPort>,
+        /// Tasks and functions that it lets its users call.
+        imports: Vec<Ident>,
     },
     /// A module declared inside a module.
     Module(Box<Module>),
@@ -726,8 +745,17 @@ pub enum ExprKind {
     /// `min:typ:max` keeps all three.
     MinTypMax(Box<Expr>, Box<Expr>, Box<Expr>),
     Type(Box<DataType>),
-    /// An assignment inside an expression, `(a = b)`, `i++`.
+    /// An assignment inside an expression, `(a = b)`, `++i`; its value is that of the target afterwards.
     Assign(Box<Assignment>),
+    /// `i++`, `i--`: the value is that of the target before.
+    Postfix(Box<Assignment>),
+    /// `array.sum with (item * 2)`: `method` over all elements, each named `iterator` (`item` when `None`) in `with`.
+    Reduce {
+        array: Box<Expr>,
+        method: Ident,
+        iterator: Option<Ident>,
+        with: Box<Expr>,
+    },
     Unsupported(String),
 }
 
@@ -761,8 +789,8 @@ pub enum PatternKey {
     /// A member name or an index: only elaboration knows.
     Expr(Expr),
     Type(DataType),
-    /// `'{3{x}}`: the value repeated that many times in place.
-    Repeat(Expr),
+    /// `'{3{x, y}}`: the value and those in the list, all repeated that many times in place.
+    Repeat(Expr, Vec<Expr>),
 }
 
 #[derive(Clone, Copy, PartialEq, Eq, Debug)]

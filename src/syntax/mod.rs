@@ -2,5 +2,6 @@
 
 pub mod ast;
 mod convert;
+pub mod externs;
 
 pub use convert::convert;

@@ -90,8 +90,8 @@ fn the_checker_sees_each_kind_of_damage() {
     one_violation("i = instance \"t\"\nj = instance \"u.j\" in i", "does not extend");
     one_violation("a = input\nblack-box i0 \"pad\" output \"y\" a", "no source of one");
     one_violation(
-        "i = instance \"t\"\nj = instance \"t.j\" in i\na = wire\nw = net j \"v\" a \"\"\nport i \"v\" input w",
-        "different instances",
+        "i = instance \"t\"\nj = instance \"u\"\na = wire\nw = net j \"v\" a \"\"\nport i \"v\" input w",
+        "stands in another top",
     );
 }
 

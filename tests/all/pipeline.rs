@@ -153,7 +153,7 @@ fn process_that_waits_for_a_named_event_is_no_plain_logic() {
 }
 
 #[track_caller]
-fn assert_incomplete(source: &str) -> Scan {
+pub fn assert_incomplete(source: &str) -> Scan {
     let folder = tempfile::tempdir().expect("a temporary folder");
     let file = folder.path().join("t.v");
     std::fs::write(&file, source).expect("written");

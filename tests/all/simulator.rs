@@ -366,6 +366,34 @@ fn constructs_simulate_like_their_flattened_form() {
     assert!(failures.is_empty(), "{} constructs:\n{}", failures.len(), failures.join("\n\n"));
 }
 
+/// The comparison notices a difference in one term of one output.
+#[test]
+#[ignore = "outside: run tests/outside/run"]
+fn a_wrong_reference_is_noticed() {
+    let folder = Path::new(env!("CARGO_MANIFEST_DIR")).join("fixtures/constructs");
+    let reference = std::fs::read_to_string(folder.join("reference/set_membership.v")).expect("the reference");
+    let scratch = tempfile::tempdir().expect("a temporary folder");
+    for (right, wrong) in [("a >= 9", "a >= 10"), ("b == 6", "b == 7"), ("kind = 2", "kind = 0")] {
+        assert!(reference.contains(right), "the reference has no `{right}`");
+        let file = scratch.path().join("wrong.v");
+        std::fs::write(&file, reference.replace(right, wrong)).expect("written");
+        let trial = Trial {
+            paths: vec![folder.join("set_membership.sv")],
+            options: Vec::new(),
+            files: vec![file],
+            top: "set_membership".to_string(),
+            cycles: 600,
+            reset_every: 24,
+            stimuli: Vec::new(),
+            quiet: Vec::new(),
+            preset: false,
+            renamed: Vec::new(),
+        };
+        let message = run(&trial).expect_err("a wrong reference");
+        assert!(message.contains("words differ"), "{message}");
+    }
+}
+
 /// A word that is an instruction often enough to get a processor going: one of the opcodes of the RV32I base set.
 const INSTRUCTION: &str = "($unsigned($random(seed)) % 10 == 0) ? $random(seed) : \
     {$random(seed), 7'b0} | ({7'h33, 7'h13, 7'h03, 7'h23, 7'h63, 7'h6f, 7'h67, 7'h37, 7'h17, 7'h13} \

@@ -102,15 +102,10 @@ impl Converter<'_> {
             }
             sv::AssignmentPattern::Repeat(x) => {
                 let (count, values) = &x.nodes.0.nodes.1;
-                let values: Vec<_> = values.nodes.1.contents().into_iter().map(|v| self.expression(v)).collect();
-                let key = PatternKey::Repeat(self.constant_expression(count));
-                let value = match <[Expr; 1]>::try_from(values) {
-                    Ok([value]) => value,
-                    Err(_) => {
-                        self.unsupported_expr("replication of several values in an assignment pattern", self.span(&**x))
-                    }
-                };
-                vec![PatternItem { key, value }]
+                let mut values = values.nodes.1.contents().into_iter().map(|value| self.expression(value));
+                let value = values.next();
+                let value = value.unwrap_or_else(|| self.unsupported_expr("empty replication", self.span(&**x)));
+                vec![PatternItem { key: PatternKey::Repeat(self.constant_expression(count), values.collect()), value }]
             }
         };
         let ty = ty.as_ref().map(|ty| Box::new(self.pattern_type(ty)));

@@ -102,16 +102,15 @@ impl Converter<'_> {
         assignment
     }
 
-    /// `i++` inside an expression. The value of the suffix form is the one before the step, which the tree cannot say, so
-    /// that form is refused.
+    /// `i++` inside an expression.
     pub(super) fn step_expression(&self, expression: &sv::IncOrDecExpression) -> Expr {
         let span = self.span(expression);
-        match expression {
-            sv::IncOrDecExpression::Prefix(_) => {
-                Expr { kind: ExprKind::Assign(Box::new(self.increment(expression))), span }
-            }
-            sv::IncOrDecExpression::Suffix(_) => self.unsupported_expr("value of a postfix increment", span),
-        }
+        let step = Box::new(self.increment(expression));
+        let kind = match expression {
+            sv::IncOrDecExpression::Prefix(_) => ExprKind::Assign(step),
+            sv::IncOrDecExpression::Suffix(_) => ExprKind::Postfix(step),
+        };
+        Expr { kind, span }
     }
 }
 

@@ -118,9 +118,6 @@ impl Converter<'_> {
             sv::MethodCallBody::BuiltInMethodCall(x) => match &**x {
                 sv::BuiltInMethodCall::ArrayManipulationCall(x) => {
                     let (name, _, arguments, with) = &x.nodes;
-                    if with.is_some() {
-                        return self.unsupported_expr("array method with a with clause", span);
-                    }
                     let (name, keyword) = match name {
                         sv::ArrayMethodName::MethodIdentifier(x) => (self.ident(&x.nodes.0), false),
                         sv::ArrayMethodName::Unique(x)
@@ -128,6 +125,19 @@ impl Converter<'_> {
                         | sv::ArrayMethodName::Or(x)
                         | sv::ArrayMethodName::Xor(x) => (self.keyword_ident(x), true),
                     };
+                    if let Some((_, with)) = with {
+                        let arguments = arguments.as_ref().map(|arguments| self.arguments(&arguments.nodes.1));
+                        let iterator = match arguments.as_deref() {
+                            None | Some([]) => None,
+                            Some([CallArg { value: Some(Expr { kind: ExprKind::Name(name), .. }), .. }]) => {
+                                Some(name.clone())
+                            }
+                            Some(_) => return self.unsupported_expr("argument of an array method", span),
+                        };
+                        let with = Box::new(self.expression(&with.nodes.1));
+                        let kind = ExprKind::Reduce { array: Box::new(root), method: name, iterator, with };
+                        return Expr { kind, span };
+                    }
                     let callee = member(root, name);
                     match arguments {
                         // A keyword cannot be a member, so `a.and` is a call; `G.H` in a constant expression is not.

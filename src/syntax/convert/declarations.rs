@@ -168,7 +168,7 @@ impl Converter<'_> {
     }
 
     pub(super) fn declarator(&self, name: &sv::Identifier, dims: Vec<Dim>) -> Declarator {
-        Declarator { name: self.ident(name), dims, init: None }
+        Declarator { name: self.ident(name), dims, init: None, once: false }
     }
 
     pub(super) fn variable_declarators(&self, names: &sv::ListOfVariableDeclAssignments) -> Vec<Declarator> {
@@ -213,9 +213,28 @@ impl Converter<'_> {
             }
             sv::DataDeclaration::TypeDeclaration(x) => self.typedef(x),
             sv::DataDeclaration::PackageImportDeclaration(x) => ItemKind::Import(self.imports(x)),
-            sv::DataDeclaration::NetTypeDeclaration(_) => ItemKind::Unsupported("user-defined net type".to_string()),
+            sv::DataDeclaration::NetTypeDeclaration(x) => self.net_type_declaration(x),
         };
         items.push(self.item(kind, span));
+    }
+
+    /// A user-defined net type. Without a resolution function it is nothing but its data type, with at most one driver.
+    fn net_type_declaration(&self, declaration: &sv::NetTypeDeclaration) -> ItemKind {
+        match declaration {
+            sv::NetTypeDeclaration::DataType(x) => {
+                let (_, ty, name, resolution, _) = &x.nodes;
+                if resolution.is_some() {
+                    return ItemKind::Unsupported("net type with a resolution function".to_string());
+                }
+                let name = self.ident(&name.nodes.0);
+                ItemKind::Typedef { name, ty: Some(self.data_type(ty)), dims: Vec::new() }
+            }
+            sv::NetTypeDeclaration::NetType(x) => {
+                let (_, scope, known, name, _) = &x.nodes;
+                let ty = self.named_type(self.package_or_class(scope), &known.nodes.0);
+                ItemKind::Typedef { name: self.ident(&name.nodes.0), ty: Some(ty), dims: Vec::new() }
+            }
+        }
     }
 
     fn typedef(&self, declaration: &sv::TypeDeclaration) -> ItemKind {
@@ -225,7 +244,14 @@ impl Converter<'_> {
                 let dims = self.variable_dims(dims);
                 ItemKind::Typedef { name: self.ident(&name.nodes.0), ty: Some(self.data_type(ty)), dims }
             }
-            sv::TypeDeclaration::Interface(_) => ItemKind::Unsupported("typedef of an interface's type".to_string()),
+            sv::TypeDeclaration::Interface(x) => {
+                let (_, port, select, _, ty, name, _) = &x.nodes;
+                let base = self.constant_bit_select(self.name_expr(&port.nodes.0), select);
+                let named = super::names::member(base, self.ident(&ty.nodes.0));
+                let span = named.span;
+                let ty = self.plain_type(DataTypeKind::TypeOf(Box::new(named)), span);
+                ItemKind::Typedef { name: self.ident(&name.nodes.0), ty: Some(ty), dims: Vec::new() }
+            }
             sv::TypeDeclaration::Reserved(x) => {
                 ItemKind::Typedef { name: self.ident(&x.nodes.2.nodes.0), ty: None, dims: Vec::new() }
             }
@@ -252,11 +278,13 @@ impl Converter<'_> {
         let attributes = match declaration {
             sv::BlockItemDeclaration::Data(x) => {
                 let (attributes, declaration) = &x.nodes;
+                self.data_declaration(declaration, items);
                 if self.initialised_once(declaration) {
-                    let what = "static variable with an initial value in a procedural block";
-                    items.push(self.unsupported(what, self.span(declaration)));
-                } else {
-                    self.data_declaration(declaration, items);
+                    for item in &mut items[start..] {
+                        if let ItemKind::Var { names, .. } = &mut item.kind {
+                            names.iter_mut().for_each(|declarator| declarator.once = true);
+                        }
+                    }
                 }
                 attributes
             }
@@ -283,7 +311,7 @@ impl Converter<'_> {
     }
 
     /// Whether a variable of a block takes its initial value once, before time zero, and not each time the block runs
-    /// (IEEE 1800-2017 clause 6.21): the tree only knows the latter.
+    /// (IEEE 1800-2017 clause 6.21).
     fn initialised_once(&self, declaration: &sv::DataDeclaration) -> bool {
         let sv::DataDeclaration::Variable(x) = declaration else { return false };
         let (_, _, lifetime, _, names, _) = &x.nodes;

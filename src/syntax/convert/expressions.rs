@@ -57,7 +57,9 @@ impl Converter<'_> {
             sv::Expression::Primary(x) => pieces.push(Piece::Operand(self.primary(x))),
             sv::Expression::Unary(x) => {
                 let (operator, _, operand) = &x.nodes;
-                pieces.push(Piece::Operand(self.unary(operator, self.primary(operand))));
+                let operand = self.primary(operand);
+                let joined = self.joins_conditions(&operator.nodes.0);
+                pieces.push(Piece::Operand(if joined { operand } else { self.unary(operator, operand) }));
             }
             sv::Expression::IncOrDecExpression(x) => pieces.push(Piece::Operand(self.step_expression(x))),
             sv::Expression::OperatorAssignment(x) => {
@@ -134,9 +136,16 @@ impl Converter<'_> {
         }
     }
 
+    /// Whether the operator in front of an operand is the end of `&&&`, which the parser splits into `&&` and a reduction.
+    fn joins_conditions(&self, symbol: &sv::Symbol) -> bool {
+        let token = &symbol.nodes.0;
+        token.len == 1
+            && token.offset >= 2
+            && self.token(&sv::Locate { offset: token.offset - 2, len: 3, ..*token }) == "&&&"
+    }
+
     /// A binary operator whose right operand starts at offset `right`. One that table 11-2 does not know becomes an operand,
-    /// which makes the grouping fail, so that the whole expression is reported. That includes `&&&`, which the parser
-    /// splits into `&&` and a reduction.
+    /// which makes the grouping fail, so that the whole expression is reported.
     fn binary(&self, operator: &sv::BinaryOperator, right: usize) -> Piece {
         let symbol = &operator.nodes.0;
         let token = &symbol.nodes.0;
@@ -144,7 +153,8 @@ impl Converter<'_> {
         let joined = sv::Locate { len: 3, ..*token };
         let triple = text == "&&" && right == token.offset + 2 && self.token(&joined) == "&&&";
         match binary_op(text) {
-            Some(op) if !triple => Piece::Binary(op),
+            Some(_) if triple => Piece::Joined,
+            Some(op) => Piece::Binary(op),
             _ => Piece::Operand(self.unsupported_expr("operator", self.span(operator))),
         }
     }

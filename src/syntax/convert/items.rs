@@ -112,6 +112,7 @@ impl Converter<'_> {
             let span = self.span(modport);
             let (name, list) = &modport.nodes;
             let mut ports = Vec::new();
+            let mut imports = Vec::new();
             for port in list.nodes.1.contents() {
                 match port {
                     sv::ModportPortsDeclaration::Simple(x) => {
@@ -127,14 +128,26 @@ impl Converter<'_> {
                         }));
                     }
                     sv::ModportPortsDeclaration::Tf(x) => {
-                        items.push(self.unsupported("task or function in a modport", self.span(&**x)));
+                        let (_, declaration) = &x.nodes;
+                        let (direction, subroutines) = &declaration.nodes;
+                        if matches!(direction, sv::ImportExport::Export(_)) {
+                            items.push(self.unsupported("task or function exported by a modport", self.span(&**x)));
+                            continue;
+                        }
+                        imports.extend(subroutines.contents().into_iter().map(|subroutine| match subroutine {
+                            sv::ModportTfPort::TfIdentifier(x) => self.ident(&x.nodes.0),
+                            sv::ModportTfPort::MethodPrototype(x) => match &**x {
+                                sv::MethodPrototype::TaskPrototype(x) => self.ident(&x.nodes.1.nodes.0),
+                                sv::MethodPrototype::FunctionPrototype(x) => self.ident(&x.nodes.2.nodes.0),
+                            },
+                        }));
                     }
                     sv::ModportPortsDeclaration::Clocking(x) => {
                         items.push(self.skipped("clocking block", self.span(&**x)));
                     }
                 }
             }
-            items.push(self.item(ItemKind::Modport { name: self.ident(&name.nodes.0), ports }, span));
+            items.push(self.item(ItemKind::Modport { name: self.ident(&name.nodes.0), ports, imports }, span));
         }
     }
 

@@ -50,6 +50,7 @@ pub fn convert(tree: &sv::SyntaxTree, places: &dyn Places, file: FileId) -> (ast
             break;
         }
     }
+    unit.externs = converter.externs.take();
     (unit, converter.finish())
 }
 
@@ -65,6 +66,8 @@ struct Converter<'a> {
     /// Delays and strengths left out, and the place of the first.
     timing_dropped: Cell<usize>,
     timing_first: Cell<Option<Span>>,
+    /// Headers of modules and interfaces declared `extern`.
+    externs: RefCell<Vec<ast::Module>>,
     diagnostics: RefCell<Vec<Diagnostic>>,
 }
 
@@ -78,6 +81,7 @@ impl<'a> Converter<'a> {
             automatic: Cell::new(false),
             timing_dropped: Cell::new(0),
             timing_first: Cell::new(None),
+            externs: RefCell::new(Vec::new()),
             diagnostics: RefCell::new(Vec::new()),
         };
         converter.nettypes = converter.default_nettypes();

@@ -9,6 +9,8 @@ use crate::source::Span;
 pub(super) enum Piece {
     Operand(Expr),
     Binary(BinaryOp),
+    /// `&&&`, which joins conditions of `if` and `?:`.
+    Joined,
     /// `? middle :`; what follows is the third operand.
     Cond(Expr),
     /// `inside { ... }`, with the place of the closing brace.
@@ -70,21 +72,23 @@ type Strength = u8;
 
 const COND: Strength = 2;
 /// `inside` stands with the relational operators.
-const RELATIONAL: Strength = 9;
+const RELATIONAL: Strength = 10;
+/// Between `?:`, whose condition may be several joined ones, and the operators that may stand in each of them.
+const JOINED: Strength = 3;
 
 fn strength(op: BinaryOp) -> Strength {
     match op {
-        BinaryOp::Pow => 13,
-        BinaryOp::Mul | BinaryOp::Div | BinaryOp::Mod => 12,
-        BinaryOp::Add | BinaryOp::Sub => 11,
-        BinaryOp::Shl | BinaryOp::Shr | BinaryOp::ArithShl | BinaryOp::ArithShr => 10,
+        BinaryOp::Pow => 14,
+        BinaryOp::Mul | BinaryOp::Div | BinaryOp::Mod => 13,
+        BinaryOp::Add | BinaryOp::Sub => 12,
+        BinaryOp::Shl | BinaryOp::Shr | BinaryOp::ArithShl | BinaryOp::ArithShr => 11,
         BinaryOp::Lt | BinaryOp::Le | BinaryOp::Gt | BinaryOp::Ge => RELATIONAL,
-        BinaryOp::Eq | BinaryOp::Ne | BinaryOp::CaseEq | BinaryOp::CaseNe | BinaryOp::WildEq | BinaryOp::WildNe => 8,
-        BinaryOp::And => 7,
-        BinaryOp::Xor | BinaryOp::Xnor => 6,
-        BinaryOp::Or => 5,
-        BinaryOp::LogicalAnd => 4,
-        BinaryOp::LogicalOr => 3,
+        BinaryOp::Eq | BinaryOp::Ne | BinaryOp::CaseEq | BinaryOp::CaseNe | BinaryOp::WildEq | BinaryOp::WildNe => 9,
+        BinaryOp::And => 8,
+        BinaryOp::Xor | BinaryOp::Xnor => 7,
+        BinaryOp::Or => 6,
+        BinaryOp::LogicalAnd => 5,
+        BinaryOp::LogicalOr => 4,
         BinaryOp::Implies | BinaryOp::Equivalent => 1,
     }
 }
@@ -96,6 +100,7 @@ fn right_associative(op: BinaryOp) -> bool {
 /// An operator whose right operand is not complete yet.
 enum Pending {
     Binary(BinaryOp),
+    Joined,
     Cond(Expr),
 }
 
@@ -103,6 +108,7 @@ impl Pending {
     fn strength(&self) -> Strength {
         match self {
             Pending::Binary(op) => strength(*op),
+            Pending::Joined => JOINED,
             Pending::Cond(_) => COND,
         }
     }
@@ -120,6 +126,10 @@ pub(super) fn group(pieces: Vec<Piece>) -> Option<Expr> {
                 let minimum = strength(op) + u8::from(right_associative(op));
                 reduce(&mut operands, &mut pending, minimum)?;
                 pending.push(Pending::Binary(op));
+            }
+            Piece::Joined => {
+                reduce(&mut operands, &mut pending, JOINED)?;
+                pending.push(Pending::Joined);
             }
             Piece::Cond(middle) => {
                 reduce(&mut operands, &mut pending, COND + 1)?;
@@ -146,6 +156,7 @@ fn reduce(operands: &mut Vec<Expr>, pending: &mut Vec<Pending>, minimum: Strengt
         let span = left.span.to(right.span);
         let kind = match pending.pop()? {
             Pending::Binary(op) => ExprKind::Binary(op, Box::new(left), Box::new(right)),
+            Pending::Joined => ExprKind::Binary(BinaryOp::LogicalAnd, Box::new(left), Box::new(right)),
             Pending::Cond(middle) => ExprKind::Cond(Box::new(left), Box::new(middle), Box::new(right)),
         };
         operands.push(Expr { kind, span });

@@ -275,16 +275,16 @@ impl Converter<'_> {
                 let (attributes, declaration) = &x.nodes;
                 let (interface, modport, names) = &declaration.nodes;
                 // The parser takes the declaration of a variable of a named type, `state_t s;`, for an interface port.
-                let kind = if modport.is_some() {
-                    ItemKind::Unsupported("interface port in a non-ANSI port list".to_string())
-                } else {
-                    let names = names.nodes.0.contents().into_iter();
-                    ItemKind::Var {
-                        ty: self.named_type(Scope::None, &interface.nodes.0),
-                        names: names
-                            .map(|(name, dims)| self.declarator(&name.nodes.0, self.unpacked_dims(dims)))
-                            .collect(),
-                    }
+                let names = names.nodes.0.contents().into_iter();
+                let names =
+                    names.map(|(name, dims)| self.declarator(&name.nodes.0, self.unpacked_dims(dims))).collect();
+                let kind = match modport {
+                    Some((_, modport)) => ItemKind::InterfacePort {
+                        interface: self.ident(&interface.nodes.0),
+                        modport: self.ident(&modport.nodes.0),
+                        names,
+                    },
+                    None => ItemKind::Var { ty: self.named_type(Scope::None, &interface.nodes.0), names },
                 };
                 (self.attributes(attributes), kind)
             }

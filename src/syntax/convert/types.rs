@@ -139,12 +139,11 @@ impl Converter<'_> {
         let (_, _, ty, names, _) = &member.nodes;
         let ty = self.data_type_or_void(ty);
         let declarators = self.variable_declarators(names);
-        let member = |declarator: Declarator| {
-            let mut ty = ty.clone();
-            if declarator.init.is_some() {
-                ty.kind = DataTypeKind::Unsupported("default value of a structure member".to_string());
-            }
-            Member { name: declarator.name, ty, dims: declarator.dims }
+        let member = |declarator: Declarator| Member {
+            name: declarator.name,
+            ty: ty.clone(),
+            dims: declarator.dims,
+            default: declarator.init,
         };
         declarators.into_iter().map(member).collect()
     }

@@ -123,10 +123,13 @@ impl Converter<'_> {
                 let (attributes, _, _, name, _, _, timeunits, body, _, _) = &x.nodes;
                 self.timeunits(timeunits, &mut items);
                 body.iter().for_each(|item| self.module_item(item, &mut items));
-                self.wildcard_header(ModuleKind::Module, attributes, &name.nodes.0, span, &mut items)
+                self.wildcard_header(ModuleKind::Module, attributes, &name.nodes.0)
             }
-            sv::ModuleDeclaration::ExternAnsi(_) | sv::ModuleDeclaration::ExternNonansi(_) => {
-                return Err(Box::new(self.skipped("extern module declaration", span)));
+            sv::ModuleDeclaration::ExternAnsi(x) => {
+                return Err(self.declared_outside(ansi_header!(self, ModuleKind::Module, x.nodes.1), span));
+            }
+            sv::ModuleDeclaration::ExternNonansi(x) => {
+                return Err(self.declared_outside(nonansi_header!(self, ModuleKind::Module, x.nodes.1), span));
             }
         };
         Ok(assemble(header, items, span))
@@ -152,10 +155,13 @@ impl Converter<'_> {
                 let (attributes, _, _, name, _, _, timeunits, body, _, _) = &x.nodes;
                 self.timeunits(timeunits, &mut items);
                 body.iter().for_each(|item| self.interface_item(item, &mut items));
-                self.wildcard_header(ModuleKind::Interface, attributes, &name.nodes.0, span, &mut items)
+                self.wildcard_header(ModuleKind::Interface, attributes, &name.nodes.0)
             }
-            sv::InterfaceDeclaration::ExternAnsi(_) | sv::InterfaceDeclaration::ExternNonansi(_) => {
-                return Err(Box::new(self.skipped("extern interface declaration", span)));
+            sv::InterfaceDeclaration::ExternAnsi(x) => {
+                return Err(self.declared_outside(ansi_header!(self, ModuleKind::Interface, x.nodes.1), span));
+            }
+            sv::InterfaceDeclaration::ExternNonansi(x) => {
+                return Err(self.declared_outside(nonansi_header!(self, ModuleKind::Interface, x.nodes.1), span));
             }
         };
         Ok(assemble(header, items, span))
@@ -176,7 +182,7 @@ impl Converter<'_> {
             }
             sv::ProgramDeclaration::Wildcard(x) => {
                 let (attributes, _, name, ..) = &x.nodes;
-                self.wildcard_header(ModuleKind::Program, attributes, &name.nodes.0, span, &mut items)
+                self.wildcard_header(ModuleKind::Program, attributes, &name.nodes.0)
             }
             sv::ProgramDeclaration::ExternAnsi(_) | sv::ProgramDeclaration::ExternNonansi(_) => {
                 return Err(Box::new(self.skipped("extern program declaration", span)));
@@ -185,16 +191,14 @@ impl Converter<'_> {
         Ok(assemble(header, items, span))
     }
 
-    /// `module m (.*);` takes its ports from an extern declaration, which we do not keep.
-    fn wildcard_header(
-        &self,
-        kind: ModuleKind,
-        attributes: &[sv::AttributeInstance],
-        name: &sv::Identifier,
-        span: Span,
-        items: &mut Vec<Item>,
-    ) -> Header {
-        items.push(self.unsupported("port list (.*)", span));
+    /// Keeps the header of an `extern` declaration. The item says only that it was there.
+    fn declared_outside(&self, header: Header, span: Span) -> Box<Item> {
+        self.externs.borrow_mut().push(assemble(header, Vec::new(), span));
+        Box::new(self.skipped("extern declaration", span))
+    }
+
+    /// `module m (.*);`, whose ports an extern declaration of the same file gives; that may be in another part of it.
+    fn wildcard_header(&self, kind: ModuleKind, attributes: &[sv::AttributeInstance], name: &sv::Identifier) -> Header {
         Header {
             kind,
             attributes: self.attributes(attributes),
@@ -202,7 +206,7 @@ impl Converter<'_> {
             default_nettype: self.default_nettype_at(self.offset(name)),
             imports: Vec::new(),
             params: Vec::new(),
-            ports: Ports::None,
+            ports: Ports::Wildcard,
         }
     }
 

@@ -71,6 +71,11 @@ pub fn expr(e: &Expr) -> String {
         ExprKind::MinTypMax(a, b, c) => format!("(mtm {} {} {})", expr(a), expr(b), expr(c)),
         ExprKind::Type(t) => format!("type {}", data_type(t)),
         ExprKind::Assign(a) => format!("({})", assignment(a)),
+        ExprKind::Postfix(a) => format!("(before {})", assignment(a)),
+        ExprKind::Reduce { array, method, iterator, with } => {
+            let iterator = iterator.as_ref().map_or("item", |name| &name.name);
+            format!("({}.{} {iterator} with {})", expr(array), method.name, expr(with))
+        }
         ExprKind::Unsupported(what) => format!("<unsupported {what}>"),
     }
 }
@@ -82,7 +87,8 @@ fn pattern_item(item: &PatternItem) -> String {
         PatternKey::Default => format!("default:{value}"),
         PatternKey::Expr(key) => format!("{}:{value}", expr(key)),
         PatternKey::Type(ty) => format!("type {}:{value}", data_type(ty)),
-        PatternKey::Repeat(n) => format!("{}x{value}", expr(n)),
+        PatternKey::Repeat(n, more) if more.is_empty() => format!("{}x{value}", expr(n)),
+        PatternKey::Repeat(n, more) => format!("{}x({value} {})", expr(n), list(more, expr)),
     }
 }
 
@@ -136,7 +142,8 @@ pub fn data_type(t: &DataType) -> String {
 
 fn declarator(d: &Declarator) -> String {
     let init = d.init.as_ref().map_or(String::new(), |e| format!("={}", expr(e)));
-    format!("{}{}{init}", d.name.name, dims(&d.dims))
+    let once = if d.once && d.init.is_some() { "once " } else { "" };
+    format!("{once}{}{}{init}", d.name.name, dims(&d.dims))
 }
 
 pub fn param(p: &Param) -> String {
@@ -155,6 +162,7 @@ pub fn attributes(list: &Attributes) -> String {
 
 pub fn ports(p: &Ports) -> String {
     match p {
+        Ports::Wildcard => "(.*)".to_string(),
         Ports::None => "none".to_string(),
         Ports::Ansi(ports) => list(ports, |p| {
             let default = p.default.as_ref().map_or(String::new(), |e| format!("={}", expr(e)));
@@ -273,12 +281,16 @@ pub fn item(i: &Item) -> String {
             let arms = list(arms, |(labels, block)| format!("({}: {})", list(labels, expr), gen_block(block)));
             format!("gencase {} {arms} {}", expr(subject), opt(default, gen_block))
         }
-        ItemKind::Modport { name: n, ports } => {
+        ItemKind::InterfacePort { interface, modport, names } => {
+            format!("port {}.{} {}", interface.name, modport.name, list(names, declarator))
+        }
+        ItemKind::Modport { name: n, ports, imports } => {
+            let imports: String = imports.iter().map(|n| format!(" import {}", n.name)).collect();
             let ports = list(ports, |p| {
                 let expr = p.expr.as_ref().map_or(String::new(), |e| format!("={}", expr(e)));
                 format!("({:?} {}{expr})", p.direction, p.name.name)
             });
-            format!("modport {} {ports}", n.name)
+            format!("modport {} {ports}{imports}", n.name)
         }
         ItemKind::Module(m) => return module(m),
         ItemKind::Bind { target, item: i } => format!("bind {} {}", expr(target), item(i)),

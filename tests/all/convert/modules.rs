@@ -217,6 +217,7 @@ fn what_only_a_simulator_needs_is_skipped_and_nothing_vanishes() {
         "import \"DPI-C\" function int f(input int a); final $display;",
         "(skipped DPI import f) (skipped final procedure)",
     );
-    check_items("nettype t w; $error(\"x\");", "(unsupported user-defined net type) (elab $error)");
+    check_items("nettype t w; $error(\"x\");", "(typedef w t) (elab $error)");
+    check_items("nettype t w with f;", "(unsupported net type with a resolution function)");
     check_items("let op(x, y = 2) = x & y;", "(let op [x=_ y=2] (And x y))");
 }

@@ -81,7 +81,9 @@ fn constant_expressions_group_in_the_same_way() {
 #[test]
 fn the_triple_ampersand_is_not_a_reduction() {
     check_expr("a && &b", "(LogicalAnd a (ReduceAnd b))");
-    check_expr("a &&& b", "<unsupported operator outside table 11-2>");
+    check_expr("a &&& b", "(LogicalAnd a b)");
+    check_expr("a || b &&& c == d", "(LogicalAnd (LogicalOr a b) (Eq c d))");
+    check_expr("a &&& b ? c : d", "(? (LogicalAnd a b) c d)");
 }
 
 #[test]
