@@ -222,11 +222,12 @@ pub struct Shown {
     pub root: usize,
     /// Whether the root rises.
     pub rises: bool,
-    /// The sources in front of the target that change in the step, or in both.
-    pub changes: BTreeSet<usize>,
-    /// Whether it is the clean change of one source that explains the glitch: an input's in the first step, a cell's in the
-    /// second.
+    /// The one source in front of the target that changes.
     pub alone: Option<usize>,
+    /// Whether that is a clean change of its own, while all others rest.
+    pub clean: bool,
+    /// The one source that changes when one looks through latches that pass.
+    pub behind: Option<usize>,
     /// Whether the target's function leaves the way from its first to its last value; `None` where a latch that does not
     /// simply hold or pass is part of it.
     pub function: Option<bool>,
@@ -259,53 +260,49 @@ impl<'a> Explorer<'a> {
 
     fn event(&mut self, target: Net, state: u32, root: usize, shown: &mut BTreeSet<Shown>) {
         let machine = self.machine;
-        let cone = machine.cone(target);
         let value = |state: u32| machine.at(target, state);
         let rises = state >> root & 1 == 0;
         for first in self.first(state, root) {
             if root < machine.inputs && self.glitches(target, &first) {
                 let kind = Glitch::of(value(state), value(first.after));
-                let function = self.leaves(target, &first);
-                let changes = bits(first.moved() & cone);
-                shown.insert(Shown { kind, when: When::First, root, rises, changes, alone: Some(root), function });
+                shown.insert(self.one_step(target, &first, (kind, When::First), (root, rises)));
             }
             for second in self.second(state, &first) {
                 let [before, between, after] = [state, first.after, second.after].map(value);
                 if self.glitches(target, &second) {
                     let kind = Glitch::of(between, after);
-                    let changes = bits(second.moved() & cone);
-                    let alone = self.alone(cone, &second);
-                    let function = self.leaves(target, &second);
-                    shown.insert(Shown { kind, when: When::Second, root, rises, changes, alone, function });
+                    shown.insert(self.one_step(target, &second, (kind, When::Second), (root, rises)));
                 }
                 if before != between && between != after {
                     let kind = Glitch::of(before, after);
-                    let changes = bits((first.moved() | second.moved()) & cone);
-                    shown.insert(Shown {
-                        kind,
-                        when: When::Both,
-                        root,
-                        rises,
-                        changes,
-                        alone: None,
-                        function: Some(true),
-                    });
+                    let (when, function) = (When::Both, Some(true));
+                    shown.insert(Shown { kind, when, root, rises, alone: None, clean: false, behind: None, function });
                 }
             }
         }
     }
 
-    /// The source of the cone that moves cleanly while all others of the cone rest.
-    fn alone(&mut self, cone: u32, step: &Step) -> Option<usize> {
-        let moved: Vec<usize> = bits(step.moved() & cone).into_iter().collect();
-        let [source] = moved[..] else { return None };
-        let cells = bits(cone).into_iter().filter(|&source| source >= self.machine.inputs);
-        for cell in cells.map(|source| source - self.machine.inputs).collect::<Vec<_>>() {
-            if self.glitches(Net::Cell(cell), step) {
-                return None;
-            }
-        }
-        Some(source)
+    fn one_step(
+        &mut self,
+        target: Net,
+        step: &Step,
+        (kind, when): (Glitch, When),
+        (root, rises): (usize, bool),
+    ) -> Shown {
+        let cone = self.machine.cone(target);
+        let alone = only(cone & step.moved());
+        let own = alone.is_some_and(|source| matches!(step.roles[source], Role::Moves | Role::Opens));
+        let clean = own && self.are_clean(cone, step);
+        let passing = (0..step.roles.len()).filter(|&source| step.roles[source] == Role::Passes);
+        let through = passing.fold(self.reaching(target, step), |through, source| through & !(1 << source));
+        let behind = only(through & step.moved());
+        Shown { kind, when, root, rises, alone, clean, behind, function: self.leaves(target, step) }
+    }
+
+    /// Whether none of these sources does more than its two values need.
+    fn are_clean(&mut self, sources: u32, step: &Step) -> bool {
+        let cells = bits(sources).into_iter().filter_map(|source| source.checked_sub(self.machine.inputs));
+        cells.map(Net::Cell).all(|cell| !self.glitches(cell, step))
     }
 
     /// The first step of an event in every outcome.
@@ -471,6 +468,10 @@ impl<'a> Explorer<'a> {
 
 fn bits(mask: u32) -> BTreeSet<usize> {
     (0..32).filter(|&bit| mask >> bit & 1 == 1).collect()
+}
+
+fn only(mask: u32) -> Option<usize> {
+    (mask.count_ones() == 1).then(|| mask.trailing_zeros() as usize)
 }
 
 fn races(step: &Step, source: usize) -> [Step; 2] {

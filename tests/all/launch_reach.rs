@@ -1,5 +1,5 @@
 //! Which values the flip-flops of a machine can have after a reset, for the [`crate::launch_explorer`]: those with a reset
-//! value (an initial value or an asynchronous control to a constant) start there together, all other sources are free.
+//! value (an initial value, an asynchronous control to a constant, or inputs that force their data) start there together, all other sources are free.
 //!
 //! From each state every clock net may fire or not, and every control act or not, in all combinations: more than can
 //! really happen, but what is left out then never happens.
@@ -43,6 +43,13 @@ impl Reach {
 
 fn reset_value(machine: &Machine, cell: usize) -> Option<bool> {
     let cell = &machine.cells[cell];
+    // A synchronous reset: with some values of the inputs the data is one constant, whatever the cells store.
+    let forced = |inputs: u32| {
+        let mut values =
+            (0..1 << machine.cells.len()).map(|cells: u32| machine.at(cell.data, cells << machine.inputs | inputs));
+        let first = values.next()?;
+        values.all(|value| value == first).then_some(first)
+    };
     if !matches!(cell.trigger, Trigger::Clock { .. }) {
         return None;
     }
@@ -50,7 +57,7 @@ fn reset_value(machine: &Machine, cell: usize) -> Option<bool> {
         Net::Constant(value) => Some(value),
         _ => None,
     });
-    cell.init.or(constants)
+    cell.init.or(constants).or_else(|| (0..1 << machine.inputs).find_map(forced))
 }
 
 /// What may happen to a cell, apart from holding.
