@@ -36,6 +36,10 @@ pub enum Command {
     Ledger(Ledger),
     /// Write the gate graph, or the fan-in of one net, as structural Verilog on standard output.
     Flatten(Flatten),
+    /// Write test benches that show the hazards of a finding in any simulator, and their waveforms.
+    Replay(Replay),
+    /// Print the change that removes a finding as a unified diff, proven before it is printed.
+    Cure(Cure),
 }
 
 /// What is read, and how.
@@ -118,6 +122,27 @@ pub struct Flatten {
     pub cone: Option<String>,
 }
 
+#[derive(Args, Debug)]
+pub struct Replay {
+    /// The beginning of the finding's fingerprint, as the JSON output of scan has it
+    #[arg(value_parser = fingerprint)]
+    pub fingerprint: String,
+    #[command(flatten)]
+    pub input: Input,
+    /// The folder for the test benches (.v) and waveforms (.vcd); it is made if it does not exist
+    #[arg(long, value_name = "DIR")]
+    pub to: PathBuf,
+}
+
+#[derive(Args, Debug)]
+pub struct Cure {
+    /// The beginning of the finding's fingerprint, as the JSON output of scan has it
+    #[arg(value_parser = fingerprint)]
+    pub fingerprint: String,
+    #[command(flatten)]
+    pub input: Input,
+}
+
 #[derive(Clone, Copy, PartialEq, Eq, ValueEnum, Debug)]
 pub enum Level {
     Error,
@@ -165,6 +190,14 @@ fn output(text: &str) -> Result<Output, String> {
         "" => Err("the file is missing; `-` is standard output".to_string()),
         "-" => Ok(Output { format, file: None }),
         file => Ok(Output { format, file: Some(PathBuf::from(file)) }),
+    }
+}
+
+fn fingerprint(text: &str) -> Result<String, String> {
+    if !text.is_empty() && text.chars().all(|digit| digit.is_ascii_hexdigit()) {
+        Ok(text.to_ascii_lowercase())
+    } else {
+        Err("a fingerprint is made of hexadecimal digits, as the JSON output of scan has it".to_string())
     }
 }
 

@@ -10,11 +10,13 @@
 pub mod assumptions;
 pub mod cells;
 pub mod cli;
+pub mod cure;
 pub mod diagnostic;
 pub mod elaborate;
 pub mod graph;
 pub mod hazard;
 mod ids;
+pub mod replay;
 pub mod report;
 pub mod rules;
 pub mod settings;
@@ -24,6 +26,7 @@ pub mod spelling;
 pub mod syntax;
 
 use std::collections::{BTreeMap, BTreeSet};
+use std::path::Path;
 
 use jiff::civil::Date;
 
@@ -82,15 +85,13 @@ pub struct Scan {
 /// Paths, file lists or tops that lead nowhere: nothing was analysed.
 pub fn scan(request: &Request, environment: Environment<'_>, progress: Progress<'_>) -> Result<Scan, PathError> {
     on_big_stacks(request, || {
-        let (mut loaded, mut design, diagnostics) = front_end(request, environment, progress)?;
+        let (mut loaded, design, diagnostics) = front_end(request, environment, progress)?;
         progress(Stage::Deciding);
-        let pragmas = signoff::collect(&loaded.sources);
-        let (watches, unplaced) = signoff::watches(&design.graph, &loaded.sources, &pragmas.watches);
-        let options = hazard::Options::default();
-        let assumed = resolved(request, &loaded, &design)?;
-        let assumed = assumptions::apply(&design.graph, &loaded.sources, assumed, &pragmas.assumptions, &options);
-        design.graph = design.graph.with_static(assumed.in_force.fixed.iter().copied());
-        let mut outcome = rules::run(&design.graph, &watches, &options);
+        let protection = syntax::Protection::collect(&loaded.units);
+        // The trees are not needed any more, and what follows needs room.
+        loaded.units = Vec::new();
+        let Decided { design, pragmas, unplaced, assumed, mut outcome } =
+            decided(request, &loaded, design, &protection)?;
         let missing: BTreeSet<&str> = design.graph.black_boxes.iter().map(|one| one.module.as_str()).collect();
         for module in missing {
             if let Some(place) = loaded.nearby.module(module) {
@@ -115,6 +116,32 @@ pub fn scan(request: &Request, environment: Environment<'_>, progress: Progress<
         report.coverage.severities = request.severities.clone();
         Ok(finished(report, loaded.sources))
     })
+}
+
+/// What the rules find under the comments in the sources and the assumptions in force.
+struct Decided {
+    design: elaborate::Design,
+    pragmas: signoff::Collected,
+    /// Watches that mark nothing.
+    unplaced: Vec<rules::Finding>,
+    assumed: assumptions::Applied,
+    outcome: rules::Outcome,
+}
+
+fn decided(
+    request: &Request,
+    loaded: &Loaded,
+    mut design: elaborate::Design,
+    protection: &syntax::Protection,
+) -> Result<Decided, PathError> {
+    let pragmas = signoff::collect(&loaded.sources);
+    let (watches, unplaced) = signoff::watches(&design.graph, &loaded.sources, &pragmas.watches);
+    let options = hazard::Options::default();
+    let assumed = resolved(request, loaded, &design)?;
+    let assumed = assumptions::apply(&design.graph, &loaded.sources, assumed, &pragmas.assumptions, &options);
+    design.graph = design.graph.with_static(assumed.in_force.fixed.iter().copied());
+    let outcome = rules::run(&design.graph, &watches, protection, &options);
+    Ok(Decided { design, pragmas, unplaced, assumed, outcome })
 }
 
 /// The nets that the assumptions of the settings speak about. A name that fits nothing is a mistake of usage, unless the net
@@ -159,6 +186,69 @@ pub fn flatten(
     })
 }
 
+/// Test benches and waveforms of one finding, which is named by the beginning of its fingerprint.
+///
+/// # Errors
+/// As [`scan`], a fingerprint that fits no finding or several, and a finding without a witness.
+pub fn replay(
+    request: &Request,
+    fingerprint: &str,
+    environment: Environment<'_>,
+    progress: Progress<'_>,
+) -> Result<replay::Replay, PathError> {
+    on_big_stacks(request, || {
+        let (loaded, design, _) = front_end(request, environment, progress)?;
+        progress(Stage::Deciding);
+        let (design, findings) = findings(request, &loaded, design)?;
+        let finding = replay::select(&findings, fingerprint)?;
+        replay::replay(&design.graph, finding)
+    })
+}
+
+/// The change that removes one finding, which is named by the beginning of its fingerprint, proven by a scan of the
+/// changed text. A diff is meant to be applied in `folder`.
+///
+/// # Errors
+/// As [`scan`], a fingerprint that fits no finding or several, and a finding without a cover.
+pub fn cure(
+    request: &Request,
+    fingerprint: &str,
+    folder: &Path,
+    environment: Environment<'_>,
+    progress: Progress<'_>,
+) -> Result<cure::Cure, PathError> {
+    on_big_stacks(request, || {
+        let (loaded, design, _) = front_end(request, environment, progress)?;
+        progress(Stage::Deciding);
+        let (design, before) = findings(request, &loaded, design)?;
+        let finding = replay::select(&before, fingerprint)?;
+        let proposal = match cure::propose(&design.graph, &loaded.units, &loaded.sources, finding)? {
+            Ok(proposal) => proposal,
+            Err(cure) => return Ok(cure),
+        };
+        let mut changed = request.clone();
+        changed.source.instead.push((proposal.file.clone(), proposal.text.clone()));
+        let (again, cured, diagnostics) = front_end(&changed, environment, progress)?;
+        if again.files_failed > loaded.files_failed || cured.modules_failed > design.modules_failed {
+            let said = diagnostics.first().map_or(String::new(), |first| format!(": {}", first.message));
+            return Ok(cure::Cure::Withheld { reason: format!("the changed text cannot be analysed{said}") });
+        }
+        let (_, after) = findings(&changed, &again, cured)?;
+        Ok(cure::judge(&proposal, finding, &before, &after, folder))
+    })
+}
+
+/// What the rules find, without sign-offs.
+fn findings(
+    request: &Request,
+    loaded: &Loaded,
+    design: elaborate::Design,
+) -> Result<(elaborate::Design, Vec<rules::Finding>), PathError> {
+    let protection = syntax::Protection::collect(&loaded.units);
+    let decided = decided(request, loaded, design, &protection)?;
+    Ok((decided.design, decided.outcome.findings))
+}
+
 /// Every stage recurses over the nesting of the sources, and so does dropping its trees.
 fn on_big_stacks<T: Send>(
     request: &Request,
@@ -192,6 +282,7 @@ fn front_end(
         assert!(violations.is_empty(), "the graph is unsound:\n{}", violations.join("\n"));
     }
     loaded.nearby.hint(&mut more);
+    loaded.units = units;
     let mut diagnostics = std::mem::take(&mut loaded.diagnostics);
     diagnostics.extend(more);
     diagnostics.extend(idle_cells(&asked.cells, &design));

@@ -10,6 +10,7 @@ use std::time::Duration;
 use clap::Parser;
 use indicatif::{ProgressBar, ProgressDrawTarget, ProgressStyle};
 use stillwire::cli::{self, Cli, Command, Format, Input, Output};
+use stillwire::cure::Cure;
 use stillwire::report::{json, sarif, text};
 use stillwire::rules::{self, Severity};
 use stillwire::settings::{self, Settings};
@@ -17,6 +18,8 @@ use stillwire::signoff::ledger::Ledger;
 use stillwire::source::{self, Exclude, PathError};
 use stillwire::{Request, Scan, Stage};
 
+/// A finding stands.
+const FOUND: u8 = 1;
 /// Wrong usage, settings or paths.
 const USAGE: u8 = 2;
 /// Part of the input could not be analysed.
@@ -31,6 +34,8 @@ fn main() -> ExitCode {
         }
         Command::Flatten(arguments) => flatten(&arguments),
         Command::Ledger(command) => ledger(&command),
+        Command::Replay(arguments) => replay(&arguments),
+        Command::Cure(arguments) => cure(&arguments),
     };
     let code = result.unwrap_or_else(|error| {
         complain(&format!("error: {}\n  help: {}\n", error.message, error.help));
@@ -72,7 +77,7 @@ fn scan(arguments: &cli::Scan) -> Result<u8, PathError> {
         };
         match &output.file {
             None => print(&rendered),
-            Some(file) => write_beside_and_rename(file, &rendered)?,
+            Some(file) => write_beside_and_rename(file, rendered.as_bytes())?,
         }
     }
     Ok(scan.report.exit_code(gate))
@@ -104,7 +109,7 @@ fn ledger(command: &cli::Ledger) -> Result<u8, PathError> {
         }
         Some(known) => (known, format!("{file}: nothing dropped, because the run is incomplete\n")),
     };
-    write_beside_and_rename(&arguments.ledger, &ledger.render())?;
+    write_beside_and_rename(&arguments.ledger, ledger.render().as_bytes())?;
     print(&said);
     if !complete {
         complain("warning: part of the input was not analysed; run `stillwire scan` to see what\n");
@@ -145,6 +150,47 @@ fn flatten(arguments: &cli::Flatten) -> Result<u8, PathError> {
     Ok(if report.complete() { 0 } else { INCOMPLETE })
 }
 
+fn replay(arguments: &cli::Replay) -> Result<u8, PathError> {
+    let settings = read_settings(&arguments.input)?;
+    let request = request(&arguments.input, &settings);
+    let fingerprint = &arguments.fingerprint;
+    let replay = with_progress(|progress| stillwire::replay(&request, fingerprint, &environment, progress))?;
+    let folder = &arguments.to;
+    std::fs::create_dir_all(folder).map_err(|error| {
+        let message = format!("the folder `{}` cannot be made: {error}", folder.display());
+        PathError::new(message, "give another folder to --to")
+    })?;
+    for (name, contents) in &replay.files {
+        write_beside_and_rename(&folder.join(name), contents)?;
+    }
+    print(&replay.summary);
+    Ok(if replay.complete { 0 } else { INCOMPLETE })
+}
+
+/// The diff alone goes to standard output, so that it can be piped into `patch -p1` or `git apply`.
+fn cure(arguments: &cli::Cure) -> Result<u8, PathError> {
+    let settings = read_settings(&arguments.input)?;
+    let request = request(&arguments.input, &settings);
+    let folder = std::env::current_dir().unwrap_or_else(|_| PathBuf::from("."));
+    let fingerprint = &arguments.fingerprint;
+    let cure = with_progress(|progress| stillwire::cure(&request, fingerprint, &folder, &environment, progress))?;
+    match cure {
+        Cure::Patch { diff, proof } => {
+            complain(&format!("{proof}\n"));
+            print(&diff);
+            Ok(0)
+        }
+        Cure::Terms { text } => {
+            print(&text);
+            Ok(0)
+        }
+        Cure::Withheld { reason } => {
+            complain(&format!("no cure is offered: {reason}\n"));
+            Ok(FOUND)
+        }
+    }
+}
+
 /// The settings that hold: those named, else those found upward from the first path.
 fn read_settings(input: &Input) -> Result<Settings, PathError> {
     if let Some(file) = &input.settings {
@@ -183,6 +229,7 @@ fn request(input: &Input, settings: &Settings) -> Request {
             include: input.include.iter().chain(&settings.include).cloned().collect(),
             defines,
             exclude: Exclude { root: settings.folder.clone(), patterns: settings.exclude.clone() },
+            instead: Vec::new(),
         },
         tops: if input.top.is_empty() { settings.top.clone() } else { input.top.clone() },
         // A value of the command line comes later and so holds.
@@ -265,7 +312,7 @@ fn folder_of(file: &Path) -> &Path {
 
 /// Nobody ever sees half a file: it is written beside its place and renamed. A link keeps pointing where it does, and what
 /// is no file (a device, a pipe) is written to as it is, since a rename would replace it.
-fn write_beside_and_rename(file: &Path, contents: &str) -> Result<(), PathError> {
+fn write_beside_and_rename(file: &Path, contents: &[u8]) -> Result<(), PathError> {
     let special = std::fs::metadata(file).is_ok_and(|known| !known.is_file() && !known.is_dir());
     let place = std::fs::canonicalize(file).unwrap_or_else(|_| file.to_path_buf());
     let name = place.file_name().unwrap_or_default().to_string_lossy().into_owned();

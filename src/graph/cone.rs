@@ -190,6 +190,14 @@ impl Cone {
         }
     }
 
+    /// Turns the copy of a source into a buffer of another copied node: an open latch passes its data.
+    pub fn follow(&mut self, source: NodeId, data: NodeId) {
+        if let (Some(copy), Some(data)) = (self.copy_of(source), self.read_of(data)) {
+            self.kinds[copy.index()] = NodeKind::Gate(GateKind::Buf);
+            self.fanins[copy.index()] = vec![data];
+        }
+    }
+
     /// Copies the logic of `targets` once more, reading `instead` where it answers; other nodes without fan-in are
     /// shared with the first copy, which must have them. Returns the new targets.
     pub fn repeat(

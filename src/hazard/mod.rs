@@ -19,7 +19,9 @@ mod paths;
 mod points;
 mod prove;
 mod rails;
+mod redundant;
 mod search;
+mod settled;
 mod simulate;
 mod solver;
 mod symbolic;
@@ -34,9 +36,14 @@ pub use decide::decide;
 pub use induction::try_assumptions;
 pub use loops::{Behaviour, BehaviourKind, LoopVerdict, StateLoss, loops};
 pub use options::Options;
+pub(crate) use order::Order;
 pub use paths::paths;
+pub use redundant::{Redundant, redundant};
+pub use settled::{Cells, Demand, Happening, is_free};
+pub(crate) use tables::{Need, Promises};
 pub use verdict::{
     Cause, Cover, HazardKind, Launch, LaunchHazard, OpenLaunch, Pair, Path, PathStep, Paths, Reach, Step,
     TargetVerdict, Undecided, Witness,
 };
+pub(crate) use wave::gate;
 pub use wave::{Wave, waveform};

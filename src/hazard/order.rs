@@ -6,15 +6,15 @@ use crate::graph::cycles::{self, Components};
 use crate::graph::{Graph, NodeId, NodeKind};
 
 /// Fan-ins stand before the nodes they drive.
-pub(super) struct Order {
-    pub(super) nodes: Vec<NodeId>,
+pub(crate) struct Order {
+    pub(crate) nodes: Vec<NodeId>,
     /// Per entry of `nodes`: a node on a loop or one that is declared static, whose fan-in is not followed. A bit of a net on a loop is not marked: it
     /// passes the value of the gate that drives it, so that gate and net stay one.
-    pub(super) looped: Vec<bool>,
+    pub(crate) looped: Vec<bool>,
 }
 
 impl Order {
-    pub(super) fn new(graph: &Graph, roots: &[NodeId]) -> Self {
+    pub(crate) fn new(graph: &Graph, roots: &[NodeId]) -> Self {
         // Most cones have no loop, and whole-graph components are not worth computing for them.
         match Self::walk(graph, roots, None) {
             Some(order) => order,
@@ -68,6 +68,11 @@ impl Order {
             }
         }
         Some(order)
+    }
+
+    /// Whether a loop had to be cut.
+    pub(crate) fn has_loop(&self, graph: &Graph) -> bool {
+        self.nodes.iter().zip(&self.looped).any(|(&node, &looped)| looped && !graph.is_static(node))
     }
 
     /// The sources that reach one of `nodes`, through loops as well; sorted.

@@ -11,7 +11,7 @@ const WIDEST: usize = 16;
 
 /// What a promising row asks of one input.
 #[derive(Clone, Copy, PartialEq, Eq, Debug)]
-pub(super) enum Need {
+pub(crate) enum Need {
     /// A clean constant of this value.
     Value(bool),
     /// A clean constant.
@@ -21,15 +21,15 @@ pub(super) enum Need {
 
 /// See the module documentation.
 #[derive(Clone, Debug)]
-pub(super) struct Promises {
+pub(crate) struct Promises {
     /// Rows that give a value for combinations of 0 and 1, first match first.
-    pub(super) function: Vec<(Vec<Need>, bool)>,
+    pub(crate) function: Vec<(Vec<Need>, bool)>,
     /// Rows that promise.
     pub(super) rows: Vec<(Vec<Need>, bool)>,
 }
 
 impl Promises {
-    pub(super) fn new(table: &Table) -> Self {
+    pub(crate) fn new(table: &Table) -> Self {
         let result = |symbol: Symbol| match symbol {
             Symbol::Zero => Some(false),
             Symbol::One => Some(true),
@@ -88,7 +88,7 @@ impl Promises {
     }
 
     /// The function; `None` for a combination without a row.
-    pub(super) fn value(&self, point: &[bool]) -> Option<bool> {
+    pub(crate) fn value(&self, point: &[bool]) -> Option<bool> {
         let fits = |needs: &[Need]| {
             needs.len() == point.len()
                 && needs.iter().zip(point).all(|(need, &bit)| !matches!(need, Need::Value(value) if *value != bit))
@@ -96,7 +96,7 @@ impl Promises {
         self.function.iter().find(|(needs, _)| fits(needs)).map(|&(_, value)| value)
     }
 
-    pub(super) fn wave(&self, inputs: &[Wave]) -> Wave {
+    pub(crate) fn wave(&self, inputs: &[Wave]) -> Wave {
         let point = |of: fn(&Wave) -> bool| -> Vec<bool> { inputs.iter().map(of).collect() };
         let (before, after) = (self.value(&point(|wave| wave.i)), self.value(&point(|wave| wave.f)));
         let (i, f) = (before.unwrap_or(false), after.unwrap_or(false));

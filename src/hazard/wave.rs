@@ -66,7 +66,7 @@ impl Wave {
 }
 
 /// The waveform of a gate from those of its pins.
-pub(super) fn gate(kind: GateKind, inputs: &[Wave]) -> Wave {
+pub(crate) fn gate(kind: GateKind, inputs: &[Wave]) -> Wave {
     let plain = match kind {
         GateKind::Buf | GateKind::Not | GateKind::And | GateKind::Nand => and(inputs),
         GateKind::Or | GateKind::Nor => {

@@ -78,6 +78,9 @@ fn split(name: &str) -> (&str, Option<u64>) {
 #[cfg(test)]
 mod tests {
     use super::*;
+    use crate::graph::NodeId;
+    use crate::hazard::Witness;
+    use crate::rules::Transition;
 
     fn hazard(net: &str, changes: &str, before: &[(&str, bool)]) -> Hazard {
         let before: Vec<_> = before.iter().map(|&(name, value)| (name.to_string(), value)).collect();
@@ -90,6 +93,11 @@ mod tests {
             after: before.clone(),
             before,
             pin: (true, true),
+            transition: Transition {
+                target: NodeId::new(0),
+                witness: Witness { changes: Vec::new(), holds: Vec::new(), target: (true, true), launch: None },
+                calm: false,
+            },
         }
     }
 

@@ -55,7 +55,8 @@ fn text(graph: &Graph, target: NodeId, cover: &Cover, present: &str, left: &str)
         }
     }
     let verilog = format!("{left} = {whole};");
-    Some(CoverText { terms: products.into_iter().chain(sums).collect(), verilog, proven: cover.proven })
+    let terms = products.into_iter().chain(sums).collect();
+    Some(CoverText { terms, verilog, proven: cover.proven, target, cover: cover.clone() })
 }
 
 fn parenthesised(text: &str, operator: &str) -> String {

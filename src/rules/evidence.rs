@@ -7,7 +7,7 @@
 use std::collections::BTreeSet;
 
 use super::cover_text;
-use super::finding::{CoverText, Finding, Hazard, Pin, Rule, Severity, TraceStep, Verdict};
+use super::finding::{CoverText, Finding, Hazard, Pin, Rule, Severity, TraceStep, Transition, Verdict};
 use super::{fingerprint, names, pins, words};
 use crate::graph::{Graph, InstanceId, NodeId, NodeKind};
 use crate::hazard::{self, HazardKind, Options, Path, Paths, TargetVerdict, Undecided, Witness};
@@ -55,7 +55,7 @@ pub(super) fn finding(
         net: net.clone(),
         bits: None,
         pin: Some(subject.pin.clone()),
-        hazards: hazards.iter().map(|ranked| ranked.hazard(graph, root)).collect(),
+        hazards: hazards.iter().map(|ranked| ranked.hazard(graph, root, options)).collect(),
         cover: None,
         loop_: None,
         notes: Vec::new(),
@@ -134,13 +134,15 @@ fn ranked<'a>(graph: &Graph, verdict: &'a TargetVerdict, judge: &Judge<'_>) -> V
 }
 
 /// All hazards of a target in words, the lead first.
-pub(super) fn hazards(graph: &Graph, verdict: &TargetVerdict, judge: &Judge<'_>) -> Vec<Hazard> {
-    ranked(graph, verdict, judge).iter().map(|ranked| ranked.hazard(graph, verdict.target)).collect()
+pub(super) fn hazards(graph: &Graph, verdict: &TargetVerdict, judge: &Judge<'_>, options: &Options) -> Vec<Hazard> {
+    ranked(graph, verdict, judge).iter().map(|ranked| ranked.hazard(graph, verdict.target, options)).collect()
 }
 
 impl Ranked<'_> {
-    fn hazard(&self, graph: &Graph, target: NodeId) -> Hazard {
-        hazard_text(graph, target, self.kind, self.witness, self.harm.clone())
+    fn hazard(&self, graph: &Graph, target: NodeId, options: &Options) -> Hazard {
+        let mut hazard = hazard_text(graph, target, self.kind, self.witness, self.harm.clone());
+        hazard.transition.calm = options.ignore_operators;
+        hazard
     }
 }
 
@@ -162,7 +164,8 @@ pub(super) fn hazard_text(graph: &Graph, target: NodeId, kind: HazardKind, witne
     let mut changes: Vec<String> = witness.changes.iter().map(|&(node, _)| names::name(graph, node)).collect();
     changes.sort();
     let net = names::name(graph, target);
-    Hazard { net, kind: kind.name(), cause: "logic", changes, harm, before, after, pin: witness.target }
+    let transition = Transition { target, witness: witness.clone(), calm: false };
+    Hazard { net, kind: kind.name(), cause: "logic", changes, harm, before, after, pin: witness.target, transition }
 }
 
 /// One sentence per reason why questions about this target stayed open.

@@ -1,6 +1,8 @@
 //! A finding as plain data: everything that the report formats need and nothing about how they look. The fields mirror
 //! the JSON of the design's section 3.
 
+use crate::graph::NodeId;
+use crate::hazard::{self, Witness};
 use crate::source::Span;
 
 /// The lowest severity is first, so that `max` is the worst.
@@ -33,6 +35,9 @@ pub enum Rule {
     SetResetHazard,
     ClockHazard,
     LatchEnableHazard,
+    CoverUnprotected,
+    SetResetOverlap,
+    ResetRelease,
     SignoffInvalid,
     SignoffStale,
     SignoffExpired,
@@ -41,12 +46,15 @@ pub enum Rule {
 }
 
 impl Rule {
-    pub const ALL: [Rule; 10] = [
+    pub const ALL: [Rule; 13] = [
         Rule::CombinationalLoop,
         Rule::ReconvergentInversion,
         Rule::SetResetHazard,
         Rule::ClockHazard,
         Rule::LatchEnableHazard,
+        Rule::CoverUnprotected,
+        Rule::SetResetOverlap,
+        Rule::ResetRelease,
         Rule::SignoffInvalid,
         Rule::SignoffStale,
         Rule::SignoffExpired,
@@ -61,6 +69,9 @@ impl Rule {
             Rule::SetResetHazard => "set-reset-hazard",
             Rule::ClockHazard => "clock-hazard",
             Rule::LatchEnableHazard => "latch-enable-hazard",
+            Rule::CoverUnprotected => "cover-unprotected",
+            Rule::SetResetOverlap => "set-reset-overlap",
+            Rule::ResetRelease => "reset-release",
             Rule::SignoffInvalid => "signoff-invalid",
             Rule::SignoffStale => "signoff-stale",
             Rule::SignoffExpired => "signoff-expired",
@@ -175,6 +186,16 @@ pub struct Hazard {
     pub after: Vec<(String, bool)>,
     /// What the pin shows: its value before and after.
     pub pin: (bool, bool),
+    pub transition: Transition,
+}
+
+/// A hazard in terms of the graph that was analysed, for whoever wants to see it happen.
+#[derive(Clone, PartialEq, Eq, Debug)]
+pub struct Transition {
+    pub target: NodeId,
+    pub witness: Witness,
+    /// Whether the outputs of arithmetic operators were taken as clean.
+    pub calm: bool,
 }
 
 #[derive(Clone, PartialEq, Eq, Debug)]
@@ -184,6 +205,9 @@ pub struct CoverText {
     /// The whole replacement or addition as Verilog.
     pub verilog: String,
     pub proven: bool,
+    /// The net that it cures and its terms, in terms of the graph that was analysed.
+    pub target: NodeId,
+    pub cover: hazard::Cover,
 }
 
 #[derive(Clone, PartialEq, Eq, Debug)]

@@ -6,17 +6,20 @@ mod about_text;
 mod clock_hazard;
 mod combinational_loop;
 mod cover_text;
+mod cover_unprotected;
 mod coverage;
 mod evidence;
 mod finding;
 mod fingerprint;
 mod latch_enable_hazard;
 mod missing_module;
-mod names;
+pub(crate) mod names;
 mod pages;
 mod pins;
 mod reconvergent_inversion;
+mod reset_release;
 mod set_reset_hazard;
+mod set_reset_overlap;
 mod words;
 
 use std::cmp::Reverse;
@@ -27,11 +30,14 @@ use rayon::prelude::*;
 use crate::graph::{Graph, NetId, NodeId, PortDirection};
 use crate::hazard::{self, Options, TargetVerdict};
 use crate::source::Span;
+use crate::syntax::Protection;
 
 pub use about_text::{Said, say};
 pub(crate) use about_text::{about_net, bookkeeping, net_name};
 pub use coverage::{CellCount, NetCount, PinCoverage};
-pub use finding::{CoverText, Finding, Hazard, LoopText, Pin, PinKind, Rule, Severity, Signoff, TraceStep, Verdict};
+pub use finding::{
+    CoverText, Finding, Hazard, LoopText, Pin, PinKind, Rule, Severity, Signoff, TraceStep, Transition, Verdict,
+};
 pub(crate) use missing_module::name_place;
 pub use pages::{page, summary};
 
@@ -54,7 +60,7 @@ pub struct Outcome {
 }
 
 /// Looks at everything every rule asks about. `options` bound the effort; their scope is set per rule.
-pub fn run(graph: &Graph, watches: &[Watch], options: &Options) -> Outcome {
+pub fn run(graph: &Graph, watches: &[Watch], protection: &Protection, options: &Options) -> Outcome {
     let listing = Options { ignore_operators: false, one_per_kind: false, ..*options };
     let outside = Options { ignore_operators: true, one_per_kind: true, ..*options };
     let pins = pins::collect(graph);
@@ -111,6 +117,27 @@ pub fn run(graph: &Graph, watches: &[Watch], options: &Options) -> Outcome {
         let listing = &listing;
         tasks.push(Box::new(move || reconvergent_inversion::watched(graph, verdict, watch, listing)));
     }
+    for (nets, noun) in [(&pins.controls, "control"), (&pins.clocks, "clock"), (&pins.enables, "latch enable")] {
+        for (&root, uses) in nets {
+            if verdicts.get(&root).is_some_and(TargetVerdict::is_clean) {
+                let listing = &listing;
+                tasks.push(Box::new(move || {
+                    let what = format!("the {noun} `{}` of {}", names::name(graph, root), words::cells(graph, uses));
+                    cover_unprotected::finding(graph, root, &what, pins::pin(graph, uses), protection, listing)
+                }));
+            }
+        }
+    }
+    for &(_, root) in &watched {
+        if verdicts.get(&root).is_some_and(TargetVerdict::is_clean) {
+            let listing = &listing;
+            tasks.push(Box::new(move || {
+                let what = format!("the watched net `{}`", names::name(graph, root));
+                let pin = reconvergent_inversion::pin(PinKind::Watch);
+                cover_unprotected::finding(graph, root, &what, pin, protection, listing)
+            }));
+        }
+    }
     for port in &outputs {
         let (verdicts, outside) = (&outside_verdicts, &outside);
         tasks.push(Box::new(move || reconvergent_inversion::output(graph, port, verdicts, outside)));
@@ -121,6 +148,9 @@ pub fn run(graph: &Graph, watches: &[Watch], options: &Options) -> Outcome {
     let found: Vec<Option<Finding>> = tasks.par_iter().map(|task| task()).collect();
     let mut findings: Vec<Finding> = found.into_iter().flatten().collect();
     findings.extend(missing_module::findings(graph, &pins, &seen));
+    let cells = hazard::Cells::new(graph);
+    findings.extend(set_reset_overlap::findings(graph, &cells, options));
+    findings.extend(reset_release::findings(graph, &cells, &pins.controls, &verdicts, options));
     Outcome { findings, pins: coverage, cells: CellCount::of(graph), loops: loops.len() }
 }
 

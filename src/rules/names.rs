@@ -9,7 +9,7 @@ use crate::source::Span;
 const NEAR: usize = 64;
 
 /// The first declared wire that `node` drives directly, or `node` itself when it is one.
-pub(super) fn wire_of(graph: &Graph, node: NodeId) -> Option<NodeId> {
+pub(crate) fn wire_of(graph: &Graph, node: NodeId) -> Option<NodeId> {
     if graph.node_name(node).is_some() {
         return Some(node);
     }
@@ -21,7 +21,7 @@ fn is_wire(graph: &Graph, node: NodeId) -> bool {
 }
 
 /// The hierarchical name of the net that `node` drives; a description when it drives none.
-pub(super) fn name(graph: &Graph, node: NodeId) -> String {
+pub(crate) fn name(graph: &Graph, node: NodeId) -> String {
     if let Some(name) = wire_of(graph, node).and_then(|wire| graph.name(wire)) {
         return name;
     }
@@ -81,7 +81,7 @@ pub(super) fn declaration(graph: &Graph, node: NodeId) -> Option<Span> {
 }
 
 /// The instance in which `node` is best known: that of the wire it drives.
-pub(super) fn instance(graph: &Graph, node: NodeId) -> InstanceId {
+pub(crate) fn instance(graph: &Graph, node: NodeId) -> InstanceId {
     match wire_of(graph, node).and_then(|wire| graph.node_name(wire)) {
         Some(name) => graph.nets[name.net.index()].instance,
         None => graph.site(node).instance,
@@ -91,10 +91,21 @@ pub(super) fn instance(graph: &Graph, node: NodeId) -> InstanceId {
 /// The net of `node` as it may be written in Verilog inside `scope`: by the name of an equal net that is visible there,
 /// or by its full name when there is none. `None` when the node has no name at all.
 pub(super) fn verilog(graph: &Graph, node: NodeId, scope: InstanceId) -> Option<String> {
+    nearest(graph, node, scope).map(|(_, text, _)| text)
+}
+
+/// The same without names from elsewhere in the hierarchy, and where that name is declared.
+pub(crate) fn visible_name(graph: &Graph, node: NodeId, scope: InstanceId) -> Option<(String, Span)> {
+    let (depth, text, declared) = nearest(graph, node, scope)?;
+    (depth != usize::MAX).then_some((text, declared))
+}
+
+/// How many scopes out the name is visible (`usize::MAX`: not at all), the name, and its declaration.
+fn nearest(graph: &Graph, node: NodeId, scope: InstanceId) -> Option<(usize, String, Span)> {
     let scopes = visible(graph, scope);
     let root = graph.root(node);
     let mut open = vec![root];
-    let mut nearest: Option<(usize, String)> = None;
+    let mut nearest: Option<(usize, String, Span)> = None;
     // Wires that follow a root form a tree, so that every one of them is met once.
     while let Some(here) = open.pop() {
         if let Some(name) = graph.node_name(here) {
@@ -103,9 +114,9 @@ pub(super) fn verilog(graph: &Graph, node: NodeId, scope: InstanceId) -> Option<
             let depth = depth.filter(|&depth| !hidden(graph, &net.name, &scopes[..depth]));
             let text = format!("{}{}", identifier(&net.name), name.suffix);
             let found = match depth {
-                Some(0) => return Some(text),
-                Some(depth) => (depth, text),
-                None => (usize::MAX, format!("{}.{text}", graph.instances[net.instance.index()].path)),
+                Some(0) => return Some((0, text, net.span)),
+                Some(depth) => (depth, text, net.span),
+                None => (usize::MAX, format!("{}.{text}", graph.instances[net.instance.index()].path), net.span),
             };
             if nearest.as_ref().is_none_or(|nearest| found.0 < nearest.0) {
                 nearest = Some(found);
@@ -114,7 +125,7 @@ pub(super) fn verilog(graph: &Graph, node: NodeId, scope: InstanceId) -> Option<
         let readers = graph.fanout(here).iter().rev().copied();
         open.extend(readers.filter(|&reader| reader != here && graph.kind(reader) == NodeKind::Wire));
     }
-    nearest.map(|(_, text)| text)
+    nearest
 }
 
 /// The instances whose names are visible in `scope`: itself and, from a generate block, the blocks and the module around
@@ -135,7 +146,7 @@ fn hidden(graph: &Graph, name: &str, inner: &[InstanceId]) -> bool {
 }
 
 /// A name as Verilog wants it: escaped unless it is a simple identifier.
-fn identifier(name: &str) -> String {
+pub(crate) fn identifier(name: &str) -> String {
     let mut chars = name.chars();
     let starts = chars.next().is_some_and(|first| first.is_ascii_alphabetic() || first == '_');
     if starts && chars.all(|c| c.is_ascii_alphanumeric() || c == '_' || c == '$') {

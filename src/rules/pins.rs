@@ -176,7 +176,7 @@ pub(super) fn pin(graph: &Graph, uses: &[Use]) -> Pin {
 }
 
 /// How many cells a pin names; its count has all of them.
-const SHOWN_CELLS: usize = 20;
+pub(super) const SHOWN_CELLS: usize = 20;
 
 /// The verdicts of one bulk decision by root.
 pub(super) type Verdicts = BTreeMap<NodeId, TargetVerdict>;

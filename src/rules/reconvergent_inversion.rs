@@ -55,7 +55,7 @@ pub(super) fn output(graph: &Graph, port: &Port, verdicts: &Verdicts, options: &
     finding.instance = path.clone();
     finding.net = name;
     for verdict in bits.iter().filter_map(|&bit| of_bit(net.bits[bit])) {
-        for hazard in evidence::hazards(graph, verdict, &judge) {
+        for hazard in evidence::hazards(graph, verdict, &judge, options) {
             if finding.hazards.iter().all(|known| known.kind != hazard.kind) {
                 finding.hazards.push(hazard);
             }
@@ -73,6 +73,6 @@ fn index((left, right): (i64, i64), bit: usize) -> i64 {
     if left >= right { right + bit as i64 } else { right - bit as i64 }
 }
 
-fn pin(kind: PinKind) -> Pin {
+pub(super) fn pin(kind: PinKind) -> Pin {
     Pin { kind, active: None, edge: None, cells: Vec::new(), count: 0 }
 }

@@ -35,6 +35,8 @@ pub struct Request {
     pub include: Vec<PathBuf>,
     pub defines: Vec<(String, Option<String>)>,
     pub exclude: Exclude,
+    /// Texts to read in place of those of the files.
+    pub instead: Vec<(PathBuf, String)>,
 }
 
 /// Is told how many of how many bytes are parsed.
@@ -79,7 +81,7 @@ pub fn load(request: &Request, environment: Environment<'_>, progress: Progress<
     let listed = list.files.iter().chain(&list.library_files).filter(|path| path.is_file()).cloned();
     let tree: Vec<PathBuf> = found.tree.into_iter().chain(listed).collect();
     let mut reader = Reader {
-        texts: Texts::default(),
+        texts: Texts::new(&request.instead),
         search: IncludeSearch::new(folders, tree.clone()),
         nearby: Nearby::new(paths.iter().chain(&list.files).cloned().collect(), tree),
         units: Vec::new(),

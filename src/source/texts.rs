@@ -29,12 +29,20 @@ pub struct Texts {
     unusable: Vec<bool>,
     /// Files that are units already.
     claimed: BTreeSet<FileId>,
+    /// Texts that stand for those of files, by canonical path.
+    instead: Vec<(PathBuf, String)>,
 }
 
 impl Texts {
+    /// With these texts in place of those of the files.
+    pub fn new(instead: &[(PathBuf, String)]) -> Self {
+        let instead = instead.iter().map(|(path, text)| (canonical(path), text.clone())).collect();
+        Self { instead, ..Self::default() }
+    }
+
     /// The id of a file, read on first use. `None` when it cannot be used, which has been reported.
     pub fn read(&mut self, path: &Path) -> Option<FileId> {
-        let canonical = path.canonicalize().unwrap_or_else(|_| path.to_path_buf());
+        let canonical = canonical(path);
         let id = match self.known.get(&canonical) {
             Some(&id) => id,
             None => {
@@ -57,7 +65,9 @@ impl Texts {
     }
 
     fn read_new(&mut self, path: &Path) -> FileId {
-        let (text, problem) = match read_bytes(path) {
+        let given = self.instead.iter().find(|(given, _)| *given == canonical(path));
+        let bytes = given.map_or_else(|| read_bytes(path), |(_, text)| Ok(text.clone().into_bytes()));
+        let (text, problem) = match bytes {
             Ok(bytes) => {
                 let text = decode(bytes);
                 let problem = text.find('\0').map(|at| {
@@ -94,6 +104,10 @@ impl Texts {
         }
         id
     }
+}
+
+fn canonical(path: &Path) -> PathBuf {
+    path.canonicalize().unwrap_or_else(|_| path.to_path_buf())
 }
 
 fn read_bytes(path: &Path) -> std::io::Result<Vec<u8>> {

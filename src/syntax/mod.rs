@@ -3,5 +3,7 @@
 pub mod ast;
 mod convert;
 pub mod externs;
+mod protection;
 
 pub use convert::convert;
+pub use protection::Protection;

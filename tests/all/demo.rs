@@ -30,6 +30,7 @@ fn every_mistake_is_found_and_no_twin() {
         ("combinational-loop", "note", "lock_top.u_mode.stored_safe"),
         ("latch-enable-hazard", "error", "lock_top.u_sluice.closed"),
         ("reconvergent-inversion", "warning", "lock_top.lamp_red"),
+        ("reset-release", "note", "lock_top.por_n"),
         ("set-reset-hazard", "error", "lock_top.u_stop.stop_n"),
         ("set-reset-hazard", "warning", "lock_top.u_watchdog.alive_n"),
     ];

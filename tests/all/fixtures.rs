@@ -2,7 +2,8 @@
 //! missing finding fails, and so does an unexpected one.
 //!
 //! `//! expect RULE SEVERITY [KIND...]` on the line of the finding, several separated by commas. With kinds, the kinds of
-//! hazard must be exactly these. A file without expectations says `//! quiet because ...`; one whose run must be incomplete,
+//! hazard must be exactly these. That resets end at any moment (reset-release) is only judged where a fixture speaks of
+//! it: nearly every small module takes its reset from an input. A file without expectations says `//! quiet because ...`; one whose run must be incomplete,
 //! `//! incomplete because ...`.
 
 use std::collections::BTreeSet;
@@ -63,7 +64,11 @@ fn check(name: &str) {
     assert_eq!(scan.json["complete"], complete, "{name}: whether it is analysed completely:\n{}", scan.text);
     let with_kinds = expected.iter().filter(|one| !one.kinds.is_empty());
     let with_kinds = with_kinds.map(|one| (one.line, one.rule.clone())).collect();
-    assert_eq!(found(&scan, &with_kinds), expected, "{name}: found (left) is not what is expected\n{}", scan.text);
+    let mut found = found(&scan, &with_kinds);
+    if !text.contains("reset-release") {
+        found.retain(|one| one.rule != "reset-release");
+    }
+    assert_eq!(found, expected, "{name}: found (left) is not what is expected\n{}", scan.text);
 }
 
 fn folder() -> PathBuf {
@@ -94,14 +99,20 @@ fixtures! {
     arithmetic
     clock
     clock_safe
+    cover_protected
+    cover_unprotected
     gates
     hierarchy
     latch_enable
     latch_enable_safe
     loops
     missing_module
+    reset_release
+    reset_synchronised
     selection
     set_reset_direction
+    set_reset_exclusive
+    set_reset_overlap
     set_reset_safe
     undriven
     watched

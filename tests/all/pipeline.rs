@@ -94,9 +94,17 @@ impl Scan {
         self.json["findings"].as_array().map_or(&[], Vec::as_slice)
     }
 
-    /// The findings in one instance.
+    /// How many findings are worse than a note.
+    pub fn worse_than_notes(&self) -> usize {
+        self.findings().iter().filter(|finding| finding["severity"] != "note").count()
+    }
+
+    /// The findings in one instance on what its nets can show. That a reset ends at any moment, or that stillness hangs on
+    /// redundant logic, is another matter.
     pub fn findings_in(&self, instance: &str) -> Vec<&Value> {
-        self.findings().iter().filter(|finding| finding["instance"] == instance).collect()
+        let about_nets =
+            |finding: &&Value| finding["rule"] != "reset-release" && finding["rule"] != "cover-unprotected";
+        self.findings().iter().filter(|finding| finding["instance"] == instance).filter(about_nets).collect()
     }
 
     /// A count of `coverage.pins`.

@@ -285,7 +285,8 @@ fn e18_all_prime_implicants_are_clean() {
     }
     let scan = scan_text(&text);
     assert_eq!((scan.pins("watch", "nets"), scan.pins("watch", "clean")), (modules, modules));
-    assert!(scan.findings().is_empty(), "{}", scan.text);
+    // The prime implicants that are not essential are redundant, and nothing protects them here.
+    assert!(scan.findings().iter().all(|finding| finding["rule"] == "cover-unprotected"), "{}", scan.text);
 }
 
 /// E19: a sum of products without static-1 hazards under single-input changes, no term with x and x', has no hazard under

@@ -295,7 +295,7 @@ impl Use {
 }
 
 /// The whole module `t<seed>`.
-fn module(seed: u64, written: &Written) -> String {
+pub fn module(seed: u64, written: &Written) -> String {
     let inputs: Vec<String> = (0..written.circuit.inputs).map(|input| format!("i{input}")).collect();
     let inputs = inputs.join(", ");
     let net = written.target_net();

@@ -64,6 +64,9 @@ pages! {
     set_reset_hazard SetResetHazard
     clock_hazard ClockHazard
     latch_enable_hazard LatchEnableHazard
+    cover_unprotected CoverUnprotected
+    set_reset_overlap SetResetOverlap
+    reset_release ResetRelease
     signoff_invalid SignoffInvalid
     signoff_stale SignoffStale
     signoff_expired SignoffExpired

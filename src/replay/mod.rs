@@ -1,0 +1,262 @@
+//! Replay: whoever doubts a finding sees it happen in a simulator that knows nothing of us. For each hazard of a finding
+//! delays are chosen under which it shows, and a self-contained test bench and the waveform are written. Where a cover
+//! is known, a second bench adds it and draws the delays at random, many times.
+//!
+//! Invariant: a bench is only offered after our own simulation has seen the pulse under its delays.
+
+mod bench;
+mod circuit;
+mod delays;
+mod signal;
+mod vcd;
+
+use bench::Head;
+use circuit::Circuit;
+use delays::{Plan, Shown};
+
+use crate::graph::{Graph, NodeId};
+use crate::rules::{Finding, Hazard, Verdict};
+use crate::source::PathError;
+
+/// How often a cured net is tried.
+const ROUNDS: usize = 200;
+/// Values that a witness leaves open are tried in all combinations up to this many.
+const GUESSED: usize = 6;
+/// Digits of a fingerprint that are enough to tell findings apart by eye.
+const DIGITS: usize = 12;
+/// The most findings named when none fits.
+const NAMED: usize = 20;
+
+/// What replaying a finding leaves.
+#[derive(Clone, PartialEq, Eq, Debug)]
+pub struct Replay {
+    /// Names without folders, and contents.
+    pub files: Vec<(String, Vec<u8>)>,
+    /// What they show, for standard output.
+    pub summary: String,
+    /// Whether every hazard of the finding is among them.
+    pub complete: bool,
+}
+
+/// Why a hazard is not replayed.
+#[derive(Clone, Copy, PartialEq, Eq, Debug)]
+pub(crate) enum Refusal {
+    /// More gates than a test bench can hold.
+    TooLarge,
+    /// The witness is none of this graph.
+    Foreign,
+    /// The simulation does not show what the analysis says.
+    NotSeen,
+}
+
+impl Refusal {
+    fn words(self) -> &'static str {
+        match self {
+            Refusal::TooLarge => "the logic behind the net is too large for a test bench",
+            Refusal::Foreign => "its witness does not fit the design",
+            Refusal::NotSeen => "no delays were found that show it; this is a defect of stillwire, please report it",
+        }
+    }
+}
+
+/// The finding whose fingerprint begins with `prefix`; findings of one fingerprint are one.
+///
+/// # Errors
+/// None or several such findings, with a list of what there is.
+pub(crate) fn select<'a>(findings: &'a [Finding], prefix: &str) -> Result<&'a Finding, PathError> {
+    let prefix = prefix.to_ascii_lowercase();
+    let fitting: Vec<&Finding> = findings.iter().filter(|finding| finding.fingerprint.starts_with(&prefix)).collect();
+    let listed = |findings: &[&Finding]| {
+        let line = |finding: &&Finding| {
+            let digits = finding.fingerprint.get(..DIGITS).unwrap_or(&finding.fingerprint);
+            format!("\n    {digits}  {} on {}", finding.rule.name(), finding.net)
+        };
+        let mut lines: String = findings.iter().take(NAMED).map(line).collect();
+        if findings.len() > NAMED {
+            lines += &format!("\n    and {} more: see the JSON output of scan", findings.len() - NAMED);
+        }
+        lines
+    };
+    match fitting.first() {
+        Some(first) if fitting.iter().all(|other| other.fingerprint == first.fingerprint) => Ok(first),
+        Some(_) => {
+            let message = format!("{} findings have a fingerprint that begins with `{prefix}`", fitting.len());
+            Err(PathError::new(message, format!("give more digits of one of these:{}", listed(&fitting))))
+        }
+        None => {
+            let message = format!("no finding has a fingerprint that begins with `{prefix}`");
+            // The nearest are those with the longest common beginning.
+            let common = |finding: &Finding| {
+                finding.fingerprint.bytes().zip(prefix.bytes()).take_while(|(one, other)| one == other).count()
+            };
+            let mut all: Vec<&Finding> = findings.iter().collect();
+            all.sort_by_key(|finding| std::cmp::Reverse(common(finding)));
+            let help = match all.is_empty() {
+                true => "a scan of these paths finds nothing".to_string(),
+                false => format!("the findings of these paths are:{}", listed(&all)),
+            };
+            Err(PathError::new(message, help))
+        }
+    }
+}
+
+/// The benches and waveforms of every hazard of a finding.
+///
+/// # Errors
+/// A finding that has no witness, with the reason.
+pub(crate) fn replay(graph: &Graph, finding: &Finding) -> Result<Replay, PathError> {
+    if finding.hazards.is_empty() {
+        return Err(nothing_to_replay(finding));
+    }
+    let digits = finding.fingerprint.get(..DIGITS).unwrap_or(&finding.fingerprint);
+    let count = finding.hazards.len();
+    let mut replay = Replay { files: Vec::new(), summary: String::new(), complete: true };
+    replay.summary = format!("{} on {} (fingerprint {digits})\n", finding.rule.name(), finding.net);
+    for (index, hazard) in finding.hazards.iter().enumerate() {
+        let number = index + 1;
+        replay.summary +=
+            &format!("  hazard {number} of {count}: {} on {} when {}\n", hazard.kind, hazard.net, moves(hazard));
+        let subject = Subject { graph, finding, hazard, number, digits };
+        match subject.files() {
+            Ok(files) => {
+                for (name, _) in &files {
+                    replay.summary += &format!("    {name}\n");
+                }
+                replay.files.extend(files);
+            }
+            Err(refusal) => {
+                replay.complete = false;
+                replay.summary += &format!("    not replayed: {}\n", refusal.words());
+            }
+        }
+    }
+    Ok(replay)
+}
+
+fn nothing_to_replay(finding: &Finding) -> PathError {
+    let message = format!("there is nothing to replay in this finding: {} on {}", finding.rule.name(), finding.net);
+    let help = match (finding.verdict, &finding.loop_) {
+        (_, Some(_)) => {
+            "a feedback loop has no single transition to show; its stable states are in the finding's notes"
+        }
+        (Verdict::Undecided, None) => {
+            "it is undecided: no transition is known that shows a hazard, and none is excluded"
+        }
+        (Verdict::Proven, None) => "it is not about a transition of a net",
+    };
+    PathError::new(message, help)
+}
+
+/// "top.s falls and top.t rises".
+fn moves(hazard: &Hazard) -> String {
+    let after = |name: &String| hazard.after.iter().find(|(other, _)| other == name).map(|(_, value)| *value);
+    let moves: Vec<String> = hazard
+        .before
+        .iter()
+        .filter(|(name, before)| after(name).is_some_and(|after| after != *before))
+        .map(|(name, before)| format!("{name} {}", if *before { "falls" } else { "rises" }))
+        .collect();
+    moves.join(" and ")
+}
+
+/// One hazard of a finding.
+struct Subject<'a> {
+    graph: &'a Graph,
+    finding: &'a Finding,
+    hazard: &'a Hazard,
+    number: usize,
+    digits: &'a str,
+}
+
+impl Subject<'_> {
+    fn files(&self) -> Result<Vec<(String, Vec<u8>)>, Refusal> {
+        let transition = &self.hazard.transition;
+        let cover = self.finding.cover.as_ref().filter(|cover| cover.proven && cover.target == transition.target);
+        let mut literals: Vec<NodeId> = Vec::new();
+        if let Some(cover) = cover {
+            let terms = cover.cover.products.iter().chain(&cover.cover.sums);
+            literals.extend(terms.flatten().map(|&(node, _)| node));
+        }
+        let (circuit, plan, steps) = self.seen(&literals)?;
+        let lengths: Vec<u64> = steps.iter().map(length).collect();
+        let name = format!("{}-{}", self.number, self.hazard.kind);
+        let mut files = Vec::new();
+        let file = format!("{name}.v");
+        let module = format!("replay_{}_{}", self.digits, self.number);
+        let head = Head { module: &module, story: &self.story(), file: &file };
+        files.push((file.clone(), bench::chosen(&circuit, &plan, &lengths, &head).into_bytes()));
+        let dump = vcd::dump(&circuit, &steps, &lengths).map_err(|_| Refusal::Foreign)?;
+        files.push((format!("{name}.vcd"), dump));
+        if let Some(covered) = cover.and_then(|cover| circuit.covered(&cover.cover)) {
+            let file = format!("{name}-cured.v");
+            let module = format!("{module}_cured");
+            let mut story = self.story();
+            story.push(format!("Here the net has its cover, and all delays are drawn at random {ROUNDS} times."));
+            let head = Head { module: &module, story: &story, file: &file };
+            let plan = delays::choose(&covered, 0);
+            files.push((file.clone(), bench::random(&covered, &plan, ROUNDS, &head).into_bytes()));
+        }
+        Ok(files)
+    }
+
+    /// The circuit with delays under which the pulse was seen.
+    fn seen(&self, literals: &[NodeId]) -> Result<(Circuit, Plan, Vec<Shown>), Refusal> {
+        let transition = &self.hazard.transition;
+        let unsaid = circuit::unsaid(&transition.witness);
+        for guess in 0..1usize << unsaid.len().min(GUESSED) {
+            let value = |(index, &node): (usize, &NodeId)| (node, index < GUESSED && guess >> index & 1 == 1);
+            let guesses: Vec<(NodeId, bool)> = unsaid.iter().enumerate().map(value).collect();
+            let circuit = Circuit::new(self.graph, transition, literals, &guesses)?;
+            let plan = delays::choose(&circuit, 0);
+            let steps: Vec<Shown> = (0..circuit.steps).map(|step| delays::simulate(&circuit, &plan, step)).collect();
+            let changes: usize = steps.iter().map(|shown| shown.outputs[circuit.target].changes.len()).sum();
+            if changes > circuit.needed && circuit.ends == transition.witness.target {
+                return Ok((circuit, plan, steps));
+            }
+        }
+        Err(Refusal::NotSeen)
+    }
+
+    /// What the bench is about, as comment lines.
+    fn story(&self) -> Vec<String> {
+        let hazard = self.hazard;
+        let mut story = vec![
+            format!(
+                "Stillwire, finding {}: {} on {}",
+                self.finding.fingerprint,
+                self.finding.rule.name(),
+                self.finding.net
+            ),
+            format!(
+                "Hazard {}: {} on {}, {} -> {}",
+                self.number,
+                hazard.kind,
+                hazard.net,
+                u8::from(hazard.pin.0),
+                u8::from(hazard.pin.1)
+            ),
+            format!("When {}, every other signal holding, the net changes more often than it needs.", moves(hazard)),
+        ];
+        let holds: Vec<String> = hazard
+            .before
+            .iter()
+            .filter(|(name, _)| !hazard.changes.contains(name))
+            .map(|(name, value)| format!("{name} = {}", u8::from(*value)))
+            .collect();
+        if !holds.is_empty() {
+            story.push(format!("What holds and matters: {}; the rest may have any value.", holds.join(", ")));
+        }
+        story.push("Gates have no delay; each wire that moves delivers every change of its driver, later.".to_string());
+        if hazard.transition.calm {
+            story.push("Arithmetic is taken as free of glitches: its results are part of the stimulus.".to_string());
+        }
+        // A name in a comment must not end the line.
+        story.iter().map(|line| line.replace(['\n', '\r'], " ")).collect()
+    }
+}
+
+/// How long a step takes to settle.
+fn length(shown: &Shown) -> u64 {
+    let signals = shown.outputs.iter().chain(shown.pins.iter().flatten());
+    signals.map(signal::Signal::last).max().unwrap_or(0) + 1
+}

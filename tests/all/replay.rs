@@ -1,0 +1,203 @@
+//! Replays: what `stillwire replay` writes is run by a simulator that knows nothing of the product. Every proven finding
+//! of the fixtures and of random circuits must print PULSE, and with its cover and random delays NO PULSE. The runs with
+//! `iverilog` are ignored by default; the others look at the files.
+
+use std::collections::BTreeSet;
+use std::path::{Path, PathBuf};
+use std::process::{Command, Output};
+
+use crate::pipeline::{Scan, scan};
+use crate::random_circuits::{Random, Written, module};
+
+/// Benches that one simulation runs side by side.
+const BATCH: usize = 60;
+/// Random circuits that must replay, and the number of the first.
+const CIRCUITS: u64 = 300;
+const FIRST_SEED: u64 = 500_000;
+
+fn replay(fingerprint: &str, path: &Path, to: &Path) -> Output {
+    let mut command = Command::new(env!("CARGO_BIN_EXE_stillwire"));
+    command.args(["replay", fingerprint]).arg(path).arg("--to").arg(to);
+    command.output().expect("the program starts")
+}
+
+fn files(folder: &Path, ending: &str) -> Vec<PathBuf> {
+    let entries = std::fs::read_dir(folder).expect("the folder of the replay");
+    let mut files: Vec<PathBuf> = entries.map(|entry| entry.expect("an entry").path()).collect();
+    files.retain(|file| file.to_string_lossy().ends_with(ending));
+    files.sort();
+    files
+}
+
+/// The findings that have something to replay, by fingerprint.
+fn replayable(scan: &Scan) -> BTreeSet<String> {
+    let has_witness = |finding: &&serde_json::Value| {
+        finding["verdict"] == "proven" && finding["hazards"].as_array().is_some_and(|hazards| !hazards.is_empty())
+    };
+    let findings = scan.findings().iter().filter(has_witness);
+    findings.map(|finding| finding["fingerprint"].as_str().expect("a fingerprint").to_string()).collect()
+}
+
+/// Replays every finding under `path` into folders below `to`.
+fn replay_all(path: &Path, to: &Path, benches: &mut Vec<PathBuf>) -> usize {
+    let fingerprints = replayable(&scan(&[path], &[]));
+    for fingerprint in &fingerprints {
+        let folder = to.join(fingerprint);
+        let output = replay(fingerprint, path, &folder);
+        let text = String::from_utf8_lossy(&output.stdout).into_owned() + &String::from_utf8_lossy(&output.stderr);
+        assert!(output.status.success(), "{}: {text}", path.display());
+        benches.extend(files(&folder, ".v"));
+    }
+    fingerprints.len()
+}
+
+/// Runs the benches; `Err` lists what printed the wrong word.
+fn simulate(benches: &[PathBuf], folder: &Path) -> Result<(), String> {
+    let mut wrong = String::new();
+    for batch in benches.chunks(BATCH) {
+        let program = folder.join("benches.vvp");
+        let compiled = Command::new("iverilog").args(["-g2001", "-o"]).arg(&program).args(batch).output();
+        let compiled = compiled.expect("iverilog starts");
+        assert!(compiled.status.success(), "{}", String::from_utf8_lossy(&compiled.stderr));
+        let output = Command::new("vvp").arg(&program).output().expect("vvp starts");
+        let output = String::from_utf8_lossy(&output.stdout);
+        let lines: Vec<&str> = output.lines().collect();
+        assert_eq!(lines.len(), batch.len(), "one line per bench:\n{output}");
+        for line in lines {
+            let expected = if line.contains("_cured:") { "NO PULSE " } else { "PULSE " };
+            if !line.starts_with(expected) {
+                wrong += &format!("{line}\n");
+            }
+        }
+    }
+    if wrong.is_empty() { Ok(()) } else { Err(wrong) }
+}
+
+fn fixtures(folder: &Path, found: &mut Vec<PathBuf>) {
+    for entry in std::fs::read_dir(folder).expect("a folder of fixtures") {
+        let path = entry.expect("an entry").path();
+        if path.is_dir() {
+            fixtures(&path, found);
+        } else if path.extension().is_some_and(|extension| extension == "v" || extension == "sv") {
+            found.push(path);
+        }
+    }
+}
+
+#[test]
+#[ignore = "outside: run tests/outside/run"]
+#[allow(clippy::print_stdout, reason = "how much was compared belongs to the result of an outside check")]
+fn every_finding_of_the_fixtures_replays() {
+    let folder = tempfile::tempdir().expect("a temporary folder");
+    let root = Path::new(env!("CARGO_MANIFEST_DIR")).join("fixtures");
+    let mut paths = Vec::new();
+    fixtures(&root, &mut paths);
+    paths.sort();
+    let mut benches = Vec::new();
+    let mut findings = 0;
+    for (index, path) in paths.iter().enumerate() {
+        findings += replay_all(path, &folder.path().join(index.to_string()), &mut benches);
+    }
+    let cured = benches.iter().filter(|bench| bench.to_string_lossy().contains("-cured")).count();
+    println!("{findings} findings of {} fixtures: {} benches, {cured} of them cured", paths.len(), benches.len());
+    assert!(findings > 30 && cured > 20, "{findings} findings, {cured} cured");
+    // The same module in two fixtures makes benches of one name, which no simulation can hold together.
+    let mut names = BTreeSet::new();
+    let named = |bench: &PathBuf| bench.iter().rev().take(2).map(|part| part.to_os_string()).collect::<Vec<_>>();
+    let (first, again): (Vec<PathBuf>, Vec<PathBuf>) =
+        benches.into_iter().partition(|bench| names.insert(named(bench)));
+    let result = simulate(&first, folder.path()).and_then(|()| simulate(&again, folder.path()));
+    assert_eq!(result, Ok(()));
+}
+
+#[test]
+#[ignore = "outside: run tests/outside/run"]
+#[allow(clippy::print_stdout, reason = "how much was compared belongs to the result of an outside check")]
+fn every_finding_of_random_circuits_replays() {
+    let folder = tempfile::tempdir().expect("a temporary folder");
+    let mut benches = Vec::new();
+    let (mut findings, mut circuits) = (0, 0);
+    for seed in FIRST_SEED.. {
+        if circuits == CIRCUITS {
+            break;
+        }
+        let written = Written::random(&mut Random::new(seed));
+        let file = folder.path().join(format!("t{seed}.v"));
+        std::fs::write(&file, module(seed, &written)).expect("written");
+        // A circuit without a hazard has nothing to show.
+        let found = replay_all(&file, &folder.path().join(seed.to_string()), &mut benches);
+        findings += found;
+        circuits += u64::from(found > 0);
+    }
+    let cured = benches.iter().filter(|bench| bench.to_string_lossy().contains("-cured")).count();
+    println!("{findings} findings of {circuits} random circuits: {} benches, {cured} of them cured", benches.len());
+    assert!(cured > 100, "{cured} cured");
+    assert_eq!(simulate(&benches, folder.path()), Ok(()));
+}
+
+/// A selector on a clock.
+const SELECTOR: &str = "module t(input s, a, b, d, output reg q);\n  wire r = s ? a : b;\n  \
+                        always @(posedge r) q <= d;\nendmodule\n";
+
+fn written(folder: &Path, text: &str) -> PathBuf {
+    let file = folder.join("design.v");
+    std::fs::write(&file, text).expect("written");
+    file
+}
+
+/// The dump shows the pulse: its target goes away from 1 and comes back (IEEE 1364-2005 clause 18, by the `vcd` crate).
+#[test]
+fn the_dump_shows_the_pulse() {
+    let folder = tempfile::tempdir().expect("a temporary folder");
+    let file = written(folder.path(), SELECTOR);
+    let fingerprints = replayable(&scan(&[&file], &[]));
+    let to = folder.path().join("out");
+    let output = replay(fingerprints.first().expect("a finding"), &file, &to);
+    assert!(output.status.success(), "{}", String::from_utf8_lossy(&output.stderr));
+    let dump = std::fs::read(to.join("1-static-1.vcd")).expect("the dump");
+    let mut parser = vcd::Parser::new(dump.as_slice());
+    let header = parser.parse_header().expect("a header");
+    let net = header.find_var(&["replay", "t", "r"]).expect("the net under its instance").code;
+    let mut values = Vec::new();
+    for command in parser {
+        if let vcd::Command::ChangeScalar(code, value) = command.expect("a command")
+            && code == net
+        {
+            values.push(value);
+        }
+    }
+    assert_eq!(values, [vcd::Value::V1, vcd::Value::V0, vcd::Value::V1]);
+}
+
+#[test]
+fn fingerprints_are_found_by_their_beginning() {
+    let folder = tempfile::tempdir().expect("a temporary folder");
+    let file = written(folder.path(), SELECTOR);
+    let fingerprint = replayable(&scan(&[&file], &[])).pop_first().expect("a finding");
+    let to = folder.path().join("out");
+    let output = replay(&fingerprint[..6].to_uppercase(), &file, &to);
+    assert_eq!(output.status.code(), Some(0));
+    assert!(String::from_utf8_lossy(&output.stdout).contains("static-1 on t.r when t.s"));
+    let unknown = if fingerprint.starts_with('0') { "1" } else { "0" };
+    let output = replay(unknown, &file, &to);
+    assert_eq!(output.status.code(), Some(2));
+    let message = String::from_utf8_lossy(&output.stderr).into_owned();
+    assert!(message.contains("no finding has a fingerprint that begins with"), "{message}");
+    assert!(message.contains(&fingerprint[..12]), "{message}");
+    let output = replay("xyz", &file, &to);
+    assert_eq!(output.status.code(), Some(2));
+}
+
+#[test]
+fn a_finding_without_a_witness_says_why() {
+    let folder = tempfile::tempdir().expect("a temporary folder");
+    let file = written(folder.path(), "module t(output y);\n  wire y = ~y;\nendmodule\n");
+    let scan = scan(&[&file], &[]);
+    let finding = &scan.findings()[0];
+    assert_eq!(finding["rule"], "combinational-loop");
+    let output = replay(finding["fingerprint"].as_str().expect("text"), &file, &folder.path().join("out"));
+    assert_eq!(output.status.code(), Some(2));
+    let message = String::from_utf8_lossy(&output.stderr).into_owned();
+    assert!(message.contains("nothing to replay"), "{message}");
+    assert!(!folder.path().join("out").exists(), "nothing is written");
+}
