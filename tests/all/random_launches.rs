@@ -102,8 +102,10 @@ impl Maker<'_> {
             }
             _ => self.source(Some(cell)),
         };
-        // A register that only ever takes its own value is a constant to the program.
-        let plain = if plain == present { self.invert(plain) } else { plain };
+        // A register that only ever takes its own value is a constant to the program, and so is one that takes its own
+        // clock: to the language that is the value behind the edge, to a circuit the one before.
+        let own_clock = matches!(self.machine.cells[cell].trigger, Trigger::Clock { net, .. } if net == plain);
+        let plain = if plain == present || own_clock { self.invert(present) } else { plain };
         if !latch && self.random.chance(30) { self.select(enable, plain, present) } else { plain }
     }
 
@@ -252,7 +254,7 @@ fn machine(seed: u64) -> Machine {
                 maker.machine.cell(Trigger::Enable { net: target, active }, data);
             }
             _ => {
-                let clock = Net::Input(maker.random.below(2));
+                let clock = Net::Input(usize::from(data == Net::Input(0)));
                 maker.machine.cell(Trigger::Clock { net: clock, rising: true }, data);
                 let control = Control { net: target, active: maker.random.chance(50), value: Net::Constant(false) };
                 let last = maker.machine.cells.len() - 1;
