@@ -37,8 +37,11 @@ fn pairs(graph: &Graph) -> BTreeMap<(Active, Active), Vec<usize>> {
 
 /// All findings, in order of nets.
 pub(super) fn findings(graph: &Graph, cells: &Cells<'_>, options: &Options) -> Vec<Finding> {
-    let pairs = pairs(graph).into_iter();
-    pairs.filter_map(|((set, reset), on)| finding(graph, cells, set, reset, &on, options)).collect()
+    let pairs = pairs(graph);
+    // A flip-flop with an inverted output has the same two nets the other way round.
+    let first = |set: Active, reset: Active| set < reset || !pairs.contains_key(&(reset, set));
+    let pairs = pairs.iter().filter(|&(&(set, reset), _)| first(set, reset));
+    pairs.filter_map(|(&(set, reset), on)| finding(graph, cells, set, reset, on, options)).collect()
 }
 
 fn finding(

@@ -23,7 +23,9 @@ fn scanned(verilog: &str, settings: &str) -> Scan {
 /// Rule, line and message of each finding that is about a net.
 fn found(scan: &Scan) -> Vec<(String, u64, String)> {
     let text = |value: &Value| value.as_str().unwrap_or_default().to_string();
-    let of_net = scan.findings().iter().filter(|finding| finding["net"] != "");
+    // Where resets end has its own fixtures.
+    let wanted = |finding: &&Value| finding["net"] != "" && finding["rule"] != "reset-release";
+    let of_net = scan.findings().iter().filter(wanted);
     let entry = |finding: &Value| {
         (text(&finding["rule"]), finding["at"]["line"].as_u64().unwrap_or(0), text(&finding["message"]))
     };
@@ -128,6 +130,7 @@ fn pins_of_flip_flops_and_latches() {
     let mut pins: Vec<(&str, u64, &Value, &Value)> = scan
         .findings()
         .iter()
+        .filter(|finding| finding["rule"].as_str().is_some_and(|rule| rule.ends_with("-hazard")))
         .map(|finding| {
             let pin = &finding["pin"];
             (
