@@ -4,6 +4,7 @@
 //!
 //! Invariant: a child that failed or grew is replaced, so that no input pays for another.
 
+use std::collections::{BTreeMap, BTreeSet};
 use std::io::{BufRead, BufReader, Write};
 use std::panic::{AssertUnwindSafe, catch_unwind};
 use std::path::{Path, PathBuf};
@@ -239,7 +240,7 @@ fn request(path: PathBuf) -> Request {
         libraries: Vec::new(),
         cells: Vec::new(),
         assumptions: Vec::new(),
-        severities: std::collections::BTreeMap::new(),
+        severities: BTreeMap::new(),
         today: jiff::civil::date(2026, 1, 1),
         threads: 1,
     }
@@ -268,14 +269,13 @@ fn analyse(folder: &Path, broken_tail: bool) -> Outcome {
     let left_out = !report.coverage.left_out.regions.is_empty();
     if broken_tail && outcome.complete && !left_out {
         outcome.failure = Some(Failure::new(Kind::FalselyComplete, "", "the last module is broken"));
-    } else if outcome.complete && netlist.len() < READ_BACK && !netlist.contains("  inout ") {
+    } else if outcome.complete && netlist.len() < READ_BACK && !has_two_clocks(&netlist) {
         outcome.failure = read_back(folder, &netlist);
     }
     outcome
 }
 
-/// Our own netlist must be legal input of ours. Its copies that wait for the gates (`#0`) are for simulators. Netlists
-/// with bidirectional ports are not tried: what drives such a port inside has a second driver outside.
+/// Our own netlist must be legal input of ours. Its copies that wait for the gates (`#0`) are for simulators.
 fn read_back(folder: &Path, netlist: &str) -> Option<Failure> {
     let file = folder.join("netlist.v");
     std::fs::write(&file, netlist.replace("#0; ", "")).expect("the netlist is written");
@@ -291,6 +291,15 @@ fn read_back(folder: &Path, netlist: &str) -> Option<Failure> {
     let said: Vec<String> = messages.chain(report.findings.iter().map(|finding| finding.message.clone())).collect();
     let place = said.first().map_or(String::new(), |first| without_names(first));
     Some(Failure::new(Kind::NotReadBack, place, said.join("; ")))
+}
+
+/// Whether some register is written by several processes: the form of a flip-flop with several clocks, which only a
+/// simulator reads.
+fn has_two_clocks(netlist: &str) -> bool {
+    let written = netlist.lines().filter(|line| line.contains("always @(") && line.contains("edge "));
+    let names = written.filter_map(|line| line.split_once(" <= ")?.0.split_whitespace().last());
+    let mut seen = BTreeSet::new();
+    !names.into_iter().all(|name| seen.insert(name))
 }
 
 /// A message without what differs from input to input: quoted text and digits.

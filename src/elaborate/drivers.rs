@@ -13,6 +13,10 @@ use crate::graph::{Cell, CellKind, Control, Edge, GateKind, InstanceId, NodeId, 
 use crate::source::Span;
 use crate::syntax::ast::NetKind;
 
+/// What to do about several drivers of a net, and about drivers of an input.
+const SEVERAL: &str = "leave one driver, or declare the net as `wand` or `wor` if they are meant to be joined";
+const INPUT: &str = "declare the port as `output` or `inout`, or leave the driver inside out";
+
 /// One driver of one wire.
 #[derive(Clone, Copy, Debug)]
 pub(super) struct Driver {
@@ -205,8 +209,14 @@ impl<'a> Elaborator<'a> {
             self.instance = variable.instance;
             let (storage, span, wires) = (variable.storage, variable.span, variable.wires.clone());
             let mut conflict: Option<Vec<Driver>> = None;
+            let mut driven_input: Option<Vec<Driver>> = None;
             for (offset, wire) in wires.into_iter().enumerate() {
                 if self.builder.driver(wire).is_some() || self.builder.kind(wire) != NodeKind::Wire {
+                    // What drives an input of the top from outside is not alone there.
+                    let inside = self.drivers.get(&wire).map_or(&[][..], Vec::as_slice);
+                    if inside.iter().any(|driver| driver.value != Bit::Z) {
+                        driven_input.get_or_insert(inside.to_vec());
+                    }
                     continue;
                 }
                 let drivers = self.drivers.get(&wire).cloned().unwrap_or_default();
@@ -218,7 +228,10 @@ impl<'a> Elaborator<'a> {
                 self.builder.drive(wire, node);
             }
             if let Some(drivers) = conflict {
-                self.report_conflict(id, &drivers);
+                self.report_conflict(id, &drivers, "has several drivers that are always on", SEVERAL);
+            }
+            if let Some(drivers) = driven_input {
+                self.report_conflict(id, &drivers, "is an input and also driven from inside", INPUT);
             }
         }
     }
@@ -358,11 +371,11 @@ impl<'a> Elaborator<'a> {
         }
     }
 
-    fn report_conflict(&mut self, id: VariableId, drivers: &[Driver]) {
+    fn report_conflict(&mut self, id: VariableId, drivers: &[Driver], what: &str, help: &str) {
         let variable = self.variable(id);
-        let message = format!("`{}` has several drivers that are always on; its value is unknown", variable.name);
-        let mut diagnostic = Diagnostic::new(Kind::Incomplete, "multiple drivers", message, Some(variable.span))
-            .with_help("leave one driver, or declare the net as `wand` or `wor` if they are meant to be joined");
+        let message = format!("`{}` {what}; its value is unknown", variable.name);
+        let mut diagnostic =
+            Diagnostic::new(Kind::Incomplete, "multiple drivers", message, Some(variable.span)).with_help(help);
         for span in drivers.iter().filter_map(|driver| driver.span).take(4) {
             diagnostic = diagnostic.with_also(span, "driven here");
         }

@@ -163,7 +163,7 @@ fn refused(text: &MappedText, refusal: Refusal, file: FileId) -> Box<Diagnostic>
     let (at, message, help) = match refusal {
         Refusal::TooDeep(at) => (
             at,
-            "this is nested too deeply to be parsed: more than 1,000 operators or some 200 brackets around one place",
+            "this is nested too deeply to be parsed: more than 1,000 operators, some 200 brackets or 500 modules around one place",
             "split the expression or statement; the module around it is left out",
         ),
         Refusal::TooLong(at) => (

@@ -152,6 +152,13 @@ fn net_with_several_drivers_makes_the_run_incomplete() {
     assert_incomplete(source);
 }
 
+/// The outside drives an input already, so a driver inside is a second one and must not be dropped.
+#[test]
+fn input_driven_from_inside_makes_the_run_incomplete() {
+    assert_incomplete("module t(input clk, a, r, output y); always @(posedge clk) r <= a; assign y = r; endmodule\n");
+    assert_incomplete("module t(input [1:0] r, input a, output y); assign r[1] = a; assign y = ^r; endmodule\n");
+}
+
 #[test]
 fn process_that_waits_for_a_named_event_is_no_plain_logic() {
     let source = "module t(input d, output reg q); event e; always @(e) q = d; endmodule\n";
