@@ -16,6 +16,10 @@ use crate::syntax::ast::{
     DataType, DataTypeKind, Declarator, Dim, Ident, Import, Item, ItemKind, NetKind, Package, Param, ParamKind,
 };
 
+/// The widest net or variable that is laid out bit by bit. IEEE 1800-2017, 6.9.1, asks for 65,536 at least; a bit takes
+/// some 250 bytes, and one of an adder 20 microseconds.
+const MAX_LAID_OUT: usize = 1 << 18;
+
 /// The graph is not built beyond this many nodes.
 pub(super) const NODE_LIMIT: usize = 60_000_000;
 
@@ -323,6 +327,10 @@ impl<'a> Elaborator<'a> {
     }
 
     fn lay_out(&mut self, instance: InstanceId, label: &str, ty: &Type, span: Span) -> Outcome<NetId> {
+        if ty.width > MAX_LAID_OUT {
+            let message = format!("a net or variable of {} bits, above the limit of {MAX_LAID_OUT}", ty.width);
+            return Err(wrong(message, span));
+        }
         self.check_size(ty.width, span)?;
         let suffixes = ty.suffixes();
         let scalar = suffixes.first().is_some_and(String::is_empty);

@@ -11,7 +11,7 @@ use super::value::Value;
 use crate::source::Span;
 use crate::syntax::ast::{DataType, DataTypeKind, Dim, EnumMember, Expr, ExprKind, Member};
 
-/// The widest net that is laid out bit by bit.
+/// The largest type, that of a memory included; what is laid out bit by bit has a lower limit.
 pub(super) const MAX_NET_WIDTH: usize = 1 << 24;
 
 /// An index range as declared.
