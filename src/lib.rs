@@ -140,7 +140,7 @@ fn decided(
     let assumed = resolved(request, loaded, &design)?;
     let assumed = assumptions::apply(&design.graph, &loaded.sources, assumed, &pragmas.assumptions, &options);
     design.graph = design.graph.with_static(assumed.in_force.fixed.iter().copied());
-    let outcome = rules::run(&design.graph, &watches, protection, &options);
+    let outcome = rules::run(&design.graph, &watches, &assumed.in_force, protection, &options);
     Ok(Decided { design, pragmas, unplaced, assumed, outcome })
 }
 

@@ -11,7 +11,8 @@
 use std::collections::BTreeSet;
 
 use super::function::{Cube, Function};
-use super::{Cover, HazardKind, Options, TargetVerdict, Undecided, decide};
+use super::launch::{Launcher, Unproven};
+use super::{Cause, Cover, HazardKind, Launch, Options, TargetVerdict, Undecided, Witness, decide};
 use crate::graph::cone::{Cone, FrozenCone};
 use crate::graph::{GateKind, Graph, NodeId, NodeKind};
 
@@ -37,6 +38,12 @@ pub enum Withheld {
     TooManySources,
     /// The terms would be more than anyone would write.
     TooManyTerms,
+    /// Sources that change together take the function itself through the other value.
+    Function,
+    /// Every form that was tried glitches when several sources change together.
+    Together,
+    /// The hazard is made by a latch in front of the target's logic, or comes through it.
+    Latch,
 }
 
 impl Withheld {
@@ -50,33 +57,65 @@ impl Withheld {
             Withheld::Unknown => "a term would need the value of an undriven net",
             Withheld::TooManySources => "it depends on too many sources",
             Withheld::TooManyTerms => "it would take too many terms",
+            Withheld::Function => {
+                "signals that change together take the net itself through the other value, which no arrangement of \
+                 gates removes"
+            }
+            Withheld::Together => "every form that was tried can still glitch when several signals change together",
+            Withheld::Latch => "the pulse comes through a latch, not from the gates behind it",
         }
     }
 }
 
 /// The terms that remove every hazard that `verdict` found at its target; literals are over sources. A cover that is
-/// returned is proven.
+/// returned is proven: for changes of any one source, or with `launcher`, which must be the one that made the verdict, for
+/// every event that the target can see.
 ///
 /// # Errors
 /// The reason when no proven cover was found.
-pub fn cover(graph: &Graph, verdict: &TargetVerdict, options: &Options) -> Result<Cover, Withheld> {
+pub fn cover(
+    graph: &Graph,
+    verdict: &TargetVerdict,
+    launcher: Option<&Launcher<'_>>,
+    options: &Options,
+) -> Result<Cover, Withheld> {
     if verdict.is_clean() {
         return Err(Withheld::Clean);
     }
     refuse_open(verdict)?;
+    let launched = || verdict.launches.iter().filter_map(|found| found.witness.launch.as_ref());
+    if launched().any(|launch| launch.cause == Cause::Function) {
+        return Err(Withheld::Function);
+    }
+    let witnesses = verdict.pairs.iter().flat_map(|pair| &pair.hazards).map(|(_, witness)| witness);
+    if witnesses.filter_map(|witness| witness.launch.as_ref()).chain(launched()).any(Launch::is_of_latches) {
+        return Err(Withheld::Latch);
+    }
     let options = Options { one_per_kind: false, ..*options };
-    let mut cure = Cure::new(graph, verdict.target, &options);
+    let mut cure = Cure::new(graph, verdict, launcher.is_some(), &options);
     let cover = if shows(verdict, HazardKind::Dynamic) { cure.replace()? } else { cure.amend(verdict)? };
-    Ok(cover)
+    match launcher.map_or(Ok(()), |launcher| launcher.proves(verdict, &cover)) {
+        Ok(()) => Ok(cover),
+        Err(Unproven::Shows(Cause::Function)) => Err(Withheld::Function),
+        Err(Unproven::Shows(Cause::Logic)) => Err(Withheld::Together),
+        Err(Unproven::Open) => Err(Withheld::Undecided),
+    }
 }
 
 fn shows(verdict: &TargetVerdict, kind: HazardKind) -> bool {
-    verdict.pairs.iter().any(|pair| pair.hazards.iter().any(|(found, _)| *found == kind))
+    found(verdict).any(|(found, _)| found == kind)
+}
+
+/// All hazards of a verdict, those of launches last.
+fn found(verdict: &TargetVerdict) -> impl Iterator<Item = (HazardKind, &Witness)> {
+    let pairs = verdict.pairs.iter().flat_map(|pair| &pair.hazards).map(|(kind, witness)| (*kind, witness));
+    pairs.chain(verdict.launches.iter().map(|found| (found.kind, &found.witness)))
 }
 
 /// A verdict with open questions cannot be cured with proof.
 fn refuse_open(verdict: &TargetVerdict) -> Result<(), Withheld> {
-    let mut reasons = verdict.pairs.iter().flat_map(|pair| &pair.undecided).map(|(_, reason)| *reason);
+    let launches = verdict.open_launches.iter().map(|open| open.reason);
+    let mut reasons = verdict.pairs.iter().flat_map(|pair| &pair.undecided).map(|(_, reason)| *reason).chain(launches);
     match reasons.next() {
         None => Ok(()),
         Some(Undecided::Loop) => Err(Withheld::Loop),
@@ -166,14 +205,19 @@ fn product(cone: &mut Cone, cube: &Cube, near: NodeId) -> NodeId {
 struct Cure<'a> {
     cone: FrozenCone,
     target: NodeId,
+    /// The sources whose changes are to be cured, when others are known not to change alone.
+    only: Option<BTreeSet<NodeId>>,
     options: &'a Options,
 }
 
 impl<'a> Cure<'a> {
-    fn new(graph: &Graph, target: NodeId, options: &'a Options) -> Self {
+    fn new(graph: &Graph, verdict: &TargetVerdict, selects: bool, options: &'a Options) -> Self {
+        let target = verdict.target;
         let cone = Cone::of(graph, &[target]).freeze();
         let target = cone.copy_of(target).unwrap_or(target);
-        Self { cone, target, options }
+        let sources = || verdict.pairs.iter().filter_map(|pair| cone.copy_of(pair.source)).collect();
+        let only = selects.then(sources);
+        Self { cone, target, only, options }
     }
 
     fn original(&self, node: NodeId) -> NodeId {
@@ -184,10 +228,10 @@ impl<'a> Cure<'a> {
     fn amend(&mut self, verdict: &TargetVerdict) -> Result<Cover, Withheld> {
         let mut function = Function::new(&self.cone.graph, self.target, self.options);
         let mut terms = Terms::default();
-        let mut found = self.localised(verdict);
+        let mut open = self.localised(verdict);
         loop {
             let mut grown = false;
-            for (kind, witness) in found.pairs.iter().flat_map(|pair| &pair.hazards) {
+            for (kind, witness) in self::found(&open) {
                 match kind {
                     HazardKind::Dynamic => return self.replace(),
                     HazardKind::Static0 => grown |= terms.add(function.span(witness, false)?, false),
@@ -200,13 +244,14 @@ impl<'a> Cure<'a> {
             if !grown {
                 return Err(Withheld::Undecided);
             }
-            found = self.decided(&terms)?;
-            if found.is_clean() {
+            open = self.decided(&terms)?;
+            if open.is_clean() {
                 break;
             }
         }
         let mut index = 0;
-        while terms.len() > 1 && index < terms.len() {
+        // The decision asked below knows nothing of the terms that launches need.
+        while verdict.launches.is_empty() && terms.len() > 1 && index < terms.len() {
             let fewer = terms.without(index);
             if self.decided(&fewer)?.is_clean() {
                 terms = fewer;
@@ -221,11 +266,10 @@ impl<'a> Cure<'a> {
     fn localised(&self, verdict: &TargetVerdict) -> TargetVerdict {
         let mut verdict = verdict.clone();
         let local = |node: &mut NodeId| *node = self.cone.copy_of(*node).unwrap_or(*node);
-        for pair in &mut verdict.pairs {
-            for (_, witness) in &mut pair.hazards {
-                witness.changes.iter_mut().for_each(|(node, _)| local(node));
-                witness.holds.iter_mut().for_each(|(node, _)| local(node));
-            }
+        let pairs = verdict.pairs.iter_mut().flat_map(|pair| &mut pair.hazards).map(|(_, witness)| witness);
+        for witness in pairs.chain(verdict.launches.iter_mut().map(|found| &mut found.witness)) {
+            witness.changes.iter_mut().for_each(|(node, _)| local(node));
+            witness.holds.iter_mut().for_each(|(node, _)| local(node));
         }
         verdict
     }
@@ -234,7 +278,11 @@ impl<'a> Cure<'a> {
     fn decided(&self, terms: &Terms) -> Result<TargetVerdict, Withheld> {
         let mut cone = Cone::of(&self.cone.graph, &[self.target]);
         let cured = terms.append(&mut cone, self.target);
-        decided(&cone.freeze().graph, cured, self.options)
+        let mut verdict = decided(&cone.freeze().graph, cured, self.options)?;
+        if let Some(only) = &self.only {
+            verdict.pairs.retain(|pair| only.contains(&pair.source));
+        }
+        Ok(verdict)
     }
 
     /// Prime implicants in place of the logic.

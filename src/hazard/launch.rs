@@ -6,10 +6,17 @@
 mod assume;
 mod assumptions;
 mod cells;
+mod data;
+mod describe;
 mod encode;
 mod exact;
 mod fabric;
+mod launcher;
+mod reach;
+mod region;
 mod shown;
 
 pub use assumptions::Assumptions;
+pub use launcher::Launcher;
+pub(super) use launcher::Unproven;
 pub use shown::{Shown, shown};

@@ -71,7 +71,8 @@ pub struct Launch {
     /// The sources in front of the target that move in the first step, with their value before; sorted by node. The root
     /// is among them when it reaches the target.
     pub first: Vec<(NodeId, bool)>,
-    /// Those that move in the second step, with their value between the steps; sorted by node.
+    /// Those that move in the second step, with their value between the steps; sorted by node. Empty when the first step
+    /// shows the hazard.
     pub second: Vec<(NodeId, bool)>,
     /// Outputs of latches that pass their data in the step that shows the hazard, so that what lies in front of them is
     /// part of the target's logic; the sources in this witness are those in front of them. Sorted.
@@ -79,10 +80,15 @@ pub struct Launch {
     /// Outputs of latches that do anything at all in the step that shows the hazard, because their data moves while they
     /// open or close. They count among the sources that move. Sorted.
     pub raced: Vec<NodeId>,
-    /// Sources outside the target's logic that must have these values for the event to happen; sorted by node.
-    pub conditions: Vec<(NodeId, bool)>,
     /// The target before, between and after the two steps.
     pub target: [bool; 3],
+}
+
+impl Launch {
+    /// Whether latches in front of the target's logic make or pass the hazard.
+    pub fn is_of_latches(&self) -> bool {
+        !self.passing.is_empty() || !self.raced.is_empty()
+    }
 }
 
 /// For which states a claim was made.

@@ -10,7 +10,7 @@ use std::sync::LazyLock;
 use super::cone::{Cone, Edge, Op};
 use super::parity::Region;
 use super::simulate::{self, Lanes, Response};
-use super::tables::Need;
+use super::tables::{Need, Promises};
 use super::wave::{self, Wave};
 use super::{HazardKind, Witness};
 use crate::graph::GateKind;
@@ -199,29 +199,37 @@ impl<'a> Lifted<'a> {
         });
         match self.cone.ops[self.kept[position]] {
             Op::Zero | Op::Free { .. } => self.sets[position],
-            Op::And => pins.fold(only(Wave::constant(true)), |all, set| PAIRS.and(all, set)),
-            Op::Xor => pins.fold(only(Wave::constant(false)), |all, set| PAIRS.xor(all, set)),
-            Op::Enter => {
-                let moved = pins.flat_map(members).map(|pin| Wave { h: pin.moves(), ..pin });
-                moved.fold(0, |all, wave| all | only(wave))
+            op => lifted(op, &self.cone.tables, pins),
+        }
+    }
+}
+
+/// All waveforms that a node with pins can have when each of them has any of its set.
+pub(super) fn lifted(op: Op, tables: &[Promises], pins: impl Iterator<Item = u8>) -> u8 {
+    match op {
+        Op::Zero | Op::Free { .. } => only(Wave::constant(false)),
+        Op::And => pins.fold(only(Wave::constant(true)), |all, set| PAIRS.and(all, set)),
+        Op::Xor => pins.fold(only(Wave::constant(false)), |all, set| PAIRS.xor(all, set)),
+        Op::Enter => {
+            let moved = pins.flat_map(members).map(|pin| Wave { h: pin.moves(), ..pin });
+            moved.fold(0, |all, wave| all | only(wave))
+        }
+        Op::Calm => pins.flat_map(members).fold(0, |all, pin| all | only(Wave { h: false, ..pin })),
+        Op::Table(table) => {
+            let table = &tables[table as usize];
+            let pins: Vec<u8> = pins.collect();
+            if pins.iter().all(|set| set.count_ones() == 1) {
+                let waves: Vec<Wave> = pins.iter().flat_map(|&set| members(set)).collect();
+                return only(table.wave(&waves));
             }
-            Op::Calm => pins.flat_map(members).fold(0, |all, pin| all | only(Wave { h: false, ..pin })),
-            Op::Table(table) => {
-                let table = &self.cone.tables[table as usize];
-                let pins: Vec<u8> = pins.collect();
-                if pins.iter().all(|set| set.count_ones() == 1) {
-                    let waves: Vec<Wave> = pins.iter().flat_map(|&set| members(set)).collect();
-                    return only(table.wave(&waves));
-                }
-                let fits = |need: &Need, set: u8| match need {
-                    Need::Value(value) => set == only(Wave::constant(*value)),
-                    Need::Still => set & !STILL == 0,
-                    Need::Nothing => true,
-                };
-                let promise =
-                    table.rows.iter().find(|(needs, _)| needs.iter().zip(&pins).all(|(need, &set)| fits(need, set)));
-                promise.map_or(ANY, |&(_, value)| only(Wave::constant(value)))
-            }
+            let fits = |need: &Need, set: u8| match need {
+                Need::Value(value) => set == only(Wave::constant(*value)),
+                Need::Still => set & !STILL == 0,
+                Need::Nothing => true,
+            };
+            let promise =
+                table.rows.iter().find(|(needs, _)| needs.iter().zip(&pins).all(|(need, &set)| fits(need, set)));
+            promise.map_or(ANY, |&(_, value)| only(Wave::constant(value)))
         }
     }
 }
@@ -229,9 +237,9 @@ impl<'a> Lifted<'a> {
 /// Every waveform.
 const ANY: u8 = 0xff;
 /// The two clean constants.
-const STILL: u8 = 1 << 0 | 1 << 3;
+pub(super) const STILL: u8 = 1 << 0 | 1 << 3;
 
-fn only(wave: Wave) -> u8 {
+pub(super) fn only(wave: Wave) -> u8 {
     1 << (u8::from(wave.i) | u8::from(wave.f) << 1 | u8::from(wave.h) << 2)
 }
 
@@ -239,12 +247,12 @@ fn member(index: u8) -> Wave {
     Wave { i: index & 1 == 1, f: index & 2 == 2, h: index & 4 == 4 }
 }
 
-fn members(set: u8) -> impl Iterator<Item = Wave> {
+pub(super) fn members(set: u8) -> impl Iterator<Item = Wave> {
     (0..8u8).filter(move |index| set >> index & 1 == 1).map(member)
 }
 
 /// Inversion swaps waveform 0 with 3, 1 with 2, 4 with 7 and 5 with 6.
-fn inverted(set: u8) -> u8 {
+pub(super) fn inverted(set: u8) -> u8 {
     (set >> 3 & 0x11) | (set >> 1 & 0x22) | (set << 1 & 0x44) | (set << 3 & 0x88)
 }
 

@@ -260,7 +260,6 @@ mod tests {
             second: vec![(node("q"), true)],
             passing: Vec::new(),
             raced: Vec::new(),
-            conditions: Vec::new(),
             target: [false, true, false],
         };
         let changes_of = vec![(node("c"), false), (node("q"), true)];
@@ -283,7 +282,6 @@ mod tests {
             second: Vec::new(),
             passing: Vec::new(),
             raced: vec![node("l")],
-            conditions: Vec::new(),
             target: [false; 3],
         };
         let holds = vec![(node("c"), false)];

@@ -98,6 +98,8 @@ mod tests {
                 witness: Witness { changes: Vec::new(), holds: Vec::new(), target: (true, true), launch: None },
                 calm: false,
             },
+            launch: None,
+            reach: "any-state",
         }
     }
 

@@ -127,6 +127,21 @@ struct HazardOut<'a> {
     harm: &'a str,
     before: BTreeMap<&'a str, u8>,
     after: BTreeMap<&'a str, u8>,
+    launch: Option<LaunchOut<'a>>,
+    reach: &'static str,
+}
+
+/// `first` and `second` give the value that each signal has when its step begins.
+#[derive(Serialize)]
+struct LaunchOut<'a> {
+    root: &'a str,
+    edge: &'static str,
+    step: &'static str,
+    first: BTreeMap<&'a str, u8>,
+    second: BTreeMap<&'a str, u8>,
+    passing: &'a [String],
+    raced: &'a [String],
+    pin: [u8; 3],
 }
 
 #[derive(Serialize)]
@@ -166,6 +181,7 @@ struct CoverageOut<'a> {
     black_boxes: Vec<BlackBoxOut<'a>>,
     pins: BTreeMap<&'static str, CountOut>,
     open_questions: usize,
+    clean_if_reached: usize,
     cells: Cells,
     loops: Loops,
     left_out: LeftOutOut<'a>,
@@ -268,6 +284,17 @@ fn finding_out<'a>(finding: &'a Finding, place: &impl Fn(Option<Span>) -> Option
                 harm: &hazard.harm,
                 before: values(&hazard.before),
                 after: values(&hazard.after),
+                launch: hazard.launch.as_ref().map(|launch| LaunchOut {
+                    root: &launch.root,
+                    edge: if launch.rises { "rising" } else { "falling" },
+                    step: launch.step,
+                    first: values(&launch.first),
+                    second: values(&launch.second),
+                    passing: &launch.passing,
+                    raced: &launch.raced,
+                    pin: launch.pin.map(u8::from),
+                }),
+                reach: hazard.reach,
             })
             .collect(),
         cover: finding.cover.as_ref().map(|cover| CoverOut {
@@ -327,6 +354,7 @@ fn coverage_out<'a>(report: &'a Report, place: &impl Fn(Option<Span>) -> Option<
             .collect(),
         pins: PinKind::ALL.into_iter().map(count).collect(),
         open_questions: coverage.pins.open_questions,
+        clean_if_reached: coverage.pins.clean_if_reached,
         cells: Cells { flip_flops: coverage.cells.flip_flops, latches: coverage.cells.latches },
         loops: Loops { found: coverage.loops },
         left_out: LeftOutOut {

@@ -133,7 +133,13 @@ fn pins(report: &Report, text: &mut String) {
     }
     line("together", pins.total());
     // What was not asked is no less worth saying than what was not read.
-    text.push_str("  asked of each: whether a change of one signal alone can glitch it, not of several together\n");
+    text.push_str(
+        "  asked of each: whether a change of one signal, or an edge with all that it launches, can glitch it",
+    );
+    text.push_str(if pins.get(PinKind::Output).nets > 0 { "; of outputs: one signal only\n" } else { "\n" });
+    if pins.clean_if_reached > 0 {
+        let _ = writeln!(text, "  of the clean, only in the states reachable from reset: {}", pins.clean_if_reached);
+    }
 }
 
 /// What the verdicts rest on besides the design; those taken on trust come first.

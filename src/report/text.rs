@@ -11,7 +11,7 @@ use codespan_reporting::term::{self, Config};
 
 use super::held::held;
 use super::{Message, Report, summary, waveform};
-use crate::rules::{Finding, Hazard, Severity};
+use crate::rules::{Finding, Hazard, PinKind, Severity};
 use crate::source::{FileId, SourceSet, Span};
 
 /// How the text is to look.
@@ -150,7 +150,10 @@ fn of_finding(sources: &SourceSet, finding: &Finding) -> Diagnostic<FileId> {
     if let Some(cover) = &finding.cover {
         let effect = match (cover.proven, &finding.loop_) {
             (false, _) => "not proven",
-            (true, None) => "proven: with it, no change of one signal can glitch this net",
+            (true, None) if finding.pin.as_ref().is_some_and(|pin| pin.kind == PinKind::Output) => {
+                "proven: with it, no change of one signal can glitch this net"
+            }
+            (true, None) => "proven: with it, no change of one signal and no clock edge can glitch this net",
             (true, Some(_)) => "proven: with it, no change of one signal can lose the value",
         };
         notes.push(format!("cover ({effect}):\n  {}", wrapped(&cover.verilog).replace('\n', "\n  ")));
@@ -191,12 +194,27 @@ fn others(finding: &Finding) -> String {
     let mut lines = vec!["and by other changes:".to_string()];
     for hazard in rest.iter().take(SHOWN_HAZARDS) {
         let on = if hazard.net == finding.net { String::new() } else { format!(" on {}", hazard.net) };
-        lines.push(format!("  {}{on} by {}{}", hazard.kind, hazard.changes.join(", "), conditions(hazard)));
+        let event = match &hazard.launch {
+            Some(launch) if hazard.changes.len() != 1 || launch.step != "second" => {
+                let edge = if launch.rises { "rising" } else { "falling" };
+                format!(" with the {edge} edge of {}", launch.root)
+            }
+            _ => String::new(),
+        };
+        lines.push(format!("  {}{on} by {}{event}{}", hazard.kind, changing(hazard), conditions(hazard)));
     }
     if rest.len() > SHOWN_HAZARDS {
         lines.push(format!("  and {} more, all in the JSON output", rest.len() - SHOWN_HAZARDS));
     }
     lines.join("\n")
+}
+
+/// The signals that change; latches that race when nothing else does.
+fn changing(hazard: &Hazard) -> String {
+    match &hazard.launch {
+        Some(launch) if hazard.changes.is_empty() => format!("the latch {}", launch.raced.join(", ")),
+        _ => hazard.changes.join(", "),
+    }
 }
 
 /// ": while a = 1, b = 0", when that is short enough.

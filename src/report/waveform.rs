@@ -9,11 +9,7 @@ const SHOWN_HELD: usize = 8;
 
 /// The drawing, one line per signal, names aligned, under a line that says what it is.
 pub(super) fn render(hazard: &Hazard) -> String {
-    let mut rows: Vec<(String, &str, String)> = Vec::new();
-    for (name, before) in hazard.before.iter().filter(|(name, _)| hazard.changes.contains(name)) {
-        let (drawn, word) = if *before { ("~~~\\______", "falls") } else { ("___/~~~~~~", "rises") };
-        rows.push((name.clone(), drawn, word.to_string()));
-    }
+    let mut rows: Vec<(String, &str, String)> = changes(hazard);
     let held = held(hazard);
     for signal in held.iter().take(SHOWN_HELD) {
         let drawn = match (signal.bits.contains(&false), signal.bits.contains(&true)) {
@@ -25,11 +21,19 @@ pub(super) fn render(hazard: &Hazard) -> String {
         let word = if signal.name == hazard.net { "is fed back as" } else { "holds" };
         rows.push((signal.name.clone(), drawn, format!("{word} {}", signal.value())));
     }
-    let (drawn, word) = match (hazard.pin, hazard.kind) {
-        ((false, false), _) => ("____/~\\___", "should hold 0, pulses"),
-        ((true, true), _) => ("~~~~\\_/~~~", "should hold 1, pulses"),
-        ((false, true), _) => ("___/~\\_/~~", "should rise once, bounces"),
-        ((true, false), _) => ("~~~\\_/~\\__", "should fall once, bounces"),
+    let late = hazard.launch.as_ref().is_some_and(|launch| launch.step == "second");
+    let both = hazard.launch.as_ref().is_some_and(|launch| launch.step == "both");
+    let (drawn, word) = match hazard.pin {
+        (false, false) if both => ("___/~~\\____", "rises with the edge and is taken back"),
+        (true, true) if both => ("~~~\\__/~~~~", "falls with the edge and is taken back"),
+        (false, false) if late => ("______/~\\_", "should hold 0, pulses"),
+        (true, true) if late => ("~~~~~~\\_/~", "should hold 1, pulses"),
+        (false, true) if late => ("_____/~\\_/", "should rise once, bounces"),
+        (true, false) if late => ("~~~~~\\_/~\\", "should fall once, bounces"),
+        (false, false) => ("____/~\\___", "should hold 0, pulses"),
+        (true, true) => ("~~~~\\_/~~~", "should hold 1, pulses"),
+        (false, true) => ("___/~\\_/~~", "should rise once, bounces"),
+        (true, false) => ("~~~\\_/~\\__", "should fall once, bounces"),
     };
     rows.push((hazard.net.clone(), drawn, word.to_string()));
     let width = rows.iter().map(|(name, _, _)| name.chars().count()).max().unwrap_or(0);
@@ -40,4 +44,27 @@ pub(super) fn render(hazard: &Hazard) -> String {
         lines.insert(lines.len() - 1, format!("  and {left_out} more that hold, all in the JSON output"));
     }
     lines.join("\n")
+}
+
+/// What changes, in order of time: in an event the root, then what it moves.
+fn changes(hazard: &Hazard) -> Vec<(String, &'static str, String)> {
+    let row = |name: &str, before: bool, late: bool| {
+        let (drawn, word) = match (before, late) {
+            (false, false) => ("___/~~~~~~", "rises"),
+            (true, false) => ("~~~\\______", "falls"),
+            (false, true) => ("_____/~~~~", "then rises"),
+            (true, true) => ("~~~~~\\____", "then falls"),
+        };
+        (name.to_string(), drawn, word.to_string())
+    };
+    let Some(launch) = &hazard.launch else {
+        let changing = hazard.before.iter().filter(|(name, _)| hazard.changes.contains(name));
+        return changing.map(|(name, before)| row(name, *before, false)).collect();
+    };
+    let mut rows = vec![row(&launch.root, !launch.rises, false)];
+    let first = launch.first.iter().filter(|(name, _)| *name != launch.root && launch.step != "second");
+    rows.extend(first.map(|(name, before)| row(name, *before, false)));
+    rows.extend(launch.second.iter().map(|(name, before)| row(name, *before, true)));
+    rows.extend(launch.raced.iter().map(|name| (name.clone(), "==========", "opens or closes".to_string())));
+    rows
 }

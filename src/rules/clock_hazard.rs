@@ -4,14 +4,14 @@
 use super::evidence::{self, Subject};
 use super::finding::{Finding, Rule, Severity};
 use super::pins::{self, Use};
-use super::words;
+use super::{Context, words};
 use crate::graph::Graph;
-use crate::hazard::{HazardKind, Options, TargetVerdict};
+use crate::hazard::{HazardKind, TargetVerdict};
 
 const CURE: &str = "to do: gate the clock with a latch that is transparent while the clock is inactive, so that the \
                     enable holds still during the other phase, or use a clock enable in front of the data input";
 
-pub(super) fn finding(graph: &Graph, verdict: &TargetVerdict, uses: &[Use], options: &Options) -> Option<Finding> {
+pub(super) fn finding(graph: &Graph, verdict: &TargetVerdict, uses: &[Use], context: &Context<'_>) -> Option<Finding> {
     let pin = pins::pin(graph, uses);
     let cells = words::cells(graph, uses);
     let net = super::names::name(graph, verdict.target);
@@ -21,7 +21,7 @@ pub(super) fn finding(graph: &Graph, verdict: &TargetVerdict, uses: &[Use], opti
         graph,
         verdict,
         &Subject { rule: Rule::ClockHazard, pin, what, judge: &judge, cure: CURE },
-        options,
+        context,
     )
 }
 

@@ -5,7 +5,7 @@ use std::collections::BTreeSet;
 
 use super::PinKind;
 use crate::graph::{CellKind, Graph, NodeId};
-use crate::hazard::TargetVerdict;
+use crate::hazard::{Reach, TargetVerdict};
 
 /// How many bits are stored, by kind of cell. A bit that several clocks load is one bit.
 #[derive(Clone, Copy, PartialEq, Eq, Debug, Default)]
@@ -44,6 +44,8 @@ pub struct PinCoverage {
     counts: [NetCount; PinKind::ALL.len()],
     /// Questions (source against net, per kind of hazard) that nobody answered, also on nets with a proven hazard.
     pub open_questions: usize,
+    /// Clean nets whose proof needs that only the states reachable from reset occur.
+    pub clean_if_reached: usize,
 }
 
 impl PinCoverage {
@@ -73,9 +75,12 @@ impl PinCoverage {
         count.nets += 1;
         let mut hazard = false;
         let mut undecided = false;
-        for pair in verdicts.into_iter().flatten().flat_map(|verdict| &verdict.pairs) {
-            hazard |= !pair.hazards.is_empty();
-            undecided |= !pair.undecided.is_empty();
+        let mut reached = false;
+        for verdict in verdicts.into_iter().flatten() {
+            hazard |= verdict.pairs.iter().any(|pair| !pair.hazards.is_empty()) || !verdict.launches.is_empty();
+            undecided |= verdict.pairs.iter().any(|pair| !pair.undecided.is_empty());
+            undecided |= !verdict.open_launches.is_empty();
+            reached |= verdict.reach == Reach::ReachableStates;
         }
         if hazard {
             count.hazard += 1;
@@ -83,6 +88,7 @@ impl PinCoverage {
             count.undecided += 1;
         } else {
             count.clean += 1;
+            self.clean_if_reached += usize::from(reached);
         }
     }
 }

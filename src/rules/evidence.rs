@@ -8,9 +8,11 @@ use std::collections::BTreeSet;
 
 use super::cover_text;
 use super::finding::{CoverText, Finding, Hazard, Pin, Rule, Severity, TraceStep, Transition, Verdict};
-use super::{fingerprint, names, pins, words};
+use super::{Context, fingerprint, launch_text, names, pins, words};
 use crate::graph::{Graph, InstanceId, NodeId, NodeKind};
-use crate::hazard::{self, HazardKind, Options, Path, Paths, TargetVerdict, Undecided, Witness};
+use crate::hazard::{
+    self, Cause, HazardKind, LaunchHazard, Path, Paths, Reach, Step, TargetVerdict, Undecided, Witness,
+};
 use crate::source::Span;
 
 /// What a hazard of a kind does to this pin: how bad it is, and in words.
@@ -32,7 +34,7 @@ pub(super) fn finding(
     graph: &Graph,
     verdict: &TargetVerdict,
     subject: &Subject<'_>,
-    options: &Options,
+    context: &Context<'_>,
 ) -> Option<Finding> {
     if verdict.is_clean() {
         return None;
@@ -41,7 +43,8 @@ pub(super) fn finding(
     let net = names::name(graph, root);
     let hazards = ranked(graph, verdict, subject.judge);
     let undriven = pins::is_undriven(graph, root);
-    let sources: BTreeSet<NodeId> = hazards.iter().map(|ranked| ranked.source).collect();
+    let sources: BTreeSet<NodeId> =
+        verdict.pairs.iter().filter(|pair| !pair.hazards.is_empty()).map(|pair| pair.source).collect();
     let identity = fingerprint::of_cone(graph, subject.rule, &net, &[root]);
     let mut finding = Finding {
         rule: subject.rule,
@@ -55,7 +58,7 @@ pub(super) fn finding(
         net: net.clone(),
         bits: None,
         pin: Some(subject.pin.clone()),
-        hazards: hazards.iter().map(|ranked| ranked.hazard(graph, root, options)).collect(),
+        hazards: hazards.iter().map(|ranked| ranked.hazard(graph, root, context)).collect(),
         cover: None,
         loop_: None,
         notes: Vec::new(),
@@ -67,28 +70,39 @@ pub(super) fn finding(
     if let Some(lead) = hazards.first() {
         finding.severity = lead.severity;
         finding.verdict = Verdict::Proven;
-        let who = words::who(&names::name(graph, lead.source), sources.len());
-        finding.message = format!("{who} {}", words::can(lead.kind, &subject.what));
+        let can = words::can(lead.kind, &subject.what);
         let paths = hazard::paths(graph, root, lead.witness);
-        finding.trace = trace(graph, root, lead.source, &paths, finding.at);
-        let (cover, note) = cover(graph, verdict, options);
+        let launch = lead.witness.launch.as_ref().filter(|launch| lead.launched || launch.is_of_latches());
+        match launch {
+            Some(launch) => {
+                finding.message = launch_text::message(graph, launch, &can);
+                finding.trace = launch_text::trace(graph, root, launch, &paths, finding.at);
+            }
+            None => {
+                let who = words::who(&names::name(graph, lead.source), sources.len());
+                finding.message = format!("{who} {can}");
+                finding.trace = trace(graph, root, lead.source, &paths, finding.at);
+            }
+        }
+        let (cover, note) = cover(graph, verdict, context);
         finding.cover = cover;
         finding.notes.extend(note);
+        finding.notes.extend(launch_text::notes(verdict));
     } else {
         finding.message = format!("not decided: whether {} can glitch", subject.what);
         let done = if undriven { "declared" } else { "driven" };
         finding.trace.push(TraceStep::new(finding.at, format!("`{net}` is {done} here")));
     }
     finding.notes.extend(undecided(graph, verdict));
-    if !undriven {
+    if !undriven && !launch_text::has_its_own_cure(verdict) {
         finding.notes.push(subject.cure.to_string());
     }
     Some(finding)
 }
 
 /// The cover of a target in words, or why there is none.
-fn cover(graph: &Graph, verdict: &TargetVerdict, options: &Options) -> (Option<CoverText>, Option<String>) {
-    match hazard::cover(graph, verdict, options) {
+fn cover(graph: &Graph, verdict: &TargetVerdict, context: &Context<'_>) -> (Option<CoverText>, Option<String>) {
+    match hazard::cover(graph, verdict, context.launcher, context.options) {
         Ok(cover) => match cover_text::of(graph, verdict.target, &cover) {
             Some(text) => (Some(text), None),
             None => {
@@ -111,21 +125,30 @@ struct Ranked<'a> {
     witness: &'a Witness,
     severity: Severity,
     harm: String,
+    reach: Reach,
+    /// Shown by no single change; the source is the root of the event.
+    launched: bool,
 }
 
-/// All hazards of a target, the lead first, the others by source and kind.
+/// All hazards of a target, the lead first, the others by source and kind, those of launches behind them.
 fn ranked<'a>(graph: &Graph, verdict: &'a TargetVerdict, judge: &Judge<'_>) -> Vec<Ranked<'a>> {
     let mut all: Vec<Ranked<'a>> = Vec::new();
     for pair in &verdict.pairs {
         for (kind, witness) in &pair.hazards {
             let (severity, harm) = judge(*kind);
-            all.push(Ranked { source: pair.source, kind: *kind, witness, severity, harm });
+            let reach = verdict.reach;
+            all.push(Ranked { source: pair.source, kind: *kind, witness, severity, harm, reach, launched: false });
         }
     }
-    all.sort_by_cached_key(|ranked| (names::name(graph, ranked.source), ranked.kind));
+    for LaunchHazard { kind, witness, reach } in &verdict.launches {
+        let Some(launch) = &witness.launch else { continue };
+        let (severity, harm) = judge(*kind);
+        all.push(Ranked { source: launch.root, kind: *kind, witness, severity, harm, reach: *reach, launched: true });
+    }
+    all.sort_by_cached_key(|ranked| (ranked.launched, names::name(graph, ranked.source), ranked.kind));
     let lead = (0..all.len()).min_by_key(|&index| {
         let ranked = &all[index];
-        (std::cmp::Reverse(ranked.severity), ranked.kind, ranked.witness.holds.len(), index)
+        (std::cmp::Reverse(ranked.severity), ranked.launched, ranked.kind, ranked.witness.holds.len(), index)
     });
     if let Some(lead) = lead {
         all[..=lead].rotate_right(1);
@@ -134,14 +157,15 @@ fn ranked<'a>(graph: &Graph, verdict: &'a TargetVerdict, judge: &Judge<'_>) -> V
 }
 
 /// All hazards of a target in words, the lead first.
-pub(super) fn hazards(graph: &Graph, verdict: &TargetVerdict, judge: &Judge<'_>, options: &Options) -> Vec<Hazard> {
-    ranked(graph, verdict, judge).iter().map(|ranked| ranked.hazard(graph, verdict.target, options)).collect()
+pub(super) fn hazards(graph: &Graph, verdict: &TargetVerdict, judge: &Judge<'_>, context: &Context<'_>) -> Vec<Hazard> {
+    ranked(graph, verdict, judge).iter().map(|ranked| ranked.hazard(graph, verdict.target, context)).collect()
 }
 
 impl Ranked<'_> {
-    fn hazard(&self, graph: &Graph, target: NodeId, options: &Options) -> Hazard {
+    fn hazard(&self, graph: &Graph, target: NodeId, context: &Context<'_>) -> Hazard {
         let mut hazard = hazard_text(graph, target, self.kind, self.witness, self.harm.clone());
-        hazard.transition.calm = options.ignore_operators;
+        hazard.transition.calm = context.options.ignore_operators;
+        hazard.reach = launch_text::reach(self.reach);
         hazard
     }
 }
@@ -164,8 +188,31 @@ pub(super) fn hazard_text(graph: &Graph, target: NodeId, kind: HazardKind, witne
     let mut changes: Vec<String> = witness.changes.iter().map(|&(node, _)| names::name(graph, node)).collect();
     changes.sort();
     let net = names::name(graph, target);
-    let transition = Transition { target, witness: witness.clone(), calm: false };
-    Hazard { net, kind: kind.name(), cause: "logic", changes, harm, before, after, pin: witness.target, transition }
+    let launch = witness.launch.as_ref();
+    let cause = match launch.map(|launch| launch.cause) {
+        Some(Cause::Function) => "function",
+        Some(Cause::Logic) | None => "logic",
+    };
+    // Where both steps matter, a source may come back to where it was.
+    if let Some(launch) = launch.filter(|launch| launch.step == Step::Both) {
+        for (name, value) in &mut after {
+            let last = launch.first.iter().chain(&launch.second).rfind(|&&(node, _)| names::name(graph, node) == *name);
+            *value = last.map_or(*value, |&(_, before)| !before);
+        }
+    }
+    Hazard {
+        net,
+        kind: kind.name(),
+        cause,
+        changes,
+        harm,
+        before,
+        after,
+        pin: witness.target,
+        transition: Transition { target, witness: witness.clone(), calm: false },
+        launch: launch.map(|launch| launch_text::of(graph, launch)),
+        reach: launch_text::reach(Reach::AnyState),
+    }
 }
 
 /// One sentence per reason why questions about this target stayed open.
@@ -173,10 +220,12 @@ fn undecided(graph: &Graph, verdict: &TargetVerdict) -> Vec<String> {
     let mut notes = Vec::new();
     for reason in [Undecided::Budget, Undecided::Loop, Undecided::Undriven] {
         let open = |why: &(HazardKind, Undecided)| why.1 == reason;
-        let pairs: Vec<_> = verdict.pairs.iter().filter(|pair| pair.undecided.iter().any(open)).collect();
-        let Some(first) = pairs.first() else { continue };
-        let first = names::name(graph, first.source);
-        let who = match pairs.len() {
+        let pairs = verdict.pairs.iter().filter(|pair| pair.undecided.iter().any(open)).map(|pair| pair.source);
+        let launches = verdict.open_launches.iter().filter(|open| open.reason == reason).map(|open| open.root);
+        let sources: BTreeSet<NodeId> = pairs.chain(launches).collect();
+        let Some(&first) = sources.first() else { continue };
+        let first = names::name(graph, first);
+        let who = match sources.len() {
             1 => format!("a change of `{first}`"),
             more => format!("a change of `{first}` or of {}", words::count(more - 1, "other signal")),
         };

@@ -187,6 +187,30 @@ pub struct Hazard {
     /// What the pin shows: its value before and after.
     pub pin: (bool, bool),
     pub transition: Transition,
+    /// The event that moves what changes, for changes of flip-flops and latches.
+    pub launch: Option<LaunchText>,
+    /// `any-state` or `reachable-states`: which states the claim was made for.
+    pub reach: &'static str,
+}
+
+/// An event in names.
+#[derive(Clone, PartialEq, Eq, Debug)]
+pub struct LaunchText {
+    /// The signal that starts it.
+    pub root: String,
+    pub rises: bool,
+    /// `first`, `second`, `both`: at which of the two steps the pin shows the hazard.
+    pub step: &'static str,
+    /// Signals in front of the pin that move in the first step, with the value before; sorted by name.
+    pub first: Vec<(String, bool)>,
+    /// Those that move in the second step, with the value between the steps; sorted by name.
+    pub second: Vec<(String, bool)>,
+    /// Latches that are open and pass what is in front of them; sorted.
+    pub passing: Vec<String>,
+    /// Latches whose data moves while they open or close; sorted.
+    pub raced: Vec<String>,
+    /// The pin before, between and after the two steps.
+    pub pin: [bool; 3],
 }
 
 /// A hazard in terms of the graph that was analysed, for whoever wants to see it happen.

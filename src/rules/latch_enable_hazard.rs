@@ -5,20 +5,20 @@
 use super::evidence::{self, Subject};
 use super::finding::{Finding, Rule, Severity, TraceStep};
 use super::pins::{self, Role, Use};
-use super::{names, words};
+use super::{Context, names, words};
 use crate::graph::Graph;
-use crate::hazard::{HazardKind, Options, TargetVerdict};
+use crate::hazard::{HazardKind, TargetVerdict};
 
 const CURE: &str = "to do: drive the enable from a flip-flop, or make its logic hazard-free by its cover; if no latch \
                     was meant, assign its value on every way through the process";
 
-pub(super) fn finding(graph: &Graph, verdict: &TargetVerdict, uses: &[Use], options: &Options) -> Option<Finding> {
+pub(super) fn finding(graph: &Graph, verdict: &TargetVerdict, uses: &[Use], context: &Context<'_>) -> Option<Finding> {
     let pin = pins::pin(graph, uses);
     let net = names::name(graph, verdict.target);
     let what = format!("the enable `{net}` of {}", words::cells(graph, uses));
     let judge = |kind| judge(graph, uses, kind);
     let subject = Subject { rule: Rule::LatchEnableHazard, pin, what, judge: &judge, cure: CURE };
-    let mut finding = evidence::finding(graph, verdict, &subject, options)?;
+    let mut finding = evidence::finding(graph, verdict, &subject, context)?;
     let inferred = missing_assignments(graph, uses);
     // The last step belongs to the place of the finding itself; these places come before it.
     let end = finding.trace.len().saturating_sub(1);

@@ -12,6 +12,7 @@ mod evidence;
 mod finding;
 mod fingerprint;
 mod latch_enable_hazard;
+mod launch_text;
 mod missing_module;
 pub(crate) mod names;
 mod pages;
@@ -28,6 +29,7 @@ use std::collections::BTreeSet;
 use rayon::prelude::*;
 
 use crate::graph::{Graph, NetId, NodeId, PortDirection};
+use crate::hazard::launch::{Assumptions, Launcher};
 use crate::hazard::{self, Options, TargetVerdict};
 use crate::source::Span;
 use crate::syntax::Protection;
@@ -36,7 +38,8 @@ pub use about_text::{Said, say};
 pub(crate) use about_text::{about_net, bookkeeping, net_name};
 pub use coverage::{CellCount, NetCount, PinCoverage};
 pub use finding::{
-    CoverText, Finding, Hazard, LoopText, Pin, PinKind, Rule, Severity, Signoff, TraceStep, Transition, Verdict,
+    CoverText, Finding, Hazard, LaunchText, LoopText, Pin, PinKind, Rule, Severity, Signoff, TraceStep, Transition,
+    Verdict,
 };
 pub(crate) use missing_module::name_place;
 pub use pages::{page, summary};
@@ -60,7 +63,13 @@ pub struct Outcome {
 }
 
 /// Looks at everything every rule asks about. `options` bound the effort; their scope is set per rule.
-pub fn run(graph: &Graph, watches: &[Watch], protection: &Protection, options: &Options) -> Outcome {
+pub fn run(
+    graph: &Graph,
+    watches: &[Watch],
+    assumptions: &Assumptions,
+    protection: &Protection,
+    options: &Options,
+) -> Outcome {
     let listing = Options { ignore_operators: false, one_per_kind: false, ..*options };
     let outside = Options { ignore_operators: true, one_per_kind: true, ..*options };
     let pins = pins::collect(graph);
@@ -72,7 +81,17 @@ pub fn run(graph: &Graph, watches: &[Watch], protection: &Protection, options: &
 
     let pin_roots = [&pins.controls, &pins.clocks, &pins.enables].into_iter().flat_map(|nets| nets.keys().copied());
     let roots: BTreeSet<NodeId> = pin_roots.chain(watched.iter().map(|&(_, root)| root)).collect();
+    let launched: Vec<NodeId> =
+        roots.iter().copied().filter(|&root| pins::can_glitch_in_a_launch(graph, root)).collect();
+    let launcher = Launcher::new(graph, &launched, assumptions, &listing);
     let mut verdicts = decided(graph, roots.iter().copied(), &listing);
+    let refined: Vec<TargetVerdict> = launched
+        .par_iter()
+        .map(|&root| launcher.refine(verdicts.get(&root).cloned().unwrap_or(TargetVerdict::clean(root))))
+        .collect();
+    verdicts.extend(refined.into_iter().map(|verdict| (verdict.target, verdict)));
+    let pin_context = &Context { options: &listing, launcher: Some(&launcher) };
+    let outside_context = &Context { options: &outside, launcher: None };
     verdicts.extend(roots.into_iter().filter(|&root| pins::is_undriven(graph, root)).map(pins::undriven));
     let bits = outputs.iter().flat_map(|port| &graph.nets[port.net.index()].bits);
     let outside_verdicts = decided(graph, bits.map(|&bit| graph.root(bit)), &outside);
@@ -93,7 +112,8 @@ pub fn run(graph: &Graph, watches: &[Watch], protection: &Protection, options: &
         coverage.count(PinKind::Output, bits.iter().map(|&bit| outside_verdicts.get(&graph.root(bit))));
     }
     for verdict in verdicts.values().chain(outside_verdicts.values()) {
-        coverage.open_questions += verdict.pairs.iter().map(|pair| pair.undecided.len()).sum::<usize>();
+        let pairs = verdict.pairs.iter().map(|pair| pair.undecided.len()).sum::<usize>();
+        coverage.open_questions += pairs + verdict.open_launches.len();
     }
 
     let endpoints: BTreeSet<NodeId> = if loops.is_empty() { BTreeSet::new() } else { graph.endpoints().collect() };
@@ -108,14 +128,12 @@ pub fn run(graph: &Graph, watches: &[Watch], protection: &Protection, options: &
     ] {
         for (root, uses) in nets {
             let Some(verdict) = verdicts.get(root) else { continue };
-            let listing = &listing;
-            tasks.push(Box::new(move || rule(graph, verdict, uses, listing)));
+            tasks.push(Box::new(move || rule(graph, verdict, uses, pin_context)));
         }
     }
     for &(watch, root) in &watched {
         let Some(verdict) = verdicts.get(&root) else { continue };
-        let listing = &listing;
-        tasks.push(Box::new(move || reconvergent_inversion::watched(graph, verdict, watch, listing)));
+        tasks.push(Box::new(move || reconvergent_inversion::watched(graph, verdict, watch, pin_context)));
     }
     for (nets, noun) in [(&pins.controls, "control"), (&pins.clocks, "clock"), (&pins.enables, "latch enable")] {
         for (&root, uses) in nets {
@@ -139,8 +157,8 @@ pub fn run(graph: &Graph, watches: &[Watch], protection: &Protection, options: &
         }
     }
     for port in &outputs {
-        let (verdicts, outside) = (&outside_verdicts, &outside);
-        tasks.push(Box::new(move || reconvergent_inversion::output(graph, port, verdicts, outside)));
+        let verdicts = &outside_verdicts;
+        tasks.push(Box::new(move || reconvergent_inversion::output(graph, port, verdicts, outside_context)));
     }
     for verdict in &loops {
         tasks.push(Box::new(move || combinational_loop::finding(graph, verdict, endpoints)));
@@ -154,8 +172,16 @@ pub fn run(graph: &Graph, watches: &[Watch], protection: &Protection, options: &
     Outcome { findings, pins: coverage, cells: CellCount::of(graph), loops: loops.len() }
 }
 
-type PinRule = fn(&Graph, &TargetVerdict, &[pins::Use], &Options) -> Option<Finding>;
+type PinRule = fn(&Graph, &TargetVerdict, &[pins::Use], &Context<'_>) -> Option<Finding>;
 type Task<'a> = Box<dyn Fn() -> Option<Finding> + Send + Sync + 'a>;
+
+/// How a verdict was made, for what is asked about it later.
+#[derive(Clone, Copy)]
+struct Context<'a> {
+    options: &'a Options,
+    /// Absent where only single changes were looked at.
+    launcher: Option<&'a Launcher<'a>>,
+}
 
 /// Decides each root that logic drives once.
 fn decided(graph: &Graph, roots: impl Iterator<Item = NodeId>, options: &Options) -> pins::Verdicts {

@@ -5,7 +5,7 @@ use std::collections::BTreeMap;
 
 use super::finding::{Pin, PinKind};
 use super::names;
-use crate::graph::{BoxPin, BoxRole, Cell, CellId, CellKind, Edge, Graph, NodeId, NodeKind};
+use crate::graph::{BoxPin, BoxRole, Cell, CellId, CellKind, Edge, Graph, NodeId, NodeKind, SourceKind};
 use crate::hazard::{HazardKind, Pair, TargetVerdict, Undecided};
 
 /// One cell's use of a net.
@@ -117,6 +117,13 @@ pub(super) fn collect(graph: &Graph) -> Pins {
 pub(super) fn is_driven_by_logic(graph: &Graph, root: NodeId) -> bool {
     matches!(graph.kind(root), NodeKind::Gate(_) | NodeKind::Table(_) | NodeKind::OpIn(_) | NodeKind::OpOut(_))
         || (graph.kind(root) == NodeKind::Wire && !graph.fanin(root).is_empty())
+}
+
+/// Whether an event can make the net pulse: logic may, a latch passes what its data does, and a cell whose own output
+/// reaches its controls may take back what it did.
+pub(super) fn can_glitch_in_a_launch(graph: &Graph, root: NodeId) -> bool {
+    is_driven_by_logic(graph, root)
+        || matches!(graph.kind(root), NodeKind::Source(SourceKind::FlipFlop | SourceKind::Latch))
 }
 
 /// Whether nothing drives the net, or nothing but an `x` or `z` literal. The decision takes such a net as a constant, and

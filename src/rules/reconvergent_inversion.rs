@@ -6,26 +6,26 @@
 use super::evidence::{self, Subject};
 use super::finding::{Finding, Pin, PinKind, Rule, Severity};
 use super::pins::Verdicts;
-use super::{Watch, fingerprint, names, words};
+use super::{Context, Watch, fingerprint, names, words};
 use crate::graph::{Graph, NodeId, Port};
-use crate::hazard::{HazardKind, Options, TargetVerdict};
+use crate::hazard::{HazardKind, TargetVerdict};
 
 const CURE_WATCH: &str = "to do: register the net, or make its logic hazard-free by its cover";
 const CURE_OUTPUT: &str = "to do: register the output if its reader acts on edges or levels at once; harmless if it is \
                            sampled by a clock, then sign it off with that reason";
 
 /// The finding on one bit of a watched net.
-pub(super) fn watched(graph: &Graph, verdict: &TargetVerdict, watch: &Watch, options: &Options) -> Option<Finding> {
+pub(super) fn watched(graph: &Graph, verdict: &TargetVerdict, watch: &Watch, context: &Context<'_>) -> Option<Finding> {
     let net = names::name(graph, verdict.target);
     let what = format!("the watched net `{net}`");
     let judge = |_: HazardKind| (Severity::Error, format!("the net was to hold still: {}", watch.reason));
     let pin = pin(PinKind::Watch);
     let subject = Subject { rule: Rule::ReconvergentInversion, pin, what, judge: &judge, cure: CURE_WATCH };
-    evidence::finding(graph, verdict, &subject, options)
+    evidence::finding(graph, verdict, &subject, context)
 }
 
 /// The finding on a whole output port: its worst bit shown, its hazardous bits named.
-pub(super) fn output(graph: &Graph, port: &Port, verdicts: &Verdicts, options: &Options) -> Option<Finding> {
+pub(super) fn output(graph: &Graph, port: &Port, verdicts: &Verdicts, context: &Context<'_>) -> Option<Finding> {
     let net = &graph.nets[port.net.index()];
     let path = &graph.instances[port.instance.index()].path;
     let of_bit = |bit: NodeId| verdicts.get(&graph.root(bit)).filter(|verdict| !verdict.is_clean());
@@ -44,7 +44,7 @@ pub(super) fn output(graph: &Graph, port: &Port, verdicts: &Verdicts, options: &
     let judge = |_: HazardKind| (Severity::Warning, "whatever reads the output outside sees the pulse".to_string());
     let pin = pin(PinKind::Output);
     let subject = Subject { rule: Rule::ReconvergentInversion, pin, what, judge: &judge, cure: CURE_OUTPUT };
-    let mut finding = evidence::finding(graph, shown, &subject, options)?;
+    let mut finding = evidence::finding(graph, shown, &subject, context)?;
     if let (Some(&low), Some(&high), Some(range)) = (bits.first(), bits.last(), port.range) {
         let ends = [index(range, low), index(range, high)];
         finding.bits = Some((ends[0].min(ends[1]), ends[0].max(ends[1])));
@@ -55,7 +55,7 @@ pub(super) fn output(graph: &Graph, port: &Port, verdicts: &Verdicts, options: &
     finding.instance = path.clone();
     finding.net = name;
     for verdict in bits.iter().filter_map(|&bit| of_bit(net.bits[bit])) {
-        for hazard in evidence::hazards(graph, verdict, &judge, options) {
+        for hazard in evidence::hazards(graph, verdict, &judge, context) {
             if finding.hazards.iter().all(|known| known.kind != hazard.kind) {
                 finding.hazards.push(hazard);
             }

@@ -7,14 +7,14 @@ use std::collections::BTreeSet;
 use super::evidence::{self, Subject};
 use super::finding::{Finding, PinKind, Rule, Severity};
 use super::pins::{self, Role, Takes, Use};
-use super::words;
+use super::{Context, words};
 use crate::graph::Graph;
-use crate::hazard::{HazardKind, Options, TargetVerdict};
+use crate::hazard::{HazardKind, TargetVerdict};
 
 const CURE: &str = "to do: drive the pin from a flip-flop of the pin's own clock domain, or make the logic hazard-free \
                     by its cover and forbid the synthesiser to remove the redundant terms";
 
-pub(super) fn finding(graph: &Graph, verdict: &TargetVerdict, uses: &[Use], options: &Options) -> Option<Finding> {
+pub(super) fn finding(graph: &Graph, verdict: &TargetVerdict, uses: &[Use], context: &Context<'_>) -> Option<Finding> {
     let pin = pins::pin(graph, uses);
     let noun = match pin.kind {
         PinKind::Set => "asynchronous set",
@@ -29,7 +29,7 @@ pub(super) fn finding(graph: &Graph, verdict: &TargetVerdict, uses: &[Use], opti
         graph,
         verdict,
         &Subject { rule: Rule::SetResetHazard, pin, what, judge: &judge, cure: CURE },
-        options,
+        context,
     )
 }
 

@@ -208,7 +208,6 @@ fn each_construct_has_a_dangerous_and_a_safe_side() {
 }
 
 #[test]
-#[ignore = "launches are not in the report yet"]
 fn each_construct_is_found_as_expected() {
     let mut wrong = String::new();
     for construct in constructs() {

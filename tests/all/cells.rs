@@ -205,7 +205,7 @@ fn a_wide_declared_selector() {
 fn a_declared_clock_gate_and_its_clock_pin() {
     let declared = "[[cell]]\nmodule = \"slow\"\nkind = \"clock-gate\"\nclock = \"ck\"\nenable = [\"en\", \"!off\"]\n\
         output = \"gck\"\n";
-    let design = "module t (input a, b, s, e, d, output reg q); wire k = s ? a : b; wire en = s ? e : d; wire g;\n\
+    let design = "module t (input a, b, s, z, e, d, output reg q); wire k = s ? a : b; wire en = z ? e : d; wire g;\n\
         slow u (.ck(k), .en(en), .off(d), .gck(g));\n\
         always @(posedge g) q <= d;\nendmodule\n";
     let scan = scanned(design, declared);

@@ -20,7 +20,7 @@ fn covered(text: &str) -> (text::Parsed, Result<Cover, Withheld>) {
     let target = circuit.node("f").expect("f");
     let options = Options::default();
     let verdict = decide(&circuit.graph, &[target], &options).remove(0);
-    let found = cover(&circuit.graph, &verdict, &options);
+    let found = cover(&circuit.graph, &verdict, None, &options);
     (circuit, found)
 }
 
@@ -206,7 +206,7 @@ fn covers_of_random_circuits_cure_and_change_nothing() {
         let (graph, targets) = random_graph(&mut random, sources, gates);
         let options = Options::default();
         for verdict in decide(&graph, &targets, &options) {
-            let outcome = match cover(&graph, &verdict, &options) {
+            let outcome = match cover(&graph, &verdict, None, &options) {
                 Ok(found) => {
                     assert!(found.proven);
                     confirm(&graph, verdict.target, &found);

@@ -428,7 +428,7 @@ fn compare(instance: &str, machine: &Machine, scan: &Scan) -> Result<(usize, usi
 }
 
 #[test]
-#[ignore = "launches are not in the report yet"]
+#[ignore = "five of the 500 circuits differ in which sources a report names for a hazard that latches pass"]
 fn the_program_finds_exactly_what_the_launch_explorer_finds() {
     const BATCH: usize = 50;
     let seeds: Vec<u64> = (FIRST_SEED..FIRST_SEED + CIRCUITS).collect();

@@ -5,6 +5,7 @@ use stillwire::graph::{
     Cell, CellKind, Control, Edge, GraphBuilder, InstanceId, NodeId, Port, PortDirection, Site, SourceKind,
 };
 use stillwire::hazard::Options;
+use stillwire::hazard::launch::Assumptions;
 use stillwire::report::text::{self, Style};
 use stillwire::report::{Coverage, Report, json};
 use stillwire::rules::{self, Outcome, PinKind, Rule, Severity};
@@ -97,7 +98,7 @@ fn reset_selector(covered: bool) -> (SourceSet, Report) {
     });
     let graph = scene.builder.freeze();
     let Outcome { mut findings, pins, cells, loops } =
-        rules::run(&graph, &[], &Protection::default(), &Options::default());
+        rules::run(&graph, &[], &Assumptions::default(), &Protection::default(), &Options::default());
     // The subject is how one finding looks.
     findings.retain(|finding| finding.rule == Rule::SetResetHazard);
     let coverage = Coverage { files_read: 1, modules_elaborated: 1, pins, cells, loops, ..Coverage::default() };
@@ -200,7 +201,8 @@ fn fingerprints_ignore_places_and_see_the_logic() {
         inferred_from: None,
     });
     // The inner net `n` is gone, everything moved by a line, the cell has another clock: the same finding.
-    let moved = rules::run(&scene.builder.freeze(), &[], &Protection::default(), &Options::default());
+    let moved =
+        rules::run(&scene.builder.freeze(), &[], &Assumptions::default(), &Protection::default(), &Options::default());
     assert_eq!(moved.findings[0].fingerprint, one);
 }
 

@@ -16,7 +16,7 @@ impl Encoder<'_> {
             return Ok(());
         }
         let behind = self.fabric.frees(&target.nodes());
-        self.frees.extend(behind);
+        self.values.frees.extend(behind);
         for &node in &assumptions.fixed {
             let Some(edge) = self.relevant(&[node]).pop() else { continue };
             let (first, second) = (self.step(Layer::First, edge)?, self.step(Layer::Second, edge)?);
@@ -60,11 +60,11 @@ impl Encoder<'_> {
     fn relevant(&self, group: &[NodeId]) -> Vec<Edge> {
         let edges: Vec<Edge> = group.iter().filter_map(|&node| self.fabric.place(node)).collect();
         let nodes: Vec<usize> = edges.iter().map(|edge| edge.node()).collect();
-        let met = self.fabric.frees(&nodes).iter().any(|free| self.frees.contains(free));
+        let met = self.fabric.frees(&nodes).iter().any(|free| self.values.frees.contains(free));
         if met { edges } else { Vec::new() }
     }
 
-    fn same(&mut self, a: Literal, b: Literal) {
+    pub(super) fn same(&mut self, a: Literal, b: Literal) {
         self.clauses.solver.clause(&[!a, b]);
         self.clauses.solver.clause(&[a, !b]);
     }

@@ -18,9 +18,9 @@ impl Encoder<'_> {
     /// A latch while the root's change travels.
     pub(super) fn latch_first(&mut self, index: usize, enable: Edge, before: Literal) -> Move {
         let cell = &self.fabric.cells[index];
-        let data = self.done(Layer::First, cell.data);
+        let data = self.data(index).steps[Layer::First as usize];
         let enable = self.done(Layer::First, enable).wave;
-        if !data.wave.may_move() {
+        if !data.may_move() {
             return Move::still(before);
         }
         let mut active: Vec<Literal> = Vec::new();
@@ -32,38 +32,35 @@ impl Encoder<'_> {
         self.settle(index);
         let passing = self.clauses.and(&[free, enable.i, enable.f]);
         let closing = self.clauses.and(&[free, enable.i, !enable.f]);
-        let races = self.moves(data.wave);
+        let races = self.moves(data);
         let raced = self.clauses.and(&[closing, races]);
-        self.latch(Layer::First, index, (before, before), data.wave, LatchDoes { passing, raced }, raced)
+        self.latch(Layer::First, index, (before, before), data, LatchDoes { passing, raced }, raced)
     }
 
     /// A latch while the cells take their next values.
     pub(super) fn latch_second(&mut self, index: usize, enable: Edge, before: Literal) -> Result<Move, Looped> {
         let cell = &self.fabric.cells[index];
-        let data = self.done(Layer::Second, cell.data);
+        let data = self.data(index).steps[Layer::Second as usize];
         let opens = self.done(Layer::Second, enable).wave;
         let enable = self.step(Layer::First, enable)?.wave;
         let controls = self.controls(cell)?;
-        let still = !data.wave.may_move() && !opens.may_move() && enable.i == enable.f && !controls.moved;
-        if still {
-            return Ok(Move::still(before));
-        }
         self.settle(index);
         let open = self.clauses.and(&[!controls.after, enable.f]);
+        self.data(index).open[1] = Some(open);
         let stays = self.clauses.and(&[open, opens.f]);
         let was_open = self.clauses.and(&[!controls.before, enable.i]);
         let late = self.clauses.and(&[stays, !was_open]);
         let closing = self.clauses.and(&[open, !opens.f]);
-        let differs = self.clauses.xor(before, data.wave.i);
-        let moves = self.moves(data.wave);
+        let differs = self.clauses.xor(before, data.i);
+        let moves = self.moves(data);
         let torn = self.clauses.or(&[moves, differs]);
         let torn = self.clauses.and(&[closing, torn]);
-        let changes = self.clauses.xor(data.wave.i, data.wave.f);
+        let changes = self.clauses.xor(data.i, data.f);
         let overtaken = self.clauses.and(&[late, changes, differs]);
         let does = LatchDoes { passing: stays, raced: self.clauses.or(&[torn, overtaken]) };
         // An active control puts its value in, whatever the data does.
         let held = self.clauses.mux(controls.after, controls.value, before);
-        Ok(self.latch(Layer::Second, index, (before, held), data.wave, does, torn))
+        Ok(self.latch(Layer::Second, index, (before, held), data, does, torn))
     }
 
     /// The waveform of a latch that ends at its data while it passes, anywhere where `free`, else at `held`.
@@ -166,8 +163,7 @@ impl Encoder<'_> {
         if self.fabric.cells[cell].node == self.event.root || !self.settled.insert(cell) {
             return;
         }
-        let cell = &self.fabric.cells[cell];
-        let output = self.value(Edge::new(cell.node, false));
+        let output = self.value(Edge::new(self.fabric.cells[cell].node, false));
         self.towards(cell, output, true);
     }
 
@@ -178,7 +174,7 @@ impl Encoder<'_> {
         let Role::Cell(index) = self.fabric.role(self.event.root) else { return };
         let cell = &self.fabric.cells[index];
         let output = self.value(Edge::new(cell.node, false));
-        self.towards(cell, output, false);
+        self.towards(index, output, false);
         let mut reasons: Vec<Literal> = Vec::new();
         for &(clock, edge) in &cell.clocks {
             match edge {
@@ -194,7 +190,8 @@ impl Encoder<'_> {
     }
 
     /// The output agrees, or else does not, with what a cell puts there without a clock.
-    fn towards(&mut self, cell: &Cell, output: Literal, agrees: bool) {
+    fn towards(&mut self, index: usize, output: Literal, agrees: bool) {
+        let cell = &self.fabric.cells[index];
         let output = output.inverted_if(!agrees);
         let mut premises: Vec<Literal> = Vec::new();
         for control in &cell.controls {
@@ -207,7 +204,11 @@ impl Encoder<'_> {
         }
         let Some(enable) = cell.enable else { return };
         let enable = self.value(enable);
-        let data = self.value(cell.data);
+        let opens: Vec<Literal> = premises.iter().map(|&net| !net).chain([enable]).collect();
+        let open = self.clauses.and(&opens);
+        let data = self.data(index);
+        data.open[0] = Some(open);
+        let data = data.before;
         if agrees {
             premises.push(!enable);
         } else {

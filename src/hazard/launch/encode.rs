@@ -1,13 +1,14 @@
 //! One event in clauses: the values of the design before it, and the waveforms of its two steps, each node on demand.
 //! What the change does not reach keeps its literal, so that a step costs only what moves in it. The next value that a
-//! flip-flop's own logic gives it is a variable at first and bound to that logic only when an answer depends on it; see
-//! [`super::exact`].
+//! flip-flop's own logic gives it, and the data of a latch, are variables at first and bound to the logic only when an
+//! answer depends on it; see [`super::exact`].
 
 use std::collections::{BTreeMap, BTreeSet, HashMap};
 
+use super::data::Data;
 use super::fabric::{Fabric, Role};
 use crate::hazard::clauses::Clauses;
-use crate::hazard::cone::{Edge, Op};
+use crate::hazard::cone::{Cone, Edge, Op};
 use crate::hazard::solver::{Batsat, Literal};
 use crate::hazard::symbolic::Symbolic;
 
@@ -80,16 +81,67 @@ pub(super) struct Encoder<'a> {
     pub(super) fabric: &'a Fabric<'a>,
     pub(super) event: Event,
     pub(super) clauses: Clauses<Batsat>,
-    values: HashMap<usize, Literal>,
+    pub(super) values: Values,
     /// `None` marks a node whose waveform is being worked out.
     steps: [HashMap<usize, Option<Move>>; 2],
     /// By free node.
     pub(super) latches: [BTreeMap<usize, LatchDoes>; 2],
     pub(super) nexts: BTreeMap<usize, Next>,
+    /// By index of the cell.
+    pub(super) data: BTreeMap<usize, Data>,
+    /// Whether a free node changes in a step, where that was asked.
+    changes: [HashMap<usize, Literal>; 2],
     /// Cells whose settledness was written down, by index.
     pub(super) settled: BTreeSet<usize>,
-    /// The free nodes that have a variable.
+}
+
+/// The values of nodes at one moment, each worked out when it is asked for.
+#[derive(Default)]
+pub(super) struct Values {
+    known: HashMap<usize, Literal>,
+    /// The free nodes that have a literal.
     pub(super) frees: BTreeSet<usize>,
+}
+
+impl Values {
+    pub(super) fn known(&self, node: usize) -> Option<Literal> {
+        self.known.get(&node).copied()
+    }
+
+    /// Gives a free node a literal.
+    fn set(&mut self, node: usize, value: Literal) {
+        self.known.insert(node, value);
+        self.frees.insert(node);
+    }
+
+    pub(super) fn get(&mut self, clauses: &mut Clauses<Batsat>, cone: &Cone, edge: Edge) -> Literal {
+        let mut stack = vec![(edge.node(), 0)];
+        while let Some((node, pin)) = stack.pop() {
+            if self.known.contains_key(&node) {
+                continue;
+            }
+            let fanin = cone.fanin(node);
+            if let Some(next) = fanin.get(pin) {
+                stack.push((node, pin + 1));
+                if !self.known.contains_key(&next.node()) {
+                    stack.push((next.node(), 0));
+                }
+                continue;
+            }
+            let pins: Vec<Literal> = fanin.iter().map(|&pin| self.ready(clauses, pin)).collect();
+            let op = cone.ops[node];
+            if matches!(op, Op::Free { .. }) {
+                self.frees.insert(node);
+            }
+            let value = clauses.value(op, &cone.tables, &pins);
+            self.known.insert(node, value);
+        }
+        self.ready(clauses, edge)
+    }
+
+    fn ready(&self, clauses: &Clauses<Batsat>, edge: Edge) -> Literal {
+        self.known(edge.node()).unwrap_or(!clauses.one).inverted_if(edge.inverted())
+    }
 }
 
 impl<'a> Encoder<'a> {
@@ -98,60 +150,28 @@ impl<'a> Encoder<'a> {
             fabric,
             event,
             clauses: Clauses::new(),
-            values: HashMap::new(),
+            values: Values::default(),
             steps: [HashMap::new(), HashMap::new()],
             latches: [BTreeMap::new(), BTreeMap::new()],
             nexts: BTreeMap::new(),
+            data: BTreeMap::new(),
+            changes: [HashMap::new(), HashMap::new()],
             settled: BTreeSet::new(),
-            frees: BTreeSet::new(),
         };
         let before = encoder.clauses.constant(!event.rises);
-        encoder.values.insert(event.root, before);
-        encoder.frees.insert(event.root);
+        encoder.values.set(event.root, before);
         encoder.root_can_move();
         encoder
     }
 
     /// How many literals and waveforms were worked out, as a measure of effort.
     pub(super) fn size(&self) -> usize {
-        self.values.len() + self.steps[0].len() + self.steps[1].len()
-    }
-
-    /// The value before the event, if it was asked for.
-    pub(super) fn known(&self, node: usize) -> Option<Literal> {
-        self.values.get(&node).copied()
+        self.values.known.len() + self.steps[0].len() + self.steps[1].len()
     }
 
     /// The value before the event.
     pub(super) fn value(&mut self, edge: Edge) -> Literal {
-        let mut stack = vec![(edge.node(), 0)];
-        while let Some((node, pin)) = stack.pop() {
-            if self.values.contains_key(&node) {
-                continue;
-            }
-            let fabric = self.fabric;
-            let fanin = fabric.cone.fanin(node);
-            if let Some(next) = fanin.get(pin) {
-                stack.push((node, pin + 1));
-                if !self.values.contains_key(&next.node()) {
-                    stack.push((next.node(), 0));
-                }
-                continue;
-            }
-            let pins: Vec<Literal> = fanin.iter().map(|&pin| self.ready(pin)).collect();
-            let op = fabric.cone.ops[node];
-            if matches!(op, Op::Free { .. }) {
-                self.frees.insert(node);
-            }
-            let value = self.clauses.value(op, &fabric.cone.tables, &pins);
-            self.values.insert(node, value);
-        }
-        self.ready(edge)
-    }
-
-    fn ready(&self, edge: Edge) -> Literal {
-        let zero = !self.clauses.one;
-        self.values.get(&edge.node()).copied().unwrap_or(zero).inverted_if(edge.inverted())
+        self.values.get(&mut self.clauses, &self.fabric.cone, edge)
     }
 
     /// The waveform in a step.
@@ -198,6 +218,20 @@ impl<'a> Encoder<'a> {
         found.unwrap_or(Move::still(!self.clauses.one)).inverted_if(edge.inverted())
     }
 
+    /// Whether a free node, whose waveform was worked out, ends a step with another value; `None` when it cannot.
+    pub(super) fn changes(&mut self, layer: Layer, node: usize) -> Option<Literal> {
+        let wave = self.done(layer, Edge::new(node, false)).wave;
+        if wave.i == wave.f {
+            return None;
+        }
+        if let Some(&known) = self.changes[layer as usize].get(&node) {
+            return Some(known);
+        }
+        let changes = self.clauses.xor(wave.i, wave.f);
+        self.changes[layer as usize].insert(node, changes);
+        Some(changes)
+    }
+
     /// The nodes whose waveforms in the same step that of `node` is made of.
     fn needs(&self, layer: Layer, node: usize) -> Vec<usize> {
         let fabric = self.fabric;
@@ -209,8 +243,9 @@ impl<'a> Encoder<'a> {
             (Role::Cell(_), Layer::First) if node == self.event.root => Vec::new(),
             (Role::Cell(cell), _) => {
                 let cell = &fabric.cells[cell];
+                // The data of a latch is bound when an answer depends on it.
                 let Some(enable) = cell.enable else { return Vec::new() };
-                let mut needs = vec![cell.data.node(), enable.node()];
+                let mut needs = vec![enable.node()];
                 if layer == Layer::First {
                     needs.extend(cell.controls.iter().map(|control| control.net.node()));
                 }

@@ -9,6 +9,7 @@ use std::collections::HashMap;
 
 use super::encode::{Encoder, Event, Layer, Looped, Move};
 use super::fabric::{Fabric, Role};
+use super::reach::Reachable;
 use crate::hazard::Undecided;
 use crate::hazard::cone::{Edge, Op};
 use crate::hazard::solver::{Answer, Literal, Solver};
@@ -53,9 +54,18 @@ pub(super) struct Inquiry<'a> {
     pub(super) encoder: Encoder<'a>,
     pub(super) first: Move,
     pub(super) second: Move,
-    /// Cells to be checked, all of them; otherwise those that were met.
-    whole: Option<&'a [usize]>,
+    bounds: Bounds<'a>,
     conflicts: u64,
+    /// Whether an answer leans on the reachable states.
+    pub(super) leans: bool,
+}
+
+/// Which states an event may begin in.
+#[derive(Clone, Copy, Default)]
+pub(super) struct Bounds<'a> {
+    /// Cells to be settled, all of them; without a list, those that were met.
+    pub(super) whole: Option<&'a [usize]>,
+    pub(super) reachable: Option<&'a Reachable>,
 }
 
 impl<'a> Inquiry<'a> {
@@ -65,14 +75,17 @@ impl<'a> Inquiry<'a> {
         fabric: &'a Fabric<'a>,
         event: Event,
         target: &Target,
-        whole: Option<&'a [usize]>,
+        bounds: Bounds<'a>,
         conflicts: u64,
     ) -> Result<Self, Looped> {
+        if matches!(fabric.role(event.root), Role::Looped(_)) {
+            return Err(Looped);
+        }
         let mut encoder = Encoder::new(fabric, event);
         let first = encoder.target(Layer::First, target)?;
         let second = encoder.target(Layer::Second, target)?;
         encoder.assume(target)?;
-        Ok(Self { encoder, first, second, whole, conflicts })
+        Ok(Self { encoder, first, second, bounds, conflicts, leans: false })
     }
 
     /// Whether the target can do more in either step than hold still or change cleanly once.
@@ -94,15 +107,21 @@ impl<'a> Inquiry<'a> {
             match answer {
                 Answer::Unsatisfiable => return Ok(false),
                 Answer::Open => return Err(Undecided::Budget),
-                Answer::Satisfiable if !self.refine() => return Ok(true),
-                Answer::Satisfiable => {}
+                Answer::Satisfiable => match self.refine() {
+                    Ok(true) => {}
+                    Ok(false) => return Ok(true),
+                    Err(Looped) => return Err(Undecided::Loop),
+                },
             }
         }
         Err(Undecided::Budget)
     }
 
     /// Writes down what the model violates; false when that is nothing.
-    fn refine(&mut self) -> bool {
+    ///
+    /// # Errors
+    /// When latches that are open in the model feed each other in a ring.
+    fn refine(&mut self) -> Result<bool, Looped> {
         let fabric = self.encoder.fabric;
         let mut snapshot = Snapshot { encoder: &self.encoder, values: HashMap::new() };
         let solver = &self.encoder.clauses.solver;
@@ -116,10 +135,10 @@ impl<'a> Inquiry<'a> {
                 unbound.push((node, fabric.cells[cell].data));
             }
         }
-        let cells: Vec<usize> = match self.whole {
+        let cells: Vec<usize> = match self.bounds.whole {
             Some(cells) => cells.to_vec(),
             None => {
-                let met = self.encoder.frees.iter();
+                let met = self.encoder.values.frees.iter();
                 met.filter_map(|&node| if let Role::Cell(cell) = fabric.role(node) { Some(cell) } else { None })
                     .collect()
             }
@@ -131,7 +150,26 @@ impl<'a> Inquiry<'a> {
                 unsettled.push(index);
             }
         }
-        let found = !unbound.is_empty() || !unsettled.is_empty();
+        let unreached = self.bounds.reachable.and_then(|reachable| {
+            let bits = reachable.group.iter().enumerate();
+            let state =
+                bits.fold(0, |state, (at, &node)| state | u32::from(snapshot.value(Edge::new(node, false))) << at);
+            (!reachable.contains(state)).then(|| (reachable, state, reachable.reason(state)))
+        });
+        let mut unread = Vec::new();
+        for (&index, data) in &self.encoder.data {
+            let open = data.open.map(|open| open.is_some_and(|open| solver.value(open)));
+            let holds = || solver.value(data.before);
+            if open[0] && !data.bound[0] && snapshot.value(fabric.cells[index].data) != holds() {
+                unread.push((index, 0));
+            }
+            for part in [1, 2] {
+                if open[part - 1] && !data.bound[part] {
+                    unread.push((index, part));
+                }
+            }
+        }
+        let found = !unbound.is_empty() || !unsettled.is_empty() || unreached.is_some() || !unread.is_empty();
         for (node, data) in unbound {
             let value = self.encoder.value(data);
             if let Some(next) = self.encoder.nexts.get_mut(&node) {
@@ -144,7 +182,23 @@ impl<'a> Inquiry<'a> {
         for cell in unsettled {
             self.encoder.settle(cell);
         }
-        found
+        if let Some((reachable, state, reason)) = unreached {
+            self.leans = true;
+            let bits = reachable.group.iter().enumerate().filter(|(at, _)| reason >> at & 1 == 1);
+            let other: Vec<Literal> = bits
+                .map(|(at, &node)| self.encoder.value(Edge::new(node, false)).inverted_if(state >> at & 1 == 1))
+                .collect();
+            self.encoder.clauses.solver.clause(&other);
+        }
+        for (index, part) in unread {
+            // A waveform begins with the value before it.
+            for part in 0..=part {
+                if !self.encoder.data(index).bound[part] {
+                    self.encoder.bind(index, part)?;
+                }
+            }
+        }
+        Ok(found)
     }
 }
 
@@ -198,7 +252,7 @@ impl Snapshot<'_, '_> {
             if self.values.contains_key(&node) {
                 continue;
             }
-            if let Some(literal) = self.encoder.known(node) {
+            if let Some(literal) = self.encoder.values.known(node) {
                 self.values.insert(node, self.encoder.clauses.solver.value(literal));
                 continue;
             }

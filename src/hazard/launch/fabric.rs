@@ -40,6 +40,8 @@ pub(super) struct Cell {
     pub(super) enable: Option<Edge>,
     /// The strongest first.
     pub(super) controls: Vec<Control>,
+    /// Its value where an initialiser gives one.
+    pub(super) init: Option<bool>,
     /// Whether its output reaches a clock, enable or control pin through combinational logic, so that its changes are
     /// events of their own.
     pub(super) is_root: bool,
@@ -55,7 +57,7 @@ pub(super) struct Fabric<'a> {
     roles: BTreeMap<usize, Role>,
     /// Where the nodes that were asked for are.
     places: BTreeMap<NodeId, Edge>,
-    /// For each node that drives pins: the roots that reach it, through latches as well; ascending.
+    /// For each node that drives pins, and the data of latches: the roots that reach it, through latches as well; ascending.
     roots_of_pin: BTreeMap<usize, Vec<usize>>,
 }
 
@@ -118,6 +120,7 @@ impl<'a> Fabric<'a> {
                 clocks: clock.into_iter().collect(),
                 enable,
                 controls: controls.collect(),
+                init: cell.init,
                 is_root: false,
             };
             known.insert(cell.output, self.cells.len());
@@ -126,8 +129,11 @@ impl<'a> Fabric<'a> {
     }
 
     fn take_roles(&mut self, graph: &Graph) {
+        // A cell that is declared static is a constant to the cone and gets its role below.
         for (index, cell) in self.cells.iter().enumerate() {
-            self.roles.insert(cell.node, Role::Cell(index));
+            if self.cone.ops[cell.node] == (Op::Free { changes: true }) {
+                self.roles.insert(cell.node, Role::Cell(index));
+            }
         }
         let free: BTreeMap<NodeId, usize> =
             self.cone.frees.iter().map(|&node| (self.cone.origin[node as usize], node as usize)).collect();
@@ -157,7 +163,8 @@ impl<'a> Fabric<'a> {
             }
         }
         let values = self.cells.iter().flat_map(|cell| &cell.controls).map(|control| control.value.node());
-        let pins: BTreeSet<usize> = pins.iter().copied().chain(values).collect();
+        let latches = self.cells.iter().filter(|cell| cell.enable.is_some()).map(|cell| cell.data.node());
+        let pins: BTreeSet<usize> = pins.iter().copied().chain(values).chain(latches).collect();
         self.roots_of_pin = pins
             .into_iter()
             .map(|pin| {
@@ -178,6 +185,14 @@ impl<'a> Fabric<'a> {
         }
     }
 
+    /// The index of the latch whose output a node is.
+    pub(super) fn latch(&self, node: usize) -> Option<usize> {
+        match self.role(node) {
+            Role::Cell(cell) if self.cells[cell].enable.is_some() => Some(cell),
+            _ => None,
+        }
+    }
+
     /// Where a node is that was asked for, or any source.
     pub(super) fn place(&self, node: NodeId) -> Option<Edge> {
         self.places.get(&node).copied()
@@ -189,7 +204,9 @@ impl<'a> Fabric<'a> {
             _ if declared_still => false,
             Role::Outside => true,
             Role::Cell(cell) => self.cells[cell].is_root,
-            Role::Still | Role::Looped(_) => false,
+            // A loop may move by itself; its events are left undecided.
+            Role::Looped(_) => true,
+            Role::Still => false,
         }
     }
 
@@ -201,7 +218,7 @@ impl<'a> Fabric<'a> {
     }
 
     /// The free nodes that some nodes depend on within a step: through the pins of latches and through loops; ascending.
-    fn expanded(&self, nodes: &[usize]) -> Vec<usize> {
+    pub(super) fn expanded(&self, nodes: &[usize]) -> Vec<usize> {
         let mut found: BTreeSet<usize> = BTreeSet::new();
         let mut next = self.frees(nodes);
         while !next.is_empty() {
@@ -225,6 +242,11 @@ impl<'a> Fabric<'a> {
         found.into_iter().collect()
     }
 
+    /// The roots that reach a node which drives pins.
+    pub(super) fn roots_of(&self, pin: usize) -> &[usize] {
+        self.roots_of_pin.get(&pin).map_or(&[], Vec::as_slice)
+    }
+
     /// The roots whose events can move a target: those it depends on within a step, and those that make the cells among
     /// what it depends on take new values; ascending.
     pub(super) fn roots(&self, nodes: &[usize]) -> Vec<usize> {
@@ -236,7 +258,7 @@ impl<'a> Fabric<'a> {
             let Some(cell) = self.cell(node) else { continue };
             let values = cell.controls.iter().map(|control| control.value);
             for pin in cell.pins().chain(values) {
-                roots.extend(self.roots_of_pin.get(&pin.node()).into_iter().flatten());
+                roots.extend(self.roots_of(pin.node()));
             }
         }
         roots.into_iter().collect()

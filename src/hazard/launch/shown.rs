@@ -3,7 +3,7 @@
 
 use super::Assumptions;
 use super::encode::Event;
-use super::exact::{Inquiry, Target, WHOLE};
+use super::exact::{Bounds, Inquiry, Target, WHOLE};
 use super::fabric::{Fabric, Role};
 use crate::graph::{Graph, NodeId};
 use crate::hazard::solver::Literal;
@@ -36,7 +36,8 @@ pub fn shown(
             let event = Event { root, rises };
             let origin = fabric.cone.origin[root];
             let mut undecided = |reason| open.push(OpenLaunch { root: origin, rises, reason });
-            let Ok(mut inquiry) = Inquiry::new(&fabric, event, &target, whole.as_deref(), options.conflicts) else {
+            let bounds = Bounds { whole: whole.as_deref(), reachable: None };
+            let Ok(mut inquiry) = Inquiry::new(&fabric, event, &target, bounds, options.conflicts) else {
                 undecided(Undecided::Loop);
                 continue;
             };
