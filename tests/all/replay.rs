@@ -40,6 +40,12 @@ fn replayable(scan: &Scan) -> BTreeSet<String> {
 
 /// Replays every finding under `path` into folders below `to`.
 fn replay_all(path: &Path, to: &Path, benches: &mut Vec<PathBuf>) -> usize {
+    // A file of packages or of test benches alone has nothing to analyse.
+    let status =
+        Command::new(env!("CARGO_BIN_EXE_stillwire")).arg("scan").arg(path).output().expect("it starts").status;
+    if status.code() == Some(2) {
+        return 0;
+    }
     let fingerprints = replayable(&scan(&[path], &[]));
     for fingerprint in &fingerprints {
         let folder = to.join(fingerprint);
@@ -76,9 +82,10 @@ fn simulate(benches: &[PathBuf], folder: &Path) -> Result<(), String> {
 fn fixtures(folder: &Path, found: &mut Vec<PathBuf>) {
     for entry in std::fs::read_dir(folder).expect("a folder of fixtures") {
         let path = entry.expect("an entry").path();
-        if path.is_dir() {
+        // The seeds of the fuzzer are broken on purpose.
+        if path.is_dir() && !path.ends_with("fuzz") {
             fixtures(&path, found);
-        } else if path.extension().is_some_and(|extension| extension == "v" || extension == "sv") {
+        } else if path.is_file() && path.extension().is_some_and(|extension| extension == "v" || extension == "sv") {
             found.push(path);
         }
     }

@@ -714,6 +714,7 @@ fn cv32e40p_with_latches() {
 ///   them, and between 01 and 10 lies 00 or 11, whatever the adder is made of.
 /// - `instr_req_o`: `req_i & (fifo_ready | branch_i)`, and one state bit of the controller raises the first and lowers the last.
 /// - `instr_addr_o`: a selector of a selector, bits 1 and 0 tied to 0.
+/// - `rst_ni`: a port that resets every flip-flop; synchronising its release is for who instantiates the core.
 const IBEX_FINDINGS: &[Reviewed] = &[
     ("reconvergent-inversion", "warning", "ibex_top.data_be_o", ALL),
     ("reconvergent-inversion", "warning", "ibex_top.data_req_o", ALL),
@@ -722,6 +723,7 @@ const IBEX_FINDINGS: &[Reviewed] = &[
     ("reconvergent-inversion", "warning", "ibex_top.double_fault_seen_o", ALL),
     ("reconvergent-inversion", "warning", "ibex_top.instr_addr_o", ALL),
     ("reconvergent-inversion", "warning", "ibex_top.instr_req_o", ALL),
+    ("reset-release", "note", "ibex_top.rst_ni", &[]),
 ];
 
 /// As [`IBEX_FINDINGS`], with both register files. Why they are right:
@@ -733,6 +735,7 @@ const IBEX_FINDINGS: &[Reviewed] = &[
 /// - `instr_addr_o`: the selector of the bus interface behind that of the branch, bits 1 and 0 tied to 0.
 /// - `instr_req_o`: `state_q == TRANSPARENT ? trans_valid_i : 1'b1`, written as an if.
 /// - `core_sleep_o`: `fetch_enable_q && !clock_en`, and `clock_en` is `fetch_enable_q && ...`.
+/// - `rst_ni`: as in ibex.
 const CV32E40P_FINDINGS: &[Reviewed] = &[
     ("reconvergent-inversion", "warning", "cv32e40p_top.core_sleep_o", ALL),
     ("reconvergent-inversion", "warning", "cv32e40p_top.data_addr_o", &["static-1"]),
@@ -742,6 +745,7 @@ const CV32E40P_FINDINGS: &[Reviewed] = &[
     ("reconvergent-inversion", "warning", "cv32e40p_top.instr_req_o", &["dynamic", "static-1"]),
     ("reconvergent-inversion", "warning", "cv32e40p_top.irq_ack_o", ALL),
     ("reconvergent-inversion", "warning", "cv32e40p_top.irq_id_o", ALL),
+    ("reset-release", "note", "cv32e40p_top.rst_ni", &[]),
 ];
 
 const ALL: &[&str] = &["dynamic", "static-0", "static-1"];
