@@ -96,7 +96,7 @@ fn shown(machine: &Machine) -> BTreeMap<String, BTreeSet<&'static str>> {
     let mut explorer = Explorer::new(machine);
     let mut found: BTreeMap<String, BTreeSet<&'static str>> = BTreeMap::new();
     for net in machine.pins() {
-        for one in explorer.shown(net, |state| reach.occurs(state)) {
+        for one in explorer.shown(net, |state, root| reach.occurs(state, root)) {
             let cause = if one.function == Some(false) { "logic" } else { "function" };
             found.entry(one.kind.name().to_string()).or_default().insert(cause);
         }

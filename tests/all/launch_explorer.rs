@@ -245,12 +245,12 @@ impl<'a> Explorer<'a> {
         Self { machine, seen: Seen::default(), known: HashMap::new() }
     }
 
-    /// Everything that `target` can show from the settled states that `occurs` admits.
-    pub fn shown(&mut self, target: Net, occurs: impl Fn(u32) -> bool) -> BTreeSet<Shown> {
+    /// Everything that `target` can show from the settled states that `occurs` admits for the event of a root.
+    pub fn shown(&mut self, target: Net, occurs: impl Fn(u32, usize) -> bool) -> BTreeSet<Shown> {
         let mut shown = BTreeSet::new();
-        for state in (0..1 << self.machine.sources()).filter(|&state| occurs(state)) {
+        for state in 0..1 << self.machine.sources() {
             for root in self.machine.roots() {
-                if self.machine.can_start(state, root) {
+                if occurs(state, root) && self.machine.can_start(state, root) {
                     self.event(target, state, root, &mut shown);
                 }
             }
@@ -512,7 +512,7 @@ mod tests {
 
     #[track_caller]
     fn check_as_it_is(machine: &Machine, target: Net, expected: &[(Glitch, When, Option<bool>)]) {
-        let shown = Explorer::new(machine).shown(target, |_| true);
+        let shown = Explorer::new(machine).shown(target, |_, _| true);
         let found: BTreeSet<_> = shown.iter().map(|one| (one.kind, one.when, one.function)).collect();
         assert_eq!(found, expected.iter().copied().collect(), "{shown:#?}");
     }
@@ -644,7 +644,7 @@ mod tests {
         let lower = machine.gate(Op::And, &[not_select, B]);
         let chosen = machine.gate(Op::Or, &[upper, lower]);
         machine.cell(rises(chosen), A);
-        let shown = Explorer::new(&machine).shown(chosen, |_| true);
+        let shown = Explorer::new(&machine).shown(chosen, |_, _| true);
         let select = machine.source(select);
         assert!(!shown.is_empty());
         for one in &shown {

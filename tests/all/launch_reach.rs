@@ -2,7 +2,8 @@
 //! value (an initial value, an asynchronous control to a constant, or inputs that force their data) start there together, all other sources are free.
 //!
 //! From each state every clock net may fire or not, and every control act or not, in all combinations: more than can
-//! really happen, but what is left out then never happens.
+//! really happen, but what is left out then never happens. The event of a cell may be one of several that a clock starts,
+//! with the others before or behind it: it begins anywhere between a state and the next.
 
 use std::collections::BTreeSet;
 
@@ -11,7 +12,10 @@ use crate::launch_explorer::{Machine, Net, Trigger};
 /// Sources that start from a reset value, and the values that they can come to; bits as in a state of the machine.
 pub struct Reach {
     pub group: u32,
+    inputs: usize,
     values: BTreeSet<u32>,
+    /// Each value, and each made of bits of a value and of one that follows it.
+    between: BTreeSet<u32>,
 }
 
 impl Reach {
@@ -24,20 +28,25 @@ impl Reach {
                 start |= u32::from(value) << (machine.inputs + cell);
             }
         }
-        let mut reach = Self { group, values: BTreeSet::from([start]) };
+        let values = BTreeSet::from([start]);
+        let mut reach = Self { group, inputs: machine.inputs, between: values.clone(), values };
         let mut open = vec![start];
         while let Some(value) = open.pop() {
             for next in successors(machine, group, value) {
                 if reach.values.insert(next) {
                     open.push(next);
                 }
+                let agree = !(value ^ next);
+                reach.between.extend((0..=group).filter(|mix| mix & !group == 0 && (mix ^ value) & agree == 0));
             }
         }
         reach
     }
 
-    pub fn occurs(&self, state: u32) -> bool {
-        self.values.contains(&(state & self.group))
+    /// Whether the event of a root can begin in a state.
+    pub fn occurs(&self, state: u32, root: usize) -> bool {
+        let values = if root < self.inputs { &self.values } else { &self.between };
+        values.contains(&(state & self.group))
     }
 }
 

@@ -403,9 +403,9 @@ fn compare(instance: &str, machine: &Machine, scan: &Scan) -> Result<(usize, usi
     let mut wrong = String::new();
     let (mut exact, mut nets) = (0, 0);
     for net in machine.pins() {
-        let shown = explorer.shown(net, |_| true);
+        let shown = explorer.shown(net, |_, _| true);
         let most = Said::at_most(machine, &shown);
-        let least = Said::at_least(machine, &explorer.shown(net, |state| reach.occurs(state)));
+        let least = Said::at_least(machine, &explorer.shown(net, |state, root| reach.occurs(state, root)));
         nets += 1;
         exact += usize::from(least.kinds == most.kinds);
         let hazards = listed.remove(&name(net)).unwrap_or_default();
@@ -482,7 +482,7 @@ fn the_engine_shows_exactly_what_the_launch_explorer_shows() {
                 .iter()
                 .map(|one| (names[&one.root].clone(), one.rises, step(one.step), one.kind.name()))
                 .collect();
-            let expected: BTreeSet<_> = (explorer.shown(net, |_| true).iter())
+            let expected: BTreeSet<_> = (explorer.shown(net, |_, _| true).iter())
                 .map(|one| (source_name(&machine, one.root), one.rises, one.when, one.kind.name()))
                 .collect();
             hazards += expected.len();

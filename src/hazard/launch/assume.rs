@@ -26,6 +26,13 @@ impl Encoder<'_> {
         for (groups, one) in [(&assumptions.one_hot, true), (&assumptions.exclusive, false)] {
             for group in groups {
                 let edges = self.relevant(group);
+                // Where the root is one of several flip-flops that an edge moves together, the others may have moved
+                // already or not, so the group need not hold in between.
+                let nodes: Vec<usize> = edges.iter().map(|edge| edge.node()).collect();
+                let root = self.event.root;
+                if matches!(self.fabric.role(root), Role::Cell(_)) && self.fabric.expanded(&nodes).contains(&root) {
+                    continue;
+                }
                 let values: Vec<Literal> = edges.iter().map(|&edge| self.value(edge)).collect();
                 self.at_most_one(&values);
                 if one && !values.is_empty() {

@@ -9,7 +9,7 @@ use std::collections::HashMap;
 
 use super::encode::{Encoder, Event, Layer, Looped, Move};
 use super::fabric::{Fabric, Role};
-use super::reach::Reachable;
+use super::reach::{Moment, Reachable};
 use crate::hazard::Undecided;
 use crate::hazard::cone::{Edge, Op};
 use crate::hazard::solver::{Answer, Literal, Solver};
@@ -56,6 +56,8 @@ pub(super) struct Inquiry<'a> {
     pub(super) second: Move,
     bounds: Bounds<'a>,
     conflicts: u64,
+    /// Whether a ring of open latches was met: its data is bound to nothing, so no model tells anything any more.
+    looped: bool,
     /// Whether an answer leans on the reachable states.
     pub(super) leans: bool,
 }
@@ -85,7 +87,7 @@ impl<'a> Inquiry<'a> {
         let first = encoder.target(Layer::First, target)?;
         let second = encoder.target(Layer::Second, target)?;
         encoder.assume(target)?;
-        Ok(Self { encoder, first, second, bounds, conflicts, leans: false })
+        Ok(Self { encoder, first, second, bounds, conflicts, looped: false, leans: false })
     }
 
     /// Whether the target can do more in either step than hold still or change cleanly once.
@@ -96,6 +98,9 @@ impl<'a> Inquiry<'a> {
 
     /// Whether an event exists in which all of `wanted` hold.
     pub(super) fn ask(&mut self, wanted: &[Literal]) -> Result<bool, Undecided> {
+        if self.looped {
+            return Err(Undecided::Loop);
+        }
         for _ in 0..ROUNDS {
             if self.encoder.size() > SIZE {
                 return Err(Undecided::Budget);
@@ -110,7 +115,10 @@ impl<'a> Inquiry<'a> {
                 Answer::Satisfiable => match self.refine() {
                     Ok(true) => {}
                     Ok(false) => return Ok(true),
-                    Err(Looped) => return Err(Undecided::Loop),
+                    Err(Looped) => {
+                        self.looped = true;
+                        return Err(Undecided::Loop);
+                    }
                 },
             }
         }
@@ -154,7 +162,8 @@ impl<'a> Inquiry<'a> {
             let bits = reachable.group.iter().enumerate();
             let state =
                 bits.fold(0, |state, (at, &node)| state | u32::from(snapshot.value(Edge::new(node, false))) << at);
-            (!reachable.contains(state)).then(|| (reachable, state, reachable.reason(state)))
+            let moment = Moment::of(fabric, self.encoder.event.root);
+            (!reachable.contains(state, moment)).then(|| (reachable, state, reachable.reason(state, moment)))
         });
         let mut unread = Vec::new();
         for (&index, data) in &self.encoder.data {

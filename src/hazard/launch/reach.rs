@@ -4,6 +4,9 @@
 //!
 //! A step here can do more than an event: any of the clocks may fire, and any of the asynchronous controls may act,
 //! together or alone. So what is not reached here is not reached by the design, once it was reset.
+//!
+//! Flip-flops that one edge moves together are followed one at a time where their outputs start events of their own: the
+//! others may have moved already or not. So such an event begins anywhere between a state and the next.
 
 use std::collections::{BTreeMap, BTreeSet};
 
@@ -18,6 +21,8 @@ const BITS: usize = 20;
 /// Reached states and steps between them beyond which a group says nothing.
 const STATES: usize = 1 << 13;
 const STEPS: usize = 1 << 15;
+/// States looked up on the way from a state to the next, in all.
+const MIXES: usize = 1 << 20;
 /// Conflicts per step, and sources tried as a synchronous reset.
 const CONFLICTS: u64 = 2_000;
 const RESETS: usize = 64;
@@ -28,6 +33,24 @@ pub(super) struct Reachable {
     /// The flip-flops as free nodes; bit `n` of a state is the value of the one at position `n`.
     pub(super) group: Vec<usize>,
     states: BTreeSet<u32>,
+    /// Those and all on the way from one to the next, each flip-flop having moved or not.
+    between: BTreeSet<u32>,
+}
+
+/// When a state is looked at.
+#[derive(Clone, Copy, PartialEq, Eq, Debug)]
+pub(super) enum Moment {
+    /// No flip-flop is about to move.
+    Rest,
+    /// A flip-flop moves, perhaps as one of several.
+    Launch,
+}
+
+impl Moment {
+    /// When the event of a root begins.
+    pub(super) fn of(fabric: &Fabric<'_>, root: usize) -> Self {
+        if matches!(fabric.role(root), Role::Cell(_)) { Moment::Launch } else { Moment::Rest }
+    }
 }
 
 impl Reachable {
@@ -38,16 +61,23 @@ impl Reachable {
         Search::new(fabric, &group).run()
     }
 
-    pub(super) fn contains(&self, state: u32) -> bool {
-        self.states.contains(&state)
+    pub(super) fn contains(&self, state: u32, moment: Moment) -> bool {
+        self.at(moment).contains(&state)
+    }
+
+    fn at(&self, moment: Moment) -> &BTreeSet<u32> {
+        match moment {
+            Moment::Rest => &self.states,
+            Moment::Launch => &self.between,
+        }
     }
 
     /// The bits of an unreachable state that already tell that it is one, as a mask: as few as a greedy choice finds.
-    pub(super) fn reason(&self, state: u32) -> u32 {
+    pub(super) fn reason(&self, state: u32, moment: Moment) -> u32 {
         let mut mask = low_bits(self.group.len());
         for bit in (0..self.group.len()).map(|bit| 1u32 << bit) {
             let fewer = mask & !bit;
-            if self.states.iter().all(|reached| (reached ^ state) & fewer != 0) {
+            if self.at(moment).iter().all(|reached| (reached ^ state) & fewer != 0) {
                 mask = fewer;
             }
         }
@@ -151,7 +181,8 @@ impl<'a> Search<'a> {
     fn run(mut self) -> Option<Reachable> {
         let mut open: Vec<u32> = self.starts()?;
         let mut states: BTreeSet<u32> = open.iter().copied().collect();
-        let mut steps = 0;
+        let mut between: BTreeSet<u32> = BTreeSet::new();
+        let (mut steps, mut mixes) = (0, 0);
         while let Some(state) = open.pop() {
             // Found successors are ruled out while this state is looked at.
             let guard = self.clauses.solver.variable();
@@ -168,8 +199,19 @@ impl<'a> Search<'a> {
                 if states.insert(next) {
                     open.push(next);
                 }
-                if states.len() > STATES || steps > STEPS {
+                let moving = state ^ next;
+                mixes += 1usize << moving.count_ones();
+                if states.len() > STATES || steps > STEPS || mixes > MIXES {
                     return None;
+                }
+                // All subsets of the bits that move, from all of them down to none.
+                let mut moved = moving;
+                loop {
+                    between.insert(state ^ moved);
+                    if moved == 0 {
+                        break;
+                    }
+                    moved = (moved - 1) & moving;
                 }
                 let mut other: Vec<Literal> = self.is(&self.next, next).into_iter().map(|literal| !literal).collect();
                 other.push(!guard);
@@ -178,7 +220,7 @@ impl<'a> Search<'a> {
             self.clauses.solver.clause(&[!guard]);
         }
         let all = states.len() == 1usize << self.group.len();
-        (!all).then(|| Reachable { group: self.group.to_vec(), states })
+        (!all).then(|| Reachable { group: self.group.to_vec(), states, between })
     }
 
     /// The states right after reset: each flip-flop has the value of an asynchronous control, or of its initialiser; one
