@@ -124,7 +124,7 @@ pub struct Flatten {
 
 #[derive(Args, Debug)]
 pub struct Replay {
-    /// The beginning of the finding's fingerprint, as the JSON output of scan has it
+    /// The beginning of the finding's fingerprint, as scan prints it
     #[arg(value_parser = fingerprint)]
     pub fingerprint: String,
     #[command(flatten)]
@@ -136,7 +136,7 @@ pub struct Replay {
 
 #[derive(Args, Debug)]
 pub struct Cure {
-    /// The beginning of the finding's fingerprint, as the JSON output of scan has it
+    /// The beginning of the finding's fingerprint, as scan prints it
     #[arg(value_parser = fingerprint)]
     pub fingerprint: String,
     #[command(flatten)]
@@ -197,7 +197,7 @@ fn fingerprint(text: &str) -> Result<String, String> {
     if !text.is_empty() && text.chars().all(|digit| digit.is_ascii_hexdigit()) {
         Ok(text.to_ascii_lowercase())
     } else {
-        Err("a fingerprint is made of hexadecimal digits, as the JSON output of scan has it".to_string())
+        Err("a fingerprint is made of hexadecimal digits, as scan prints it".to_string())
     }
 }
 

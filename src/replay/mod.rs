@@ -22,8 +22,6 @@ use crate::source::PathError;
 const ROUNDS: usize = 200;
 /// Values that a witness leaves open are tried in all combinations up to this many.
 const GUESSED: usize = 6;
-/// Digits of a fingerprint that are enough to tell findings apart by eye.
-const DIGITS: usize = 12;
 /// The most findings named when none fits.
 const NAMED: usize = 20;
 
@@ -68,8 +66,7 @@ pub(crate) fn select<'a>(findings: &'a [Finding], prefix: &str) -> Result<&'a Fi
     let fitting: Vec<&Finding> = findings.iter().filter(|finding| finding.fingerprint.starts_with(&prefix)).collect();
     let listed = |findings: &[&Finding]| {
         let line = |finding: &&Finding| {
-            let digits = finding.fingerprint.get(..DIGITS).unwrap_or(&finding.fingerprint);
-            format!("\n    {digits}  {} on {}", finding.rule.name(), finding.net)
+            format!("\n    {}  {} on {}", finding.short_fingerprint(), finding.rule.name(), finding.net)
         };
         let mut lines: String = findings.iter().take(NAMED).map(line).collect();
         if findings.len() > NAMED {
@@ -108,15 +105,15 @@ pub(crate) fn replay(graph: &Graph, finding: &Finding) -> Result<Replay, PathErr
     if finding.hazards.is_empty() {
         return Err(nothing_to_replay(finding));
     }
-    let digits = finding.fingerprint.get(..DIGITS).unwrap_or(&finding.fingerprint);
     let count = finding.hazards.len();
     let mut replay = Replay { files: Vec::new(), summary: String::new(), complete: true };
-    replay.summary = format!("{} on {} (fingerprint {digits})\n", finding.rule.name(), finding.net);
+    replay.summary =
+        format!("{} on {} (fingerprint {})\n", finding.rule.name(), finding.net, finding.short_fingerprint());
     for (index, hazard) in finding.hazards.iter().enumerate() {
         let number = index + 1;
         replay.summary +=
             &format!("  hazard {number} of {count}: {} on {} when {}\n", hazard.kind, hazard.net, moves(hazard));
-        let subject = Subject { graph, finding, hazard, number, digits };
+        let subject = Subject { graph, finding, hazard, number };
         match subject.files() {
             Ok(files) => {
                 for (name, _) in &files {
@@ -165,7 +162,6 @@ struct Subject<'a> {
     finding: &'a Finding,
     hazard: &'a Hazard,
     number: usize,
-    digits: &'a str,
 }
 
 impl Subject<'_> {
@@ -182,7 +178,7 @@ impl Subject<'_> {
         let name = format!("{}-{}", self.number, self.hazard.kind);
         let mut files = Vec::new();
         let file = format!("{name}.v");
-        let module = format!("replay_{}_{}", self.digits, self.number);
+        let module = format!("replay_{}_{}", self.finding.short_fingerprint(), self.number);
         let head = Head { module: &module, story: &self.story(), file: &file };
         files.push((file.clone(), bench::chosen(&circuit, &plan, &lengths, &head).into_bytes()));
         let dump = vcd::dump(&circuit, &steps, &lengths).map_err(|_| Refusal::Foreign)?;

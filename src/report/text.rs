@@ -159,6 +159,9 @@ fn of_finding(sources: &SourceSet, finding: &Finding) -> Diagnostic<FileId> {
         notes.push(format!("cover ({effect}):\n  {}", wrapped(&cover.verilog).replace('\n', "\n  ")));
     }
     notes.extend(finding.notes.iter().map(|note| wrapped(note)));
+    if !finding.hazards.is_empty() {
+        notes.push(format!("fingerprint {}: see `stillwire replay` and `stillwire cure`", finding.short_fingerprint()));
+    }
     Diagnostic::new(level(finding.severity))
         .with_code(finding.rule.name())
         .with_message(&finding.message)

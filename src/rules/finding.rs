@@ -279,7 +279,15 @@ pub struct Finding {
     pub known: bool,
 }
 
+/// Digits of a fingerprint that are enough to tell findings apart by eye.
+const SHORT_DIGITS: usize = 12;
+
 impl Finding {
+    /// The beginning of the fingerprint, enough for people and for `replay` and `cure`.
+    pub fn short_fingerprint(&self) -> &str {
+        self.fingerprint.get(..SHORT_DIGITS).unwrap_or(&self.fingerprint)
+    }
+
     /// Whether somebody accepted it, by a sign-off or in the ledger: it is reported and fails nothing.
     pub fn is_accepted(&self) -> bool {
         self.signoff.is_some() || self.known
