@@ -100,6 +100,11 @@ impl<'a> Elaborator<'a> {
         self.binds.push(Bind { target, item, at, met: false });
     }
 
+    /// Whether the bind at this place was found before its targets were elaborated; later it would come too late for them.
+    pub fn is_noted(&self, at: Span) -> bool {
+        self.binds.iter().any(|bind| bind.at == at)
+    }
+
     /// Elaborates what is bound to an instance, which `scope` is that of.
     pub fn bound_instances(&mut self, scope: ScopeId, module: &'a Module) {
         if self.binds.is_empty() {

@@ -154,6 +154,8 @@ pub(super) struct Elaborator<'a> {
     pub slot: Option<super::hierarchy::Slot>,
     /// Variables that functions assign which are called outside of processes.
     pub side_effects: Vec<VariableId>,
+    /// Variables that get values from what is left out as simulation, each with what that is.
+    pub simulated: Vec<(VariableId, &'static str)>,
     /// Variables of interfaces at the top whose direction shows only when all drivers are known.
     pub undirected: Vec<(VariableId, InstanceId, String)>,
 }
@@ -180,7 +182,7 @@ impl<'a> Elaborator<'a> {
         this.unused_binds();
         this.do_works();
         this.direct_interface_ports();
-        this.report_side_effects();
+        this.report_left_out();
         this.make_cells();
         this.resolve_drivers();
         let mut diagnostics = this.diagnostics;
@@ -273,6 +275,7 @@ impl<'a> Elaborator<'a> {
             iterators: HashMap::new(),
             slot: None,
             side_effects: Vec::new(),
+            simulated: Vec::new(),
             undirected: Vec::new(),
         }
     }

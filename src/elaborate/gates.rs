@@ -70,21 +70,31 @@ impl<'a> Elaborator<'a> {
         }
     }
 
-    /// Reports the variables that such functions assign, unless nothing reads them, as nothing reads a loop counter.
-    pub fn report_side_effects(&mut self) {
-        let effects = std::mem::take(&mut self.side_effects);
-        if effects.is_empty() {
+    /// Reports the variables that such functions assign, and those that only what is left out as simulation assigns, unless
+    /// nothing reads them, as nothing reads a loop counter.
+    pub fn report_left_out(&mut self) {
+        let mut left_out: Vec<(VariableId, &str)> = Vec::new();
+        left_out.extend(self.side_effects.drain(..).map(|id| (id, "a function called outside of a process")));
+        let simulated = std::mem::take(&mut self.simulated);
+        left_out.extend(simulated.into_iter().filter(|&(id, _)| !self.is_driven(id)));
+        if left_out.is_empty() {
             return;
         }
         let used = self.used_nodes();
-        for id in effects {
+        for (id, by) in left_out {
             let variable = self.variable(id);
             if variable.is_port || variable.wires.iter().any(|wire| used.contains(wire)) {
-                let what = format!("assignment of `{}` by a function called outside of a process", variable.name);
+                let what = format!("assignment of `{}` by {by}", variable.name);
                 let span = variable.span;
                 self.report(*unsupported(what, span));
             }
         }
+    }
+
+    /// Whether anything drives a bit of a variable, before the drivers are resolved.
+    pub fn is_driven(&self, id: VariableId) -> bool {
+        let driven = |wire| self.drivers.contains_key(wire) || self.builder.driver(*wire).is_some();
+        self.variable(id).wires.iter().any(driven) || self.pending.iter().any(|pending| pending.variable == id)
     }
 
     fn enter(&mut self, scope: ScopeId) {

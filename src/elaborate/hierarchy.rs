@@ -394,8 +394,11 @@ impl<'a> Elaborator<'a> {
                 }
                 ItemKind::Module(module) if module.kind == ModuleKind::Program => self.skip("program"),
                 ItemKind::Module(module) => self.implicit_instance(scope, module, items)?,
-                ItemKind::Bind { .. } if self.scope(scope).is_module => {}
-                ItemKind::Bind { .. } => self.report(*unsupported("bind in a generate block", item.span)),
+                ItemKind::Bind { .. } if self.is_noted(item.span) => {}
+                ItemKind::Bind { .. } => {
+                    let what = "bind in a generate region, a nested module or a module that is bound itself";
+                    self.report(*unsupported(what, item.span));
+                }
                 ItemKind::ElabTask { name } => {
                     if matches!(name.as_str(), "$fatal" | "$error") {
                         return Err(wrong(format!("the design itself reports {name} here"), item.span));
@@ -647,6 +650,9 @@ impl<'a> Elaborator<'a> {
         self.instance = parent;
         match outcome {
             Ok(inner) => {
+                if module.kind == ModuleKind::Program {
+                    self.note_program_outputs(inner);
+                }
                 self.connect(module, scope, inner, actuals, slot);
                 Ok(Some(inner))
             }

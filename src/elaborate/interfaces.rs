@@ -270,11 +270,7 @@ impl<'a> Elaborator<'a> {
     /// Gives the signals of an interface without a modport their direction: what the design drives is an output.
     pub fn direct_interface_ports(&mut self) {
         for (id, instance, name) in std::mem::take(&mut self.undirected) {
-            let wires = &self.variable(id).wires;
-            let driven =
-                wires.iter().any(|wire| self.drivers.contains_key(wire) || self.builder.driver(*wire).is_some())
-                    || self.pending.iter().any(|pending| pending.variable == id);
-            let direction = if driven { PortDirection::Output } else { PortDirection::Input };
+            let direction = if self.is_driven(id) { PortDirection::Output } else { PortDirection::Input };
             self.top_port(id, instance, direction, name);
         }
     }

@@ -11,7 +11,7 @@ use super::controls::{Roles, Signal};
 use super::drivers::{Pending, PendingKind, Rung};
 use super::environment::{Environment, Mode};
 use super::scope::ScopeId;
-use super::simulation::only_simulates;
+use super::simulation::{only_simulates, takes_time};
 use crate::diagnostic::{Diagnostic, Kind};
 use crate::graph::{Edge, NodeId, NodeKind, SourceKind};
 use crate::source::Span;
@@ -116,6 +116,9 @@ impl<'a> Elaborator<'a> {
         self.points.clear();
         let layer = std::mem::take(&mut self.environment).layers.into_iter().next().unwrap_or_default();
         if outcome.is_err() {
+            if takes_time(&process.body) {
+                self.note_simulated(&process.body);
+            }
             self.diagnostics.truncate(before);
             self.skip("initial block that is not constant");
             return;

@@ -2,12 +2,16 @@
 //! and the processes that do nothing but use them. All of it is counted and passed over.
 //!
 //! Invariant: nothing that can reach a net is passed over. A value of such a thing in logic is an unsupported construct, and a
-//! statement is left out only when it cannot assign anything else.
+//! statement is left out only when it cannot assign anything else. What an initial block or a program that is left out
+//! assigns is reported when nothing else drives it and something reads it.
 
 use super::context::Elaborator;
+use super::place::Base;
+use super::ports::Target;
 use super::scope::{ScopeId, Symbol};
+use super::statement::collect_targets;
 use crate::syntax::ast::{
-    DataType, DataTypeKind, Dim, Expr, ExprKind, Ident, ItemKind, ModuleKind, Stmt, StmtKind, Unit,
+    DataType, DataTypeKind, Dim, Direction, Expr, ExprKind, Ident, ItemKind, ModuleKind, Stmt, StmtKind, Unit,
 };
 
 impl<'a> Elaborator<'a> {
@@ -87,6 +91,51 @@ impl<'a> Elaborator<'a> {
             Some(Symbol::Simulation { what, inert: true }) => Some(what),
             _ => None,
         }
+    }
+}
+
+/// What is left out and yet gives values: processes that go on after the start, and programs.
+impl<'a> Elaborator<'a> {
+    /// Takes note of what an initial block assigns that is left out.
+    pub fn note_simulated(&mut self, body: &'a Stmt) {
+        let mut targets = Vec::new();
+        collect_targets(body, &mut targets);
+        for (target, _) in targets {
+            let places = self.targets(target).unwrap_or_default();
+            for place in places {
+                if let Base::Variable(id) = place.base {
+                    self.simulated.push((id, "an initial block that waits"));
+                }
+            }
+        }
+    }
+
+    /// Takes note of the outputs of a program, whose body is left out.
+    pub fn note_program_outputs(&mut self, program: ScopeId) {
+        for port in self.ports.get(&program).cloned().unwrap_or_default().iter() {
+            if let (Target::Variable(id), false) = (port.target, port.direction == Direction::Input) {
+                self.simulated.push((id, "a program"));
+            }
+        }
+    }
+}
+
+/// Whether a statement waits for an event or a time; without that it is over before anything changes.
+pub(super) fn takes_time(statement: &Stmt) -> bool {
+    match &statement.kind {
+        StmtKind::Timed { .. } => true,
+        StmtKind::Block { body, .. } => body.iter().any(takes_time),
+        StmtKind::If { then, otherwise, .. } => takes_time(then) || otherwise.as_deref().is_some_and(takes_time),
+        StmtKind::Case(case) => {
+            case.arms.iter().any(|arm| takes_time(&arm.body)) || case.default.as_deref().is_some_and(takes_time)
+        }
+        StmtKind::For { body, .. }
+        | StmtKind::Foreach { body, .. }
+        | StmtKind::While { body, .. }
+        | StmtKind::DoWhile { body, .. }
+        | StmtKind::Repeat { body, .. }
+        | StmtKind::Forever { body } => takes_time(body),
+        _ => false,
     }
 }
 

@@ -365,8 +365,12 @@ impl<'t> Walk<'t> {
         }
     }
 
-    /// A port declaration of a body: each initial value moves behind the declaration.
+    /// A port declaration of a body: each initial value moves behind the declaration. Only a variable has one: what
+    /// stands behind a net is a driver, which no standard allows there.
     fn port_declaration(&mut self) {
+        if !self.declares_variables() {
+            return self.skip_through_semicolon();
+        }
         let mut moved = Vec::new();
         while !self.ended() && !matches!(self.now(), ";" | "endmodule") {
             if self.now() != "=" {
@@ -392,6 +396,16 @@ impl<'t> Walk<'t> {
             self.edits.push(Edit { out: end..end, new: moved });
         }
         self.take(";");
+    }
+
+    /// Whether the direction at this place is followed by a type of variables.
+    fn declares_variables(&self) -> bool {
+        const NETS: &[&str] =
+            &["wire", "tri", "tri0", "tri1", "wand", "wor", "triand", "trior", "trireg", "uwire", "supply0", "supply1"];
+        let first = self.word(self.at + 1);
+        let behind = self.word(self.at + 2);
+        let is_type = behind.starts_with(|c: char| c.is_alphabetic() || matches!(c, '_' | '\\' | '[' | ':'));
+        is_type && !NETS.contains(&first) && !matches!(first, "signed" | "unsigned" | "[")
     }
 
     fn finish_numbers(&mut self) {
