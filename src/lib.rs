@@ -197,9 +197,9 @@ pub fn replay(
     progress: Progress<'_>,
 ) -> Result<replay::Replay, PathError> {
     on_big_stacks(request, || {
-        let (loaded, design, _) = front_end(request, environment, progress)?;
+        let (loaded, design, diagnostics) = front_end(request, environment, progress)?;
         progress(Stage::Deciding);
-        let (design, findings) = findings(request, &loaded, design)?;
+        let (design, findings) = findings(request, &loaded, design, &diagnostics)?;
         let finding = replay::select(&findings, fingerprint)?;
         replay::replay(&design.graph, finding)
     })
@@ -218,9 +218,9 @@ pub fn cure(
     progress: Progress<'_>,
 ) -> Result<cure::Cure, PathError> {
     on_big_stacks(request, || {
-        let (loaded, design, _) = front_end(request, environment, progress)?;
+        let (loaded, design, diagnostics) = front_end(request, environment, progress)?;
         progress(Stage::Deciding);
-        let (design, before) = findings(request, &loaded, design)?;
+        let (design, before) = findings(request, &loaded, design, &diagnostics)?;
         let finding = replay::select(&before, fingerprint)?;
         let proposal = match cure::propose(&design.graph, &loaded.units, &loaded.sources, finding)? {
             Ok(proposal) => proposal,
@@ -233,20 +233,28 @@ pub fn cure(
             let said = diagnostics.first().map_or(String::new(), |first| format!(": {}", first.message));
             return Ok(cure::Cure::Withheld { reason: format!("the changed text cannot be analysed{said}") });
         }
-        let (_, after) = findings(&changed, &again, cured)?;
+        let (_, after) = findings(&changed, &again, cured, &diagnostics)?;
         Ok(cure::judge(&proposal, finding, &before, &after, folder))
     })
 }
 
-/// What the rules find, without sign-offs.
+/// All that a scan finds, without sign-offs.
 fn findings(
     request: &Request,
     loaded: &Loaded,
     design: elaborate::Design,
+    diagnostics: &[Diagnostic],
 ) -> Result<(elaborate::Design, Vec<rules::Finding>), PathError> {
     let protection = syntax::Protection::collect(&loaded.units);
-    let decided = decided(request, loaded, design, &protection)?;
-    Ok((decided.design, decided.outcome.findings))
+    let Decided { design, pragmas, unplaced, assumed, outcome } = decided(request, loaded, design, &protection)?;
+    let mut findings = outcome.findings;
+    findings.extend(unplaced);
+    findings.extend(assumed.findings);
+    findings.extend(diagnostics.iter().chain(&pragmas.diagnostics).filter_map(|said| match rules::say(said) {
+        rules::Said::Finding(finding) => Some(*finding),
+        rules::Said::Message(_) => None,
+    }));
+    Ok((design, findings))
 }
 
 /// Every stage recurses over the nesting of the sources, and so does dropping its trees.

@@ -204,10 +204,10 @@ fn read_settings(input: &Input) -> Result<Settings, PathError> {
     }
 }
 
-/// What the command line says beside the settings.
-fn command_line(arguments: &cli::Scan) -> settings::CommandLine {
+/// What the command line says in the terms of the settings.
+fn command_line(arguments: &cli::Scan) -> Settings {
     let input = &arguments.input;
-    settings::CommandLine {
+    Settings {
         top: input.top.clone(),
         set: input.set.clone(),
         include: input.include.clone(),
@@ -215,6 +215,7 @@ fn command_line(arguments: &cli::Scan) -> settings::CommandLine {
         libraries: input.cells.clone(),
         gate: arguments.gate.map(Severity::from),
         show: arguments.show.map(Severity::from),
+        ..Settings::default()
     }
 }
 

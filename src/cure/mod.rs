@@ -1,6 +1,6 @@
 //! Cure: the change that removes a finding, as a unified diff against the source. Nothing is offered on trust: the changed
 //! text is read, elaborated and decided like any other, and the diff is printed only when the finding is gone and no
-//! other came.
+//! other error or warning came.
 
 mod patch;
 mod statement;
@@ -11,7 +11,7 @@ use std::path::{Component, Path, PathBuf};
 use similar::TextDiff;
 
 use crate::graph::Graph;
-use crate::rules::{CoverText, Finding, PinKind, Severity, Verdict};
+use crate::rules::{CoverText, Finding, PinKind, Rule, Severity, Verdict};
 use crate::source::{PathError, SourceSet};
 use crate::syntax::ast::Unit;
 
@@ -97,13 +97,17 @@ pub(crate) fn judge(
     after: &[Finding],
     folder: &Path,
 ) -> Cure {
-    let same = |one: &Finding, other: &Finding| one.rule == other.rule && one.net == other.net;
+    // What is not about a net is told apart by its message.
+    let same = |one: &Finding, other: &Finding| {
+        one.rule == other.rule && one.net == other.net && (!one.net.is_empty() || one.message == other.message)
+    };
     if after.iter().any(|other| same(other, finding)) {
         let reason = format!("the changed text still shows {} on {}", finding.rule.name(), finding.net);
         return Cure::Withheld { reason };
     }
-    // Notes may come up that were not worth saying beside the finding.
-    for new in after.iter().filter(|new| new.severity > Severity::Note) {
+    // Notes may come up that were not worth saying beside the finding, but what is not analysed any more is no cure.
+    let counts = |new: &&Finding| new.severity > Severity::Note || new.rule == Rule::UnsupportedConstruct;
+    for new in after.iter().filter(counts) {
         let old = before.iter().find(|old| same(old, new));
         let worse = old.is_none_or(|old| new.severity > old.severity || !shown(new).is_subset(&shown(old)));
         if worse {
@@ -112,7 +116,7 @@ pub(crate) fn judge(
         }
     }
     let proof = format!(
-        "proven: with this change {} on {} is gone and no other finding came ({} before, {} after)",
+        "proven: with this change {} on {} is gone and no other error or warning came (findings: {} before, {} after)",
         finding.rule.name(),
         finding.net,
         before.len(),

@@ -178,6 +178,12 @@ impl Writer<'_> {
                     let value = self.table(at, table);
                     let _ = writeln!(text, "  wire {drives} = {value};");
                 }
+                Op::Late => {
+                    let _ = writeln!(text, "  // A latch that opens as the step begins.");
+                    let data = self.pin(at, 0);
+                    let _ =
+                        writeln!(text, "  wire {drives} = (step == {}) ? {data} : 1'b{before};", self.plan.step + 1);
+                }
                 Op::Entry => text += &self.entry(at, &drives),
             }
             text += &self.flip(at, timing, &drives, &name, held);

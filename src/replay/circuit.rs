@@ -26,6 +26,8 @@ pub(super) enum Op {
     Gate(GateKind),
     /// The function of a user-defined primitive.
     Table(Promises),
+    /// A latch that holds the other value than its data until the step begins, and passes its data from then on.
+    Late,
     /// The entry of an arithmetic operator: since no implementation is fixed, a change of its one pin may bounce.
     Entry,
 }
@@ -120,6 +122,7 @@ impl Circuit {
         // A loop's feedback net is both given and asked for: whoever reads it reads the given value.
         let looped: Vec<NodeId> = given.iter().copied().filter(|&node| !graph.fanin(node).is_empty()).collect();
         let passing = transition.witness.launch.as_ref().map_or(&[][..], |launch| &launch.passing);
+        let late = transition.witness.launch.as_ref().map_or(&[][..], |launch| &launch.late);
         let passed: Vec<(NodeId, NodeId)> = passing
             .iter()
             .filter_map(|&latch| Some((latch, graph.cells.iter().find(|cell| cell.output == latch)?.data)))
@@ -137,7 +140,7 @@ impl Circuit {
         let mut ends = vec![target];
         ends.extend(also.iter().filter_map(|&node| cone.read_of(node)));
         let frozen = cone.freeze();
-        let mut whole = Self::whole(graph, &frozen, &ends, transition.calm, |copy| {
+        let mut whole = Self::whole(graph, &frozen, &ends, late, transition.calm, |copy| {
             let node = readers.get(&copy).copied();
             steps.iter().map(|step| node.map_or(Wave::constant(false), |node| step.wave(node))).collect()
         })?;
@@ -159,6 +162,7 @@ impl Circuit {
         graph: &Graph,
         frozen: &FrozenCone,
         ends: &[NodeId],
+        late: &[NodeId],
         calm: bool,
         given: impl Fn(NodeId) -> Vec<Wave>,
     ) -> Result<Self, Refusal> {
@@ -171,6 +175,7 @@ impl Circuit {
             let op = match frozen.graph.kind(node) {
                 _ if order.looped[at] => Op::Given,
                 NodeKind::Const(value) => Op::Const(value),
+                _ if frozen.original(node).is_some_and(|latch| late.contains(&latch)) => Op::Late,
                 NodeKind::Gate(kind) => Op::Gate(kind),
                 NodeKind::Table(table) => Op::Table(Promises::new(&frozen.graph.tables[table.index()])),
                 NodeKind::OpIn(_) => Op::Entry,
@@ -308,6 +313,10 @@ fn wave(op: &Op, pins: &[Wave]) -> Wave {
         Op::Entry | Op::Given => {
             let driver = pins.first().copied().unwrap_or(Wave::constant(false));
             Wave { h: driver.moves(), ..driver }
+        }
+        Op::Late => {
+            let data = pins.first().copied().unwrap_or(Wave::constant(false));
+            Wave { i: !data.i, ..data }
         }
     }
 }

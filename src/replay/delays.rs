@@ -103,6 +103,11 @@ pub(super) fn stimulus(wave: Wave) -> Signal {
 fn shown(element: &Element, arrived: &[Signal], wave: Wave, timing: &Timing, flips: bool) -> Signal {
     match &element.op {
         Op::Given => stimulus(wave),
+        Op::Late => {
+            let data = arrived.first().cloned().unwrap_or_else(|| Signal::constant(false));
+            let opens = std::iter::once((0, data.start));
+            Signal::assigned(!data.start, opens.chain(data.values()).collect())
+        }
         Op::Const(value) => Signal::constant(*value),
         Op::Gate(kind) => Signal::combined(arrived, |pins| gate(*kind, pins)),
         Op::Table(table) => {
@@ -223,6 +228,7 @@ pub(super) fn settled(op: &Op, pins: &[bool]) -> bool {
         Op::Gate(kind) => gate(*kind, pins),
         Op::Table(table) => value(table, pins),
         Op::Given | Op::Entry => pins.first().copied().unwrap_or(false),
+        Op::Late => pins.first().is_some_and(|data| !data),
     }
 }
 
@@ -259,6 +265,7 @@ mod tests {
             first: vec![(node("c"), false)],
             second: vec![(node("q"), true)],
             passing: Vec::new(),
+            late: Vec::new(),
             raced: Vec::new(),
             target: [false, true, false],
         };
@@ -281,6 +288,7 @@ mod tests {
             first: Vec::new(),
             second: Vec::new(),
             passing: Vec::new(),
+            late: Vec::new(),
             raced: vec![node("l")],
             target: [false; 3],
         };
@@ -288,6 +296,30 @@ mod tests {
         let witness = Witness { changes: Vec::new(), holds, target: (false, false), launch: Some(launch) };
         let transition = Transition { target: node("f"), witness, calm: false };
         assert_eq!(changes(&circuit.graph, &transition), (2, 0));
+    }
+
+    /// A latch that held 1 opens as the step begins, finds its data at 0 and passes a pulse of it.
+    #[test]
+    fn a_latch_that_opens_late_moves_first() {
+        let nodes = "e = input\na = input\nb = input\nn = not b\nd = and a n\nl = latch\nf = buf l\n";
+        let circuit = parsed(&format!("{nodes}c0 = cell l data d enable e 1"));
+        let node = |name: &str| circuit.node(name).unwrap_or(NodeId::new(0));
+        let both = vec![(node("a"), false), (node("b"), false)];
+        let launch = Launch {
+            root: node("e"),
+            rises: true,
+            step: Step::Second,
+            cause: Cause::Function,
+            first: Vec::new(),
+            second: both.clone(),
+            passing: vec![node("l")],
+            late: vec![node("l")],
+            raced: Vec::new(),
+            target: [true, true, false],
+        };
+        let witness = Witness { changes: both, holds: Vec::new(), target: (true, false), launch: Some(launch) };
+        let transition = Transition { target: node("f"), witness, calm: false };
+        assert_eq!(changes(&circuit.graph, &transition), (3, 1));
     }
 
     /// Pulses that multiply through a ladder of exclusive-ors of a net and its delayed self are held back, and every

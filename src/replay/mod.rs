@@ -144,16 +144,26 @@ fn nothing_to_replay(finding: &Finding) -> PathError {
     PathError::new(message, help)
 }
 
-/// "top.s falls and top.t rises".
+/// "top.s falls", or "top.clk rises, then top.s falls and top.t rises".
 fn moves(hazard: &Hazard) -> String {
-    let after = |name: &String| hazard.after.iter().find(|(other, _)| other == name).map(|(_, value)| *value);
-    let moves: Vec<String> = hazard
-        .before
-        .iter()
-        .filter(|(name, before)| after(name).is_some_and(|after| after != *before))
-        .map(|(name, before)| format!("{name} {}", if *before { "falls" } else { "rises" }))
-        .collect();
-    moves.join(" and ")
+    let joined = |moving: &mut dyn Iterator<Item = &(String, bool)>| {
+        let moves: Vec<String> =
+            moving.map(|(name, before)| format!("{name} {}", if *before { "falls" } else { "rises" })).collect();
+        moves.join(" and ")
+    };
+    let Some(launch) = &hazard.launch else {
+        return joined(&mut hazard.before.iter().filter(|(name, _)| hazard.changes.contains(name)));
+    };
+    let root = (launch.root.clone(), !launch.rises);
+    let others = launch.first.iter().filter(|(name, _)| *name != launch.root);
+    let mut text = joined(&mut std::iter::once(&root).chain(others));
+    if !launch.second.is_empty() {
+        text += &format!(", then {}", joined(&mut launch.second.iter()));
+    }
+    if !launch.raced.is_empty() {
+        text += &format!(", while the data of {} moves as it opens or closes", launch.raced.join(" and "));
+    }
+    text
 }
 
 /// One hazard of a finding.

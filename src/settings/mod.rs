@@ -19,7 +19,7 @@ use crate::rules::{Rule, Severity};
 use crate::source::PathError;
 use entry::{Entry, Text, entries};
 
-pub use show::{CommandLine, show};
+pub use show::show;
 
 /// The name that is looked for.
 pub const FILE_NAME: &str = "stillwire.toml";

@@ -9,20 +9,9 @@ use crate::assumptions::Origin;
 use crate::cells::{PinName, PinRole, Role};
 use crate::rules::Severity;
 
-/// What the command line says about things that the settings file can say as well.
-#[derive(Clone, PartialEq, Eq, Default, Debug)]
-pub struct CommandLine {
-    pub top: Vec<String>,
-    pub set: Vec<(String, String)>,
-    pub include: Vec<PathBuf>,
-    pub define: Vec<(String, Option<String>)>,
-    pub libraries: Vec<PathBuf>,
-    pub gate: Option<Severity>,
-    pub show: Option<Severity>,
-}
-
-/// The settings in force when `given` is on the command line. The text ends with a line end.
-pub fn show(settings: &Settings, given: &CommandLine) -> String {
+/// The settings in force when the command line says what `given` does: no exclusions, severities, assumptions or cells,
+/// since it has no words for them. The text ends with a line end.
+pub fn show(settings: &Settings, given: &Settings) -> String {
     let file = settings.file.as_ref().map_or_else(String::new, |file| file.display().to_string());
     let mut out = Out { text: String::new(), settings, file };
     match &settings.file {
@@ -113,7 +102,7 @@ impl Out<'_> {
         let _ = writeln!(self.text, "{key} = \"{}\"  # {origin}", severity.name());
     }
 
-    fn parameters(&mut self, given: &CommandLine) {
+    fn parameters(&mut self, given: &Settings) {
         if given.set.is_empty() && self.settings.set.is_empty() {
             return;
         }

@@ -106,6 +106,20 @@ fn a_watched_net_stays_watched() {
     assert!(after.contains("watch \"a relay\"\n  wire y;\n  (* keep *) wire y_written = s ? a : b;"), "{after}");
 }
 
+/// A watch on the line of the declaration would stay behind on the line of the last statement and mark nothing: that
+/// the finding is gone then proves nothing.
+#[test]
+fn a_watch_that_would_be_lost_withholds_the_cure() {
+    let folder = tempfile::tempdir().expect("a temporary folder");
+    let file = folder.path().join("design.v");
+    let source = "module t(input clk, s, a, b, output reg q);\n  wire y; assign y = s ? a : b; // stillwire: watch \"a relay\"\n  \
+                  always @(posedge clk) q <= y;\nendmodule\n";
+    std::fs::write(&file, source).expect("written");
+    let output = cure(&fingerprint(&scan(&[&file], &[]), "reconvergent-inversion"), folder.path(), "design.v");
+    assert_eq!(output.status.code(), Some(1), "{}", text(&output.stdout));
+    assert!(text(&output.stderr).contains("this watch marks no declaration"), "{}", text(&output.stderr));
+}
+
 /// A dynamic hazard takes other logic in place of the written one.
 #[test]
 fn a_dynamic_hazard_is_replaced() {

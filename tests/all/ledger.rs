@@ -6,6 +6,8 @@ use std::process::{Command, Output};
 
 use serde_json::Value;
 
+use crate::reading::Tree;
+
 /// A lane whose clear glitches when `sel` changes, used several times.
 const LANE: &str = "module lane(input clk, sel, a, b, d, output reg q);
     wire clear_n = sel ? a : b;
@@ -22,28 +24,9 @@ const TOP: &str = "module gates(input clk, input [3:0] sel, a, b, d, output [3:0
 endmodule
 ";
 
-struct Tree {
-    folder: tempfile::TempDir,
-}
-
 impl Tree {
-    fn new(files: &[(&str, &str)]) -> Self {
-        let tree = Self { folder: tempfile::tempdir().expect("a folder") };
-        for (name, text) in files {
-            tree.write(name, text);
-        }
-        tree
-    }
-
-    fn write(&self, name: &str, text: &str) {
-        let path = self.folder.path().join(name);
-        std::fs::create_dir_all(path.parent().expect("a folder")).expect("made");
-        std::fs::write(path, text).expect("written");
-    }
-
     fn run(&self, arguments: &[&str]) -> Output {
-        let output =
-            Command::new(env!("CARGO_BIN_EXE_stillwire")).args(arguments).current_dir(self.folder.path()).output();
+        let output = Command::new(env!("CARGO_BIN_EXE_stillwire")).args(arguments).current_dir(self.path("")).output();
         output.expect("the program starts")
     }
 
@@ -61,7 +44,7 @@ impl Tree {
     }
 
     fn read(&self, name: &str) -> String {
-        std::fs::read_to_string(self.folder.path().join(name)).expect("readable")
+        std::fs::read_to_string(self.path(name)).expect("readable")
     }
 }
 
@@ -86,10 +69,10 @@ fn the_ledger_survives_edits_elsewhere() {
     tree.ends(0, &["ledger", "write", "rtl", "--ledger", "known.toml"]);
     // Moved and renamed files, inserted lines, other line breaks, another order: the same findings.
     for name in ["lane.v", "gates.v"] {
-        std::fs::remove_file(tree.folder.path().join("rtl").join(name)).expect("removed");
+        std::fs::remove_file(tree.path("rtl").join(name)).expect("removed");
     }
-    tree.write("rtl/a_top/renamed_top.v", &format!("// moved\n\n{TOP}"));
-    tree.write("rtl/z/renamed_lane.v", &LANE.replace("sel ? a : b", "\n   sel\n     ? a\n     : b"));
+    tree.write("rtl/a_top/renamed_top.v", format!("// moved\n\n{TOP}").as_bytes());
+    tree.write("rtl/z/renamed_lane.v", LANE.replace("sel ? a : b", "\n   sel\n     ? a\n     : b").as_bytes());
     tree.ends(0, &["scan", "rtl", "--ledger", "known.toml"]);
 }
 
@@ -97,11 +80,11 @@ fn the_ledger_survives_edits_elsewhere() {
 fn changed_logic_and_new_findings_fail() {
     let tree = Tree::new(&[("rtl/lane.v", LANE), ("rtl/gates.v", TOP)]);
     tree.ends(0, &["ledger", "write", "rtl", "--ledger", "known.toml"]);
-    tree.write("rtl/lane.v", &LANE.replace("sel ? a : b", "sel ? a : (b & d)"));
+    tree.write("rtl/lane.v", LANE.replace("sel ? a : b", "sel ? a : (b & d)").as_bytes());
     let text = tree.ends(1, &["scan", "rtl", "--ledger", "known.toml"]);
     assert!(text.contains("0 entries remain, 1 is gone"), "{text}");
-    tree.write("rtl/lane.v", LANE);
-    tree.write("rtl/more.v", &LANE.replace("module lane", "module other_lane"));
+    tree.write("rtl/lane.v", LANE.as_bytes());
+    tree.write("rtl/more.v", LANE.replace("module lane", "module other_lane").as_bytes());
     let scanned = tree.json(&["scan", "rtl", "--ledger", "known.toml"]);
     let open: Vec<&Value> =
         scanned["findings"].as_array().expect("a list").iter().filter(|f| f["known"] == false).collect();
@@ -120,7 +103,7 @@ fn a_known_finding_that_became_worse_is_new() {
     let tree = Tree::new(&[("t.v", mild)]);
     tree.ends(0, &["ledger", "write", "t.v", "--ledger", "known.toml"]);
     tree.ends(0, &["scan", "t.v", "--gate", "warning", "--ledger", "known.toml"]);
-    tree.write("t.v", &bad);
+    tree.write("t.v", bad.as_bytes());
     tree.ends(1, &["scan", "t.v", "--gate", "warning", "--ledger", "known.toml"]);
 }
 
@@ -134,12 +117,12 @@ fn prune_drops_only_what_is_gone() {
     let text = tree.ends(0, &["ledger", "prune", "rtl", "--ledger", "known.toml"]);
     assert!(text.contains("0 entries dropped, 2 left"), "{text}");
     assert_eq!(tree.read("known.toml"), full);
-    tree.write("rtl/other.v", &other.replace("sel ? a : b", "a"));
+    tree.write("rtl/other.v", other.replace("sel ? a : b", "a").as_bytes());
     let text = tree.ends(0, &["ledger", "prune", "rtl", "--ledger", "known.toml"]);
     assert!(text.contains("1 entry dropped, 1 left"), "{text}");
     tree.ends(0, &["scan", "rtl", "--ledger", "known.toml"]);
     // What cannot be read is not gone.
-    tree.write("rtl/lane.v", "module lane(input a; endmodule\n");
+    tree.write("rtl/lane.v", "module lane(input a; endmodule\n".as_bytes());
     let text = tree.ends(3, &["ledger", "prune", "rtl", "--ledger", "known.toml"]);
     assert!(text.contains("nothing dropped"), "{text}");
     assert_eq!(tree.read("known.toml").matches("[[known]]").count(), 1);
@@ -159,7 +142,7 @@ fn a_ledger_that_cannot_be_read_stops_the_run() {
         &good.replace("ledger/1", "ledger/9"),
         &good.replace("\"error\"", "\"dire\""),
     ] {
-        tree.write("known.toml", bad);
+        tree.write("known.toml", bad.as_bytes());
         tree.ends(2, &["scan", "rtl", "--ledger", "known.toml"]);
     }
     assert!(!Path::new("stillwire-ledger.toml").exists());

@@ -45,9 +45,12 @@ pub(super) fn describe(inquiry: &Inquiry<'_>, net: Edge, step: Step) -> Witness 
     let mut raced: Vec<NodeId> = raced.map(|leaf| origin(leaf.node)).collect();
     raced.sort_unstable();
     raced.dedup();
-    let passing = regions.iter().filter(|_| step != Step::Both).flat_map(|region| &region.passing);
-    let mut passing: Vec<NodeId> = passing.map(|&node| origin(node)).collect();
-    passing.sort_unstable();
+    let latches = |of: for<'a> fn(&'a Region<'_>) -> &'a [usize]| -> Vec<NodeId> {
+        let judged = regions.iter().filter(|_| step != Step::Both).flat_map(|&region| of(region));
+        let mut latches: Vec<NodeId> = judged.map(|&node| origin(node)).collect();
+        latches.sort_unstable();
+        latches
+    };
     let event = inquiry.encoder.event;
     let launch = Launch {
         root: origin(event.root),
@@ -56,7 +59,8 @@ pub(super) fn describe(inquiry: &Inquiry<'_>, net: Edge, step: Step) -> Witness 
         cause,
         first: moves(&first),
         second: if step == Step::First { Vec::new() } else { moves(&second) },
-        passing,
+        passing: latches(|region| &region.passing),
+        late: latches(|region| &region.late),
         raced,
         target,
     };

@@ -44,6 +44,8 @@ pub(super) struct Region<'a> {
     pub(super) leaves: Vec<Leaf>,
     /// Latches that pass, as nodes.
     pub(super) passing: Vec<usize>,
+    /// Those of them that begin this step with the other value than their data, as nodes.
+    pub(super) late: Vec<usize>,
 }
 
 impl<'a> Region<'a> {
@@ -52,8 +54,15 @@ impl<'a> Region<'a> {
         let encoder = &inquiry.encoder;
         let cone = &encoder.fabric.cone;
         let solver = &encoder.clauses.solver;
-        let mut region =
-            Self { cone, root, members: Vec::new(), places: BTreeMap::new(), leaves: Vec::new(), passing: Vec::new() };
+        let mut region = Self {
+            cone,
+            root,
+            members: Vec::new(),
+            places: BTreeMap::new(),
+            leaves: Vec::new(),
+            passing: Vec::new(),
+            late: Vec::new(),
+        };
         let mut stack = vec![(root.node(), false)];
         while let Some((node, ready)) = stack.pop() {
             if region.places.contains_key(&node) {
@@ -88,7 +97,13 @@ impl<'a> Region<'a> {
             region.members.push((node, member));
             match member {
                 Member::Logic => {}
-                Member::Passing(_) => region.passing.push(node),
+                Member::Passing(data) => {
+                    region.passing.push(node);
+                    let begins = |edge: Edge| solver.value(encoder.done(layer, edge).wave.i);
+                    if begins(Edge::new(node, false)) != begins(data) {
+                        region.late.push(node);
+                    }
+                }
                 Member::Leaf => {
                     let wave = encoder.done(layer, Edge::new(node, false)).wave;
                     let raced = encoder.latches[layer as usize].get(&node).is_some_and(|does| solver.value(does.raced));
@@ -98,7 +113,6 @@ impl<'a> Region<'a> {
             }
         }
         region.leaves.sort_by_key(|leaf| leaf.node);
-        region.passing.sort_unstable();
         region
     }
 
