@@ -103,8 +103,10 @@ fixtures! {
     cover_unprotected
     gates
     hierarchy
+    joint_launch
     latch_enable
     latch_enable_safe
+    latch_ring
     loops
     missing_module
     reset_release
