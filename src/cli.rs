@@ -45,7 +45,7 @@ pub enum Command {
 /// What is read, and how.
 #[derive(Args, Debug)]
 pub struct Input {
-    /// Files and folders of Verilog and SystemVerilog [default: the current folder]
+    /// Files and folders of Verilog and SystemVerilog [default: those in the settings, or the current folder]
     #[arg(value_name = "PATH")]
     pub paths: Vec<PathBuf>,
     /// A top module; may be repeated [default: every module that nobody instantiates]
@@ -85,7 +85,7 @@ pub struct Scan {
     /// Write the findings to a file as well, or to standard output with `-`; FORMAT is json or sarif; may be repeated
     #[arg(long, value_name = "FORMAT:FILE", value_parser = output)]
     pub write: Vec<Output>,
-    /// Fail only on findings that are not in this ledger (see `stillwire ledger write`)
+    /// Fail only on findings that are not in this ledger (see `stillwire ledger write`) [default: the one in the settings, if any]
     #[arg(long, value_name = "FILE")]
     pub ledger: Option<PathBuf>,
     /// The lowest severity that fails the run [default: error]
@@ -108,9 +108,9 @@ pub enum Ledger {
 pub struct LedgerRun {
     #[command(flatten)]
     pub input: Input,
-    /// The ledger
-    #[arg(long, value_name = "FILE", default_value = "stillwire-ledger.toml")]
-    pub ledger: PathBuf,
+    /// The ledger [default: the one in the settings, or stillwire-ledger.toml]
+    #[arg(long, value_name = "FILE")]
+    pub ledger: Option<PathBuf>,
 }
 
 #[derive(Args, Debug)]

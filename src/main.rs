@@ -14,7 +14,7 @@ use stillwire::cure::Cure;
 use stillwire::report::{json, sarif, text};
 use stillwire::rules::{self, Severity};
 use stillwire::settings::{self, Settings};
-use stillwire::signoff::ledger::Ledger;
+use stillwire::signoff::ledger::{self, Ledger};
 use stillwire::source::{self, Exclude, PathError};
 use stillwire::{Request, Scan, Stage};
 
@@ -51,7 +51,8 @@ fn scan(arguments: &cli::Scan) -> Result<u8, PathError> {
         return Ok(0);
     }
     check_outputs(&arguments.write)?;
-    let ledger = arguments.ledger.as_deref().map(|file| Ok((file, read_ledger(file)?))).transpose()?;
+    let ledger = arguments.ledger.as_deref().or(settings.ledger.as_deref());
+    let ledger = ledger.map(|file| Ok((file, read_ledger(file)?))).transpose()?;
     let request = request(&arguments.input, &settings);
     let mut scan = with_progress(|progress| stillwire::scan(&request, &environment, progress))?;
     if let Some((file, ledger)) = ledger {
@@ -87,14 +88,15 @@ fn scan(arguments: &cli::Scan) -> Result<u8, PathError> {
 fn ledger(command: &cli::Ledger) -> Result<u8, PathError> {
     let (cli::Ledger::Write(arguments) | cli::Ledger::Prune(arguments)) = command;
     let settings = read_settings(&arguments.input)?;
-    check_output(&arguments.ledger)?;
+    let place = arguments.ledger.as_deref().or(settings.ledger.as_deref()).unwrap_or(Path::new(ledger::FILE_NAME));
+    check_output(place)?;
     let known = match command {
         cli::Ledger::Write(_) => None,
-        cli::Ledger::Prune(_) => Some(read_ledger(&arguments.ledger)?),
+        cli::Ledger::Prune(_) => Some(read_ledger(place)?),
     };
     let request = request(&arguments.input, &settings);
     let mut scan = with_progress(|progress| stillwire::scan(&request, &environment, progress))?;
-    let file = arguments.ledger.display();
+    let file = place.display();
     let complete = scan.report.complete();
     let (ledger, said) = match known {
         None => {
@@ -109,7 +111,7 @@ fn ledger(command: &cli::Ledger) -> Result<u8, PathError> {
         }
         Some(known) => (known, format!("{file}: nothing dropped, because the run is incomplete\n")),
     };
-    write_beside_and_rename(&arguments.ledger, ledger.render().as_bytes())?;
+    write_beside_and_rename(place, ledger.render().as_bytes())?;
     print(&said);
     if !complete {
         complain("warning: part of the input was not analysed; run `stillwire scan` to see what\n");
@@ -198,8 +200,9 @@ fn read_settings(input: &Input) -> Result<Settings, PathError> {
     }
     let current = PathBuf::from(".");
     let first = input.paths.first().or(input.list.first()).unwrap_or(&current);
+    let here = std::env::current_dir().unwrap_or_default();
     match settings::find(first) {
-        Some(file) => settings::read(&file),
+        Some(file) => settings::read(file.strip_prefix(here).unwrap_or(&file)),
         None => Ok(Settings::default()),
     }
 }
@@ -208,11 +211,14 @@ fn read_settings(input: &Input) -> Result<Settings, PathError> {
 fn command_line(arguments: &cli::Scan) -> Settings {
     let input = &arguments.input;
     Settings {
+        paths: input.paths.clone(),
+        lists: input.list.clone(),
         top: input.top.clone(),
         set: input.set.clone(),
         include: input.include.clone(),
         define: input.define.clone(),
         libraries: input.cells.clone(),
+        ledger: arguments.ledger.clone(),
         gate: arguments.gate.map(Severity::from),
         show: arguments.show.map(Severity::from),
         ..Settings::default()
@@ -223,10 +229,11 @@ fn command_line(arguments: &cli::Scan) -> Settings {
 fn request(input: &Input, settings: &Settings) -> Request {
     // A macro of the command line replaces one of the settings, because the later definition holds.
     let defines = settings.define.iter().chain(&input.define).cloned().collect();
+    let (paths, lists) = settings.read_unless(input.paths.clone(), input.list.clone());
     Request {
         source: source::Request {
-            paths: input.paths.clone(),
-            lists: input.list.clone(),
+            paths,
+            lists,
             include: input.include.iter().chain(&settings.include).cloned().collect(),
             defines,
             exclude: Exclude { root: settings.folder.clone(), patterns: settings.exclude.clone() },

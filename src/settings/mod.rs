@@ -2,7 +2,8 @@
 //! upward from the first path; whatever the command line says wins over it.
 //!
 //! Invariant: a key that is not known is an error, never ignored, because a misspelt setting that does nothing would make
-//! a report look cleaner or dirtier than the user thinks. Paths are relative to the folder of the file.
+//! a report look cleaner or dirtier than the user thinks. Paths are relative to the folder of the file; below the current
+//! folder they are told as from there, so that reports name files in the same way on every machine.
 
 mod declare;
 mod entry;
@@ -24,12 +25,30 @@ pub use show::show;
 /// The name that is looked for.
 pub const FILE_NAME: &str = "stillwire.toml";
 
-const KEYS: [&str; 11] =
-    ["top", "set", "include", "define", "exclude", "libraries", "gate", "show", "severities", "assume", "cell"];
+const KEYS: [&str; 14] = [
+    "paths",
+    "lists",
+    "top",
+    "set",
+    "include",
+    "define",
+    "exclude",
+    "libraries",
+    "ledger",
+    "gate",
+    "show",
+    "severities",
+    "assume",
+    "cell",
+];
 
 /// What the file says.
 #[derive(Clone, PartialEq, Eq, Default, Debug)]
 pub struct Settings {
+    /// What is read when the command line names neither paths nor lists.
+    pub paths: Vec<PathBuf>,
+    /// File lists, as `-f`.
+    pub lists: Vec<PathBuf>,
     pub top: Vec<String>,
     /// Values of parameters of the tops.
     pub set: Vec<(String, String)>,
@@ -37,6 +56,7 @@ pub struct Settings {
     pub define: Vec<(String, Option<String>)>,
     /// Liberty files.
     pub libraries: Vec<PathBuf>,
+    pub ledger: Option<PathBuf>,
     pub gate: Option<Severity>,
     pub show: Option<Severity>,
     /// Severities that all findings of a rule get.
@@ -50,6 +70,13 @@ pub struct Settings {
     pub file: Option<PathBuf>,
     /// The line of each value: by key, and by position where the key has several.
     pub lines: BTreeMap<(&'static str, usize), usize>,
+}
+
+impl Settings {
+    /// The paths and file lists that are read when the command line names these: those of the file when it names none.
+    pub fn read_unless(&self, paths: Vec<PathBuf>, lists: Vec<PathBuf>) -> (Vec<PathBuf>, Vec<PathBuf>) {
+        if paths.is_empty() && lists.is_empty() { (self.paths.clone(), self.lists.clone()) } else { (paths, lists) }
+    }
 }
 
 /// The settings file that holds for `path`: the nearest one in its folder or above.
@@ -89,11 +116,14 @@ pub fn parse(text: &str, path: &Path) -> Result<Settings, PathError> {
         };
         let mut lines = vec![entry.line()];
         match key {
+            "paths" => settings.paths = paths(entry)?,
+            "lists" => settings.lists = paths(entry)?,
             "top" => settings.top = entry.texts()?,
             "include" => settings.include = paths(entry)?,
             "libraries" => settings.libraries = paths(entry)?,
             "define" => (settings.define, lines) = defines(entry)?,
             "set" => (settings.set, lines) = parameters(entry)?,
+            "ledger" => settings.ledger = Some(folder.join(entry.text()?)),
             "gate" => settings.gate = Some(entry.severity()?),
             "show" => settings.show = Some(entry.severity()?),
             "exclude" => settings.exclude = entry.texts()?,
@@ -105,7 +135,7 @@ pub fn parse(text: &str, path: &Path) -> Result<Settings, PathError> {
             "assume" => settings.assumptions = declare::assumptions(entry)?,
             _ => settings.cells = declare::cells(entry)?,
         }
-        if matches!(key, "top" | "include" | "libraries" | "exclude") {
+        if matches!(key, "paths" | "lists" | "top" | "include" | "libraries" | "exclude") {
             lines = entry.lines()?.into_iter().map(|(_, line)| line).collect();
         }
         for (index, line) in lines.into_iter().enumerate() {
@@ -178,10 +208,15 @@ mod tests {
 
     #[test]
     fn every_key() {
-        let text = "top = \"core\"\ninclude = [\"rtl/include\"]\ndefine = [\"A\", \"B=2\"]\ngate = \"warning\"\n\
+        let text = "paths = \"rtl\"\nlists = [\"cells.f\"]\nledger = \"known.toml\"\ntop = \"core\"\ninclude = [\"rtl/include\"]\ndefine = [\"A\", \"B=2\"]\ngate = \"warning\"\n\
                     show = \"note\"\nexclude = [\"sim\"]";
         let settings = parsed(text).expect("good settings");
-        assert_eq!(settings.top, ["core"]);
+        let folder = Path::new("project");
+        assert_eq!(
+            (&settings.paths[..], &settings.lists[..]),
+            (&[folder.join("rtl")][..], &[folder.join("cells.f")][..])
+        );
+        assert_eq!((settings.top, settings.ledger), (vec!["core".to_string()], Some(folder.join("known.toml"))));
         assert_eq!(settings.include, [Path::new("project/rtl/include")]);
         assert_eq!(settings.define, [("A".to_string(), None), ("B".to_string(), Some("2".to_string()))]);
         assert_eq!((settings.gate, settings.show), (Some(Severity::Warning), Some(Severity::Note)));
@@ -194,7 +229,7 @@ mod tests {
     fn mistakes_say_what_to_write() {
         let error = |text: &str| parsed(text).expect_err("a mistake");
         assert_eq!(error("tops = \"a\""), "project/stillwire.toml:1: unknown key `tops`; did you mean `top`?");
-        assert!(error("colour = true").contains("the keys are `top`, `set`"));
+        assert!(error("colour = true").contains("the keys are `paths`, `lists`, `top`, `set`"));
         assert!(error("gate = \"fatal\"").contains("the value of `gate` is wrong; write `\"error\"`"));
         assert!(error("top = 1").contains("write a text or a list of texts"));
         assert!(error("\ntop = ").contains("project/stillwire.toml:2: "));

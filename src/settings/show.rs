@@ -20,13 +20,21 @@ pub fn show(settings: &Settings, given: &Settings) -> String {
         }
         None => out.text.push_str("# no settings file\n"),
     }
-    // Tops of the command line replace those of the file; everything else of the command line comes before or on top.
+    let paths = |paths: &[PathBuf]| paths.iter().map(|path| path.display().to_string()).collect::<Vec<_>>();
+    // What is read and its tops replace those of the file; everything else of the command line comes before or on top.
+    let (read, lists) = settings.read_unless(given.paths.clone(), given.lists.clone());
+    if given.paths.is_empty() && given.lists.is_empty() {
+        out.list("paths", &[], &paths(&read));
+        out.list("lists", &[], &paths(&lists));
+    } else {
+        out.list("paths", &paths(&read), &[]);
+        out.list("lists", &paths(&lists), &[]);
+    }
     if given.top.is_empty() {
         out.list("top", &[], &settings.top);
     } else {
         out.list("top", &given.top, &[]);
     }
-    let paths = |paths: &[PathBuf]| paths.iter().map(|path| path.display().to_string()).collect::<Vec<_>>();
     out.list("include", &paths(&given.include), &paths(&settings.include));
     out.list("libraries", &paths(&given.libraries), &paths(&settings.libraries));
     let defines = |defines: &[(String, Option<String>)]| {
@@ -38,6 +46,7 @@ pub fn show(settings: &Settings, given: &Settings) -> String {
     };
     out.list("define", &defines(&given.define), &defines(&settings.define));
     out.list("exclude", &[], &settings.exclude);
+    out.ledger(given);
     out.severity("gate", given.gate, settings.gate, Severity::Error);
     out.severity("show", given.show, settings.show, Severity::Warning);
     out.parameters(given);
@@ -91,6 +100,15 @@ impl Out<'_> {
             let _ = writeln!(self.text, "  {},  # {}", quoted(text), self.origin(key, index));
         }
         self.text.push_str("]\n");
+    }
+
+    fn ledger(&mut self, given: &Settings) {
+        let (file, origin) = match (&given.ledger, &self.settings.ledger) {
+            (Some(given), _) => (given, "command line".to_string()),
+            (None, Some(file)) => (file, self.origin("ledger", 0)),
+            (None, None) => return,
+        };
+        let _ = writeln!(self.text, "ledger = {}  # {origin}", quoted(&file.display().to_string()));
     }
 
     fn severity(&mut self, key: &'static str, given: Option<Severity>, settings: Option<Severity>, default: Severity) {

@@ -10,6 +10,9 @@ use serde::{Deserialize, Serialize};
 
 use crate::rules::{Finding, Rule, Severity, Verdict};
 
+/// The name of the file unless the user gives another.
+pub const FILE_NAME: &str = "stillwire-ledger.toml";
+
 /// What the file says of itself; it changes when an old ledger can no longer be read.
 const FORMAT: &str = "stillwire-ledger/1";
 

@@ -5,7 +5,7 @@ use std::path::Path;
 use std::process::Command;
 
 use crate::pipeline;
-use crate::reading::Tree;
+use crate::tree::Tree;
 
 #[track_caller]
 fn flat(text: &str) -> String {

@@ -3,7 +3,7 @@
 
 use std::process::Command;
 
-use super::reading::Tree;
+use crate::tree::Tree;
 
 const DESIGN: &str = "\
 package p;

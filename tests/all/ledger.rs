@@ -2,11 +2,10 @@
 //! dropped, and one mistake in a module is one entry however often the module is used.
 
 use std::path::Path;
-use std::process::{Command, Output};
 
 use serde_json::Value;
 
-use crate::reading::Tree;
+use crate::tree::Tree;
 
 /// A lane whose clear glitches when `sel` changes, used several times.
 const LANE: &str = "module lane(input clk, sel, a, b, d, output reg q);
@@ -23,30 +22,6 @@ const TOP: &str = "module gates(input clk, input [3:0] sel, a, b, d, output [3:0
     lane u_last(.clk(clk), .sel(sel[3]), .a(a[3]), .b(b[3]), .d(d[3]), .q(q[3]));
 endmodule
 ";
-
-impl Tree {
-    fn run(&self, arguments: &[&str]) -> Output {
-        let output = Command::new(env!("CARGO_BIN_EXE_stillwire")).args(arguments).current_dir(self.path("")).output();
-        output.expect("the program starts")
-    }
-
-    #[track_caller]
-    fn ends(&self, code: i32, arguments: &[&str]) -> String {
-        let output = self.run(arguments);
-        let text = String::from_utf8_lossy(&output.stdout).into_owned() + &String::from_utf8_lossy(&output.stderr);
-        assert_eq!(output.status.code(), Some(code), "{arguments:?}\n{text}");
-        text
-    }
-
-    fn json(&self, arguments: &[&str]) -> Value {
-        let output = self.run(&[arguments, &["--write", "json:-"]].concat());
-        serde_json::from_slice(&output.stdout).expect("JSON")
-    }
-
-    fn read(&self, name: &str) -> String {
-        std::fs::read_to_string(self.path(name)).expect("readable")
-    }
-}
 
 #[test]
 fn one_mistake_in_a_module_is_one_entry() {

@@ -52,4 +52,5 @@ mod simulator;
 mod sources;
 mod system_cores;
 mod transport;
+mod tree;
 mod wording;

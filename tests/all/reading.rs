@@ -1,37 +1,16 @@
 //! Reading whole trees: which files, in which order, with which macros, and what is said when something is wrong. The
 //! expectations come from the project's words on reading and from IEEE 1800-2017 clause 22.
 
-use std::path::{Path, PathBuf};
+use std::path::Path;
 
 use stillwire::diagnostic::{Diagnostic, Kind};
 use stillwire::source::{self, Loaded, PathError, Request};
 
-/// A folder with files, which goes away with the value.
-pub struct Tree(tempfile::TempDir);
+use crate::tree::Tree;
 
 impl Tree {
-    #[track_caller]
-    pub fn new(files: &[(&str, &str)]) -> Tree {
-        let tree = Tree(tempfile::tempdir().expect("a temporary folder"));
-        for (name, text) in files {
-            tree.write(name, text.as_bytes());
-        }
-        tree
-    }
-
-    #[track_caller]
-    pub fn write(&self, name: &str, bytes: &[u8]) {
-        let path = self.path(name);
-        std::fs::create_dir_all(path.parent().expect("a parent")).expect("folders");
-        std::fs::write(path, bytes).expect("a file");
-    }
-
-    pub fn path(&self, name: &str) -> PathBuf {
-        self.0.path().join(name)
-    }
-
     fn request(&self) -> Request {
-        Request { paths: vec![self.0.path().to_path_buf()], ..Request::default() }
+        Request { paths: vec![self.path("")], ..Request::default() }
     }
 
     #[track_caller]

@@ -4,7 +4,7 @@
 use std::process::{Command, Output};
 use std::time::Duration;
 
-use super::reading::Tree;
+use crate::tree::Tree;
 
 /// The promised 10 s on two cores, in seconds of processor time, which other work on the machine does not add to.
 const TIME: &str = "20";

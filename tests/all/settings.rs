@@ -9,8 +9,12 @@ use stillwire::rules::Rule;
 use stillwire::settings;
 
 use crate::pipeline::scan;
+use crate::tree::Tree;
 
 const EVERYTHING: &str = r#"
+paths = ["rtl", "ip"]
+lists = ["cells.f"]
+ledger = "known.toml"
 top = "lock"
 include = ["rtl/include", "more"]
 define = ["A", "B=2"]
@@ -63,10 +67,9 @@ output = "GCK"
 
 fn shown(folder: &Path, arguments: &[&str]) -> String {
     let output = Command::new(env!("CARGO_BIN_EXE_stillwire"))
-        .arg("scan")
-        .arg(folder)
-        .arg("--show-settings")
+        .args(["scan", "--show-settings"])
         .args(arguments)
+        .current_dir(folder)
         .output()
         .expect("the program starts");
     assert_eq!(output.status.code(), Some(0), "{}", String::from_utf8_lossy(&output.stderr));
@@ -79,23 +82,25 @@ fn everything_is_shown_with_its_origin() {
     let file = folder.path().join("stillwire.toml");
     std::fs::write(&file, EVERYTHING).expect("written");
     let text = shown(folder.path(), &["-I", "first", "--gate", "error", "--set", "WIDTH=4"]);
-    let place = |line: usize| format!("{}:{line}", file.display());
+    let place = |line: usize| format!("stillwire.toml:{line}");
     for line in [
         "  \"first\",  # command line".to_string(),
-        format!("  \"{}\",  # {}", folder.path().join("more").display(), place(3)),
-        format!("  \"B=2\",  # {}", place(4)),
+        format!("  \"more\",  # {}", place(6)),
+        format!("  \"B=2\",  # {}", place(7)),
         "gate = \"error\"  # command line".to_string(),
-        format!("show = \"note\"  # {}", place(8)),
+        format!("show = \"note\"  # {}", place(11)),
         "\"WIDTH\" = \"4\"  # command line".to_string(),
-        format!("\"FAST\" = \"1\"  # {}", place(12)),
-        format!("clock-hazard = \"warning\"  # {}", place(16)),
-        format!("[[assume]]  # {}", place(19)),
-        format!("[[cell]]  # {}", place(29)),
+        format!("\"FAST\" = \"1\"  # {}", place(15)),
+        format!("clock-hazard = \"warning\"  # {}", place(19)),
+        format!("[[assume]]  # {}", place(22)),
+        format!("[[cell]]  # {}", place(32)),
     ] {
         assert!(text.lines().any(|shown| shown == line), "no line {line}\n{text}");
     }
     // What is shown is itself a settings file that says the same.
-    let read = |text: &str| settings::parse(text, &file).unwrap_or_else(|error| panic!("{error}\n{text}"));
+    let read = |text: &str| {
+        settings::parse(text, Path::new("stillwire.toml")).unwrap_or_else(|error| panic!("{error}\n{text}"))
+    };
     let (mut first, mut again) = (read(EVERYTHING), read(&shown(folder.path(), &[])));
     for settings in [&mut first, &mut again] {
         settings.lines.clear();
@@ -112,8 +117,34 @@ fn everything_is_shown_with_its_origin() {
 fn without_a_file_all_is_default() {
     let folder = tempfile::tempdir().expect("a temporary folder");
     let text = shown(folder.path(), &["--top", "core"]);
-    assert!(text.starts_with("# no settings file\ntop = [\n  \"core\",  # command line\n]\ninclude = []  # default\n"));
+    assert!(text.starts_with("# no settings file\npaths = []  # default\nlists = []  # default\ntop = [\n  \"core\",  # command line\n]\ninclude = []  # default\n"));
     assert!(text.contains("gate = \"error\"  # default\nshow = \"warning\"  # default\n"), "{text}");
+}
+
+/// From below the folder of the settings, too, and not beside paths of the command line.
+#[test]
+fn the_settings_say_what_is_read() {
+    let tree = Tree::new(&[
+        ("stillwire.toml", "paths = \"rtl\"\nledger = \"known.toml\"\n"),
+        (
+            "rtl/t.v",
+            "module t (input a, b, s, d, output reg q); wire k = s ? a : b;\nalways @(posedge k) q <= d; endmodule\n",
+        ),
+        ("other/u.v", "module u (input a, output y); assign y = a; endmodule\n"),
+    ]);
+    tree.ends(2, &["scan"]);
+    let said = tree.ends(0, &["ledger", "write"]);
+    assert!(said.contains("known.toml: 1 entry written"), "{said}");
+    let text = tree.ends(0, &["scan", "--gate", "warning"]);
+    assert!(text.contains("read: 1 file,"), "{text}");
+    tree.ends(0, &["scan", "other", "--gate", "warning"]);
+    std::fs::remove_file(tree.path("known.toml")).expect("removed");
+    let below = Command::new(env!("CARGO_BIN_EXE_stillwire"))
+        .args(["ledger", "write"])
+        .current_dir(tree.path("other"))
+        .output();
+    assert_eq!(below.expect("the program starts").status.code(), Some(0));
+    assert_eq!(tree.read("known.toml").matches("[[known]]").count(), 1);
 }
 
 #[test]
@@ -135,8 +166,9 @@ fn schema() -> Value {
     serde_json::from_str(&std::fs::read_to_string(file).expect("the schema is readable")).expect("JSON")
 }
 
-const GOOD: [&str; 6] = [
+const GOOD: [&str; 7] = [
     EVERYTHING,
+    "paths = [\"rtl\", \"ip\"]\nlists = \"cells.f\"\nledger = \"known.toml\"",
     "",
     "top = [\"a\", \"b\"]",
     "[define]\nA = true\nB = 3\nC = \"x\"",
@@ -144,7 +176,8 @@ const GOOD: [&str; 6] = [
     "[[cell]]\nmodule = \"m\"\nkind = \"pins\"\nenable = \"en\"",
 ];
 
-const BAD: [&str; 21] = [
+const BAD: [&str; 22] = [
+    "ledger = [\"a\"]",
     "tops = \"a\"",
     "top = 1",
     "gate = \"fatal\"",
