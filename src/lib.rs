@@ -99,6 +99,7 @@ pub fn scan(request: &Request, environment: Environment<'_>, progress: Progress<
             }
         }
         let mut report = report_on_input(&loaded, &design, diagnostics.iter().chain(&pragmas.diagnostics));
+        report.checked = outcome.checked;
         report.coverage.pins = outcome.pins;
         report.coverage.cells = outcome.cells;
         report.coverage.loops = outcome.loops;

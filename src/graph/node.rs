@@ -43,7 +43,7 @@ pub enum NodeKind {
     OpOut(OperatorId),
 }
 
-#[derive(Clone, Copy, PartialEq, Eq, Hash, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug)]
 pub enum SourceKind {
     Input,
     FlipFlop,

@@ -10,7 +10,7 @@ use rayon::prelude::*;
 
 use super::cone::{Cone, Edge, Op};
 use super::order::Order;
-use super::{HazardKind, Options, Pair, TargetVerdict, Undecided, Witness};
+use super::{HazardKind, Method, Options, Pair, TargetVerdict, Undecided, Witness};
 use super::{enumerate, search};
 use crate::graph::{Graph, NodeId, NodeKind};
 
@@ -69,25 +69,33 @@ pub fn decide(graph: &Graph, targets: &[NodeId], options: &Options) -> Vec<Targe
     let small: Vec<usize> = (0..nodes.len()).filter(|&at| enumerate::fits(&extents[at].measure, options)).collect();
     let large: Vec<usize> = (0..nodes.len()).filter(|&at| !enumerate::fits(&extents[at].measure, options)).collect();
     let mut answers: Vec<Vec<Answer>> = (0..nodes.len()).map(|_| Vec::new()).collect();
-    let enumerated: Vec<(usize, Vec<Answer>)> = small
+    let mut methods = vec![Method::Structure; nodes.len()];
+    let enumerated: Vec<(usize, Method, Vec<Answer>)> = small
         .into_par_iter()
-        .map(|at| (at, enumerate::enumerate(&cone.restrict(&[cone.roots[at]]), options)))
+        .map(|at| {
+            let (method, found) = enumerate::enumerate(&cone.restrict(&[cone.roots[at]]), options);
+            (at, method, found)
+        })
         .collect();
-    for (at, found) in enumerated {
-        answers[at] = found;
+    for (at, method, found) in enumerated {
+        (methods[at], answers[at]) = (method, found);
     }
     if !large.is_empty() {
         let roots: Vec<Edge> = large.iter().map(|&at| cone.roots[at]).collect();
         let measures: Vec<Measure> = large.iter().map(|&at| extents[at].measure).collect();
-        for answer in search::search(&cone.restrict(&roots), &measures, options) {
+        let (suspect, found) = search::search(&cone.restrict(&roots), &measures, options);
+        for answer in found {
             answers[large[answer.root]].push(answer);
+        }
+        for root in suspect {
+            methods[large[root]] = Method::Solver;
         }
     }
 
     let verdicts: Vec<TargetVerdict> = nodes
         .iter()
-        .zip(answers.into_iter().zip(&extents))
-        .map(|(&node, (answers, extent))| extent.verdict(node, answers))
+        .zip(answers.into_iter().zip(&extents).zip(methods))
+        .map(|(&node, ((answers, extent), method))| TargetVerdict { method, ..extent.verdict(node, answers) })
         .collect();
     targets.iter().map(|&target| TargetVerdict { target, ..verdicts[places[&graph.root(target)]].clone() }).collect()
 }

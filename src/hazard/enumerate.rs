@@ -1,11 +1,11 @@
 //! Small cones: every transition of every source is simulated, so that what was not seen is proven clean.
 
-use super::Options;
 use super::cone::{Cone, Op};
 use super::decide::{Answer, KindSet, Measure};
 use super::parity::Region;
 use super::simulate::{self, BATCH, Lanes, Response};
 use super::witness::{self, Lane};
+use super::{Method, Options};
 
 /// Enumerating more words than this, over all nodes and sources, takes longer than proving.
 const MOST_WORK: usize = 1 << 27;
@@ -19,10 +19,10 @@ pub(super) fn fits(measure: &Measure, options: &Options) -> bool {
     words.saturating_mul(measure.nodes).saturating_mul(measure.frees.max(1)) <= MOST_WORK
 }
 
-/// Decides the one root of `cone` against all its sources.
-pub(super) fn enumerate(cone: &Cone, options: &Options) -> Vec<Answer> {
+/// Decides the one root of `cone` against all its sources, and says whether any transition had to be simulated.
+pub(super) fn enumerate(cone: &Cone, options: &Options) -> (Method, Vec<Answer>) {
     let mut answers = Vec::new();
-    let Some(&root) = cone.roots.first() else { return answers };
+    let Some(&root) = cone.roots.first() else { return (Method::Structure, answers) };
     let live = vec![true; cone.len()];
     // Which free node, its region, and the kinds already seen.
     let mut open: Vec<(usize, Region, KindSet)> = Vec::new();
@@ -34,6 +34,7 @@ pub(super) fn enumerate(cone: &Cone, options: &Options) -> Vec<Answer> {
             }
         }
     }
+    let method = if open.is_empty() { Method::Structure } else { Method::Enumeration };
     let mut anywhere = KindSet::default();
     let mut values: Vec<Lanes> = vec![simulate::NONE; cone.len()];
     let mut response = Response::default();
@@ -69,7 +70,7 @@ pub(super) fn enumerate(cone: &Cone, options: &Options) -> Vec<Answer> {
         let known = if options.one_per_kind { anywhere } else { KindSet::default() };
         open.retain(|(_, _, seen)| seen.union(known) != KindSet::ALL);
     }
-    answers
+    (method, answers)
 }
 
 /// How many free nodes vary within a batch.

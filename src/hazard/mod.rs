@@ -42,7 +42,7 @@ pub use redundant::{Redundant, redundant};
 pub use settled::{Cells, Demand, Happening, is_free};
 pub(crate) use tables::{Need, Promises};
 pub use verdict::{
-    Cause, Cover, HazardKind, Launch, LaunchHazard, OpenLaunch, Pair, Path, PathStep, Paths, Reach, Step,
+    Cause, Cover, HazardKind, Launch, LaunchHazard, Method, OpenLaunch, Pair, Path, PathStep, Paths, Reach, Step,
     TargetVerdict, Undecided, Witness,
 };
 pub(crate) use wave::gate;

@@ -2,7 +2,7 @@
 //! proves nothing, then the solver. One incremental solver serves a source; its roots come by increasing size of their
 //! cones, and every model is simulated again, slightly perturbed, over all roots that are still open.
 
-use std::collections::BTreeMap;
+use std::collections::{BTreeMap, BTreeSet};
 
 use rayon::prelude::*;
 
@@ -34,8 +34,8 @@ pub(super) struct Subject {
 /// Root, kind, and what is known about it.
 pub(super) type Found = (usize, HazardKind, Result<Witness, Undecided>);
 
-/// Decides all roots of `cone` against all their sources.
-pub(super) fn search(cone: &Cone, measures: &[Measure], options: &Options) -> Vec<Answer> {
+/// Decides all roots of `cone` against all their sources. The roots that the parity filter did not settle come first.
+pub(super) fn search(cone: &Cone, measures: &[Measure], options: &Options) -> (BTreeSet<usize>, Vec<Answer>) {
     let mut search = Search {
         cone,
         measures,
@@ -48,9 +48,10 @@ pub(super) fn search(cone: &Cone, measures: &[Measure], options: &Options) -> Ve
     let sources = cone.frees.iter().map(|&free| free as usize);
     let sources: Vec<usize> = sources.filter(|&free| cone.ops[free] == Op::Free { changes: true }).collect();
     let mut subjects: Vec<Subject> = sources.par_iter().filter_map(|&source| search.subject(source)).collect();
+    let suspect = subjects.iter().flat_map(|subject| subject.questions.iter().map(|question| question.root)).collect();
     search.simulate(&mut subjects);
     search.prove(&mut subjects);
-    search.answers
+    (suspect, search.answers)
 }
 
 fn roots_at(cone: &Cone) -> BTreeMap<usize, Vec<usize>> {

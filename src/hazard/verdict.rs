@@ -134,6 +134,19 @@ pub enum Undecided {
     Undriven,
 }
 
+/// How questions were answered, the costliest way that was needed last.
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug)]
+pub enum Method {
+    /// No two ways of any change meet with opposite inversions, so the structure alone rules hazards out.
+    Structure,
+    /// Every transition was simulated.
+    Enumeration,
+    /// The solver proved what the structure left open.
+    Solver,
+    /// Changes of single sources show hazards, but no event of the design makes these changes.
+    Launches,
+}
+
 /// All that is known about one source against one target. Kinds in neither list are proven clean.
 #[derive(Clone, PartialEq, Eq, Debug)]
 pub struct Pair {
@@ -158,6 +171,10 @@ pub struct TargetVerdict {
     pub open_launches: Vec<OpenLaunch>,
     /// What the verdict as a whole rests on.
     pub reach: Reach,
+    /// How the questions about changes of single sources were answered.
+    pub method: Method,
+    /// How those about launches were; `None` where nobody asked about launches.
+    pub launch_method: Option<Method>,
 }
 
 impl TargetVerdict {
@@ -170,6 +187,8 @@ impl TargetVerdict {
             launches: Vec::new(),
             open_launches: Vec::new(),
             reach: Reach::AnyState,
+            method: Method::Structure,
+            launch_method: None,
         }
     }
 

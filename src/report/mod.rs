@@ -13,7 +13,7 @@ mod waveform;
 use std::collections::BTreeMap;
 
 use crate::assumptions::Listed;
-use crate::rules::{CellCount, Finding, PinCoverage, Rule, Severity, Verdict};
+use crate::rules::{CellCount, CheckedNet, Finding, PinCoverage, Rule, Severity, Verdict};
 use crate::signoff::ledger;
 use crate::source::Span;
 
@@ -24,6 +24,8 @@ pub struct Report {
     pub tops: Vec<String>,
     /// Sorted by [`crate::rules::sort`]; accepted findings are among them.
     pub findings: Vec<Finding>,
+    /// Every net that was asked about, once per role, clean ones included.
+    pub checked: Vec<CheckedNet>,
     /// What the front end wants to say beside the findings.
     pub messages: Vec<Message>,
     pub coverage: Coverage,

@@ -4,8 +4,8 @@
 use std::collections::BTreeSet;
 
 use super::PinKind;
+use super::checked::{CheckedNet, Ground, NetState};
 use crate::graph::{CellKind, Graph, NodeId};
-use crate::hazard::{Reach, TargetVerdict};
 
 /// How many bits are stored, by kind of cell. A bit that several clocks load is one bit.
 #[derive(Clone, Copy, PartialEq, Eq, Debug, Default)]
@@ -68,27 +68,17 @@ impl PinCoverage {
         })
     }
 
-    /// Counts one net of this kind. `None` stands for a net that is clean by definition: a constant, a source, or an
-    /// undriven bit of an output.
-    pub(super) fn count<'a>(&mut self, kind: PinKind, verdicts: impl IntoIterator<Item = Option<&'a TargetVerdict>>) {
-        let count = &mut self.counts[kind as usize];
+    /// Counts one net.
+    pub(super) fn count(&mut self, net: &CheckedNet) {
+        let count = &mut self.counts[net.pin.kind as usize];
         count.nets += 1;
-        let mut hazard = false;
-        let mut undecided = false;
-        let mut reached = false;
-        for verdict in verdicts.into_iter().flatten() {
-            hazard |= verdict.pairs.iter().any(|pair| !pair.hazards.is_empty()) || !verdict.launches.is_empty();
-            undecided |= verdict.pairs.iter().any(|pair| !pair.undecided.is_empty());
-            undecided |= !verdict.open_launches.is_empty();
-            reached |= verdict.reach == Reach::ReachableStates;
-        }
-        if hazard {
-            count.hazard += 1;
-        } else if undecided {
-            count.undecided += 1;
-        } else {
-            count.clean += 1;
-            self.clean_if_reached += usize::from(reached);
+        match net.state {
+            NetState::Hazard => count.hazard += 1,
+            NetState::Undecided(_) => count.undecided += 1,
+            NetState::Clean(ground) => {
+                count.clean += 1;
+                self.clean_if_reached += usize::from(matches!(ground, Ground::Decided { reachable: true, .. }));
+            }
         }
     }
 }

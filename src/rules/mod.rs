@@ -3,6 +3,7 @@
 //! plain data. Nothing that was asked is dropped: each net is counted as clean, hazardous or undecided.
 
 mod about_text;
+mod checked;
 mod clock_hazard;
 mod combinational_loop;
 mod cover_text;
@@ -28,6 +29,8 @@ use std::collections::BTreeSet;
 
 use rayon::prelude::*;
 
+use checked::Checker;
+
 use crate::graph::{Graph, NetId, NodeId, PortDirection};
 use crate::hazard::launch::{Assumptions, Launcher};
 use crate::hazard::{self, Options, TargetVerdict};
@@ -36,6 +39,7 @@ use crate::syntax::Protection;
 
 pub use about_text::{Said, say};
 pub(crate) use about_text::{about_net, bookkeeping, net_name};
+pub use checked::{CheckedNet, Ground, NetState};
 pub use coverage::{CellCount, NetCount, PinCoverage};
 pub use finding::{
     CoverText, Finding, Hazard, LaunchText, LoopText, Pin, PinKind, Rule, Severity, Signoff, TraceStep, Transition,
@@ -56,6 +60,8 @@ pub struct Watch {
 pub struct Outcome {
     /// By rule and place in the graph; [`sort`] puts them into the order of the report.
     pub findings: Vec<Finding>,
+    /// Every net that was asked about, once per role; by role, name and place.
+    pub checked: Vec<CheckedNet>,
     pub pins: PinCoverage,
     pub cells: CellCount,
     /// Combinational loops found.
@@ -97,20 +103,22 @@ pub fn run(
     let outside_verdicts = decided(graph, bits.map(|&bit| graph.root(bit)), &outside);
     let loops = hazard::loops(graph, options);
 
-    let mut coverage = PinCoverage::default();
-    for (root, uses) in [&pins.controls, &pins.clocks, &pins.enables].into_iter().flatten() {
-        coverage.count(pins::kind(uses), [verdicts.get(root)]);
-    }
+    let checker = Checker { graph, assumptions };
+    let mut checked: Vec<CheckedNet> = [&pins.controls, &pins.clocks, &pins.enables]
+        .into_iter()
+        .flatten()
+        .map(|(&root, uses)| checker.net(root, pins::pin(graph, uses), verdicts.get(&root)))
+        .collect();
     // A net with two watches on it, or two bits with one driver, is still one net.
     let mut seen = BTreeSet::new();
     let watched: Vec<_> = watched.into_iter().filter(|&(_, root)| seen.insert(root)).collect();
-    for (_, root) in &watched {
-        coverage.count(PinKind::Watch, [verdicts.get(root)]);
-    }
-    for port in &outputs {
-        let bits = &graph.nets[port.net.index()].bits;
-        coverage.count(PinKind::Output, bits.iter().map(|&bit| outside_verdicts.get(&graph.root(bit))));
-    }
+    let watch_pin = || reconvergent_inversion::pin(PinKind::Watch);
+    checked.extend(watched.iter().map(|(_, root)| checker.net(*root, watch_pin(), verdicts.get(root))));
+    let output_pin = || reconvergent_inversion::pin(PinKind::Output);
+    checked.extend(outputs.iter().map(|port| checker.output(port, output_pin(), &outside_verdicts)));
+    checked::sort(&mut checked);
+    let mut coverage = PinCoverage::default();
+    checked.iter().for_each(|net| coverage.count(net));
     for verdict in verdicts.values().chain(outside_verdicts.values()) {
         let pairs = verdict.pairs.iter().map(|pair| pair.undecided.len()).sum::<usize>();
         coverage.open_questions += pairs + verdict.open_launches.len();
@@ -151,8 +159,7 @@ pub fn run(
             let listing = &listing;
             tasks.push(Box::new(move || {
                 let what = format!("the watched net `{}`", names::name(graph, root));
-                let pin = reconvergent_inversion::pin(PinKind::Watch);
-                cover_unprotected::finding(graph, root, &what, pin, protection, listing)
+                cover_unprotected::finding(graph, root, &what, watch_pin(), protection, listing)
             }));
         }
     }
@@ -169,7 +176,7 @@ pub fn run(
     let cells = hazard::Cells::new(graph);
     findings.extend(set_reset_overlap::findings(graph, &cells, options));
     findings.extend(reset_release::findings(graph, &cells, &pins.controls, &verdicts, options));
-    Outcome { findings, pins: coverage, cells: CellCount::of(graph), loops: loops.len() }
+    Outcome { findings, checked, pins: coverage, cells: CellCount::of(graph), loops: loops.len() }
 }
 
 type PinRule = fn(&Graph, &TargetVerdict, &[pins::Use], &Context<'_>) -> Option<Finding>;

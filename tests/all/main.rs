@@ -4,6 +4,7 @@ mod assumptions;
 mod catalogue;
 mod catalogue_explored;
 mod cells;
+mod checked;
 mod construct_page;
 mod constructs;
 mod controls;

@@ -97,12 +97,12 @@ fn reset_selector(covered: bool) -> (SourceSet, Report) {
         range: None,
     });
     let graph = scene.builder.freeze();
-    let Outcome { mut findings, pins, cells, loops } =
+    let Outcome { mut findings, checked, pins, cells, loops } =
         rules::run(&graph, &[], &Assumptions::default(), &Protection::default(), &Options::default());
     // The subject is how one finding looks.
     findings.retain(|finding| finding.rule == Rule::SetResetHazard);
     let coverage = Coverage { files_read: 1, modules_elaborated: 1, pins, cells, loops, ..Coverage::default() };
-    let report = Report { tops: vec!["top".to_string()], findings, coverage, ..Report::default() };
+    let report = Report { tops: vec!["top".to_string()], findings, checked, coverage, ..Report::default() };
     (scene.sources, report)
 }
 

@@ -15,7 +15,8 @@ use crate::graph::{Graph, NodeId};
 use crate::hazard::cone::Edge;
 use crate::hazard::solver::Literal;
 use crate::hazard::{
-    Cause, Cover, HazardKind, LaunchHazard, OpenLaunch, Options, Pair, Reach, Step, TargetVerdict, Undecided, Witness,
+    Cause, Cover, HazardKind, LaunchHazard, Method, OpenLaunch, Options, Pair, Reach, Step, TargetVerdict, Undecided,
+    Witness,
 };
 
 /// How many sources a witness is freed of, one at a time, to move as few as possible.
@@ -242,6 +243,11 @@ impl<'a, 'b> Refinement<'a, 'b> {
         events.each(|inquiry| self.launches(inquiry, &mut launches));
         launches.sort_by_key(|found: &LaunchHazard| found.witness.changes.len());
         let leans = events.lean;
+        if !self.candidates.is_empty() {
+            self.verdict.method = Method::Launches;
+        }
+        let asked = !events.events.is_empty();
+        self.verdict.launch_method = Some(if asked { Method::Solver } else { Method::Structure });
         let mut verdict = self.finish(launches);
         if reachable.is_some() && (leans || !verdict.is_clean()) {
             verdict.reach = Reach::ReachableStates;
