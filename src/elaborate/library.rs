@@ -3,7 +3,7 @@
 
 use std::collections::{BTreeMap, BTreeSet, HashMap};
 
-use crate::diagnostic::{Diagnostic, Kind};
+use crate::diagnostic::{Diagnostic, Kind, Missing};
 use crate::source::Span;
 use crate::syntax::ast::{Expr, ExprKind, Item, ItemKind, Module, ModuleKind, Package, Ports, Udp, Unit};
 
@@ -82,7 +82,8 @@ impl<'a> Library<'a> {
                     }
                 } else {
                     let message = format!("there is no module `{name}` to be the top");
-                    diagnostics.push(Diagnostic::new(Kind::Incomplete, "top module", message, None));
+                    let diagnostic = Diagnostic::new(Kind::Incomplete, "top module", message, None);
+                    diagnostics.push(diagnostic.about_missing(Missing::Module(name.clone())));
                 }
             }
             return Tops { tops, benches: Vec::new() };

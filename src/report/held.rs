@@ -2,6 +2,7 @@
 //! one value, so that a comparison of 24 address bits is one line and not 24. The JSON keeps every bit by itself.
 
 use crate::rules::Hazard;
+use crate::rules::bundle::split;
 
 /// Up to so many bits a value is written in binary, beyond in hexadecimal.
 const WIDEST_BINARY: usize = 8;
@@ -64,15 +65,6 @@ pub(super) fn held(hazard: &Hazard) -> Vec<Held> {
 /// Whether `low` is the bit just below `high`.
 fn follows(high: &(&str, Option<u64>, bool), low: &(&str, Option<u64>, bool)) -> bool {
     high.0 == low.0 && matches!((high.1, low.1), (Some(high), Some(low)) if low + 1 == high)
-}
-
-/// A name and the index at its end.
-fn split(name: &str) -> (&str, Option<u64>) {
-    let parts = name.strip_suffix(']').and_then(|inner| inner.rsplit_once('['));
-    match parts.and_then(|(vector, index)| Some((vector, index.parse().ok()?))) {
-        Some((vector, index)) => (vector, Some(index)),
-        None => (name, None),
-    }
 }
 
 #[cfg(test)]

@@ -11,6 +11,7 @@ use codespan_reporting::term::{self, Config};
 
 use super::held::held;
 use super::{Message, Report, summary, waveform};
+use crate::rules::bundle::listed;
 use crate::rules::{Finding, Hazard, PinKind, Severity};
 use crate::source::{FileId, SourceSet, Span};
 
@@ -36,6 +37,9 @@ const SHOWN_HAZARDS: usize = 6;
 
 /// With more held signals than this, such a line leaves their values to the JSON.
 const SHOWN_HELD: usize = 3;
+
+/// So many signals, or vectors, that change together are named.
+const SHOWN_SIGNALS: usize = 3;
 
 /// So many findings are shown in full, those of one family as one.
 const SHOWN_GROUPS: usize = 100;
@@ -196,11 +200,11 @@ fn others(finding: &Finding) -> String {
     let rest = &finding.hazards[1..];
     let mut lines = vec!["and by other changes:".to_string()];
     for hazard in rest.iter().take(SHOWN_HAZARDS) {
-        let on = if hazard.net == finding.net { String::new() } else { format!(" on {}", hazard.net) };
+        let on = if hazard.net == finding.net { String::new() } else { format!(" on `{}`", hazard.net) };
         let event = match &hazard.launch {
             Some(launch) if hazard.changes.len() != 1 || launch.step != "second" => {
                 let edge = if launch.rises { "rising" } else { "falling" };
-                format!(" with the {edge} edge of {}", launch.root)
+                format!(" with the {edge} edge of `{}`", launch.root)
             }
             _ => String::new(),
         };
@@ -215,8 +219,10 @@ fn others(finding: &Finding) -> String {
 /// The signals that change; latches that race when nothing else does.
 fn changing(hazard: &Hazard) -> String {
     match &hazard.launch {
-        Some(launch) if hazard.changes.is_empty() => format!("the latch {}", launch.raced.join(", ")),
-        _ => hazard.changes.join(", "),
+        Some(launch) if hazard.changes.is_empty() => {
+            format!("the latch {}", listed(launch.raced.iter().map(String::as_str), SHOWN_SIGNALS))
+        }
+        _ => listed(hazard.changes.iter().map(String::as_str), SHOWN_SIGNALS),
     }
 }
 

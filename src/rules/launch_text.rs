@@ -3,14 +3,14 @@
 //! help.
 
 use super::finding::{LaunchText, TraceStep};
-use super::{evidence, names, words};
+use super::{bundle, evidence, names, words};
 use crate::graph::{Graph, NodeId, NodeKind, SourceKind};
 use crate::hazard::{Cause, Launch, Paths, Reach, Step, TargetVerdict};
 use crate::source::Span;
 
-/// So many signals are named in a sentence.
+/// So many signals, or vectors, are named in a sentence.
 const NAMED: usize = 3;
-/// So many signals are shown at their declaration.
+/// So many signals, or bits of a vector, are shown at their declaration.
 const SHOWN: usize = 4;
 
 const FUNCTION: &str = "function hazard: between the two codes the net itself has the other value, whatever gates make \
@@ -64,18 +64,10 @@ fn edge(graph: &Graph, launch: &Launch) -> String {
     format!("the {way} edge of `{}`", names::name(graph, launch.root))
 }
 
-/// "`a`, `b` and 3 more".
+/// "`a`, bits 3:0 of `b` and 3 more".
 fn listed(graph: &Graph, nodes: &[NodeId]) -> String {
-    let mut named: Vec<String> = nodes.iter().map(|&node| format!("`{}`", names::name(graph, node))).collect();
-    named.sort();
-    let more = named.len().saturating_sub(NAMED);
-    named.truncate(NAMED);
-    match (named.split_last(), more) {
-        (None, _) => String::new(),
-        (Some((last, [])), 0) => last.clone(),
-        (Some((last, rest)), 0) => format!("{} and {last}", rest.join(", ")),
-        (Some(_), more) => format!("{} and {more} more", named.join(", ")),
-    }
+    let named: Vec<String> = nodes.iter().map(|&node| names::name(graph, node)).collect();
+    bundle::listed(named.iter().map(String::as_str), NAMED)
 }
 
 fn nodes(moves: &[(NodeId, bool)]) -> Vec<NodeId> {
@@ -115,20 +107,20 @@ pub(super) fn trace(graph: &Graph, target: NodeId, launch: &Launch, paths: &Path
     };
     let way = if launch.rises { "rises" } else { "falls" };
     let mut steps = vec![TraceStep::new(place(launch.root), format!("`{}` {way}", names::name(graph, launch.root)))];
-    let what = |node: NodeId| match graph.kind(node) {
-        NodeKind::Source(SourceKind::Latch) => "the latch ",
-        NodeKind::Source(SourceKind::FlipFlop) => "the flip-flop ",
-        _ => "",
-    };
-    let moved: Vec<(NodeId, bool)> =
-        launch.first.iter().chain(&launch.second).copied().filter(|&(node, _)| node != launch.root).collect();
-    for &(node, before) in moved.iter().take(SHOWN) {
-        let name = names::name(graph, node);
-        let (from, to) = (u8::from(before), u8::from(!before));
-        steps.push(TraceStep::new(place(node), format!("then {}`{name}` goes from {from} to {to}", what(node))));
+    let moved = launch.first.iter().chain(&launch.second).copied().filter(|&(node, _)| node != launch.root);
+    let moved: Vec<Moved> = moved.map(|(node, before)| Moved::of(graph, node, before, place(node))).collect();
+    // What is declared together and goes the same way is told together.
+    let mut groups: Vec<Vec<&Moved>> = Vec::new();
+    for one in &moved {
+        match groups.iter_mut().find(|group| group[0].is_beside(one)) {
+            Some(group) => group.push(one),
+            None => groups.push(vec![one]),
+        }
     }
-    if moved.len() > SHOWN {
-        let more = words::count(moved.len() - SHOWN, "more signal");
+    steps.extend(groups.iter().take(SHOWN).map(|group| TraceStep::new(group[0].at, told(group))));
+    let more: usize = groups.iter().skip(SHOWN).map(Vec::len).sum();
+    if more > 0 {
+        let more = words::count(more, "more signal");
         steps.push(TraceStep::new(None, format!("{more} move with them, all in the JSON output")));
     }
     for &latch in &launch.raced {
@@ -163,6 +155,40 @@ pub(super) fn trace(graph: &Graph, target: NodeId, launch: &Launch, paths: &Path
     };
     steps.push(TraceStep::new(at, text));
     steps
+}
+
+/// A signal that a launch moves.
+struct Moved {
+    name: String,
+    what: &'static str,
+    before: bool,
+    at: Option<Span>,
+}
+
+impl Moved {
+    fn of(graph: &Graph, node: NodeId, before: bool, at: Option<Span>) -> Self {
+        let what = match graph.kind(node) {
+            NodeKind::Source(SourceKind::Latch) => "the latch ",
+            NodeKind::Source(SourceKind::FlipFlop) => "the flip-flop ",
+            _ => "",
+        };
+        Self { name: names::name(graph, node), what, before, at }
+    }
+
+    fn is_beside(&self, other: &Self) -> bool {
+        let same_vector = bundle::split(&self.name).0 == bundle::split(&other.name).0;
+        (self.what, self.before, self.at) == (other.what, other.before, other.at) && same_vector
+    }
+}
+
+/// "then the flip-flop `a` goes from 0 to 1", "then bits 3:0 of `a` go from 0 to 1".
+fn told(group: &[&Moved]) -> String {
+    let names = bundle::listed(group.iter().map(|one| one.name.as_str()), 1);
+    let (from, to) = (u8::from(group[0].before), u8::from(!group[0].before));
+    match group {
+        [one] => format!("then {}{names} goes from {from} to {to}", one.what),
+        _ => format!("then {names} go from {from} to {to}"),
+    }
 }
 
 /// What the launches of a verdict call for, most telling first.

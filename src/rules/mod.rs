@@ -3,6 +3,7 @@
 //! plain data. Nothing that was asked is dropped: each net is counted as clean, hazardous or undecided.
 
 mod about_text;
+pub(crate) mod bundle;
 mod checked;
 mod clock_hazard;
 mod combinational_loop;

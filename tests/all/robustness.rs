@@ -221,3 +221,14 @@ fn an_output_that_is_no_plain_file_stays_what_it_is() {
     assert!(std::fs::symlink_metadata(&link).expect("there").is_symlink(), "the link is still one");
     assert_eq!(std::fs::read_to_string(&plain).expect("readable"), text);
 }
+
+/// The top is there, in a text that could not be read: the message says so instead of sending the reader to search.
+#[test]
+fn a_top_in_a_text_that_was_lost_is_named() {
+    let tree = Tree::new(&[
+        ("rtl/core.v", "module core(input a, output y);\n  assign y = ;\nendmodule\n"),
+        ("rtl/other.v", "module other(input a, output y);\n  assign y = a;\nendmodule\n"),
+    ]);
+    let text = tree.ends(3, &["scan", "rtl", "--top", "core"]);
+    assert!(text.contains("`rtl/core.v:1` declares it, but that text was left out"), "{text}");
+}

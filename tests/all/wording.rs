@@ -151,6 +151,6 @@ fn further_changes_are_one_short_line_each() {
     );
     only(&scan, "set-reset-hazard");
     // Both halves must be 1: e, c = d = 1 and one way through the other selector, which is two more signals.
-    let line = scan.text.lines().find(|line| line.contains("static-1 by t.t")).expect("a line for t.t");
-    assert_eq!(line.trim(), "static-1 by t.t, while 5 others hold (see the JSON output)");
+    let line = scan.text.lines().find(|line| line.contains("static-1 by `t.t`")).expect("a line for t.t");
+    assert_eq!(line.trim(), "static-1 by `t.t`, while 5 others hold (see the JSON output)");
 }
