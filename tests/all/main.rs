@@ -1,5 +1,6 @@
 //! The one integration binary: fixtures, end-to-end runs and checks against outside references.
 
+mod adopt;
 mod assumptions;
 mod catalogue;
 mod catalogue_explored;
