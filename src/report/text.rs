@@ -92,13 +92,21 @@ fn families<'a>(findings: impl Iterator<Item = &'a Finding>) -> Vec<Vec<&'a Find
     groups
 }
 
-/// The first finding of a family, and the nets of the others.
+/// The first finding of a family, and the nets of the others, or the places where they are about no net.
 fn of_group(sources: &SourceSet, group: &[&Finding]) -> Diagnostic<FileId> {
     let mut diagnostic = of_finding(sources, group[0]);
     let rest = &group[1..];
     if !rest.is_empty() {
-        let nets: Vec<String> = rest.iter().take(SHOWN_NETS).map(|finding| format!("  {}", finding.net)).collect();
-        let mut note = format!("the same on {} more:\n{}", rest.len(), nets.join("\n"));
+        let which = |finding: &&Finding| match finding.at {
+            Some(at) if finding.net.is_empty() => {
+                let position = sources.position(at);
+                format!("  {}:{}", position.file, position.line)
+            }
+            _ => format!("  {}", finding.net),
+        };
+        let shown: Vec<String> = rest.iter().take(SHOWN_NETS).map(which).collect();
+        let on = if group[0].net.is_empty() { "in" } else { "on" };
+        let mut note = format!("the same {on} {} more:\n{}", rest.len(), shown.join("\n"));
         if rest.len() > SHOWN_NETS {
             note.push_str(&format!("\n  and {} more, all in the JSON output", rest.len() - SHOWN_NETS));
         }

@@ -4,6 +4,7 @@
 use serde_json::Value;
 
 use crate::pipeline::{Scan, scan_text};
+use crate::tree::Tree;
 
 /// The one finding of a rule.
 #[track_caller]
@@ -153,4 +154,17 @@ fn further_changes_are_one_short_line_each() {
     // Both halves must be 1: e, c = d = 1 and one way through the other selector, which is two more signals.
     let line = scan.text.lines().find(|line| line.contains("static-1 by `t.t`")).expect("a line for t.t");
     assert_eq!(line.trim(), "static-1 by `t.t`, while 5 others hold (see the JSON output)");
+}
+
+/// What is about no net is told with the places of the others.
+#[test]
+fn further_missing_files_are_told_by_place() {
+    let text = "`include \"defs.vh\"\nmodule NAME(input a, output y); assign y = a; endmodule\n";
+    let (first, second) = (text.replace("NAME", "m"), text.replace("NAME", "n"));
+    let tree = Tree::new(&[("m.v", &first), ("n.v", &second)]);
+    let said = tree.ends(3, &["scan", "."]);
+    assert!(
+        said.contains("the same in 1 more:\n      ./n.v:1\n") || said.contains("the same in 1 more:\n      n.v:1\n"),
+        "{said}"
+    );
 }
