@@ -2,6 +2,7 @@
 
 use std::collections::BTreeSet;
 use std::path::{Path, PathBuf};
+use std::sync::Arc;
 
 use fastrand::Rng;
 
@@ -53,8 +54,10 @@ impl Input {
     }
 }
 
+#[derive(Clone)]
 pub struct Corpus {
-    seeds: Vec<Input>,
+    /// Shared by the workers; what each keeps is its own.
+    seeds: Arc<[Input]>,
     kept: Vec<Input>,
     said: BTreeSet<String>,
 }
@@ -87,7 +90,7 @@ impl Corpus {
     }
 
     pub fn pick(&self, rng: &mut Rng) -> Input {
-        let pool = if self.kept.is_empty() || rng.bool() { &self.seeds } else { &self.kept };
+        let pool = if self.kept.is_empty() || rng.bool() { &self.seeds[..] } else { &self.kept };
         pool[rng.usize(..pool.len())].clone()
     }
 

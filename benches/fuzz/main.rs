@@ -2,14 +2,20 @@
 //! rendered report and the flattened netlist. Inputs are mutations of the fixtures and of modules from a grammar of
 //! SystemVerilog; those that make the front end say something new are mutated further.
 //!
-//! `cargo bench --profile dev --bench fuzz -- --seconds 60 [--seed N] [--workers N] [--out FOLDER]`
+//! `cargo bench --profile dev --bench fuzz -- --seconds 60 [--seed N] [--workers N] [--inputs N] [--minimise SECONDS]
+//! [--out FOLDER]`
 //!
 //! Every input runs in a child process. A failure is a panic of ours (also one that the reader would catch), an end by a
 //! signal such as an overflown stack, more than 10 s of processor time, more than 2 GB of resident memory, no progress for
 //! two minutes, an unsound graph, a flattened netlist that is not read back whole, and an input with a broken module
 //! at its end that is called complete. The time limit counts the processor time of the child, not the time on the clock,
-//! so that a loaded machine changes nothing. The first input of each failure is minimised and saved below `target/fuzz`,
-//! and the run ends with 1.
+//! so that a loaded machine changes nothing. The first inputs of each failure are saved below `target/fuzz`, minimised
+//! after the search within a budget of its own (`--minimise`, a minute), and the run ends with 1.
+//!
+//! The inputs of a worker depend on the tree (fixtures, messages of the front end), the seed and the worker's number,
+//! on nothing else: a run of a minute executes the beginning of what a longer run of the same tree executes. The summary
+//! shows digests of the inputs by which two runs can be compared. Only an input that fails, by a limit that another
+//! machine keeps, can part them.
 //!
 //! A plain program instead of a coverage-guided engine: those need a nightly compiler and would build the parser again.
 #![allow(clippy::print_stdout, clippy::print_stderr, reason = "a bench prints what it did")]
@@ -25,6 +31,7 @@ mod outcome;
 mod statements;
 
 use std::collections::BTreeMap;
+use std::hash::{DefaultHasher, Hash, Hasher};
 use std::path::{Path, PathBuf};
 use std::sync::Mutex;
 use std::time::{Duration, Instant};
@@ -34,8 +41,15 @@ use fastrand::Rng;
 use corpus::{Corpus, Input};
 use outcome::{Failure, Outcome};
 
+/// A minimised input up to this many bytes is printed, so that the log of a machine that keeps no files is enough.
+const PRINTED: usize = 2000;
+
 struct Options {
     seconds: u64,
+    /// Each worker ends after so many inputs.
+    inputs: usize,
+    /// Seconds for making what failed small, for all failures together.
+    minimise: u64,
     seed: u64,
     workers: usize,
     out: PathBuf,
@@ -51,6 +65,8 @@ impl Options {
     fn read(mut arguments: impl Iterator<Item = String>) -> Result<Self, String> {
         let mut options = Self {
             seconds: 60,
+            inputs: usize::MAX,
+            minimise: 60,
             seed: 1,
             workers: 2,
             out: Path::new(env!("CARGO_MANIFEST_DIR")).join("target/fuzz"),
@@ -66,6 +82,8 @@ impl Options {
             let number = || value.parse::<u64>().map_err(|_| format!("{name}: `{value}` is no number"));
             match name.as_str() {
                 "--seconds" => options.seconds = number()?,
+                "--inputs" => options.inputs = usize::try_from(number()?).unwrap_or(usize::MAX),
+                "--minimise" => options.minimise = number()?,
                 "--seed" => options.seed = number()?,
                 "--workers" => options.workers = usize::try_from(number()?).unwrap_or(1),
                 "--out" => options.out = PathBuf::from(value),
@@ -78,13 +96,20 @@ impl Options {
     }
 }
 
-/// What all workers share.
-struct Shared {
+/// One line of search. Its inputs follow from the seed and its number alone: it has its own random numbers and its own
+/// corpus, and what another worker finds or how fast anything runs changes nothing.
+struct Worker {
+    rng: Rng,
     corpus: Corpus,
     counts: Counts,
-    /// By what they have in common, with where the smallest input is saved.
-    failures: BTreeMap<String, (usize, String)>,
+    trail: Trail,
 }
+
+/// What failed, by what failures have in common.
+type Found = BTreeMap<String, Vec<(Input, Failure)>>;
+
+/// Inputs that are kept of each kind of failure; all are counted.
+const KEPT_OF_EACH: usize = 3;
 
 #[derive(Default)]
 struct Counts {
@@ -140,66 +165,113 @@ fn fuzz(options: &Options) -> bool {
     let start = Instant::now();
     let end = start + Duration::from_secs(options.seconds);
     let corpus = Corpus::read(&Path::new(env!("CARGO_MANIFEST_DIR")).join("fixtures"));
-    let seeds = corpus.len();
-    let shared = Mutex::new(Shared { corpus, counts: Counts::default(), failures: BTreeMap::new() });
-    std::thread::scope(|scope| {
-        for worker in 0..options.workers {
-            let shared = &shared;
-            scope.spawn(move || {
-                let mut rng = Rng::with_seed(options.seed.wrapping_mul(1000).wrapping_add(worker as u64));
-                let mut child = child::Handle::new();
-                while Instant::now() < end {
-                    one(&mut rng, &mut child, shared, &options.out);
-                }
-            });
-        }
+    let found = Mutex::new(Found::new());
+    let workers: Vec<Worker> = std::thread::scope(|scope| {
+        let started: Vec<_> = (0..options.workers)
+            .map(|number| {
+                let mut worker = Worker::new(options.seed, number, corpus.clone());
+                let found = &found;
+                scope.spawn(move || {
+                    let mut child = child::Handle::new();
+                    while Instant::now() < end && worker.counts.inputs < options.inputs {
+                        if let Some((input, failure)) = worker.one(&mut child) {
+                            note(input, failure, found, &options.out);
+                        }
+                    }
+                    worker
+                })
+            })
+            .collect();
+        started.into_iter().map(|worker| worker.join().expect("a worker that ends")).collect()
     });
-    let shared = shared.into_inner().unwrap_or_else(std::sync::PoisonError::into_inner);
-    summary(&shared, seeds, options, start.elapsed());
-    !shared.failures.is_empty()
+    summary(&workers, corpus.len(), options, start.elapsed());
+    let found = found.into_inner().unwrap_or_else(std::sync::PoisonError::into_inner);
+    report(&found, options);
+    !found.is_empty()
 }
 
-/// Makes one input, runs it and keeps it when it is worth it.
-fn one(rng: &mut Rng, child: &mut child::Handle, shared: &Mutex<Shared>, out: &Path) {
-    let lock = || shared.lock().unwrap_or_else(std::sync::PoisonError::into_inner);
-    let generated = rng.u32(..5) == 0;
-    let mut input = if generated {
-        Input::single("generated.sv", grammar::design(rng).into_bytes())
-    } else {
-        lock().corpus.pick(rng)
-    };
-    let plain = generated && rng.u32(..4) == 0;
-    if !plain {
-        let other = lock().corpus.pick(rng);
-        mutate::mutate(&mut input, &other, rng);
+/// Saves a failing input as it is, at once, so that a run that is ended from outside has lost nothing.
+fn note(input: Input, failure: Failure, found: &Mutex<Found>, out: &Path) {
+    let key = failure.key();
+    let mut found = found.lock().unwrap_or_else(std::sync::PoisonError::into_inner);
+    let same = found.entry(key.clone()).or_default();
+    if same.len() < KEPT_OF_EACH {
+        let place = input.save(out, &format!("{key}-{}", same.len() + 1));
+        println!("{failure}\n  {} bytes: {}", input.size(), place.display());
     }
-    input.broken_tail = rng.u32(..6) == 0;
-    let outcome = child.run(&input);
-    {
-        let mut shared = lock();
-        shared.counts.add(&outcome, plain && !input.broken_tail);
-        if outcome.failure.is_none() && !input.broken_tail {
-            shared.corpus.keep_if_new(&input, &outcome.said);
+    same.push((input, failure));
+}
+
+/// Minimises what was kept of each failure, within one budget for all, and prints it.
+fn report(found: &Found, options: &Options) {
+    let mut left: usize = found.values().map(|same| same.len().min(KEPT_OF_EACH)).sum();
+    let end = Instant::now() + Duration::from_secs(options.minimise);
+    let mut child = child::Handle::new();
+    for (key, same) in found {
+        println!("  FAILED {} times: {key}", same.len());
+        for (index, (input, failure)) in same.iter().take(KEPT_OF_EACH).enumerate() {
+            let share = end.saturating_duration_since(Instant::now()) / u32::try_from(left).unwrap_or(1);
+            let small = minimise::minimise(input.clone(), failure, share, &mut child);
+            left -= 1;
+            let place = small.save(&options.out, &format!("{key}-{}", index + 1));
+            println!("    {} of {} bytes are left: {}", small.size(), input.size(), place.display());
+            if small.size() <= PRINTED {
+                for (name, text) in &small.files {
+                    println!("    --- {name}\n{}\n    ---", text.escape_ascii().to_string().replace("\\n", "\n"));
+                }
+            }
         }
     }
-    if let Some(failure) = outcome.failure {
-        let key = failure.key();
-        let size = input.size();
-        let is_new = {
-            let mut shared = lock();
-            let known = shared.failures.contains_key(&key);
-            let entry = shared.failures.entry(key.clone()).or_insert((0, String::new()));
-            entry.0 += 1;
-            !known
+    if found.is_empty() {
+        println!("  no failure");
+    }
+}
+
+impl Worker {
+    fn new(seed: u64, number: usize, corpus: Corpus) -> Self {
+        let rng = Rng::with_seed(seed.wrapping_mul(1000).wrapping_add(number as u64));
+        Self { rng, corpus, counts: Counts::default(), trail: Trail::default() }
+    }
+
+    /// Makes one input, runs it, and keeps it when it is worth it. Returns it when it fails.
+    fn one(&mut self, child: &mut child::Handle) -> Option<(Input, Failure)> {
+        let rng = &mut self.rng;
+        let generated = rng.u32(..5) == 0;
+        let mut input = if generated {
+            Input::single("generated.sv", grammar::design(rng).into_bytes())
+        } else {
+            self.corpus.pick(rng)
         };
-        if is_new {
-            println!("{failure}\n  in {size} bytes, minimising");
-            let small = minimise::minimise(input, &failure, child);
-            let place = small.save(out, &key);
-            println!("  {} bytes are left: {}", small.size(), place.display());
-            if let Some(entry) = lock().failures.get_mut(&key) {
-                entry.1 = place.display().to_string();
-            }
+        let plain = generated && rng.u32(..4) == 0;
+        if !plain {
+            let other = self.corpus.pick(rng);
+            mutate::mutate(&mut input, &other, rng);
+        }
+        input.broken_tail = rng.u32(..6) == 0;
+        self.trail.add(&input);
+        let outcome = child.run(&input);
+        self.counts.add(&outcome, plain && !input.broken_tail);
+        if outcome.failure.is_none() && !input.broken_tail {
+            self.corpus.keep_if_new(&input, &outcome.said);
+        }
+        outcome.failure.map(|failure| (input, failure))
+    }
+}
+
+/// A digest of the inputs so far, noted whenever their number is a power of two, so that two runs can be compared.
+#[derive(Default)]
+struct Trail {
+    hasher: DefaultHasher,
+    inputs: usize,
+    digests: Vec<u16>,
+}
+
+impl Trail {
+    fn add(&mut self, input: &Input) {
+        (&input.files, input.broken_tail).hash(&mut self.hasher);
+        self.inputs += 1;
+        if self.inputs.is_power_of_two() {
+            self.digests.push((self.hasher.finish() & 0xffff) as u16);
         }
     }
 }
@@ -216,27 +288,37 @@ impl Counts {
         self.generated += usize::from(generated);
         self.generated_complete += usize::from(generated && outcome.complete);
     }
+
+    fn join(&mut self, other: &Self) {
+        self.inputs += other.inputs;
+        self.generated += other.generated;
+        self.generated_complete += other.generated_complete;
+        self.complete += other.complete;
+        self.with_gates += other.with_gates;
+        self.parser_panics += other.parser_panics;
+        self.total += other.total;
+        self.slowest = self.slowest.max(other.slowest);
+        self.largest_kb = self.largest_kb.max(other.largest_kb);
+    }
 }
 
-fn summary(shared: &Shared, seeds: usize, options: &Options, elapsed: Duration) {
-    let counts = &shared.counts;
+fn summary(workers: &[Worker], seeds: usize, options: &Options, elapsed: Duration) {
+    let mut counts = Counts::default();
+    for worker in workers {
+        counts.join(&worker.counts);
+    }
     println!(
-        "fuzz: {} inputs in {:.0} s on {} workers, seed {}; {seeds} seeds, {} kept because they brought something new",
+        "fuzz: {} inputs in {:.0} s on {} workers, seed {}, {seeds} files to begin with",
         counts.inputs,
         elapsed.as_secs_f64(),
-        options.workers,
+        workers.len(),
         options.seed,
-        shared.corpus.len() - seeds,
     );
     println!(
         "  {} gave gates, {} were read complete; of {} unmutated generated designs {} were complete",
         counts.with_gates, counts.complete, counts.generated, counts.generated_complete
     );
-    println!(
-        "  {} different statements of the front end; {} panics inside the parser, caught by the reader",
-        shared.corpus.said(),
-        counts.parser_panics
-    );
+    println!("  {} panics inside the parser, caught by the reader", counts.parser_panics);
     println!(
         "  {:.0} s of processor time together, the slowest {:.1} s (limit {} s); the largest {} MB (limit {} MB)",
         counts.total.as_secs_f64(),
@@ -245,11 +327,16 @@ fn summary(shared: &Shared, seeds: usize, options: &Options, elapsed: Duration) 
         counts.largest_kb / 1000,
         child::MEMORY_KB / 1000
     );
-    for (key, (count, place)) in &shared.failures {
-        println!("  FAILED {count} times: {key}\n    {place}");
-    }
-    if shared.failures.is_empty() {
-        println!("  no failure");
+    for (number, worker) in workers.iter().enumerate() {
+        let digests: Vec<String> = worker.trail.digests.iter().map(|digest| format!("{digest:04x}")).collect();
+        println!(
+            "  worker {number}: {} inputs, {} statements of the front end, {} inputs kept for them; after 1, 2, 4... \
+             inputs {}",
+            worker.counts.inputs,
+            worker.corpus.said(),
+            worker.corpus.len() - seeds,
+            digests.join(" ")
+        );
     }
 }
 

@@ -9,14 +9,9 @@ use crate::corpus::Input;
 use crate::mutate::tokens;
 use crate::outcome::Failure;
 
-/// Time on the clock for one minimisation.
-const BUDGET: Duration = Duration::from_secs(60);
-/// The same where one trial takes seconds.
-const SLOW_BUDGET: Duration = Duration::from_secs(240);
-
-/// The smallest input found within the budget that still fails like `failure`.
-pub fn minimise(mut input: Input, failure: &Failure, child: &mut Handle) -> Input {
-    let end = Instant::now() + if failure.is_slow() { SLOW_BUDGET } else { BUDGET };
+/// The smallest input found within `budget`, time on the clock, that still fails like `failure`.
+pub fn minimise(mut input: Input, failure: &Failure, budget: Duration, child: &mut Handle) -> Input {
+    let end = Instant::now() + budget;
     let mut fails = |candidate: &Input| {
         Instant::now() < end && child.run(candidate).failure.is_some_and(|found| found.key() == failure.key())
     };

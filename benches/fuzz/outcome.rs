@@ -62,9 +62,4 @@ impl Failure {
             self.place.chars().map(|c| if c.is_ascii_alphanumeric() || c == '.' { c } else { '-' }).take(80).collect();
         if place.is_empty() { kind.to_string() } else { format!("{kind}-{place}") }
     }
-
-    /// Whether one trial takes the whole limit of time, so that only few are affordable.
-    pub fn is_slow(&self) -> bool {
-        matches!(self.kind, Kind::Time | Kind::Stalled)
-    }
 }

@@ -19,7 +19,7 @@ use super::{Design, Misuse, Request};
 use crate::cells::Cells;
 use crate::define_id;
 use crate::diagnostic::{Diagnostic, Kind};
-use crate::graph::{GraphBuilder, InstanceId, NetId, NodeId, Site};
+use crate::graph::{GraphBuilder, InstanceId, NetId, NodeId, PortId, Site};
 use crate::source::{Given, Span};
 use crate::syntax::ast::{self, NetKind};
 
@@ -156,6 +156,8 @@ pub(super) struct Elaborator<'a> {
     pub side_effects: Vec<VariableId>,
     /// Variables that get values from what is left out as simulation, each with what that is.
     pub simulated: Vec<(VariableId, &'static str)>,
+    /// The nets that are ports of the tops.
+    pub port_nets: HashMap<NetId, PortId>,
     /// Variables of interfaces at the top whose direction shows only when all drivers are known.
     pub undirected: Vec<(VariableId, InstanceId, String)>,
 }
@@ -276,6 +278,7 @@ impl<'a> Elaborator<'a> {
             slot: None,
             side_effects: Vec::new(),
             simulated: Vec::new(),
+            port_nets: HashMap::new(),
             undirected: Vec::new(),
         }
     }

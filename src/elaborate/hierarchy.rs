@@ -152,6 +152,9 @@ impl<'a> Elaborator<'a> {
         if matches!(module.ports, Ports::Wildcard) {
             return Err(unsupported("port list (.*) without an extern declaration in the same file", module.name.span));
         }
+        if !self.modules_elaborated.contains(&module.name.name) {
+            self.check_header(module);
+        }
         self.import(scope, &module.imports)?;
         self.parameters(scope, module, outer, overrides)?;
         let before = std::mem::replace(&mut self.instance, instance);

@@ -22,6 +22,7 @@ mod expr;
 mod gates;
 mod generate;
 mod given;
+mod headers;
 mod hierarchy;
 mod interfaces;
 mod library;

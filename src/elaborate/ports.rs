@@ -2,6 +2,7 @@
 //! concatenations and slices of instance arrays. Widths adapt by the rules of assignment. Instances of missing modules
 //! become black boxes, whose directions are guessed last of all.
 
+use std::collections::HashSet;
 use std::rc::Rc;
 
 use super::bits::{Bit, extend};
@@ -127,7 +128,8 @@ fn first_name(expr: &Expr) -> Option<&Ident> {
     }
 }
 
-fn direction_of(module: &Module, port: usize) -> Option<Direction> {
+/// The direction of a port by its place in the list; for a port expression that of its first name.
+pub(super) fn direction_of(module: &Module, port: usize) -> Option<Direction> {
     match &module.ports {
         Ports::Ansi(ports) => match &ports.get(port)?.kind {
             AnsiPortKind::Data { direction, .. }
@@ -193,6 +195,10 @@ impl<'a> Elaborator<'a> {
 
     /// Notes what each port of a module is inside.
     pub fn list_ports(&mut self, scope: ScopeId, module: &'a Module) -> Outcome<()> {
+        let names = port_names(module);
+        // Only the first of several ports of one name is one.
+        let mut seen = HashSet::new();
+        let repeated: Vec<bool> = names.iter().map(|name| name.is_some_and(|name| !seen.insert(name))).collect();
         let mut list = Vec::new();
         let named = |this: &mut Self, name: &str| match this.scope(scope).names.get(name) {
             Some(&Symbol::Variable(id)) => {
@@ -208,6 +214,7 @@ impl<'a> Elaborator<'a> {
                 for (index, port) in ports.iter().enumerate() {
                     let direction = direction_of(module, index).unwrap_or(Direction::Inout);
                     let target = match &port.kind {
+                        _ if repeated[index] => Target::Nothing,
                         AnsiPortKind::Explicit { expr: Some(expr), .. } => Target::Expr(expr),
                         AnsiPortKind::Explicit { expr: None, .. } => Target::Nothing,
                         _ => named(self, &port.name.name).unwrap_or(Target::Nothing),
@@ -217,7 +224,7 @@ impl<'a> Elaborator<'a> {
             }
             Ports::NonAnsi(ports) => {
                 for (index, port) in ports.iter().enumerate() {
-                    let Some(expr) = &port.expr else {
+                    let Some(expr) = port.expr.as_ref().filter(|_| !repeated[index]) else {
                         list.push(PortInfo { direction: Direction::Inout, target: Target::Nothing });
                         continue;
                     };
@@ -513,6 +520,7 @@ impl<'a> Elaborator<'a> {
         }
     }
 
+    /// One net behind several ports is one port, an output only when it is nothing else.
     pub fn top_port(&mut self, id: VariableId, instance: InstanceId, direction: PortDirection, name: String) {
         self.variables[id.index()].is_port = true;
         let variable = self.variable(id);
@@ -524,6 +532,16 @@ impl<'a> Elaborator<'a> {
             _ => None,
         };
         let Some(net) = variable.net else { return };
+        if let Some(&known) = self.port_nets.get(&net) {
+            let known = self.builder.port_direction(known);
+            if direction == PortDirection::Output || *known != PortDirection::Output {
+                return;
+            }
+            *known = direction;
+        } else {
+            let port = self.builder.port(Port { instance, name, direction, net, range });
+            self.port_nets.insert(net, port);
+        }
         let site = Site { instance, span: Some(span) };
         for wire in wires {
             match direction {
@@ -540,7 +558,6 @@ impl<'a> Elaborator<'a> {
                 }
             }
         }
-        self.builder.port(Port { instance, name, direction, net, range });
     }
 }
 

@@ -5,7 +5,7 @@ use std::collections::HashMap;
 
 use super::node::{
     BlackBox, Cell, CellId, GateKind, Instance, InstanceId, Net, NetId, NodeId, NodeKind, Operator, OperatorId, Port,
-    SourceKind, Table, TableId,
+    PortDirection, PortId, SourceKind, Table, TableId,
 };
 use super::{Graph, NodeName};
 use crate::source::Span;
@@ -311,8 +311,13 @@ impl GraphBuilder {
         self.clock_gates.push(cell);
     }
 
-    pub fn port(&mut self, port: Port) {
+    pub fn port(&mut self, port: Port) -> PortId {
         self.ports.push(port);
+        PortId::new(self.ports.len() - 1)
+    }
+
+    pub fn port_direction(&mut self, port: PortId) -> &mut PortDirection {
+        &mut self.ports[port.index()].direction
     }
 
     pub fn black_box(&mut self, black_box: BlackBox) {

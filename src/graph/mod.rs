@@ -13,7 +13,7 @@ pub use builder::{GraphBuilder, Site};
 pub use check::check;
 pub use node::{
     BlackBox, BoxPin, BoxRole, Cell, CellId, CellKind, Control, Edge, GateKind, Instance, InstanceId, Net, NetId,
-    NodeId, NodeKind, Operator, OperatorId, Port, PortDirection, SourceKind, Symbol, Table, TableId,
+    NodeId, NodeKind, Operator, OperatorId, Port, PortDirection, PortId, SourceKind, Symbol, Table, TableId,
 };
 use rows::Rows;
 

@@ -12,6 +12,7 @@ define_id!(NetId, "w", "A declared net or variable, all its bits.");
 define_id!(TableId, "t", "The table of a combinational user-defined primitive.");
 define_id!(OperatorId, "o", "An arithmetic operator as written, or the read port of a memory.");
 define_id!(CellId, "c", "A flip-flop or latch bit.");
+define_id!(PortId, "p", "A port of a top.");
 
 /// What a node is.
 #[derive(Clone, Copy, PartialEq, Eq, Hash, Debug)]

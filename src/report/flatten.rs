@@ -63,6 +63,8 @@ struct Writer<'g> {
     graph: &'g Graph,
     /// What each node is called where it is read: a name or a constant.
     names: Vec<String>,
+    /// The hierarchical names among them.
+    taken: HashSet<String>,
     text: String,
 }
 
@@ -83,7 +85,7 @@ impl<'g> Writer<'g> {
             };
             names.push(name);
         }
-        Self { graph, names, text: String::new() }
+        Self { graph, names, taken, text: String::new() }
     }
 
     fn name(&self, node: NodeId) -> &str {
@@ -240,7 +242,11 @@ impl<'g> Writer<'g> {
 
     /// The copy of a computed pin that changes only when the gates have settled.
     fn settled(&self, pin: NodeId) -> String {
-        format!("\\{}$settled ", self.name(pin).trim_start_matches('\\').trim_end())
+        let mut name = format!("{}$settled", self.name(pin).trim_start_matches('\\').trim_end());
+        while self.taken.contains(&name) {
+            name.push('$');
+        }
+        format!("\\{name} ")
     }
 
     fn cell(&mut self, cell: &Cell) {

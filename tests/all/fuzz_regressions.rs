@@ -3,10 +3,14 @@
 //! promised time, and with a module behind it that cannot be parsed it must not be complete.
 
 use std::path::{Path, PathBuf};
-use std::process::Command;
+use std::process::{Command, Output};
+
+use serde_json::Value;
 
 /// Seconds of processor time that one input may take.
 const TIME: &str = "10";
+/// Longer modules are refused, in bytes.
+const LONGEST_MODULE: usize = 4 << 20;
 
 fn entries(folder: &str) -> Vec<PathBuf> {
     let folder = Path::new(env!("CARGO_MANIFEST_DIR")).join("fixtures/fuzz").join(folder);
@@ -17,20 +21,22 @@ fn entries(folder: &str) -> Vec<PathBuf> {
     entries
 }
 
-/// Whether a scan was complete, or how it failed. Where nothing was found to analyse it was not.
-fn run(path: &Path) -> Result<bool, String> {
-    let output = Command::new("sh")
-        .args(["-c", &format!("ulimit -t {TIME}; exec \"$@\""), "sh", env!("CARGO_BIN_EXE_stillwire"), "scan"])
+/// Runs the program within the limit of time.
+fn stillwire(arguments: &[&str], path: &Path) -> Output {
+    Command::new("sh")
+        .args(["-c", &format!("ulimit -t {TIME}; exec \"$@\""), "sh", env!("CARGO_BIN_EXE_stillwire")])
+        .args(arguments)
         .arg(path)
-        .args(["--show", "note", "--write", "json:-"])
         .output()
-        .expect("the program starts");
+        .expect("the program starts")
+}
+
+/// What a scan found, `null` where there was nothing to analyse, or how it failed.
+fn scan(path: &Path) -> Result<Value, String> {
+    let output = stillwire(&["scan", "--show", "note", "--write", "json:-"], path);
     let text = String::from_utf8_lossy(&output.stderr);
     match output.status.code() {
-        Some(0..=3) if !text.contains("panicked") => {
-            let json = serde_json::from_slice::<serde_json::Value>(&output.stdout);
-            Ok(json.is_ok_and(|json| json["complete"] == true))
-        }
+        Some(0..=3) if !text.contains("panicked") => Ok(serde_json::from_slice(&output.stdout).unwrap_or_default()),
         _ => Err(format!("{}: {}: {}", path.display(), output.status, text.chars().take(1000).collect::<String>())),
     }
 }
@@ -53,12 +59,38 @@ fn with_broken_tail(path: &Path) -> tempfile::TempDir {
 fn what_once_broke_ends_with_a_report() {
     let mut failures = Vec::new();
     for path in entries("regressions").into_iter().chain(entries("seeds")) {
-        failures.extend(run(&path).err());
-        match run(with_broken_tail(&path).path()) {
-            Ok(false) => {}
-            Ok(true) => failures.push(format!("{}: complete in spite of a broken module", path.display())),
+        failures.extend(scan(&path).err());
+        match scan(with_broken_tail(&path).path()) {
+            Ok(json) if json["complete"] != true => {}
+            Ok(_) => failures.push(format!("{}: complete in spite of a broken module", path.display())),
             Err(failure) => failures.push(failure),
         }
     }
     assert!(failures.is_empty(), "{}", failures.join("\n"));
+}
+
+/// What is called complete flattens to a netlist that is read whole: every port and net has one name and one driver.
+#[test]
+fn what_is_complete_is_read_back() {
+    let folder = tempfile::tempdir().expect("a temporary folder");
+    let netlist = folder.path().join("netlist.v");
+    let (mut failures, mut read_back) = (Vec::new(), 0);
+    for path in entries("regressions").into_iter().chain(entries("seeds")) {
+        if scan(&path).is_ok_and(|json| json["complete"] != true) {
+            continue;
+        }
+        let text = String::from_utf8(stillwire(&["flatten"], &path).stdout).expect("text");
+        if text.len() > LONGEST_MODULE {
+            continue;
+        }
+        // The copies that wait for the gates are for simulators.
+        std::fs::write(&netlist, text.replace("#0; ", "")).expect("written");
+        read_back += 1;
+        let json = scan(&netlist).unwrap_or_else(|failure| panic!("{failure}"));
+        let findings = json["findings"].as_array().expect("findings");
+        let unread = findings.iter().filter(|finding| finding["rule"] == "unsupported-construct");
+        failures.extend(unread.map(|finding| format!("{}: {}", path.display(), finding["message"])));
+    }
+    assert!(failures.is_empty(), "{}", failures.join("\n"));
+    assert!(read_back > 0, "nothing was complete");
 }

@@ -25,6 +25,7 @@ mod formula;
 mod fuzz_regressions;
 mod given;
 mod graph;
+mod headers;
 mod launch;
 mod launch_delays;
 mod launch_explorer;
