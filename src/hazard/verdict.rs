@@ -77,7 +77,8 @@ pub struct Launch {
     /// Outputs of latches that pass their data in the step that shows the hazard, so that what lies in front of them is
     /// part of the target's logic; the sources in this witness are those in front of them. Sorted.
     pub passing: Vec<NodeId>,
-    /// Those of `passing` that the first step opened and that held the other value than their data until then. Sorted.
+    /// Those of `passing` that the first step opened and that held the other value than their data until then. They count
+    /// among the sources that move as well. Sorted.
     pub late: Vec<NodeId>,
     /// Outputs of latches that do anything at all in the step that shows the hazard, because their data moves while they
     /// open or close. They count among the sources that move. Sorted.

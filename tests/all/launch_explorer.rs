@@ -293,10 +293,22 @@ impl<'a> Explorer<'a> {
         let alone = only(cone & step.moved());
         let own = alone.is_some_and(|source| matches!(step.roles[source], Role::Moves | Role::Opens));
         let clean = own && self.are_clean(cone, step);
-        let passing = (0..step.roles.len()).filter(|&source| step.roles[source] == Role::Passes);
+        let passing = (0..step.roles.len()).filter(|&source| self.passes(source, step));
         let through = passing.fold(self.reaching(target, step), |through, source| through & !(1 << source));
         let behind = only(through & step.moved());
         Shown { kind, when, root, rises, alone, clean, behind, function: self.leaves(target, step) }
+    }
+
+    /// Whether a source is a latch that is open all the time, or whose value as it opens is that of its data: then it does
+    /// what its data does, and nobody can tell the moment.
+    fn passes(&self, source: usize, step: &Step) -> bool {
+        let own = step.before >> source & 1 == 1;
+        let data = |source: usize| self.machine.cells[source - self.machine.inputs].data;
+        match step.roles[source] {
+            Role::Passes => true,
+            Role::Opens => self.machine.at(data(source), step.before) == own,
+            Role::Holds | Role::Moves | Role::Races => false,
+        }
     }
 
     /// Whether none of these sources does more than its two values need.

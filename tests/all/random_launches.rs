@@ -319,6 +319,11 @@ fn module(title: &str, machine: &Machine) -> String {
     text
 }
 
+/// The machine of a seed as a module of this name.
+pub fn written(title: &str, seed: u64) -> String {
+    module(title, &machine(seed))
+}
+
 fn flip_flop(index: usize, cell: &Cell, clock: Net, rising: bool) -> String {
     let edge = |rising: bool| if rising { "posedge" } else { "negedge" };
     let mut events = format!("{} {}", edge(rising), name(clock));
@@ -428,7 +433,6 @@ fn compare(instance: &str, machine: &Machine, scan: &Scan) -> Result<(usize, usi
 }
 
 #[test]
-#[ignore = "five of the 500 circuits differ in which sources a report names for a hazard that latches pass"]
 fn the_program_finds_exactly_what_the_launch_explorer_finds() {
     const BATCH: usize = 50;
     let seeds: Vec<u64> = (FIRST_SEED..FIRST_SEED + CIRCUITS).collect();

@@ -2,18 +2,27 @@
 //! of the fixtures and of random circuits must print PULSE, and with its cover and random delays NO PULSE. The runs with
 //! `iverilog` are ignored by default; the others look at the files.
 
-use std::collections::BTreeSet;
+use std::collections::{BTreeMap, BTreeSet};
 use std::path::{Path, PathBuf};
 use std::process::{Command, Output};
 
 use crate::pipeline::{Scan, scan};
 use crate::random_circuits::{Random, Written, module};
+use crate::random_launches;
 
 /// Benches that one simulation runs side by side.
 const BATCH: usize = 60;
 /// Random circuits that must replay, and the number of the first.
 const CIRCUITS: u64 = 300;
 const FIRST_SEED: u64 = 500_000;
+/// Sequential ones beside them, for the witnesses of launches.
+const LAUNCHES: u64 = 150;
+
+/// What is proven about these is no transition of a net, so there is none to replay: a loop without a lost state, a
+/// structure that needs its redundant terms, a release that nothing synchronises, a state with set and reset active, and
+/// what could not be read.
+const WITHOUT_TRANSITION: [&str; 5] =
+    ["combinational-loop", "cover-unprotected", "reset-release", "set-reset-overlap", "unsupported-construct"];
 
 fn replay(fingerprint: &str, path: &Path, to: &Path) -> Output {
     let mut command = Command::new(env!("CARGO_BIN_EXE_stillwire"));
@@ -29,34 +38,82 @@ fn files(folder: &Path, ending: &str) -> Vec<PathBuf> {
     files
 }
 
+fn has_witness(finding: &&serde_json::Value) -> bool {
+    finding["hazards"].as_array().is_some_and(|hazards| !hazards.is_empty())
+}
+
+fn proven(scan: &Scan) -> impl Iterator<Item = &serde_json::Value> {
+    scan.findings().iter().filter(|finding| finding["verdict"] == "proven")
+}
+
 /// The findings that have something to replay, by fingerprint.
 fn replayable(scan: &Scan) -> BTreeSet<String> {
-    let has_witness = |finding: &&serde_json::Value| {
-        finding["verdict"] == "proven" && finding["hazards"].as_array().is_some_and(|hazards| !hazards.is_empty())
-    };
-    let findings = scan.findings().iter().filter(has_witness);
+    let findings = proven(scan).filter(has_witness);
     findings.map(|finding| finding["fingerprint"].as_str().expect("a fingerprint").to_string()).collect()
 }
 
-/// Replays every finding under `path` into folders below `to`; `failed` gets what was said about those that do not.
-fn replay_all(path: &Path, to: &Path, benches: &mut Vec<PathBuf>, failed: &mut String) -> usize {
-    // A file of packages or of test benches alone has nothing to analyse.
-    let status =
-        Command::new(env!("CARGO_BIN_EXE_stillwire")).arg("scan").arg(path).output().expect("it starts").status;
-    if status.code() == Some(2) {
-        return 0;
-    }
-    let fingerprints = replayable(&scan(&[path], &[]));
-    for fingerprint in &fingerprints {
-        let folder = to.join(fingerprint);
-        let output = replay(fingerprint, path, &folder);
-        let text = String::from_utf8_lossy(&output.stdout).into_owned() + &String::from_utf8_lossy(&output.stderr);
-        if !output.status.success() {
-            *failed += &format!("{}: {text}\n", path.display());
+/// What was replayed.
+#[derive(Default)]
+struct Replays {
+    benches: Vec<PathBuf>,
+    findings: usize,
+    /// How many hazards of them are those of a launch.
+    launched: usize,
+    /// Proven findings without a transition, by rule.
+    without: BTreeMap<String, usize>,
+    /// What was said about those that failed.
+    failed: String,
+}
+
+impl Replays {
+    /// Replays every finding under `path` into folders below `to`; returns how many.
+    fn of(&mut self, path: &Path, to: &Path) -> usize {
+        // A file of packages or of test benches alone has nothing to analyse.
+        let status =
+            Command::new(env!("CARGO_BIN_EXE_stillwire")).arg("scan").arg(path).output().expect("it starts").status;
+        if status.code() == Some(2) {
+            return 0;
         }
-        benches.extend(files(&folder, ".v"));
+        let scan = scan(&[path], &[]);
+        for finding in proven(&scan) {
+            let launches = finding["hazards"].as_array().into_iter().flatten();
+            self.launched += launches.filter(|hazard| hazard["launch"].is_object()).count();
+            if !has_witness(&finding) {
+                let rule = finding["rule"].as_str().expect("a rule");
+                *self.without.entry(rule.to_string()).or_default() += 1;
+            }
+        }
+        let fingerprints = replayable(&scan);
+        for fingerprint in &fingerprints {
+            let folder = to.join(fingerprint);
+            let output = replay(fingerprint, path, &folder);
+            let text = String::from_utf8_lossy(&output.stdout).into_owned() + &String::from_utf8_lossy(&output.stderr);
+            if !output.status.success() {
+                self.failed += &format!("{}: {text}\n", path.display());
+            }
+            self.benches.extend(files(&folder, ".v"));
+        }
+        self.findings += fingerprints.len();
+        fingerprints.len()
     }
-    fingerprints.len()
+
+    /// Says how much there was, requires that nothing failed or was passed over, and tells how many benches are cured.
+    #[allow(clippy::print_stdout, reason = "how much was compared belongs to the result of an outside check")]
+    fn judge(&self, of: &str) -> usize {
+        assert!(self.failed.is_empty(), "{}", self.failed);
+        let cured = self.benches.iter().filter(|bench| bench.to_string_lossy().contains("-cured")).count();
+        println!(
+            "{} findings of {of}: {} benches, {cured} of them cured, {} hazards of launches",
+            self.findings,
+            self.benches.len(),
+            self.launched
+        );
+        for (rule, count) in &self.without {
+            println!("    {count} of {rule}: not about a transition of a net, so nothing to replay");
+            assert!(WITHOUT_TRANSITION.contains(&rule.as_str()), "{rule} without a witness");
+        }
+        cured
+    }
 }
 
 /// Runs the benches; `Err` lists what printed the wrong word.
@@ -95,55 +152,62 @@ fn fixtures(folder: &Path, found: &mut Vec<PathBuf>) {
 
 #[test]
 #[ignore = "outside: run tests/outside/run"]
-#[allow(clippy::print_stdout, reason = "how much was compared belongs to the result of an outside check")]
 fn every_finding_of_the_fixtures_replays() {
     let folder = tempfile::tempdir().expect("a temporary folder");
     let root = Path::new(env!("CARGO_MANIFEST_DIR")).join("fixtures");
     let mut paths = Vec::new();
     fixtures(&root, &mut paths);
     paths.sort();
-    let (mut benches, mut failed) = (Vec::new(), String::new());
-    let mut findings = 0;
+    let mut replays = Replays::default();
     for (index, path) in paths.iter().enumerate() {
-        findings += replay_all(path, &folder.path().join(index.to_string()), &mut benches, &mut failed);
+        replays.of(path, &folder.path().join(index.to_string()));
     }
-    assert!(failed.is_empty(), "{failed}");
-    let cured = benches.iter().filter(|bench| bench.to_string_lossy().contains("-cured")).count();
-    println!("{findings} findings of {} fixtures: {} benches, {cured} of them cured", paths.len(), benches.len());
-    assert!(findings > 30 && cured > 20, "{findings} findings, {cured} cured");
+    let cured = replays.judge(&format!("{} fixtures", paths.len()));
+    let (findings, launched) = (replays.findings, replays.launched);
+    assert!(findings > 250 && cured > 200 && launched > 60, "{findings} findings, {cured} cured, {launched} launched");
     // The same module in two fixtures makes benches of one name, which no simulation can hold together.
     let mut names = BTreeSet::new();
     let named = |bench: &PathBuf| bench.iter().rev().take(2).map(|part| part.to_os_string()).collect::<Vec<_>>();
     let (first, again): (Vec<PathBuf>, Vec<PathBuf>) =
-        benches.into_iter().partition(|bench| names.insert(named(bench)));
+        replays.benches.into_iter().partition(|bench| names.insert(named(bench)));
     let result = simulate(&first, folder.path()).and_then(|()| simulate(&again, folder.path()));
     assert_eq!(result, Ok(()));
 }
 
-#[test]
-#[ignore = "outside: run tests/outside/run"]
-#[allow(clippy::print_stdout, reason = "how much was compared belongs to the result of an outside check")]
-fn every_finding_of_random_circuits_replays() {
+/// Circuits from `write` until `count` of them have a hazard: one without has nothing to show. Returns how many benches
+/// are cured, and how many hazards are those of a launch.
+fn random(first: u64, count: u64, write: impl Fn(u64) -> String) -> (usize, usize) {
     let folder = tempfile::tempdir().expect("a temporary folder");
-    let (mut benches, mut failed) = (Vec::new(), String::new());
-    let (mut findings, mut circuits) = (0, 0);
-    for seed in FIRST_SEED.. {
-        if circuits == CIRCUITS {
+    let mut replays = Replays::default();
+    let mut circuits = 0;
+    for seed in first.. {
+        if circuits == count {
             break;
         }
-        let written = Written::random(&mut Random::new(seed));
         let file = folder.path().join(format!("t{seed}.v"));
-        std::fs::write(&file, module(seed, &written)).expect("written");
-        // A circuit without a hazard has nothing to show.
-        let found = replay_all(&file, &folder.path().join(seed.to_string()), &mut benches, &mut failed);
-        findings += found;
-        circuits += u64::from(found > 0);
+        std::fs::write(&file, write(seed)).expect("written");
+        circuits += u64::from(replays.of(&file, &folder.path().join(seed.to_string())) > 0);
     }
-    assert!(failed.is_empty(), "{failed}");
-    let cured = benches.iter().filter(|bench| bench.to_string_lossy().contains("-cured")).count();
-    println!("{findings} findings of {circuits} random circuits: {} benches, {cured} of them cured", benches.len());
-    assert!(cured > 100, "{cured} cured");
-    assert_eq!(simulate(&benches, folder.path()), Ok(()));
+    let cured = replays.judge(&format!("{circuits} random circuits"));
+    assert_eq!(simulate(&replays.benches, folder.path()), Ok(()));
+    (cured, replays.launched)
+}
+
+#[test]
+#[ignore = "outside: run tests/outside/run"]
+fn every_finding_of_random_circuits_replays() {
+    let write = |seed| module(seed, &Written::random(&mut Random::new(seed)));
+    let (cured, _) = random(FIRST_SEED, CIRCUITS, write);
+    assert!(cured > 500, "{cured} cured");
+}
+
+#[test]
+#[ignore = "outside: run tests/outside/run"]
+fn every_finding_of_random_launches_replays() {
+    let write = |seed| random_launches::written(&format!("t{seed}"), seed);
+    // Few of them have a cover that holds in every launch.
+    let (cured, launched) = random(FIRST_SEED, LAUNCHES, write);
+    assert!(cured > 10 && launched > 250, "{cured} cured, {launched} hazards of launches");
 }
 
 /// A selector on a clock.

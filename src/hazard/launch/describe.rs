@@ -20,7 +20,9 @@ pub(super) fn describe(inquiry: &Inquiry<'_>, net: Edge, step: Step) -> Witness 
     let (first, second) = (region(Layer::First), region(Layer::Second));
     let moves = |region: &Region<'_>| -> Vec<(NodeId, bool)> {
         let changing = region.leaves.iter().filter(|leaf| leaf.wave.changes());
-        sorted(changing.map(|leaf| (origin(leaf.node), leaf.wave.i)).collect())
+        // A latch that opens with an old value moves by itself, besides what lies in front of it.
+        let late = region.late.iter().map(|&(node, before)| (origin(node), before));
+        sorted(changing.map(|leaf| (origin(leaf.node), leaf.wave.i)).chain(late).collect())
     };
     let target = [first.wave().i, first.wave().f, second.wave().f];
     let (changes, regions, cause) = match step {
@@ -45,9 +47,9 @@ pub(super) fn describe(inquiry: &Inquiry<'_>, net: Edge, step: Step) -> Witness 
     let mut raced: Vec<NodeId> = raced.map(|leaf| origin(leaf.node)).collect();
     raced.sort_unstable();
     raced.dedup();
-    let latches = |of: for<'a> fn(&'a Region<'_>) -> &'a [usize]| -> Vec<NodeId> {
+    let latches = |of: fn(&Region<'_>) -> Vec<usize>| -> Vec<NodeId> {
         let judged = regions.iter().filter(|_| step != Step::Both).flat_map(|&region| of(region));
-        let mut latches: Vec<NodeId> = judged.map(|&node| origin(node)).collect();
+        let mut latches: Vec<NodeId> = judged.map(origin).collect();
         latches.sort_unstable();
         latches
     };
@@ -59,8 +61,8 @@ pub(super) fn describe(inquiry: &Inquiry<'_>, net: Edge, step: Step) -> Witness 
         cause,
         first: moves(&first),
         second: if step == Step::First { Vec::new() } else { moves(&second) },
-        passing: latches(|region| &region.passing),
-        late: latches(|region| &region.late),
+        passing: latches(|region| region.passing.clone()),
+        late: latches(|region| region.late.iter().map(|&(node, _)| node).collect()),
         raced,
         target,
     };

@@ -173,6 +173,17 @@ struct Candidate {
     open: Option<Undecided>,
 }
 
+/// What a candidate's event must be like, in the order in which they are looked for.
+#[derive(Clone, Copy, PartialEq, Eq, Debug)]
+enum Fit {
+    /// The witness that is known, which was made to be read, happens in it.
+    Supposed,
+    /// The source changes once.
+    Clean,
+    /// The source is a latch that shows a hazard itself.
+    Any,
+}
+
 /// One target being worked on.
 struct Refinement<'a, 'b> {
     launcher: &'b Launcher<'a>,
@@ -234,9 +245,10 @@ impl<'a, 'b> Refinement<'a, 'b> {
             self.leave_open(event, Undecided::Loop);
         }
         // A witness that is known already was made to be read; it is kept where it fits some event.
-        events.each(|inquiry| self.confirm(inquiry, true));
-        events.each(|inquiry| self.confirm(inquiry, false));
+        events.each(|inquiry| self.confirm(inquiry, Fit::Supposed));
+        events.each(|inquiry| self.confirm(inquiry, Fit::Clean));
         if self.has_latches {
+            events.each(|inquiry| self.confirm(inquiry, Fit::Any));
             events.each(|inquiry| self.through_latches(inquiry));
         }
         let mut launches = Vec::new();
@@ -261,19 +273,18 @@ impl<'a, 'b> Refinement<'a, 'b> {
         self.open.insert(OpenLaunch { root, rises: event.rises, reason });
     }
 
-    /// Looks for the candidates in one event: each pair's source alone may move in the step that shows it. With
-    /// `as_supposed` the witness that is known must fit.
-    fn confirm(&mut self, inquiry: &mut Inquiry<'_>, as_supposed: bool) {
+    /// Looks for the candidates in one event: each pair's source alone may move in the step that shows it.
+    fn confirm(&mut self, inquiry: &mut Inquiry<'_>, fit: Fit) {
         for index in 0..self.candidates.len() {
             let candidate = &self.candidates[index];
             if candidate.found.is_some() {
                 continue;
             }
             let (source, kind) = (candidate.node, candidate.kind);
-            let witness = match (&candidate.supposed, as_supposed) {
-                (Ok(witness), true) => Some(witness.clone()),
-                (_, true) => continue,
-                (_, false) => None,
+            let witness = match (&candidate.supposed, fit) {
+                (Ok(witness), Fit::Supposed) => Some(witness.clone()),
+                (Err(_), Fit::Supposed) => continue,
+                (_, Fit::Clean | Fit::Any) => None,
             };
             let steps = match self.launcher.fabric.role(source) {
                 Role::Cell(_) => vec![Step::Second, Step::First],
@@ -281,7 +292,7 @@ impl<'a, 'b> Refinement<'a, 'b> {
                 _ => continue,
             };
             for step in steps {
-                let Some(alone) = self.alone(inquiry, step, source) else { continue };
+                let Some(alone) = self.alone(inquiry, step, source, fit) else { continue };
                 for (asked, shows, mut wanted) in questions(inquiry) {
                     if asked != step || shows != kind {
                         continue;
@@ -319,17 +330,26 @@ impl<'a, 'b> Refinement<'a, 'b> {
     }
 
     /// Literals that say that of the target's sources only `source` moves in a step; `None` when it cannot.
-    fn alone(&self, inquiry: &mut Inquiry<'_>, step: Step, source: usize) -> Option<Vec<Literal>> {
+    fn alone(&self, inquiry: &mut Inquiry<'_>, step: Step, source: usize, fit: Fit) -> Option<Vec<Literal>> {
         let layer = if step == Step::First { Layer::First } else { Layer::Second };
         if !inquiry.encoder.done(layer, Edge::new(source, false)).wave.may_move() {
             return None;
         }
         let mut literals = Vec::new();
+        let raced = |inquiry: &Inquiry<'_>, node: usize| {
+            inquiry.encoder.latches[layer as usize].get(&node).map(|does| does.raced)
+        };
         for &node in self.frees.iter().filter(|&&node| node != source) {
             literals.extend(inquiry.encoder.changes(layer, node).map(|changes| !changes));
-            if let Some(does) = inquiry.encoder.latches[layer as usize].get(&node) {
-                literals.push(!does.raced);
-            }
+            literals.extend(raced(inquiry, node).map(|raced| !raced));
+        }
+        let h = inquiry.encoder.done(layer, Edge::new(source, false)).wave.h;
+        let does: Vec<Literal> = raced(inquiry, source).into_iter().chain(h).collect();
+        match fit {
+            // Nothing is left that was not asked about before.
+            Fit::Any if does.is_empty() => return None,
+            Fit::Any => {}
+            Fit::Supposed | Fit::Clean => literals.extend(does.into_iter().map(|does| !does)),
         }
         Some(literals)
     }

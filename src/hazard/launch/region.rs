@@ -23,6 +23,8 @@ enum Member {
     Logic,
     /// Reads this edge.
     Passing(Edge),
+    /// Reads this edge once it has opened, and has this value until then.
+    Late(Edge, bool),
     Leaf,
 }
 
@@ -44,8 +46,8 @@ pub(super) struct Region<'a> {
     pub(super) leaves: Vec<Leaf>,
     /// Latches that pass, as nodes.
     pub(super) passing: Vec<usize>,
-    /// Those of them that begin this step with the other value than their data, as nodes.
-    pub(super) late: Vec<usize>,
+    /// Those of them that begin this step with the other value than their data, as nodes and that value.
+    pub(super) late: Vec<(usize, bool)>,
 }
 
 impl<'a> Region<'a> {
@@ -78,14 +80,19 @@ impl<'a> Region<'a> {
                         solver.value(wave.i) != solver.value(wave.f) || wave.h.is_some_and(|h| solver.value(h))
                     })
                 };
+                let begins = |edge: Edge| solver.value(encoder.done(layer, edge).wave.i);
+                let own = begins(Edge::new(node, false));
                 member = match encoder.fabric.latch(node).filter(|latch| through && passes && moves(latch)) {
-                    Some(latch) => Member::Passing(encoder.fabric.cells[latch].data),
+                    Some(latch) => match encoder.fabric.cells[latch].data {
+                        data if begins(data) == own => Member::Passing(data),
+                        data => Member::Late(data, own),
+                    },
                     None => Member::Leaf,
                 };
             }
             let fanin = match &member {
                 Member::Logic => cone.fanin(node),
-                Member::Passing(data) => std::slice::from_ref(data),
+                Member::Passing(data) | Member::Late(data, _) => std::slice::from_ref(data),
                 Member::Leaf => &[],
             };
             if !ready {
@@ -97,12 +104,10 @@ impl<'a> Region<'a> {
             region.members.push((node, member));
             match member {
                 Member::Logic => {}
-                Member::Passing(data) => {
+                Member::Passing(_) => region.passing.push(node),
+                Member::Late(_, own) => {
                     region.passing.push(node);
-                    let begins = |edge: Edge| solver.value(encoder.done(layer, edge).wave.i);
-                    if begins(Edge::new(node, false)) != begins(data) {
-                        region.late.push(node);
-                    }
+                    region.late.push((node, own));
                 }
                 Member::Leaf => {
                     let wave = encoder.done(layer, Edge::new(node, false)).wave;
@@ -119,7 +124,7 @@ impl<'a> Region<'a> {
     fn pins(&self, at: usize) -> &[Edge] {
         match &self.members[at] {
             (node, Member::Logic) => self.cone.fanin(*node),
-            (_, Member::Passing(data)) => std::slice::from_ref(data),
+            (_, Member::Passing(data) | Member::Late(data, _)) => std::slice::from_ref(data),
             (_, Member::Leaf) => &[],
         }
     }
@@ -140,6 +145,7 @@ impl<'a> Region<'a> {
             let mut pins = self.pins(at).iter().map(set);
             let own = match member {
                 Member::Passing(_) => pins.next().unwrap_or(0),
+                Member::Late(_, own) => opened(pins.next().unwrap_or(0), own),
                 Member::Logic => lifted(self.cone.ops[node], &self.cone.tables, pins),
                 Member::Leaf if dropped(node) => STILL,
                 Member::Leaf => self.leaf(node).map_or(0, |leaf| only(leaf.wave)),
@@ -178,9 +184,9 @@ impl<'a> Region<'a> {
         clauses.solver.solve(&wanted, CONFLICTS) == Answer::Satisfiable
     }
 
-    /// Per leaf whether it has changed.
+    /// Per leaf whether it has changed, then per late latch whether it has opened.
     fn changed(&self, clauses: &mut Clauses<Batsat>) -> Vec<Literal> {
-        self.leaves.iter().map(|_| clauses.solver.variable()).collect()
+        (0..self.leaves.len() + self.late.len()).map(|_| clauses.solver.variable()).collect()
     }
 
     /// The target while some leaves have changed.
@@ -190,6 +196,12 @@ impl<'a> Region<'a> {
             let pins: Vec<Literal> = self.pins(at).iter().map(|pin| self.read(&values, clauses, *pin)).collect();
             let own = match member {
                 Member::Passing(_) => pins.first().copied().unwrap_or(!clauses.one),
+                Member::Late(_, own) => {
+                    let at = self.late.iter().position(|&(late, _)| late == node);
+                    let opened = at.map_or(clauses.one, |at| changed[self.leaves.len() + at]);
+                    let own = clauses.constant(own);
+                    clauses.mux(opened, pins.first().copied().unwrap_or(own), own)
+                }
                 Member::Logic => clauses.value(self.cone.ops[node], &self.cone.tables, &pins),
                 Member::Leaf => match self.leaves.binary_search_by_key(&node, |leaf| leaf.node) {
                     Ok(leaf) => match self.leaves[leaf].wave {
@@ -209,6 +221,16 @@ impl<'a> Region<'a> {
         let place = self.places.get(&pin.node());
         place.map_or(!clauses.one, |&place| values[place]).inverted_if(pin.inverted())
     }
+}
+
+/// The waveforms of a latch that has the value `own` until it opens, from those of its data. When data of the other value
+/// changes, it may do so before or after the latch has opened.
+fn opened(data: u8, own: bool) -> u8 {
+    let opened = members(data).map(|data| {
+        let h = data.h || (data.changes() && data.i != own);
+        only(Wave { i: own, h, ..data })
+    });
+    opened.fold(0, |all, wave| all | wave)
 }
 
 /// The leaves that hold still and matter: without any of the others the target still shows the same in every region. Two
