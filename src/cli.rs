@@ -70,6 +70,9 @@ pub struct Input {
     /// The settings file [default: stillwire.toml, looked for upward from the first path]
     #[arg(long, value_name = "FILE")]
     pub settings: Option<PathBuf>,
+    /// Remember here what this run works out, and use what earlier runs did; never changes what is reported
+    #[arg(long, value_name = "DIR", value_parser = cache_folder)]
+    pub cache: Option<PathBuf>,
     /// Number of threads [default: one per core]
     #[arg(long, value_name = "N", value_parser = clap::value_parser!(u16).range(1..=1024))]
     pub threads: Option<u16>,
@@ -191,6 +194,12 @@ fn output(text: &str) -> Result<Output, String> {
         "-" => Ok(Output { format, file: None }),
         file => Ok(Output { format, file: Some(PathBuf::from(file)) }),
     }
+}
+
+/// A file cannot be a cache, and a run that quietly remembers nothing would only be slow.
+fn cache_folder(text: &str) -> Result<PathBuf, String> {
+    let folder = PathBuf::from(text);
+    if folder.exists() && !folder.is_dir() { Err("it is no folder".to_string()) } else { Ok(folder) }
 }
 
 fn fingerprint(text: &str) -> Result<String, String> {

@@ -2,10 +2,12 @@
 //! `(result, Vec<Diagnostic>)` and go on; nothing is printed here. Hazard findings are richer and live in
 //! [`crate::rules::Finding`]; the pipeline turns these diagnostics into findings for the report.
 
+use serde::{Deserialize, Serialize};
+
 use crate::source::Span;
 
 /// How much a diagnostic takes away from the analysis.
-#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug, Serialize, Deserialize)]
 pub enum Kind {
     /// Worth knowing, nothing is lost (a second module of the same name, a region left out on purpose).
     Note,
@@ -20,7 +22,7 @@ pub enum Kind {
 }
 
 /// Something that the sources name and that is not among them.
-#[derive(Clone, PartialEq, Eq, PartialOrd, Ord, Hash, Debug)]
+#[derive(Clone, PartialEq, Eq, PartialOrd, Ord, Hash, Debug, Serialize, Deserialize)]
 pub enum Missing {
     Include(String),
     Macro(String),
@@ -30,7 +32,7 @@ pub enum Missing {
 }
 
 /// A message with a place. `message` stands alone as one sentence; `help` says what to do.
-#[derive(Clone, PartialEq, Eq, PartialOrd, Ord, Hash, Debug)]
+#[derive(Clone, PartialEq, Eq, PartialOrd, Ord, Hash, Debug, Serialize, Deserialize)]
 pub struct Diagnostic {
     pub kind: Kind,
     /// For `Unsupported`: the construct in the words of IEEE 1800 ("covergroup"); otherwise a short category.

@@ -7,7 +7,7 @@
 macro_rules! define_id {
     ($name:ident, $prefix:literal, $doc:literal) => {
         #[doc = $doc]
-        #[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash)]
+        #[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, serde::Serialize, serde::Deserialize)]
         pub struct $name(std::num::NonZeroU32);
 
         impl $name {

@@ -8,6 +8,7 @@
 #![recursion_limit = "512"]
 
 pub mod assumptions;
+pub mod cache;
 pub mod cells;
 pub mod cli;
 pub mod cure;
@@ -16,6 +17,7 @@ pub mod elaborate;
 pub mod graph;
 pub mod hazard;
 mod ids;
+mod remembered;
 pub mod replay;
 pub mod report;
 pub mod rules;
@@ -29,6 +31,7 @@ use std::collections::{BTreeMap, BTreeSet};
 use std::path::Path;
 
 use jiff::civil::Date;
+use serde::{Deserialize, Serialize};
 
 use diagnostic::{Diagnostic, Kind};
 use report::{Coverage, LeftOut, Report};
@@ -85,38 +88,73 @@ pub struct Scan {
 /// Paths, file lists or tops that lead nowhere: nothing was analysed.
 pub fn scan(request: &Request, environment: Environment<'_>, progress: Progress<'_>) -> Result<Scan, PathError> {
     on_big_stacks(request, || {
-        let (mut loaded, design, diagnostics) = front_end(request, environment, progress)?;
-        progress(Stage::Deciding);
-        let protection = syntax::Protection::collect(&loaded.units);
-        // The trees are not needed any more, and what follows needs room.
-        loaded.units = Vec::new();
-        let Decided { design, pragmas, unplaced, assumed, mut outcome } =
-            decided(request, &loaded, design, &protection)?;
-        let missing: BTreeSet<&str> = design.graph.black_boxes.iter().map(|one| one.module.as_str()).collect();
+        let (mut loaded, asked) = read(request, environment, progress)?;
+        let cache = request.source.cache.as_ref();
+        let place = cache.and_then(|cache| Some((cache, remembered::key(request, &loaded, &asked)?)));
+        let known: Option<Judged> = place.as_ref().and_then(|(cache, key)| cache.get(key));
+        let (Judged { mut report, analysed, .. }, signoffs) = match known {
+            Some(judged) => (judged, signoff::collect(&loaded.sources).signoffs),
+            None => {
+                let (judged, signoffs) = judged(request, &mut loaded, &asked, progress)?;
+                if let Some((cache, key)) = place.filter(|_| judged.lasts) {
+                    cache.put(&key, &judged);
+                }
+                (judged, signoffs)
+            }
+        };
+        let missing: Vec<String> = report.coverage.black_boxes.keys().cloned().collect();
         for module in missing {
-            if let Some(place) = loaded.nearby.module(module) {
-                rules::name_place(&mut outcome.findings, module, &place);
+            if let Some(place) = loaded.nearby.module(&module) {
+                rules::name_place(&mut report.findings, &module, &place);
             }
         }
-        let mut report = report_on_input(&loaded, &design, diagnostics.iter().chain(&pragmas.diagnostics));
-        report.checked = outcome.checked;
-        report.coverage.pins = outcome.pins;
-        report.coverage.cells = outcome.cells;
-        report.coverage.loops = outcome.loops;
-        report.findings.extend(outcome.findings);
-        report.findings.extend(unplaced);
-        report.findings.extend(assumed.findings);
-        report.coverage.assumptions = assumed.listed;
-        let applied =
-            signoff::apply(&design.graph, &loaded.sources, &pragmas.signoffs, &mut report.findings, request.today);
+        let applied = signoff::apply(&analysed, &loaded.sources, &signoffs, &mut report.findings, request.today);
         report.findings.extend(applied.findings);
         report.messages.extend(applied.messages);
         for finding in &mut report.findings {
             finding.severity = request.severities.get(&finding.rule).copied().unwrap_or(finding.severity);
         }
         report.coverage.severities = request.severities.clone();
+        if let Some(cache) = cache {
+            cache.prune(cache::LIMIT);
+        }
         Ok(finished(report, loaded.sources))
     })
+}
+
+/// What a scan has worked out before it looks at the date, at sign-offs, and beyond the files that it reads.
+#[derive(Serialize, Deserialize)]
+struct Judged {
+    report: Report,
+    /// The files that something in the graph comes from.
+    analysed: BTreeSet<source::FileId>,
+    /// Whether it depends on what was read alone, and not on what lies near it.
+    lasts: bool,
+}
+
+fn judged(
+    request: &Request,
+    loaded: &mut Loaded,
+    asked: &elaborate::Request,
+    progress: Progress<'_>,
+) -> Result<(Judged, Vec<signoff::SignoffPragma>), PathError> {
+    let (design, diagnostics) = elaborated(loaded, asked, progress)?;
+    progress(Stage::Deciding);
+    let protection = syntax::Protection::collect(&loaded.units);
+    // The trees are not needed any more, and what follows needs room.
+    loaded.units = Vec::new();
+    let Decided { design, pragmas, unplaced, assumed, outcome } = decided(request, loaded, design, &protection)?;
+    let mut report = report_on_input(loaded, &design, diagnostics.iter().chain(&pragmas.diagnostics));
+    report.checked = outcome.checked;
+    report.coverage.pins = outcome.pins;
+    report.coverage.cells = outcome.cells;
+    report.coverage.loops = outcome.loops;
+    report.findings.extend(outcome.findings);
+    report.findings.extend(unplaced);
+    report.findings.extend(assumed.findings);
+    report.coverage.assumptions = assumed.listed;
+    let lasts = diagnostics.iter().all(|diagnostic| diagnostic.missing.is_none());
+    Ok((Judged { report, analysed: signoff::analysed_files(&design.graph), lasts }, pragmas.signoffs))
 }
 
 /// What the rules find under the comments in the sources and the assumptions in force.
@@ -141,7 +179,8 @@ fn decided(
     let assumed = resolved(request, loaded, &design)?;
     let assumed = assumptions::apply(&design.graph, &loaded.sources, assumed, &pragmas.assumptions, &options);
     design.graph = design.graph.with_static(assumed.in_force.fixed.iter().copied());
-    let outcome = rules::run(&design.graph, &watches, &assumed.in_force, protection, &options);
+    let cache = request.source.cache.as_ref();
+    let outcome = rules::run(&design.graph, &watches, &assumed.in_force, protection, &options, cache);
     Ok(Decided { design, pragmas, unplaced, assumed, outcome })
 }
 
@@ -273,16 +312,33 @@ fn front_end(
     environment: Environment<'_>,
     progress: Progress<'_>,
 ) -> Result<(Loaded, elaborate::Design, Vec<Diagnostic>), PathError> {
+    let (mut loaded, asked) = read(request, environment, progress)?;
+    let (design, diagnostics) = elaborated(&mut loaded, &asked, progress)?;
+    Ok((loaded, design, diagnostics))
+}
+
+/// Reads everything that a verdict depends on.
+fn read(
+    request: &Request,
+    environment: Environment<'_>,
+    progress: Progress<'_>,
+) -> Result<(Loaded, elaborate::Request), PathError> {
     let cells = cells::Cells::new(&request.libraries, &request.cells)?;
     let mut loaded =
         source::load(&request.source, environment, &|done, total| progress(Stage::Reading { done, total }))?;
     require_input(request, &loaded)?;
-    progress(Stage::Elaborating);
-    let units = std::mem::take(&mut loaded.units);
     let given = request.given.iter().map(|(name, value)| source::given(name, value, &mut loaded.sources));
     let given = given.collect::<Result<Vec<_>, PathError>>()?;
-    let asked = elaborate::Request { tops: request.tops.clone(), given, cells };
-    let (design, mut more) = elaborate::elaborate(&units, &asked);
+    Ok((loaded, elaborate::Request { tops: request.tops.clone(), given, cells }))
+}
+
+fn elaborated(
+    loaded: &mut Loaded,
+    asked: &elaborate::Request,
+    progress: Progress<'_>,
+) -> Result<(elaborate::Design, Vec<Diagnostic>), PathError> {
+    progress(Stage::Elaborating);
+    let (design, mut more) = elaborate::elaborate(&loaded.units, asked);
     if let Some(elaborate::Misuse { message, help }) = design.misuse.first() {
         return Err(PathError::new(message, help));
     }
@@ -291,12 +347,11 @@ fn front_end(
         assert!(violations.is_empty(), "the graph is unsound:\n{}", violations.join("\n"));
     }
     loaded.nearby.hint(&mut more);
-    loaded.units = units;
     let mut diagnostics = std::mem::take(&mut loaded.diagnostics);
     diagnostics.extend(more);
     diagnostics.extend(idle_cells(&asked.cells, &design));
-    require_tops(&loaded, &design, &diagnostics)?;
-    Ok((loaded, design, diagnostics))
+    require_tops(loaded, &design, &diagnostics)?;
+    Ok((design, diagnostics))
 }
 
 /// A run without any top, in which nothing else went wrong, has looked at nothing and must not end as a clean one.

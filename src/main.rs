@@ -9,6 +9,7 @@ use std::time::Duration;
 
 use clap::Parser;
 use indicatif::{ProgressBar, ProgressDrawTarget, ProgressStyle};
+use stillwire::cache::Cache;
 use stillwire::cli::{self, Cli, Command, Format, Input, Output};
 use stillwire::cure::Cure;
 use stillwire::report::{json, sarif, text};
@@ -238,6 +239,7 @@ fn request(input: &Input, settings: &Settings) -> Request {
             defines,
             exclude: Exclude { root: settings.folder.clone(), patterns: settings.exclude.clone() },
             instead: Vec::new(),
+            cache: input.cache.as_deref().map(Cache::new),
         },
         tops: if input.top.is_empty() { settings.top.clone() } else { input.top.clone() },
         // A value of the command line comes later and so holds.

@@ -8,6 +8,8 @@ mod apply;
 mod contradicted;
 mod resolve;
 
+use serde::{Deserialize, Serialize};
+
 use crate::hazard::AssumptionKind;
 use crate::hazard::Standing;
 use crate::source::Span;
@@ -27,7 +29,7 @@ pub struct Declaration {
 }
 
 /// Where a declaration stands.
-#[derive(Clone, PartialEq, Eq, PartialOrd, Ord, Debug)]
+#[derive(Clone, PartialEq, Eq, PartialOrd, Ord, Debug, Serialize, Deserialize)]
 pub enum Origin {
     /// Name of the file and line.
     Settings {
@@ -38,7 +40,7 @@ pub enum Origin {
 }
 
 /// A declaration about one group of nets, as the report shows it.
-#[derive(Clone, PartialEq, Eq, Debug)]
+#[derive(Clone, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub struct Listed {
     pub kind: AssumptionKind,
     /// Full names of nets, or of bits where not all bits of a net are meant.

@@ -4,6 +4,8 @@
 //! System Design 23, 2003). The graph is never simplified: redundant gates are what makes a cover hazard-free. Only
 //! literal constants are folded, by the builder.
 
+use serde::{Deserialize, Serialize};
+
 use crate::define_id;
 
 define_id!(NodeId, "n", "A node of the gate graph: one bit.");
@@ -15,7 +17,7 @@ define_id!(CellId, "c", "A flip-flop or latch bit.");
 define_id!(PortId, "p", "A port of a top.");
 
 /// What a node is.
-#[derive(Clone, Copy, PartialEq, Eq, Hash, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, Hash, Debug, Serialize)]
 pub enum NodeKind {
     /// Clean constant. No fan-in.
     Const(bool),
@@ -44,7 +46,7 @@ pub enum NodeKind {
     OpOut(OperatorId),
 }
 
-#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug, Serialize, Deserialize)]
 pub enum SourceKind {
     Input,
     FlipFlop,
@@ -53,7 +55,7 @@ pub enum SourceKind {
     Memory,
 }
 
-#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug, Serialize)]
 pub enum GateKind {
     Buf,
     Not,
@@ -88,14 +90,14 @@ impl GateKind {
 
 /// A combinational user-defined primitive. `rows` hold one symbol per input in port order: `Some(bit)` or `None` for
 /// `?`, `b` folded out beforehand; an `x` symbol is kept as [`Symbol::X`].
-#[derive(Clone, PartialEq, Eq, Hash, Debug)]
+#[derive(Clone, PartialEq, Eq, Hash, Debug, Serialize)]
 pub struct Table {
     pub name: String,
     pub rows: Vec<(Vec<Symbol>, Symbol)>,
 }
 
 /// A symbol of a table row.
-#[derive(Clone, Copy, PartialEq, Eq, Hash, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, Hash, Debug, Serialize)]
 pub enum Symbol {
     Zero,
     One,

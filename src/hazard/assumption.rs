@@ -3,10 +3,12 @@
 //! guarantee by themselves are marked as checked, those that the design contradicts are found out, and only the others
 //! are taken on trust.
 
+use serde::{Deserialize, Serialize};
+
 use crate::graph::NodeId;
 
 /// What is declared.
-#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug, Serialize, Deserialize)]
 pub enum AssumptionKind {
     /// None of the nets ever changes; their values are constant and unknown.
     Static,
@@ -50,7 +52,7 @@ pub struct Assumption {
 }
 
 /// How an assumption stands to the design.
-#[derive(Clone, PartialEq, Eq, Debug)]
+#[derive(Clone, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub enum Standing {
     /// The design guarantees it.
     Checked(Proof),
@@ -60,7 +62,7 @@ pub enum Standing {
     Contradicted(Counterexample),
 }
 
-#[derive(Clone, Copy, PartialEq, Eq, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub enum Proof {
     /// The logic in front of the nets guarantees it for every value of the sources.
     Logic,
@@ -69,7 +71,7 @@ pub enum Proof {
 }
 
 /// Why an assumption could not be checked.
-#[derive(Clone, Copy, PartialEq, Eq, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub enum Doubt {
     /// The nets depend on inputs or modules without text.
     Environment,
@@ -86,7 +88,7 @@ pub enum Doubt {
 }
 
 /// A state, or two states in succession, that break an assumption. Values are those of the assumption's nodes.
-#[derive(Clone, PartialEq, Eq, Debug)]
+#[derive(Clone, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub enum Counterexample {
     /// No values of the sources satisfy it, alone or together with the assumptions before it.
     Impossible { alone: bool },

@@ -10,6 +10,8 @@
 
 use std::collections::BTreeSet;
 
+use serde::{Deserialize, Serialize};
+
 use super::function::{Cube, Function};
 use super::launch::{Launcher, Unproven};
 use super::{Cause, Cover, HazardKind, Launch, Options, TargetVerdict, Undecided, Witness, decide};
@@ -22,7 +24,7 @@ const TERMS: usize = 24;
 const REPLACED_SOURCES: usize = 10;
 
 /// Why no cover is offered.
-#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug, Serialize, Deserialize)]
 pub enum Withheld {
     /// Nothing to remove.
     Clean,

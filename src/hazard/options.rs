@@ -1,7 +1,9 @@
 //! The bounds of a decision. Every bound that is hit yields a typed "undecided", never a pass.
 
+use serde::Serialize;
+
 /// Effort and scope of [`super::decide()`].
-#[derive(Clone, Copy, PartialEq, Eq, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, Debug, Serialize)]
 pub struct Options {
     /// Conflicts per solver question before it stays undecided.
     pub conflicts: u64,

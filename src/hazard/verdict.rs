@@ -1,9 +1,11 @@
 //! What a decision says, in terms of the graph: no names, no spans, no words.
 
+use serde::{Deserialize, Serialize};
+
 use crate::graph::NodeId;
 
 /// The three ways to glitch. `i` and `f` are the target's initial and final values.
-#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug, Serialize, Deserialize)]
 pub enum HazardKind {
     /// 0 .. 1 .. 0
     Static0,
@@ -25,7 +27,7 @@ impl HazardKind {
 }
 
 /// One transition that shows the hazard. Only what matters is listed: every source not in `holds` may have any value.
-#[derive(Clone, PartialEq, Eq, Debug)]
+#[derive(Clone, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub struct Witness {
     /// The sources that change, with their value before (the value after is its complement). One under single-input
     /// changes. Sorted by node.
@@ -40,7 +42,7 @@ pub struct Witness {
 }
 
 /// The step of an event at which a target shows its hazard.
-#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug, Serialize, Deserialize)]
 pub enum Step {
     /// While the change of the root travels and all flip-flops hold.
     First,
@@ -51,7 +53,7 @@ pub enum Step {
 }
 
 /// Whether another arrangement of gates could be free of the hazard.
-#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug, Serialize, Deserialize)]
 pub enum Cause {
     /// The function of the target has the same value all the way; a hazard-free cover exists for this transition.
     Logic,
@@ -60,7 +62,7 @@ pub enum Cause {
 }
 
 /// The event behind a witness: which root moves, and what moves with it.
-#[derive(Clone, PartialEq, Eq, Debug)]
+#[derive(Clone, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub struct Launch {
     /// The source that starts the event.
     pub root: NodeId,
@@ -95,7 +97,7 @@ impl Launch {
 }
 
 /// For which states a claim was made.
-#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug, Default)]
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug, Default, Serialize, Deserialize)]
 pub enum Reach {
     /// Any settled state: a hazard is shown from a state that nobody checked to occur; a clean verdict holds whatever the
     /// state.
@@ -106,7 +108,7 @@ pub enum Reach {
 }
 
 /// A hazard of a launch that no change of a single source explains.
-#[derive(Clone, PartialEq, Eq, Debug)]
+#[derive(Clone, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub struct LaunchHazard {
     pub kind: HazardKind,
     /// Has its [`Launch`].
@@ -115,7 +117,7 @@ pub struct LaunchHazard {
 }
 
 /// A launch that stayed undecided.
-#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Debug, Serialize, Deserialize)]
 pub struct OpenLaunch {
     pub root: NodeId,
     /// Whether the root rises.
@@ -124,7 +126,7 @@ pub struct OpenLaunch {
 }
 
 /// Why a question stayed open.
-#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug, Serialize, Deserialize)]
 pub enum Undecided {
     /// The solver used up its conflicts.
     Budget,
@@ -136,7 +138,7 @@ pub enum Undecided {
 }
 
 /// How questions were answered, the costliest way that was needed last.
-#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug, Serialize, Deserialize)]
 pub enum Method {
     /// No two ways of any change meet with opposite inversions, so the structure alone rules hazards out.
     Structure,
@@ -149,7 +151,7 @@ pub enum Method {
 }
 
 /// All that is known about one source against one target. Kinds in neither list are proven clean.
-#[derive(Clone, PartialEq, Eq, Debug)]
+#[derive(Clone, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub struct Pair {
     pub source: NodeId,
     /// Sorted by kind.
@@ -159,7 +161,7 @@ pub struct Pair {
 }
 
 /// The verdict on one target.
-#[derive(Clone, PartialEq, Eq, Debug)]
+#[derive(Clone, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub struct TargetVerdict {
     pub target: NodeId,
     /// How many sources reach the target; each gives three questions.
@@ -200,13 +202,13 @@ impl TargetVerdict {
 }
 
 /// One node on the way of a change.
-#[derive(Clone, Copy, PartialEq, Eq, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub struct PathStep {
     pub node: NodeId,
 }
 
 /// A way from the stem to the gate where the paths meet: wires and gates in order, both ends included.
-#[derive(Clone, PartialEq, Eq, Debug)]
+#[derive(Clone, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub struct Path {
     pub steps: Vec<PathStep>,
     /// Gates strictly after the stem and strictly before the meeting gate; wires do not count, an operator counts as one.
@@ -216,7 +218,7 @@ pub struct Path {
 }
 
 /// How a witness does its harm.
-#[derive(Clone, PartialEq, Eq, Debug)]
+#[derive(Clone, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub struct Paths {
     /// The last node common to both ways: where the change splits.
     pub stem: NodeId,
@@ -229,7 +231,7 @@ pub struct Paths {
 }
 
 /// Terms that remove the logic hazards of a target.
-#[derive(Clone, PartialEq, Eq, Debug)]
+#[derive(Clone, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub struct Cover {
     /// Product terms to OR to the target, or (with `sums`) sum terms to AND: literals as (node, positive).
     pub products: Vec<Vec<(NodeId, bool)>>,

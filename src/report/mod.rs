@@ -12,13 +12,15 @@ mod waveform;
 
 use std::collections::BTreeMap;
 
+use serde::{Deserialize, Serialize};
+
 use crate::assumptions::Listed;
 use crate::rules::{CellCount, CheckedNet, Finding, PinCoverage, Rule, Severity, Verdict};
 use crate::signoff::ledger;
 use crate::source::Span;
 
 /// All that a scan has to say.
-#[derive(Clone, PartialEq, Eq, Debug, Default)]
+#[derive(Clone, PartialEq, Eq, Debug, Default, Serialize, Deserialize)]
 pub struct Report {
     /// Names of the analysed top modules, sorted.
     pub tops: Vec<String>,
@@ -34,7 +36,7 @@ pub struct Report {
 }
 
 /// Something worth knowing that is no finding: a duplicate module, an empty file.
-#[derive(Clone, PartialEq, Eq, Debug)]
+#[derive(Clone, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub struct Message {
     pub severity: Severity,
     pub text: String,
@@ -44,7 +46,7 @@ pub struct Message {
 }
 
 /// What was analysed and what was not. "Clean" means nothing without it.
-#[derive(Clone, PartialEq, Eq, Debug, Default)]
+#[derive(Clone, PartialEq, Eq, Debug, Default, Serialize, Deserialize)]
 pub struct Coverage {
     pub files_read: usize,
     pub files_failed: usize,
@@ -69,7 +71,7 @@ pub struct Coverage {
 }
 
 /// What was passed over on purpose.
-#[derive(Clone, PartialEq, Eq, Debug, Default)]
+#[derive(Clone, PartialEq, Eq, Debug, Default, Serialize, Deserialize)]
 pub struct LeftOut {
     /// Regions between `translate_off` and `translate_on` comments.
     pub regions: Vec<Span>,

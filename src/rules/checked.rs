@@ -4,6 +4,8 @@
 
 use std::collections::BTreeSet;
 
+use serde::{Deserialize, Serialize};
+
 use super::finding::{Finding, Pin, Verdict};
 use super::{names, pins};
 use crate::graph::{Graph, NodeId, NodeKind, Port, SourceKind};
@@ -12,7 +14,7 @@ use crate::hazard::{Method, Reach, TargetVerdict, Undecided};
 use crate::source::Span;
 
 /// A net that must hold still, in one role.
-#[derive(Clone, PartialEq, Eq, Debug)]
+#[derive(Clone, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub struct CheckedNet {
     /// Full name, as in the findings about it.
     pub net: String,
@@ -22,7 +24,7 @@ pub struct CheckedNet {
     pub state: NetState,
 }
 
-#[derive(Clone, PartialEq, Eq, Debug)]
+#[derive(Clone, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub enum NetState {
     Clean(Ground),
     /// At least one proven hazard, whatever else stayed open.
@@ -32,7 +34,7 @@ pub enum NetState {
 }
 
 /// What a clean net rests on; of several bits, on the most costly of them.
-#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Debug, Serialize, Deserialize)]
 pub enum Ground {
     Constant,
     /// An output of which nothing drives this bit.

@@ -3,12 +3,14 @@
 
 use std::collections::BTreeSet;
 
+use serde::{Deserialize, Serialize};
+
 use super::PinKind;
 use super::checked::{CheckedNet, Ground, NetState};
 use crate::graph::{CellKind, Graph, NodeId};
 
 /// How many bits are stored, by kind of cell. A bit that several clocks load is one bit.
-#[derive(Clone, Copy, PartialEq, Eq, Debug, Default)]
+#[derive(Clone, Copy, PartialEq, Eq, Debug, Default, Serialize, Deserialize)]
 pub struct CellCount {
     pub flip_flops: usize,
     pub latches: usize,
@@ -28,7 +30,7 @@ impl CellCount {
 }
 
 /// The verdicts on the nets of one kind of pin.
-#[derive(Clone, Copy, PartialEq, Eq, Debug, Default)]
+#[derive(Clone, Copy, PartialEq, Eq, Debug, Default, Serialize, Deserialize)]
 pub struct NetCount {
     pub nets: usize,
     pub clean: usize,
@@ -39,7 +41,7 @@ pub struct NetCount {
 }
 
 /// One [`NetCount`] per [`PinKind`].
-#[derive(Clone, PartialEq, Eq, Debug, Default)]
+#[derive(Clone, PartialEq, Eq, Debug, Default, Serialize, Deserialize)]
 pub struct PinCoverage {
     counts: [NetCount; PinKind::ALL.len()],
     /// Questions (source against net, per kind of hazard) that nobody answered, also on nets with a proven hazard.

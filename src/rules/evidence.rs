@@ -8,7 +8,7 @@ use std::collections::BTreeSet;
 
 use super::cover_text;
 use super::finding::{CoverText, Finding, Hazard, Pin, Rule, Severity, TraceStep, Transition, Verdict};
-use super::{Context, fingerprint, launch_text, names, pins, words};
+use super::{Context, fingerprint, launch_text, names, pins, remembered, words};
 use crate::graph::{Graph, InstanceId, NodeId, NodeKind};
 use crate::hazard::{
     self, Cause, HazardKind, LaunchHazard, Path, Paths, Reach, Step, TargetVerdict, Undecided, Witness,
@@ -102,7 +102,7 @@ pub(super) fn finding(
 
 /// The cover of a target in words, or why there is none.
 fn cover(graph: &Graph, verdict: &TargetVerdict, context: &Context<'_>) -> (Option<CoverText>, Option<String>) {
-    match hazard::cover(graph, verdict, context.launcher, context.options) {
+    match remembered::cover(graph, verdict, context) {
         Ok(cover) => match cover_text::of(graph, verdict.target, &cover) {
             Some(text) => (Some(text), None),
             None => {

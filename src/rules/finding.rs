@@ -1,12 +1,15 @@
 //! A finding as plain data: everything that the report formats need and nothing about how they look. The fields mirror
 //! the JSON of the design's section 3.
 
+use serde::{Deserialize, Serialize};
+
+use super::known::{self, Word};
 use crate::graph::NodeId;
 use crate::hazard::{self, Witness};
 use crate::source::Span;
 
 /// The lowest severity is first, so that `max` is the worst.
-#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug, Serialize, Deserialize)]
 pub enum Severity {
     Note,
     Warning,
@@ -28,7 +31,7 @@ impl Severity {
 }
 
 /// Every rule there is, each with a page `rules/<name>.md`.
-#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug, Serialize, Deserialize)]
 pub enum Rule {
     CombinationalLoop,
     ReconvergentInversion,
@@ -85,7 +88,7 @@ impl Rule {
     }
 }
 
-#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug, Serialize, Deserialize)]
 pub enum Verdict {
     Proven,
     Undecided,
@@ -105,7 +108,7 @@ impl Verdict {
 }
 
 /// A numbered place on the way of the change, or another place worth showing.
-#[derive(Clone, PartialEq, Eq, Debug)]
+#[derive(Clone, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub struct TraceStep {
     pub at: Option<Span>,
     pub text: String,
@@ -120,7 +123,7 @@ impl TraceStep {
     }
 }
 
-#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug, Serialize, Deserialize)]
 pub enum PinKind {
     Clock,
     Set,
@@ -156,13 +159,14 @@ impl PinKind {
     }
 }
 
-#[derive(Clone, PartialEq, Eq, Debug)]
+#[derive(Clone, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub struct Pin {
     pub kind: PinKind,
     /// Active level of a set, reset, load or latch enable.
     pub active: Option<bool>,
     /// `posedge` or `negedge` of a clock.
-    pub edge: Option<&'static str>,
+    #[serde(deserialize_with = "known::word_if_any")]
+    pub edge: Option<Word>,
     /// Up to 20 of the cells on the net, by full name, sorted.
     pub cells: Vec<String>,
     /// All of them.
@@ -170,14 +174,16 @@ pub struct Pin {
 }
 
 /// One (changing source, kind) pair with its witness.
-#[derive(Clone, PartialEq, Eq, Debug)]
+#[derive(Clone, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub struct Hazard {
     /// The net that shows it, by full name: the finding's, or one bit of its port, or a feedback net of its loop.
     pub net: String,
     /// `static-0`, `static-1`, `dynamic`.
-    pub kind: &'static str,
+    #[serde(deserialize_with = "known::word")]
+    pub kind: Word,
     /// `logic` or `function`.
-    pub cause: &'static str,
+    #[serde(deserialize_with = "known::word")]
+    pub cause: Word,
     pub changes: Vec<String>,
     /// What it does to the cells on this pin, in words.
     pub harm: String,
@@ -190,17 +196,19 @@ pub struct Hazard {
     /// The event that moves what changes, for changes of flip-flops and latches.
     pub launch: Option<LaunchText>,
     /// `any-state` or `reachable-states`: which states the claim was made for.
-    pub reach: &'static str,
+    #[serde(deserialize_with = "known::word")]
+    pub reach: Word,
 }
 
 /// An event in names.
-#[derive(Clone, PartialEq, Eq, Debug)]
+#[derive(Clone, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub struct LaunchText {
     /// The signal that starts it.
     pub root: String,
     pub rises: bool,
     /// `first`, `second`, `both`: at which of the two steps the pin shows the hazard.
-    pub step: &'static str,
+    #[serde(deserialize_with = "known::word")]
+    pub step: Word,
     /// Signals in front of the pin that move in the first step, with the value before; sorted by name.
     pub first: Vec<(String, bool)>,
     /// Those that move in the second step, with the value between the steps; sorted by name.
@@ -214,7 +222,7 @@ pub struct LaunchText {
 }
 
 /// A hazard in terms of the graph that was analysed, for whoever wants to see it happen.
-#[derive(Clone, PartialEq, Eq, Debug)]
+#[derive(Clone, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub struct Transition {
     pub target: NodeId,
     pub witness: Witness,
@@ -222,7 +230,7 @@ pub struct Transition {
     pub calm: bool,
 }
 
-#[derive(Clone, PartialEq, Eq, Debug)]
+#[derive(Clone, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub struct CoverText {
     /// Each term as Verilog over the design's own names.
     pub terms: Vec<String>,
@@ -234,14 +242,15 @@ pub struct CoverText {
     pub cover: hazard::Cover,
 }
 
-#[derive(Clone, PartialEq, Eq, Debug)]
+#[derive(Clone, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub struct LoopText {
     pub nets: Vec<String>,
     /// Of `oscillates`, `stores`, `settles`, `delay-dependent`, `undecided`.
-    pub behaviour: Vec<&'static str>,
+    #[serde(deserialize_with = "known::words")]
+    pub behaviour: Vec<Word>,
 }
 
-#[derive(Clone, PartialEq, Eq, Debug)]
+#[derive(Clone, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub struct Signoff {
     pub reason: String,
     pub by: Option<String>,
@@ -249,7 +258,7 @@ pub struct Signoff {
     pub until: Option<String>,
 }
 
-#[derive(Clone, PartialEq, Eq, Debug)]
+#[derive(Clone, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub struct Finding {
     pub rule: Rule,
     pub severity: Severity,

@@ -13,6 +13,7 @@ mod coverage;
 mod evidence;
 mod finding;
 mod fingerprint;
+mod known;
 mod latch_enable_hazard;
 mod launch_text;
 mod missing_module;
@@ -20,6 +21,7 @@ pub(crate) mod names;
 mod pages;
 mod pins;
 mod reconvergent_inversion;
+mod remembered;
 mod reset_release;
 mod set_reset_hazard;
 mod set_reset_overlap;
@@ -32,6 +34,7 @@ use rayon::prelude::*;
 
 use checked::Checker;
 
+use crate::cache::Cache;
 use crate::graph::{Graph, NetId, NodeId, PortDirection};
 use crate::hazard::launch::{Assumptions, Launcher};
 use crate::hazard::{self, Options, TargetVerdict};
@@ -69,13 +72,15 @@ pub struct Outcome {
     pub loops: usize,
 }
 
-/// Looks at everything every rule asks about. `options` bound the effort; their scope is set per rule.
+/// Looks at everything every rule asks about. `options` bound the effort; their scope is set per rule; `cache`
+/// remembers what takes long.
 pub fn run(
     graph: &Graph,
     watches: &[Watch],
     assumptions: &Assumptions,
     protection: &Protection,
     options: &Options,
+    cache: Option<&Cache>,
 ) -> Outcome {
     let listing = Options { ignore_operators: false, one_per_kind: false, ..*options };
     let outside = Options { ignore_operators: true, one_per_kind: true, ..*options };
@@ -97,8 +102,8 @@ pub fn run(
         .map(|&root| launcher.refine(verdicts.get(&root).cloned().unwrap_or(TargetVerdict::clean(root))))
         .collect();
     verdicts.extend(refined.into_iter().map(|verdict| (verdict.target, verdict)));
-    let pin_context = &Context { options: &listing, launcher: Some(&launcher) };
-    let outside_context = &Context { options: &outside, launcher: None };
+    let pin_context = &Context { options: &listing, launcher: Some(&launcher), cache };
+    let outside_context = &Context { options: &outside, launcher: None, cache };
     verdicts.extend(roots.into_iter().filter(|&root| pins::is_undriven(graph, root)).map(pins::undriven));
     let bits = outputs.iter().flat_map(|port| &graph.nets[port.net.index()].bits);
     let outside_verdicts = decided(graph, bits.map(|&bit| graph.root(bit)), &outside);
@@ -189,6 +194,7 @@ struct Context<'a> {
     options: &'a Options,
     /// Absent where only single changes were looked at.
     launcher: Option<&'a Launcher<'a>>,
+    cache: Option<&'a Cache>,
 }
 
 /// Decides each root that logic drives once.

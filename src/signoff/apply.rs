@@ -2,14 +2,14 @@
 //! is driven), or the line that declares the finding's net, is the line the comment speaks about. Other lines of the
 //! trace do not count: a sign-off must stand where a reader of the finding would look first.
 
+use std::collections::BTreeSet;
+
 use jiff::civil::Date;
 
 use super::pragma::SignoffPragma;
-use super::watch::analysed_files;
-use crate::graph::Graph;
 use crate::report::Message;
 use crate::rules::{Finding, Rule, Severity, bookkeeping};
-use crate::source::{SourceSet, Span};
+use crate::source::{FileId, SourceSet, Span};
 
 /// What applying the sign-offs adds to the report.
 #[derive(Clone, PartialEq, Eq, Debug, Default)]
@@ -20,17 +20,16 @@ pub struct Applied {
     pub messages: Vec<Message>,
 }
 
-/// Marks every finding that a valid sign-off covers. A sign-off holds up to and including the day it names; `today` is
+/// Marks every finding that a valid sign-off covers. `analysed` are the files that something in the graph comes from. A sign-off holds up to and including the day it names; `today` is
 /// given from outside so that a run can be repeated.
 pub fn apply(
-    graph: &Graph,
+    analysed: &BTreeSet<FileId>,
     sources: &SourceSet,
     pragmas: &[SignoffPragma],
     findings: &mut [Finding],
     today: Date,
 ) -> Applied {
     let mut applied = Applied::default();
-    let analysed = analysed_files(graph);
     let on_line = |place: Option<Span>, pragma: &SignoffPragma| {
         place.is_some_and(|span| {
             span.file == pragma.at.file && sources.file(span.file).line_column(span.start).0 == pragma.line

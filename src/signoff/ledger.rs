@@ -46,7 +46,7 @@ pub struct Ledger {
 }
 
 /// What a ledger did in a scan.
-#[derive(Clone, PartialEq, Eq, Default, Debug)]
+#[derive(Clone, PartialEq, Eq, Default, Debug, Serialize, Deserialize)]
 pub struct Use {
     /// As the user gave it.
     pub file: String,

@@ -14,4 +14,4 @@ mod watch;
 
 pub use apply::{Applied, apply};
 pub use pragma::{AssumptionPragma, Collected, SignoffPragma, WatchPragma, collect};
-pub use watch::{declared_on, watches};
+pub use watch::{analysed_files, declared_on, watches};

@@ -45,7 +45,7 @@ pub fn declared_on(graph: &Graph, sources: &SourceSet) -> BTreeMap<(FileId, usiz
 }
 
 /// The files that something in the graph comes from. Comments elsewhere cannot be judged.
-pub(super) fn analysed_files(graph: &Graph) -> BTreeSet<FileId> {
+pub fn analysed_files(graph: &Graph) -> BTreeSet<FileId> {
     let nets = graph.nets.iter().map(|net| net.span.file);
     let nodes = graph.nodes().filter_map(|node| graph.span(node)).map(|span| span.file);
     nets.chain(nodes).collect()

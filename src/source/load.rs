@@ -18,10 +18,13 @@ use super::include::IncludeSearch;
 use super::macros::{Macro, Macros};
 use super::nearby::Nearby;
 use super::origin::MappedText;
+use super::parse::{self, Parsed};
 use super::preprocess::preprocess;
 use super::regions::Region;
+use super::remembered::{Place, may_be_old};
 use super::texts::Texts;
-use super::{FileId, SourceSet, Span, parse};
+use super::{FileId, SourceSet, Span};
+use crate::cache::Cache;
 use crate::diagnostic::{Diagnostic, Kind};
 use crate::syntax::{ast, externs};
 
@@ -37,6 +40,8 @@ pub struct Request {
     pub exclude: Exclude,
     /// Texts to read in place of those of the files.
     pub instead: Vec<(PathBuf, String)>,
+    /// Where trees are remembered from run to run.
+    pub cache: Option<Cache>,
 }
 
 /// Is told how many of how many bytes are parsed.
@@ -89,6 +94,7 @@ pub fn load(request: &Request, environment: Environment<'_>, progress: Progress<
         failed: BTreeSet::new(),
         failures: Vec::new(),
         diagnostics: found.diagnostics,
+        cache: request.cache.as_ref(),
         progress,
     };
     for path in lists {
@@ -148,6 +154,7 @@ struct Reader<'a> {
     /// What is wrong with files as units of their own.
     failures: Vec<(FileId, Diagnostic)>,
     diagnostics: Vec<Diagnostic>,
+    cache: Option<&'a Cache>,
     progress: Progress<'a>,
 }
 
@@ -188,33 +195,54 @@ impl Reader<'_> {
         }
     }
 
-    /// Parses all pieces of the planned files in parallel and adds one unit per file.
+    /// Parses all pieces of the planned files in parallel, those of remembered files excepted, and adds one unit per file.
     fn parse(&mut self, planned: Vec<Planned>) {
+        let is_old = |unit: &Planned| may_be_old(&self.texts.set.file(unit.file).path);
+        let remembered: Vec<(Option<Place>, Option<Parsed>)> = match self.cache {
+            None => planned.iter().map(|_| (None, None)).collect(),
+            Some(cache) => {
+                let look = |unit: &Planned| {
+                    let place = Place::new(unit.file, &unit.text, is_old(unit));
+                    let tree = place.as_ref().and_then(|place| place.tree(cache));
+                    (place, tree)
+                };
+                planned.par_iter().map(look).collect()
+            }
+        };
+        let new = planned.iter().zip(&remembered).filter(|(_, (_, tree))| tree.is_none()).map(|(unit, _)| unit);
         let pieces: Vec<(&Planned, &Chunk)> =
-            planned.iter().flat_map(|unit| unit.chunks.iter().map(move |chunk| (unit, chunk))).collect();
+            new.flat_map(|unit| unit.chunks.iter().map(move |chunk| (unit, chunk))).collect();
         let total = pieces.iter().map(|(_, chunk)| chunk.end - chunk.start).sum();
         let done = AtomicUsize::new(0);
-        let results: Vec<_> = pieces
+        let results: Vec<Parsed> = pieces
             .par_iter()
             .with_max_len(1)
             .map(|(unit, chunk)| {
-                let is_old = self.texts.set.file(unit.file).path.extension().is_some_and(|extension| extension == "v");
-                let result = parse::parse(&unit.text, chunk, unit.file, is_old);
+                let result = parse::parse(&unit.text, chunk, unit.file, is_old(unit));
                 let length = chunk.end - chunk.start;
                 (self.progress)(done.fetch_add(length, Ordering::Relaxed) + length, total);
                 result
             })
             .collect();
         let mut results = results.into_iter();
-        for unit in &planned {
-            let mut whole = ast::Unit::default();
-            for result in results.by_ref().take(unit.chunks.len()) {
-                whole.append(result.unit);
-                self.diagnostics.extend(result.diagnostics);
-                self.failures.extend(result.failures.into_iter().map(|failure| (unit.file, failure)));
-            }
-            externs::resolve(&mut whole);
-            self.units.push((unit.file, whole));
+        let mut wholes = Vec::with_capacity(planned.len());
+        for (unit, (place, tree)) in planned.iter().zip(remembered) {
+            let is_new = tree.is_none();
+            let whole = tree.unwrap_or_else(|| Parsed::join(results.by_ref().take(unit.chunks.len())));
+            wholes.push((place.filter(|_| is_new), whole));
+        }
+        if let Some(cache) = self.cache {
+            wholes.par_iter().for_each(|(place, whole)| {
+                if let Some(place) = place {
+                    place.remember(cache, whole);
+                }
+            });
+        }
+        for (unit, (_, mut whole)) in planned.iter().zip(wholes) {
+            self.diagnostics.extend(whole.diagnostics);
+            self.failures.extend(whole.failures.into_iter().map(|failure| (unit.file, failure)));
+            externs::resolve(&mut whole.unit);
+            self.units.push((unit.file, whole.unit));
         }
     }
 

@@ -21,6 +21,8 @@ mod parse;
 mod places;
 mod preprocess;
 mod regions;
+mod relative;
+mod remembered;
 mod reshape;
 mod set;
 mod span;

@@ -4,10 +4,14 @@
 //! Invariant: segments are sorted by their start and cover the text without gaps, because every byte is pushed together
 //! with its origin.
 
+use std::collections::BTreeSet;
+
+use serde::Serialize;
+
 use super::reshape::Piece;
 use super::{FileId, Places, Span};
 
-#[derive(Clone, Copy, Debug)]
+#[derive(Clone, Copy, Debug, Serialize)]
 struct Segment {
     /// Offset in the preprocessed text.
     start: u32,
@@ -17,7 +21,7 @@ struct Segment {
 }
 
 /// A preprocessed text with its way back.
-#[derive(Clone, Default, Debug)]
+#[derive(Clone, Default, Debug, Serialize)]
 pub struct MappedText {
     pub text: String,
     segments: Vec<Segment>,
@@ -26,6 +30,14 @@ pub struct MappedText {
 }
 
 impl MappedText {
+    /// `file`, whose text this is, and the other files that parts of it come from, in order of the text.
+    pub fn files(&self, file: FileId) -> Vec<FileId> {
+        let mut seen = BTreeSet::from([file]);
+        let mut files = vec![file];
+        files.extend(self.segments.iter().map(|segment| segment.origin.file).filter(|&file| seen.insert(file)));
+        files
+    }
+
     /// Appends `text`, which stands at `start` of `file`.
     pub fn push_verbatim(&mut self, text: &str, file: FileId, start: usize) {
         if text.is_empty() {

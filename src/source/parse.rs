@@ -7,6 +7,8 @@
 
 use std::panic::{AssertUnwindSafe, catch_unwind};
 
+use serde::{Deserialize, Serialize};
+
 use super::chunks::{Chunk, Refusal};
 use super::origin::{ChunkPlaces, MappedText};
 use super::reshape::reshape;
@@ -17,13 +19,26 @@ use crate::syntax::{ast, convert};
 
 const OLD_KEYWORDS: &str = "`begin_keywords \"1364-2005\" ";
 
-/// What one piece of a text gives.
-#[derive(Default)]
+/// What a text, or one piece of it, gives.
+#[derive(Default, Serialize, Deserialize)]
 pub struct Parsed {
     pub unit: ast::Unit,
     pub diagnostics: Vec<Diagnostic>,
     /// Why a part of the piece, or all of it, is left out.
     pub failures: Vec<Diagnostic>,
+}
+
+impl Parsed {
+    /// The pieces of one text together.
+    pub fn join(pieces: impl Iterator<Item = Parsed>) -> Self {
+        let mut whole = Self::default();
+        for piece in pieces {
+            whole.unit.append(piece.unit);
+            whole.diagnostics.extend(piece.diagnostics);
+            whole.failures.extend(piece.failures);
+        }
+        whole
+    }
 }
 
 /// Parses `chunk` of `text`, which belongs to `file`.

@@ -4,10 +4,12 @@
 
 use std::borrow::Cow;
 
+use serde::Serialize;
+
 use super::{FileId, Span};
 
 /// A region that was left out.
-#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Debug, Serialize)]
 pub struct Region {
     /// From the opening comment through the closing one.
     pub at: Span,

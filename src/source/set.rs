@@ -90,6 +90,11 @@ impl SourceSet {
         self.macro_uses.dedup();
     }
 
+    /// Uses of macros with a place, and where each is defined.
+    pub fn macro_uses(&self) -> &[(Span, Span)] {
+        &self.macro_uses
+    }
+
     /// Where the macro is defined whose use `span` is or lies in: from `` `define `` through its name.
     pub fn macro_behind(&self, span: Span) -> Option<Span> {
         let index = self.macro_uses.partition_point(|(at, _)| (at.file, at.start) <= (span.file, span.start));

@@ -98,7 +98,7 @@ fn reset_selector(covered: bool) -> (SourceSet, Report) {
     });
     let graph = scene.builder.freeze();
     let Outcome { mut findings, checked, pins, cells, loops } =
-        rules::run(&graph, &[], &Assumptions::default(), &Protection::default(), &Options::default());
+        rules::run(&graph, &[], &Assumptions::default(), &Protection::default(), &Options::default(), None);
     // The subject is how one finding looks.
     findings.retain(|finding| finding.rule == Rule::SetResetHazard);
     let coverage = Coverage { files_read: 1, modules_elaborated: 1, pins, cells, loops, ..Coverage::default() };
@@ -201,8 +201,14 @@ fn fingerprints_ignore_places_and_see_the_logic() {
         inferred_from: None,
     });
     // The inner net `n` is gone, everything moved by a line, the cell has another clock: the same finding.
-    let moved =
-        rules::run(&scene.builder.freeze(), &[], &Assumptions::default(), &Protection::default(), &Options::default());
+    let moved = rules::run(
+        &scene.builder.freeze(),
+        &[],
+        &Assumptions::default(),
+        &Protection::default(),
+        &Options::default(),
+        None,
+    );
     assert_eq!(moved.findings[0].fingerprint, one);
 }
 

@@ -137,7 +137,7 @@ fn applied(text: &str, today: Date) -> (bool, Vec<Rule>) {
     let (sources, graph, finding) = scene(text);
     let mut findings = [finding];
     let pragmas = signoff::collect(&sources).signoffs;
-    let added = signoff::apply(&graph, &sources, &pragmas, &mut findings, today);
+    let added = signoff::apply(&signoff::analysed_files(&graph), &sources, &pragmas, &mut findings, today);
     (findings[0].signoff.is_some(), added.findings.iter().map(|finding| finding.rule).collect())
 }
 
@@ -177,7 +177,7 @@ fn files_of_which_nothing_was_analysed_are_not_judged() {
     let other = sources.add("other.v", "assign q = 0; // stillwire: signoff clock-hazard \"why\"\n");
     assert_eq!(other, FileId::new(1));
     let pragmas = signoff::collect(&sources).signoffs;
-    let added = signoff::apply(&graph, &sources, &pragmas, &mut [finding], TODAY);
+    let added = signoff::apply(&signoff::analysed_files(&graph), &sources, &pragmas, &mut [finding], TODAY);
     assert!(added.findings.is_empty());
     assert_eq!(added.messages.len(), 1);
 }

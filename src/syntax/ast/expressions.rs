@@ -1,15 +1,17 @@
 //! Expressions, literals and operators, with the precedence of IEEE 1800-2017 already applied.
 
+use serde::{Deserialize, Serialize};
+
 use super::{Assignment, DataType, Ident};
 use crate::source::Span;
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub struct Expr {
     pub kind: ExprKind,
     pub span: Span,
 }
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub enum ExprKind {
     /// A sized or unsized integer literal.
     Number(Literal),
@@ -82,13 +84,13 @@ pub enum ExprKind {
     Unsupported(String),
 }
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub struct CallArg {
     pub name: Option<Ident>,
     pub value: Option<Expr>,
 }
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub enum CastKind {
     Type(Box<DataType>),
     /// `8'(x)`, `WIDTH'(x)`; whether the name is a type or a constant only elaboration knows.
@@ -98,13 +100,13 @@ pub enum CastKind {
     Const,
 }
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub struct PatternItem {
     pub key: PatternKey,
     pub value: Expr,
 }
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub enum PatternKey {
     /// By position.
     None,
@@ -116,7 +118,7 @@ pub enum PatternKey {
     Repeat(Expr, Vec<Expr>),
 }
 
-#[derive(Clone, Copy, PartialEq, Eq, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub enum SliceKind {
     /// `[left:right]`
     Constant,
@@ -127,7 +129,7 @@ pub enum SliceKind {
 }
 
 /// An integer literal with its digits expanded to bits.
-#[derive(Clone, PartialEq, Eq, Debug)]
+#[derive(Clone, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub struct Literal {
     /// `None` for an unsized literal (at least 32 bits).
     pub width: Option<u32>,
@@ -138,7 +140,7 @@ pub struct Literal {
     pub bits: String,
 }
 
-#[derive(Clone, Copy, PartialEq, Eq, Hash, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, Hash, Debug, Serialize, Deserialize)]
 pub enum UnaryOp {
     Plus,
     Minus,
@@ -154,7 +156,7 @@ pub enum UnaryOp {
     ReduceXnor,
 }
 
-#[derive(Clone, Copy, PartialEq, Eq, Hash, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, Hash, Debug, Serialize, Deserialize)]
 pub enum BinaryOp {
     Add,
     Sub,

@@ -1,9 +1,11 @@
 //! What is instantiated: modules, gate primitives and user-defined primitives with their tables.
 
+use serde::{Deserialize, Serialize};
+
 use super::{Dim, Expr, Ident};
 use crate::source::Span;
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub struct Instance {
     pub name: Ident,
     /// Instance array dimensions.
@@ -13,7 +15,7 @@ pub struct Instance {
 }
 
 /// A port connection or a parameter override.
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub enum Connection {
     /// By order; `None` is an empty place.
     Ordered(Option<Expr>, Span),
@@ -25,7 +27,7 @@ pub enum Connection {
     All(Span),
 }
 
-#[derive(Clone, Copy, PartialEq, Eq, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub enum GateType {
     And,
     Nand,
@@ -55,7 +57,7 @@ pub enum GateType {
     Pulldown,
 }
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub struct GateInstance {
     pub name: Option<Ident>,
     pub dims: Vec<Dim>,
@@ -63,7 +65,7 @@ pub struct GateInstance {
     pub span: Span,
 }
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub struct Udp {
     pub name: Ident,
     pub span: Span,
@@ -76,7 +78,7 @@ pub struct Udp {
 }
 
 /// One row of a table, symbols as written in lower case: `0 1 x ? b` levels, `r f p n *` edges.
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub struct UdpRow {
     pub inputs: Vec<UdpSymbol>,
     /// The current-state column of a sequential table.
@@ -86,7 +88,7 @@ pub struct UdpRow {
     pub span: Span,
 }
 
-#[derive(Clone, Copy, PartialEq, Eq, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub enum UdpSymbol {
     Level(char),
     /// `(ab)`; the letters `r f p n *` are kept as `Level`-free edges: r = (01), f = (10), p, n and * by their letter.

@@ -1,13 +1,15 @@
 //! What may stand in the body of a module, an interface, a package or a generate block. A construct that is passed over on
 //! purpose is an item of its own, so that it can be counted; so is one that is not supported.
 
+use serde::{Deserialize, Serialize};
+
 use super::{
     Assignment, Attributes, Connection, DataType, Dim, Direction, Expr, GateInstance, GateType, Ident, Import,
     Instance, Module, NetKind, Param, Stmt,
 };
 use crate::source::Span;
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub struct Item {
     pub kind: ItemKind,
     pub attributes: Attributes,
@@ -15,7 +17,7 @@ pub struct Item {
 }
 
 /// One declared name with its unpacked dimensions and initial value.
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub struct Declarator {
     pub name: Ident,
     pub dims: Vec<Dim>,
@@ -25,7 +27,7 @@ pub struct Declarator {
     pub once: bool,
 }
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 #[allow(clippy::large_enum_variant, reason = "items are few and short-lived; boxing would only blur the table")]
 pub enum ItemKind {
     /// Directions of non-ANSI ports. `net` is `None` when a variable type or nothing was written.
@@ -134,14 +136,14 @@ pub enum ItemKind {
     Unsupported(String),
 }
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub struct ModportPort {
     pub direction: Direction,
     pub name: Ident,
     pub expr: Option<Expr>,
 }
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub struct GenvarInit {
     pub name: Ident,
     /// `for (genvar i = ...)`.
@@ -149,7 +151,7 @@ pub struct GenvarInit {
     pub value: Expr,
 }
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub struct GenBlock {
     pub label: Option<Ident>,
     /// `false` for a single item without `begin`/`end`, and for `generate ... endgenerate`, which opens no scope.
@@ -159,7 +161,7 @@ pub struct GenBlock {
 }
 
 /// A function or a task (`ret` is `Void` for a task).
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub struct Function {
     pub name: Ident,
     pub automatic: bool,
@@ -171,7 +173,7 @@ pub struct Function {
     pub span: Span,
 }
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub struct FunctionArg {
     pub direction: Direction,
     pub name: Ident,
@@ -180,7 +182,7 @@ pub struct FunctionArg {
     pub default: Option<Expr>,
 }
 
-#[derive(Clone, Copy, PartialEq, Eq, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub enum ProcessKind {
     Always,
     AlwaysComb,
@@ -189,7 +191,7 @@ pub enum ProcessKind {
     Initial,
 }
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub struct Process {
     pub kind: ProcessKind,
     /// The event control that heads the body (`@(...)`, `@*`), `None` when there is none.
@@ -197,14 +199,14 @@ pub struct Process {
     pub body: Stmt,
 }
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub enum Sensitivity {
     /// `@*`, `@(*)`
     Star,
     List(Vec<Event>),
 }
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub struct Event {
     pub edge: Option<Edge>,
     pub expr: Expr,
@@ -213,7 +215,7 @@ pub struct Event {
     pub span: Span,
 }
 
-#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug, Serialize, Deserialize)]
 pub enum Edge {
     Posedge,
     Negedge,

@@ -4,6 +4,8 @@
 //! What is passed over on purpose (assertions, coverage, `initial` with delays) is kept as [`ItemKind::Skipped`] or
 //! [`StmtKind::Skipped`], so that it can be counted; what we cannot represent is `Unsupported`, never dropped.
 
+use serde::{Deserialize, Serialize};
+
 mod expressions;
 mod instances;
 mod items;
@@ -29,7 +31,7 @@ pub use units::{
 };
 
 /// A name as written, without the backslash and the space of an escaped identifier.
-#[derive(Clone, PartialEq, Eq, Hash, Debug)]
+#[derive(Clone, PartialEq, Eq, Hash, Debug, Serialize, Deserialize)]
 pub struct Ident {
     pub name: String,
     pub span: Span,
@@ -38,7 +40,7 @@ pub struct Ident {
 /// Attributes `(* name = value *)` of the item or statement they stand on.
 pub type Attributes = Vec<Attribute>;
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub struct Attribute {
     pub name: Ident,
     pub value: Option<Expr>,

@@ -1,16 +1,18 @@
 //! Statements of processes, functions and tasks.
 
+use serde::{Deserialize, Serialize};
+
 use super::{Attributes, BinaryOp, DataType, Expr, Ident, Item};
 use crate::source::Span;
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub struct Stmt {
     pub kind: StmtKind,
     pub attributes: Attributes,
     pub span: Span,
 }
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub enum StmtKind {
     Empty,
     Block {
@@ -70,14 +72,14 @@ pub enum StmtKind {
     Skipped(String),
 }
 
-#[derive(Clone, Copy, PartialEq, Eq, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub enum Unique {
     Unique,
     Unique0,
     Priority,
 }
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub struct Assignment {
     pub target: Expr,
     /// `Some(op)` for `+=` and friends; `++` is `+=` with the literal 1.
@@ -87,13 +89,13 @@ pub struct Assignment {
     pub span: Span,
 }
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub enum ForInit {
     Declare { ty: DataType, name: Ident, value: Expr },
     Assign(Assignment),
 }
 
-#[derive(Clone, Copy, PartialEq, Eq, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub enum CaseKind {
     Case,
     Casez,
@@ -102,7 +104,7 @@ pub enum CaseKind {
     Inside,
 }
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub struct Case {
     pub kind: CaseKind,
     pub unique: Option<Unique>,
@@ -112,7 +114,7 @@ pub struct Case {
     pub default: Option<Box<Stmt>>,
 }
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub struct CaseArm {
     pub labels: Vec<Expr>,
     pub body: Stmt,

@@ -1,9 +1,11 @@
 //! Data types and nets as they are declared; what a name stands for is resolved by elaboration.
 
+use serde::{Deserialize, Serialize};
+
 use super::{Expr, Ident};
 use crate::source::Span;
 
-#[derive(Clone, Copy, PartialEq, Eq, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub enum NetKind {
     Wire,
     Tri,
@@ -20,7 +22,7 @@ pub enum NetKind {
 }
 
 /// A packed or unpacked dimension.
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub enum Dim {
     /// `[left:right]`
     Range(Expr, Expr),
@@ -30,7 +32,7 @@ pub enum Dim {
     Dynamic(Span),
 }
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub struct DataType {
     pub kind: DataTypeKind,
     /// Packed dimensions, outermost (leftmost) first.
@@ -40,7 +42,7 @@ pub struct DataType {
     pub span: Span,
 }
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub enum DataTypeKind {
     /// No type keyword written: `input [3:0] a`, `parameter signed p`.
     Implicit,
@@ -82,14 +84,14 @@ pub enum DataTypeKind {
 }
 
 /// `name`, `name = value`, `name[5]`, `name[2:4]`.
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub struct EnumMember {
     pub name: Ident,
     pub range: Option<(Expr, Option<Expr>)>,
     pub value: Option<Expr>,
 }
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub struct Member {
     pub name: Ident,
     pub ty: DataType,

@@ -1,10 +1,12 @@
 //! What a file declares: modules with their headers and ports, packages, and what stands outside of both.
 
+use serde::{Deserialize, Serialize};
+
 use super::{Attributes, DataType, Dim, Expr, Ident, Item, NetKind, Udp};
 use crate::source::Span;
 
 /// Everything one compilation unit (one source file) declares, in source order.
-#[derive(Clone, Debug, Default)]
+#[derive(Clone, Debug, Default, Serialize, Deserialize)]
 pub struct Unit {
     pub modules: Vec<Module>,
     pub packages: Vec<Package>,
@@ -26,7 +28,7 @@ impl Unit {
     }
 }
 
-#[derive(Clone, Copy, PartialEq, Eq, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub enum ModuleKind {
     Module,
     Interface,
@@ -34,13 +36,13 @@ pub enum ModuleKind {
 }
 
 /// `` `default_nettype `` in force at the module's header.
-#[derive(Clone, Copy, PartialEq, Eq, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub enum DefaultNettype {
     Net(NetKind),
     None,
 }
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub struct Module {
     pub kind: ModuleKind,
     pub name: Ident,
@@ -56,7 +58,7 @@ pub struct Module {
     pub items: Vec<Item>,
 }
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub enum Ports {
     /// `module m (input a, output b);`, each with everything inherited from the one before already filled in.
     Ansi(Vec<AnsiPort>),
@@ -69,7 +71,7 @@ pub enum Ports {
     None,
 }
 
-#[derive(Clone, Copy, PartialEq, Eq, Debug)]
+#[derive(Clone, Copy, PartialEq, Eq, Debug, Serialize, Deserialize)]
 pub enum Direction {
     Input,
     Output,
@@ -77,7 +79,7 @@ pub enum Direction {
     Ref,
 }
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub struct AnsiPort {
     pub attributes: Attributes,
     pub kind: AnsiPortKind,
@@ -88,7 +90,7 @@ pub struct AnsiPort {
     pub span: Span,
 }
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub enum AnsiPortKind {
     /// `net` is `None` for a variable port (`output reg q`, `output logic q`).
     Data { direction: Direction, net: Option<NetKind>, ty: DataType },
@@ -101,7 +103,7 @@ pub enum AnsiPortKind {
 }
 
 /// An entry of a non-ANSI port list. The internal side is an expression (name, select or concatenation).
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub struct PortRef {
     /// The name seen from outside; `None` when only positional connection is possible (`{a, b}`).
     pub name: Option<Ident>,
@@ -110,7 +112,7 @@ pub struct PortRef {
 }
 
 /// A parameter or localparam, of a value or of a type.
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub struct Param {
     pub name: Ident,
     pub local: bool,
@@ -118,7 +120,7 @@ pub struct Param {
     pub span: Span,
 }
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub enum ParamKind {
     /// `ty` is `None` for an implicit type, which takes that of its value.
     Value {
@@ -131,7 +133,7 @@ pub enum ParamKind {
     },
 }
 
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub struct Package {
     pub name: Ident,
     pub span: Span,
@@ -139,7 +141,7 @@ pub struct Package {
 }
 
 /// `import pkg::name;` or `import pkg::*;` (`name` is `None`).
-#[derive(Clone, Debug)]
+#[derive(Clone, Debug, Serialize, Deserialize)]
 pub struct Import {
     pub package: Ident,
     pub name: Option<Ident>,
