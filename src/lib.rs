@@ -17,6 +17,7 @@ pub mod elaborate;
 pub mod graph;
 pub mod hazard;
 mod ids;
+pub mod input;
 mod remembered;
 pub mod replay;
 pub mod report;
@@ -102,6 +103,7 @@ pub fn scan(request: &Request, environment: Environment<'_>, progress: Progress<
                 (judged, signoffs)
             }
         };
+        report.inputs = std::mem::take(&mut loaded.inputs);
         let missing: Vec<String> = report.coverage.black_boxes.keys().cloned().collect();
         for module in missing {
             if let Some(place) = loaded.nearby.module(&module) {
@@ -327,6 +329,7 @@ fn read(
     let mut loaded =
         source::load(&request.source, environment, &|done, total| progress(Stage::Reading { done, total }))?;
     require_input(request, &loaded)?;
+    loaded.inputs.extend(cells.inputs.iter().cloned());
     let given = request.given.iter().map(|(name, value)| source::given(name, value, &mut loaded.sources));
     let given = given.collect::<Result<Vec<_>, PathError>>()?;
     Ok((loaded, elaborate::Request { tops: request.tops.clone(), given, cells }))
@@ -420,7 +423,7 @@ fn report_on_input<'a>(
     design: &elaborate::Design,
     diagnostics: impl IntoIterator<Item = &'a Diagnostic>,
 ) -> Report {
-    let mut report = Report { tops: design.tops.clone(), ..Report::default() };
+    let mut report = Report { tops: design.tops.clone(), inputs: loaded.inputs.clone(), ..Report::default() };
     report.tops.sort();
     let mut coverage = Coverage {
         files_read: loaded.files_read,
