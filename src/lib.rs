@@ -13,6 +13,7 @@ pub mod cells;
 pub mod cli;
 pub mod cure;
 pub mod diagnostic;
+pub mod drawing;
 pub mod elaborate;
 pub mod graph;
 pub mod hazard;
@@ -59,6 +60,8 @@ pub struct Request {
     pub today: Date,
     /// Number of threads, 0 for one per core. It never changes the result.
     pub threads: usize,
+    /// Whether the findings are drawn, for the output that shows them.
+    pub drawn: bool,
 }
 
 /// How far a run is.
@@ -81,6 +84,8 @@ pub type Progress<'a> = &'a (dyn Fn(Stage) + Sync);
 pub struct Scan {
     pub sources: SourceSet,
     pub report: Report,
+    /// One per finding when the request asks for drawings, else empty.
+    pub exhibits: Vec<drawing::Exhibit>,
 }
 
 /// The main job, from paths to a report.
@@ -92,15 +97,16 @@ pub fn scan(request: &Request, environment: Environment<'_>, progress: Progress<
         let (mut loaded, asked) = read(request, environment, progress)?;
         let cache = request.source.cache.as_ref();
         let place = cache.and_then(|cache| Some((cache, remembered::key(request, &loaded, &asked)?)));
-        let known: Option<Judged> = place.as_ref().and_then(|(cache, key)| cache.get(key));
-        let (Judged { mut report, analysed, .. }, signoffs) = match known {
-            Some(judged) => (judged, signoff::collect(&loaded.sources).signoffs),
+        // Drawings need the graph, which is not remembered.
+        let known: Option<Judged> = place.as_ref().filter(|_| !request.drawn).and_then(|(cache, key)| cache.get(key));
+        let (Judged { mut report, analysed, .. }, signoffs, graph) = match known {
+            Some(judged) => (judged, signoff::collect(&loaded.sources).signoffs, None),
             None => {
-                let (judged, signoffs) = judged(request, &mut loaded, &asked, progress)?;
+                let (judged, signoffs, graph) = judged(request, &mut loaded, &asked, progress)?;
                 if let Some((cache, key)) = place.filter(|_| judged.lasts) {
                     cache.put(&key, &judged);
                 }
-                (judged, signoffs)
+                (judged, signoffs, Some(graph))
             }
         };
         report.inputs = std::mem::take(&mut loaded.inputs);
@@ -120,7 +126,11 @@ pub fn scan(request: &Request, environment: Environment<'_>, progress: Progress<
         if let Some(cache) = cache {
             cache.prune(cache::LIMIT);
         }
-        Ok(finished(report, loaded.sources))
+        let mut scan = finished(report, loaded.sources);
+        if let Some(graph) = graph.filter(|_| request.drawn) {
+            scan.exhibits = drawing::exhibits(&graph, &scan.report.findings);
+        }
+        Ok(scan)
     })
 }
 
@@ -139,7 +149,7 @@ fn judged(
     loaded: &mut Loaded,
     asked: &elaborate::Request,
     progress: Progress<'_>,
-) -> Result<(Judged, Vec<signoff::SignoffPragma>), PathError> {
+) -> Result<(Judged, Vec<signoff::SignoffPragma>, graph::Graph), PathError> {
     let (design, diagnostics) = elaborated(loaded, asked, progress)?;
     progress(Stage::Deciding);
     let protection = syntax::Protection::collect(&loaded.units);
@@ -156,7 +166,8 @@ fn judged(
     report.findings.extend(assumed.findings);
     report.coverage.assumptions = assumed.listed;
     let lasts = diagnostics.iter().all(|diagnostic| diagnostic.missing.is_none());
-    Ok((Judged { report, analysed: signoff::analysed_files(&design.graph), lasts }, pragmas.signoffs))
+    let analysed = signoff::analysed_files(&design.graph);
+    Ok((Judged { report, analysed, lasts }, pragmas.signoffs, design.graph))
 }
 
 /// What the rules find under the comments in the sources and the assumptions in force.
@@ -470,5 +481,5 @@ fn finished(mut report: Report, sources: SourceSet) -> Scan {
     };
     report.coverage.unsupported.sort_by_cached_key(|(construct, at)| (at.map(place), construct.clone()));
     report.messages.sort_by_cached_key(|message| (message.at.map(place), message.text.clone()));
-    Scan { sources, report }
+    Scan { sources, report, exhibits: Vec::new() }
 }

@@ -13,7 +13,7 @@ use stillwire::cache::Cache;
 use stillwire::cli::{self, Cli, Command, Format, Input, Output};
 use stillwire::cure::Cure;
 use stillwire::input::{self, InputRole};
-use stillwire::report::{evidence, json, junit, sarif, text};
+use stillwire::report::{evidence, html, json, junit, sarif, text};
 use stillwire::rules::{self, Severity};
 use stillwire::settings::{self, Settings};
 use stillwire::signoff::ledger::{self, Ledger};
@@ -52,7 +52,8 @@ fn scan(arguments: &cli::Scan) -> Result<u8, PathError> {
     check_outputs(&arguments.write)?;
     let ledger = arguments.ledger.as_deref().or(settings.ledger.as_deref());
     let ledger = ledger.map(|file| Ok((file, read_ledger(file)?))).transpose()?;
-    let request = request(&arguments.input, &settings);
+    let mut request = request(&arguments.input, &settings);
+    request.drawn = arguments.write.iter().any(|output| output.format == Format::Html);
     let mut scan = with_progress(|progress| stillwire::scan(&request, &environment, progress))?;
     let mut inputs: Vec<input::Input> = settings.input.iter().cloned().collect();
     if let Some((file, (ledger, read))) = ledger {
@@ -88,6 +89,7 @@ fn scan(arguments: &cli::Scan) -> Result<u8, PathError> {
                 };
                 evidence::render(&scan.report, &scan.sources, gate, &run)
             }
+            Format::Html => html::render(&scan.report, &scan.exhibits, &scan.sources, gate),
         };
         match &output.file {
             None => print(&rendered)?,
@@ -167,7 +169,7 @@ fn flatten(arguments: &cli::Flatten) -> Result<u8, PathError> {
     let settings = read_settings(&arguments.input)?;
     let request = request(&arguments.input, &settings);
     let cone = arguments.cone.as_deref();
-    let (verilog, Scan { sources, report }) =
+    let (verilog, Scan { sources, report, .. }) =
         with_progress(|progress| stillwire::flatten(&request, cone, &environment, progress))?;
     if !report.complete() {
         let style = text::Style {
@@ -278,6 +280,7 @@ fn request(input: &Input, settings: &Settings) -> Request {
         severities: settings.severities.clone(),
         today: jiff::Zoned::now().date(),
         threads: input.threads.map_or(0, usize::from),
+        drawn: false,
     }
 }
 

@@ -243,12 +243,13 @@ fn request(path: PathBuf) -> Request {
         severities: BTreeMap::new(),
         today: jiff::civil::date(2026, 1, 1),
         threads: 1,
+        drawn: false,
     }
 }
 
 fn analyse(folder: &Path, broken_tail: bool) -> Outcome {
     let mut outcome = Outcome::default();
-    let (netlist, Scan { sources, report }) =
+    let (netlist, Scan { sources, report, .. }) =
         match stillwire::flatten(&request(folder.join("input")), None, &|_| None, &|_| {}) {
             Ok(result) => result,
             Err(error) => {

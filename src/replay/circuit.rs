@@ -108,9 +108,22 @@ pub(super) fn unsaid(witness: &Witness) -> Vec<NodeId> {
     launch.raced.iter().copied().filter(|latch| !said.contains(latch)).collect()
 }
 
-impl Circuit {
+/// The logic behind the target of a transition as a graph of its own: loops are cut at the nets that the witness gives
+/// values, open latches pass their data like buffers.
+pub(crate) struct Cut {
+    pub(crate) frozen: FrozenCone,
+    /// The target in the copy.
+    pub(crate) target: NodeId,
+    /// The target and what else was asked for, in the copy.
+    ends: Vec<NodeId>,
+    /// Nodes of the copy that the witness speaks about, and the originals; what else was asked for is among them.
+    readers: BTreeMap<NodeId, NodeId>,
+    steps: Vec<Step>,
+}
+
+impl Cut {
     /// The logic behind the target of `transition`, and behind `also`; `guesses` are values that the witness does not say.
-    pub(super) fn new(
+    pub(crate) fn new(
         graph: &Graph,
         transition: &Transition,
         also: &[NodeId],
@@ -122,7 +135,6 @@ impl Circuit {
         // A loop's feedback net is both given and asked for: whoever reads it reads the given value.
         let looped: Vec<NodeId> = given.iter().copied().filter(|&node| !graph.fanin(node).is_empty()).collect();
         let passing = transition.witness.launch.as_ref().map_or(&[][..], |launch| &launch.passing);
-        let late = transition.witness.launch.as_ref().map_or(&[][..], |launch| &launch.late);
         let passed: Vec<(NodeId, NodeId)> = passing
             .iter()
             .filter_map(|&latch| Some((latch, graph.cells.iter().find(|cell| cell.output == latch)?.data)))
@@ -139,13 +151,45 @@ impl Circuit {
         let target = cone.copy_of(transition.target).ok_or(Refusal::Foreign)?;
         let mut ends = vec![target];
         ends.extend(also.iter().filter_map(|&node| cone.read_of(node)));
-        let frozen = cone.freeze();
-        let mut whole = Self::whole(graph, &frozen, &ends, late, transition.calm, |copy| {
-            let node = readers.get(&copy).copied();
-            steps.iter().map(|step| node.map_or(Wave::constant(false), |node| step.wave(node))).collect()
+        Ok(Self { frozen: cone.freeze(), target, ends, readers, steps })
+    }
+
+    /// The logic behind a net that no witness speaks about; if the net depends on itself, it is cut there.
+    pub(crate) fn of_net(graph: &Graph, net: NodeId) -> Self {
+        let cone = Cone::cut(graph, &[net], &[net]);
+        let target = cone.copy_of(net).unwrap_or(net);
+        Self { frozen: cone.freeze(), target, ends: vec![target], readers: BTreeMap::new(), steps: Vec::new() }
+    }
+
+    /// What the witness says that a node of the copy does, one waveform per step; `None` when it says nothing of it.
+    pub(crate) fn given(&self, copy: NodeId) -> Option<Vec<Wave>> {
+        let node = *self.readers.get(&copy)?;
+        Some(self.steps.iter().map(|step| step.wave(node)).collect())
+    }
+
+    /// What the stimulus does, in steps.
+    pub(crate) fn steps(&self) -> usize {
+        self.steps.len()
+    }
+}
+
+impl Circuit {
+    /// The logic behind the target of `transition`, and behind `also`; `guesses` are values that the witness does not say.
+    pub(super) fn new(
+        graph: &Graph,
+        transition: &Transition,
+        also: &[NodeId],
+        guesses: &[(NodeId, bool)],
+    ) -> Result<Self, Refusal> {
+        let cut = Cut::new(graph, transition, also, guesses)?;
+        let late = transition.witness.launch.as_ref().map_or(&[][..], |launch| &launch.late);
+        let still = || vec![Wave::constant(false); cut.steps()];
+        let mut whole = Self::whole(graph, &cut.frozen, &cut.ends, late, transition.calm, |copy| {
+            cut.given(copy).unwrap_or_else(still)
         })?;
-        whole.of_node = readers.iter().filter_map(|(copy, &node)| Some((node, *whole.of_node.get(copy)?))).collect();
-        whole.steps = steps.len();
+        whole.of_node =
+            cut.readers.iter().filter_map(|(copy, &node)| Some((node, *whole.of_node.get(copy)?))).collect();
+        whole.steps = cut.steps();
         whole.prune(also);
         let waves = &whole.elements[whole.target].waves;
         whole.ends = match (waves.first(), waves.last()) {

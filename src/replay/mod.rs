@@ -12,6 +12,7 @@ mod vcd;
 
 use bench::Head;
 use circuit::Circuit;
+pub(crate) use circuit::Cut;
 use delays::{Plan, Shown};
 
 use crate::graph::{Graph, NodeId};

@@ -5,9 +5,11 @@
 pub mod evidence;
 pub mod flatten;
 mod held;
+pub mod html;
 pub mod json;
 pub mod junit;
 pub mod sarif;
+mod shown;
 mod summary;
 pub mod text;
 mod told;

@@ -56,7 +56,7 @@ pub(super) fn render(report: &Report, style: &Style) -> String {
     assumptions(report, &mut text);
     let severities = coverage.severities.iter().map(|(rule, severity)| format!("{} {}", rule.name(), severity.name()));
     list("severities fixed by the settings", &severities.collect::<Vec<_>>(), &mut text);
-    let _ = writeln!(text, "{}", result(report, style));
+    let _ = writeln!(text, "{}", result(report, style.gate));
     let _ = writeln!(text, "{CAUTION}");
     text
 }
@@ -94,7 +94,7 @@ fn findings(report: &Report, style: &Style) -> String {
 }
 
 /// "ledger known.toml: 12 entries remain, 2 are gone ...".
-fn known(ledger: &ledger::Use) -> String {
+pub(super) fn known(ledger: &ledger::Use) -> String {
     let remaining = match ledger.remaining {
         1 => "1 entry remains".to_string(),
         remaining => format!("{remaining} entries remain"),
@@ -169,9 +169,9 @@ fn assumptions(report: &Report, text: &mut String) {
 }
 
 /// Whether the run passes, and why not.
-fn result(report: &Report, style: &Style) -> String {
-    let gate = style.gate.name();
-    let failing = report.findings.iter().filter(|finding| !finding.is_accepted() && finding.severity >= style.gate);
+pub(super) fn result(report: &Report, gate: Severity) -> String {
+    let failing = report.findings.iter().filter(|finding| !finding.is_accepted() && finding.severity >= gate);
+    let gate = gate.name();
     let failing = failing.count();
     let mut text = match failing {
         0 => format!("result: nothing at or above `{gate}`"),
@@ -195,6 +195,6 @@ fn list(what: &str, names: &[String], text: &mut String) {
     let _ = writeln!(text, "  {what}: {shown}{more}");
 }
 
-fn number(count: usize, noun: &str) -> String {
+pub(super) fn number(count: usize, noun: &str) -> String {
     if count == 1 { format!("1 {noun}") } else { format!("{count} {noun}s") }
 }

@@ -2,17 +2,15 @@
 //! witness as a small waveform, what it does to the cells, the cure. Colours are the caller's choice. Everything that
 //! is shortened says by how much; the whole is in the JSON.
 
-use std::collections::HashMap;
-
 use codespan_reporting::diagnostic::{Diagnostic, Label, Severity as Level};
 use codespan_reporting::files::{Error, Files};
 use codespan_reporting::term::termcolor::Buffer;
 use codespan_reporting::term::{self, Config};
 
 use super::held::held;
+use super::shown::{self, Marked, Places};
 use super::{Message, Report, summary, waveform};
-use crate::rules::bundle::listed;
-use crate::rules::{Finding, Hazard, PinKind, Severity};
+use crate::rules::{Finding, Hazard, Severity};
 use crate::source::{FileId, SourceSet, Span};
 
 /// How the text is to look.
@@ -38,9 +36,6 @@ const SHOWN_HAZARDS: usize = 6;
 /// With more held signals than this, such a line leaves their values to the JSON.
 const SHOWN_HELD: usize = 3;
 
-/// So many signals, or vectors, that change together are named.
-const SHOWN_SIGNALS: usize = 3;
-
 /// So many findings are shown in full, those of one family as one.
 const SHOWN_GROUPS: usize = 100;
 
@@ -58,7 +53,8 @@ pub fn render(report: &Report, sources: &SourceSet, style: &Style) -> String {
     let mut buffer = if style.colours { Buffer::ansi() } else { Buffer::no_color() };
     let config = Config { before_label_lines: 0, after_label_lines: 0, ..Config::default() };
     let files = Excerpts { sources };
-    let groups = families(report.findings.iter().filter(|one| !one.is_accepted() && one.severity >= style.show));
+    let shown = report.findings.iter().filter(|one| !one.is_accepted() && one.severity >= style.show);
+    let groups = shown::families(shown, |finding| finding);
     let findings = groups.iter().take(SHOWN_GROUPS).map(|group| of_group(sources, group));
     let messages = report.messages.iter().filter(|message| message.severity >= style.show);
     let messages = messages.map(|message| of_message(sources, message));
@@ -76,20 +72,6 @@ pub fn render(report: &Report, sources: &SourceSet, style: &Style) -> String {
     }
     text.push_str(&summary::render(report, style));
     text
-}
-
-/// The findings by family, the worst and first of each in front, in the order in which the families first occur.
-fn families<'a>(findings: impl Iterator<Item = &'a Finding>) -> Vec<Vec<&'a Finding>> {
-    let mut groups: Vec<Vec<&Finding>> = Vec::new();
-    let mut known: HashMap<(&str, Severity), usize> = HashMap::new();
-    for finding in findings {
-        let group = *known.entry((&finding.family, finding.severity)).or_insert(groups.len());
-        match groups.get_mut(group) {
-            Some(group) => group.push(finding),
-            None => groups.push(vec![finding]),
-        }
-    }
-    groups
 }
 
 /// The first finding of a family, and the nets of the others, or the places where they are about no net.
@@ -125,32 +107,9 @@ fn level(severity: Severity) -> Level {
 
 fn of_finding(sources: &SourceSet, finding: &Finding) -> Diagnostic<FileId> {
     let mut labels = Vec::new();
-    let mut notes = Vec::new();
-    // The last step of a trace at the finding's own place says what happens there.
-    let own = finding.trace.iter().rposition(|step| step.at == finding.at && step.at.is_some());
-    let mut places: Vec<(Span, String)> = Vec::new();
-    for (index, step) in finding.trace.iter().enumerate() {
-        match step.at {
-            _ if Some(index) == own => {}
-            // The renderer would put labels of one place in an order of its own.
-            Some(at) => match places.iter_mut().find(|(known, _)| *known == at) {
-                Some((_, text)) => text.push_str(&format!("; {}", step.text)),
-                None => places.push((at, step.text.clone())),
-            },
-            None => notes.push(step.text.clone()),
-        }
-    }
-    if let Some(at) = finding.at {
-        let own = own.map(|index| finding.trace[index].text.clone());
-        let before = places.iter().position(|(known, _)| *known == at).map(|index| places.remove(index).1);
-        let text: Vec<String> = before.into_iter().chain(own).collect();
-        place(sources, at, &text.join("; "), true, &mut labels, &mut notes);
-    }
-    for (at, text) in places {
-        place(sources, at, &text, false, &mut labels, &mut notes);
-    }
-    if let Some(defined) = finding.at.and_then(|at| sources.macro_behind(at)) {
-        place(sources, defined, "the text comes from this macro", false, &mut labels, &mut notes);
+    let Places { marked, mut notes } = shown::places(finding, sources);
+    for Marked { at, text, primary, .. } in &marked {
+        place(sources, *at, text, *primary, &mut labels, &mut notes);
     }
     if let Some(lead) = finding.hazards.first() {
         notes.push(waveform::render(lead));
@@ -160,14 +119,7 @@ fn of_finding(sources: &SourceSet, finding: &Finding) -> Diagnostic<FileId> {
         notes.push(others(finding));
     }
     if let Some(cover) = &finding.cover {
-        let effect = match (cover.proven, &finding.loop_) {
-            (false, _) => "not proven",
-            (true, None) if finding.pin.as_ref().is_some_and(|pin| pin.kind == PinKind::Output) => {
-                "proven: with it, no change of one signal can glitch this net"
-            }
-            (true, None) => "proven: with it, no change of one signal and no clock edge can glitch this net",
-            (true, Some(_)) => "proven: with it, no change of one signal can lose the value",
-        };
+        let effect = shown::effect(finding, cover);
         notes.push(format!("cover ({effect}):\n  {}", wrapped(&cover.verilog).replace('\n', "\n  ")));
     }
     notes.extend(finding.notes.iter().map(|note| wrapped(note)));
@@ -208,30 +160,12 @@ fn others(finding: &Finding) -> String {
     let rest = &finding.hazards[1..];
     let mut lines = vec!["and by other changes:".to_string()];
     for hazard in rest.iter().take(SHOWN_HAZARDS) {
-        let on = if hazard.net == finding.net { String::new() } else { format!(" on `{}`", hazard.net) };
-        let event = match &hazard.launch {
-            Some(launch) if hazard.changes.len() != 1 || launch.step != "second" => {
-                let edge = if launch.rises { "rising" } else { "falling" };
-                format!(" with the {edge} edge of `{}`", launch.root)
-            }
-            _ => String::new(),
-        };
-        lines.push(format!("  {}{on} by {}{event}{}", hazard.kind, changing(hazard), conditions(hazard)));
+        lines.push(format!("  {}{}", shown::hazard(finding, hazard), conditions(hazard)));
     }
     if rest.len() > SHOWN_HAZARDS {
         lines.push(format!("  and {} more, all in the JSON output", rest.len() - SHOWN_HAZARDS));
     }
     lines.join("\n")
-}
-
-/// The signals that change; latches that race when nothing else does.
-fn changing(hazard: &Hazard) -> String {
-    match &hazard.launch {
-        Some(launch) if hazard.changes.is_empty() => {
-            format!("the latch {}", listed(launch.raced.iter().map(String::as_str), SHOWN_SIGNALS))
-        }
-        _ => listed(hazard.changes.iter().map(String::as_str), SHOWN_SIGNALS),
-    }
 }
 
 /// ": while a = 1, b = 0", when that is short enough.

@@ -7,11 +7,26 @@ use crate::rules::Hazard;
 /// The most held signals drawn.
 const SHOWN_HELD: usize = 8;
 
+/// One signal: its name, what it does in the five characters, and the same in words.
+pub(super) type Row = (String, &'static str, String);
+
 /// The drawing, one line per signal, names aligned, under a line that says what it is.
 pub(super) fn render(hazard: &Hazard) -> String {
-    let mut rows: Vec<(String, &str, String)> = changes(hazard);
+    let (rows, left_out) = rows(hazard, SHOWN_HELD);
+    let width = rows.iter().map(|(name, _, _)| name.chars().count()).max().unwrap_or(0);
+    let mut lines = vec!["witness (every signal not named may have any value):".to_string()];
+    lines.extend(rows.iter().map(|(name, drawn, word)| format!("  {name:<width$}  {drawn}  {word}")));
+    if left_out > 0 {
+        lines.insert(lines.len() - 1, format!("  and {left_out} more that hold, all in the JSON output"));
+    }
+    lines.join("\n")
+}
+
+/// What changes, up to `most` of the signals that hold, and the net; and how many more hold.
+pub(super) fn rows(hazard: &Hazard, most: usize) -> (Vec<Row>, usize) {
+    let mut rows: Vec<Row> = changes(hazard);
     let held = held(hazard);
-    for signal in held.iter().take(SHOWN_HELD) {
+    for signal in held.iter().take(most) {
         let drawn = match (signal.bits.contains(&false), signal.bits.contains(&true)) {
             (true, true) => "==========",
             (false, _) => "~~~~~~~~~~",
@@ -36,18 +51,11 @@ pub(super) fn render(hazard: &Hazard) -> String {
         (true, false) => ("~~~\\_/~\\__", "should fall once, bounces"),
     };
     rows.push((hazard.net.clone(), drawn, word.to_string()));
-    let width = rows.iter().map(|(name, _, _)| name.chars().count()).max().unwrap_or(0);
-    let mut lines = vec!["witness (every signal not named may have any value):".to_string()];
-    lines.extend(rows.iter().map(|(name, drawn, word)| format!("  {name:<width$}  {drawn}  {word}")));
-    if held.len() > SHOWN_HELD {
-        let left_out = held.len() - SHOWN_HELD;
-        lines.insert(lines.len() - 1, format!("  and {left_out} more that hold, all in the JSON output"));
-    }
-    lines.join("\n")
+    (rows, held.len().saturating_sub(most))
 }
 
 /// What changes, in order of time: in an event the root, then what it moves.
-fn changes(hazard: &Hazard) -> Vec<(String, &'static str, String)> {
+fn changes(hazard: &Hazard) -> Vec<Row> {
     let row = |name: &str, before: bool, late: bool| {
         let (drawn, word) = match (before, late) {
             (false, false) => ("___/~~~~~~", "rises"),

@@ -24,6 +24,7 @@ pub fn library_scan(path: &Path, threads: usize) -> Scan {
         assumptions: Vec::new(),
         severities: BTreeMap::new(),
         today: jiff::civil::date(2026, 1, 1),
+        drawn: false,
         threads,
     };
     stillwire::scan(&request, &|_| None, &|_| {}).unwrap_or_else(|error| panic!("{error}"))

@@ -36,7 +36,9 @@ fn scan(path: &Path) -> Result<Value, String> {
     let output = stillwire(&["scan", "--show", "note", "--write", "json:-"], path);
     let text = String::from_utf8_lossy(&output.stderr);
     match output.status.code() {
-        Some(0..=3) if !text.contains("panicked") => Ok(crate::outputs::kept("json", &output.stdout).unwrap_or_default()),
+        Some(0..=3) if !text.contains("panicked") => {
+            Ok(crate::outputs::kept("json", &output.stdout).unwrap_or_default())
+        }
         _ => Err(format!("{}: {}: {}", path.display(), output.status, text.chars().take(1000).collect::<String>())),
     }
 }

@@ -19,6 +19,7 @@ fn flatten(text: &str) -> (String, Scan) {
         assumptions: Vec::new(),
         severities: BTreeMap::new(),
         today: jiff::civil::date(2026, 1, 1),
+        drawn: false,
         threads: 1,
     };
     stillwire::flatten(&request, None, &|_| None, &|_| {}).expect("something to analyse")

@@ -2,6 +2,7 @@
 
 mod adopt;
 mod assumptions;
+mod browser;
 mod catalogue;
 mod catalogue_explored;
 mod cells;
@@ -16,6 +17,7 @@ mod cure;
 mod decide;
 mod decision;
 mod demo;
+mod drawing;
 mod elaborate;
 mod evidence;
 mod explorer;
@@ -27,6 +29,7 @@ mod fuzz_regressions;
 mod given;
 mod graph;
 mod headers;
+mod html;
 mod junit;
 mod launch;
 mod launch_delays;
