@@ -57,10 +57,10 @@ struct Choice<'a> {
     shown: BTreeSet<NodeId>,
 }
 
-/// `None` when no logic stands in front of the net.
+/// `None` when neither logic nor a hazard is in front of the net.
 pub(super) fn choose(logic: &Logic<'_>, ways: &Ways, finding: &Finding) -> Option<Sheet> {
     let target = logic.driver(logic.cut.target);
-    if logic.pins(target).is_empty() {
+    if logic.pins(target).is_empty() && finding.hazards.is_empty() {
         return None;
     }
     let racing = || ways.iter().filter(|(way, _)| matches!(way, Way::First | Way::Second)).map(|(_, nodes)| nodes);
@@ -235,14 +235,14 @@ impl Choice<'_> {
                     taken.push((self.places.get(&Item::Node(driver)).copied(), false));
                     continue;
                 }
+                let (driver, inverters) = self.without_inverters(driver);
+                let inverted = inverters.len() % 2 == 1;
+                self.shown.extend(inverters);
                 plain += 1;
                 if others > single && plain >= single {
                     bundled.push(driver);
                     continue;
                 }
-                let (driver, inverters) = self.without_inverters(driver);
-                let inverted = inverters.len() % 2 == 1;
-                self.shown.extend(inverters);
                 let known = self.places.get(&Item::Node(driver)).copied();
                 if let Some(known) =
                     known.filter(|_| !self.logic.pins(driver).is_empty() || self.marked.contains(&driver))

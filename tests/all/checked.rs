@@ -8,12 +8,11 @@ use stillwire::rules::{NetState, PinKind};
 use stillwire::source::{self, Exclude};
 use stillwire::{Request, Scan};
 
-/// Scans through the library.
-#[track_caller]
-pub fn library_scan(path: &Path, threads: usize) -> Scan {
-    let request = Request {
+/// A request to the library for these paths and nothing else.
+pub fn request(paths: Vec<PathBuf>, threads: usize) -> Request {
+    Request {
         source: source::Request {
-            paths: vec![path.to_path_buf()],
+            paths,
             exclude: Exclude { root: PathBuf::new(), patterns: Vec::new() },
             ..source::Request::default()
         },
@@ -26,7 +25,14 @@ pub fn library_scan(path: &Path, threads: usize) -> Scan {
         today: jiff::civil::date(2026, 1, 1),
         drawn: false,
         threads,
-    };
+        drawn: false,
+    }
+}
+
+/// Scans through the library.
+#[track_caller]
+pub fn library_scan(path: &Path, threads: usize) -> Scan {
+    let request = request(vec![path.to_path_buf()], threads);
     stillwire::scan(&request, &|_| None, &|_| {}).unwrap_or_else(|error| panic!("{error}"))
 }
 
