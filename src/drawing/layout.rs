@@ -456,7 +456,8 @@ impl Layout {
         let pin = to.pins.get(link.pin).copied().unwrap_or(Pin { y: to.height / 2, inverted: false });
         let mut points = vec![(from.x + from.width, self.middle[link.from])];
         let mut place = link.from;
-        for layer in layer_of[link.from]..layer_of[link.to] {
+        let passed = columns.iter().enumerate().take(layer_of[link.to]).skip(layer_of[link.from]);
+        for (layer, column) in passed {
             let next = match layer + 1 == layer_of[link.to] {
                 true => link.to,
                 false => {
@@ -466,7 +467,7 @@ impl Layout {
             };
             let y = if next == link.to { to.y + pin.y } else { self.middle[next] };
             let here = self.middle[place];
-            if let Some(&track) = columns[layer].tracks.get(&place).filter(|_| here != y) {
+            if let Some(&track) = column.tracks.get(&place).filter(|_| here != y) {
                 points.push((track, here));
                 points.push((track, y));
             }

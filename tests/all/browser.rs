@@ -334,6 +334,7 @@ fn names_stay_text() {
 /// 2,000 findings of different nets: loading, filtering and expanding, by the page's own clock.
 #[test]
 #[ignore = "outside: run tests/outside/run"]
+#[allow(clippy::print_stdout, reason = "the times are the result")]
 fn two_thousand_findings_stay_responsive() {
     const FINDINGS: usize = 2_000;
     let mut text = format!("module t(input clk, d, s, input [{FINDINGS}:0] a, output reg [{}:0] q);\n", FINDINGS - 1);

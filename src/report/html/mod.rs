@@ -35,14 +35,14 @@ pub fn render(report: &Report, exhibits: &[Exhibit], sources: &SourceSet, gate: 
         [first, rest @ ..] => format!("Stillwire: {first} and {} more", rest.len()),
     };
     let mut page = String::new();
-    let _ = write!(
+    let _ = writeln!(
         page,
         "<!DOCTYPE html>\n<html lang=\"en\">\n<head>\n<meta charset=\"utf-8\">\n\
          <meta http-equiv=\"Content-Security-Policy\" content=\"{POLICY}\">\n\
          <meta name=\"viewport\" content=\"width=device-width, initial-scale=1\">\n\
          <meta name=\"color-scheme\" content=\"light dark\">\n\
          <link rel=\"icon\" href=\"data:,\">\n\
-         <title>{}</title>\n<style>\n{STYLE}</style>\n</head>\n<body>\n",
+         <title>{}</title>\n<style>\n{STYLE}</style>\n</head>\n<body>",
         escaped(&title)
     );
     page.push_str(&summary::render(report, sources, gate));
@@ -94,10 +94,10 @@ fn place(finding: &Finding, sources: &SourceSet) -> String {
 fn head(index: usize, group: &Group<'_>, sources: &SourceSet, page: &mut String) {
     let Some(&(finding, exhibit)) = group.first() else { return };
     let (severity, verdict) = (finding.severity.name(), finding.verdict.name());
-    let _ = write!(
+    let _ = writeln!(
         page,
         "<article class=\"finding {severity}\" id=\"f{index}\" data-rule=\"{}\" data-severity=\"{severity}\" \
-         data-verdict=\"{verdict}\" data-state=\"{}\" data-module=\"{}\" data-count=\"{}\" data-fingerprint=\"{}\">\n",
+         data-verdict=\"{verdict}\" data-state=\"{}\" data-module=\"{}\" data-count=\"{}\" data-fingerprint=\"{}\">",
         finding.rule.name(),
         state(finding),
         escaped(&exhibit.module),
@@ -121,9 +121,9 @@ fn head(index: usize, group: &Group<'_>, sources: &SourceSet, page: &mut String)
     if group.len() > 1 {
         let _ = write!(page, " <span class=\"tag\">{} alike</span>", group.len());
     }
-    let _ = write!(
+    let _ = writeln!(
         page,
-        "<span class=\"message\">{}</span><span class=\"where\">{}</span></button></h2>\n",
+        "<span class=\"message\">{}</span><span class=\"where\">{}</span></button></h2>",
         coded(&finding.message),
         escaped(&place(finding, sources))
     );
@@ -134,7 +134,7 @@ fn head(index: usize, group: &Group<'_>, sources: &SourceSet, page: &mut String)
         }
         page.push_str("</p>\n");
     }
-    let _ = write!(page, "<div class=\"detail\" id=\"d{index}\" hidden></div>\n</article>\n");
+    let _ = writeln!(page, "<div class=\"detail\" id=\"d{index}\" hidden></div>\n</article>");
 }
 
 /// Text for HTML, in content and in attributes.

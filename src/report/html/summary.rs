@@ -166,9 +166,9 @@ fn messages(messages: &[Message], sources: &SourceSet, page: &mut String) {
     }
     let worst = messages.iter().map(|message| message.severity).max().unwrap_or(Severity::Note);
     let open = if worst > Severity::Note { " open" } else { "" };
-    let _ = write!(
+    let _ = writeln!(
         page,
-        "<details class=\"messages\"{open}><summary>{} of the reader</summary><ul>\n",
+        "<details class=\"messages\"{open}><summary>{} of the reader</summary><ul>",
         number(messages.len(), "message")
     );
     for message in messages {
