@@ -82,7 +82,7 @@ pub struct Scan {
     /// Print what is in force, and where each value comes from, as TOML; nothing is analysed
     #[arg(long)]
     pub show_settings: bool,
-    /// Write the findings to a file as well, or to standard output with `-`; FORMAT is json or sarif; may be repeated
+    /// Write the findings to a file as well, or to standard output with `-`; FORMAT is json, sarif, junit or evidence; may be repeated
     #[arg(long, value_name = "FORMAT:FILE", value_parser = output)]
     pub write: Vec<Output>,
     /// Fail only on findings that are not in this ledger (see `stillwire ledger write`) [default: the one in the settings, if any]
@@ -165,10 +165,13 @@ impl From<Level> for Severity {
 pub enum Format {
     Json,
     Sarif,
+    Junit,
+    Evidence,
 }
 
 /// The formats with their names.
-const FORMATS: [(&str, Format); 2] = [("json", Format::Json), ("sarif", Format::Sarif)];
+const FORMATS: [(&str, Format); 4] =
+    [("json", Format::Json), ("sarif", Format::Sarif), ("junit", Format::Junit), ("evidence", Format::Evidence)];
 
 /// One `--write`.
 #[derive(Clone, PartialEq, Eq, Debug)]

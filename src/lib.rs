@@ -16,6 +16,7 @@ pub mod elaborate;
 pub mod graph;
 pub mod hazard;
 mod ids;
+pub mod input;
 pub mod replay;
 pub mod report;
 pub mod rules;
@@ -277,6 +278,7 @@ fn front_end(
     let mut loaded =
         source::load(&request.source, environment, &|done, total| progress(Stage::Reading { done, total }))?;
     require_input(request, &loaded)?;
+    loaded.inputs.extend(cells.inputs.iter().cloned());
     progress(Stage::Elaborating);
     let units = std::mem::take(&mut loaded.units);
     let given = request.given.iter().map(|(name, value)| source::given(name, value, &mut loaded.sources));
@@ -365,7 +367,7 @@ fn report_on_input<'a>(
     design: &elaborate::Design,
     diagnostics: impl IntoIterator<Item = &'a Diagnostic>,
 ) -> Report {
-    let mut report = Report { tops: design.tops.clone(), ..Report::default() };
+    let mut report = Report { tops: design.tops.clone(), inputs: loaded.inputs.clone(), ..Report::default() };
     report.tops.sort();
     let mut coverage = Coverage {
         files_read: loaded.files_read,

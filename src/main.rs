@@ -11,7 +11,8 @@ use clap::Parser;
 use indicatif::{ProgressBar, ProgressDrawTarget, ProgressStyle};
 use stillwire::cli::{self, Cli, Command, Format, Input, Output};
 use stillwire::cure::Cure;
-use stillwire::report::{json, sarif, text};
+use stillwire::input::{self, InputRole};
+use stillwire::report::{evidence, json, junit, sarif, text};
 use stillwire::rules::{self, Severity};
 use stillwire::settings::{self, Settings};
 use stillwire::signoff::ledger::{self, Ledger};
@@ -28,10 +29,7 @@ const INCOMPLETE: u8 = 3;
 fn main() -> ExitCode {
     let result = match Cli::parse().command {
         Command::Scan(arguments) => scan(&arguments),
-        Command::Explain { rule } => {
-            print(rules::page(rule));
-            Ok(0)
-        }
+        Command::Explain { rule } => print(rules::page(rule)).map(|()| 0),
         Command::Flatten(arguments) => flatten(&arguments),
         Command::Ledger(command) => ledger(&command),
         Command::Replay(arguments) => replay(&arguments),
@@ -47,7 +45,7 @@ fn main() -> ExitCode {
 fn scan(arguments: &cli::Scan) -> Result<u8, PathError> {
     let settings = read_settings(&arguments.input)?;
     if arguments.show_settings {
-        print(&settings::show(&settings, &command_line(arguments)));
+        print(&settings::show(&settings, &command_line(arguments)))?;
         return Ok(0);
     }
     check_outputs(&arguments.write)?;
@@ -55,7 +53,9 @@ fn scan(arguments: &cli::Scan) -> Result<u8, PathError> {
     let ledger = ledger.map(|file| Ok((file, read_ledger(file)?))).transpose()?;
     let request = request(&arguments.input, &settings);
     let mut scan = with_progress(|progress| stillwire::scan(&request, &environment, progress))?;
-    if let Some((file, ledger)) = ledger {
+    let mut inputs: Vec<input::Input> = settings.input.iter().cloned().collect();
+    if let Some((file, (ledger, read))) = ledger {
+        inputs.push(read);
         let used = ledger.apply(&file.to_string_lossy(), &mut scan.report.findings);
         scan.report.ledger = Some(used);
     }
@@ -66,22 +66,49 @@ fn scan(arguments: &cli::Scan) -> Result<u8, PathError> {
     let is_terminal = if to_stderr { std::io::stderr().is_terminal() } else { std::io::stdout().is_terminal() };
     let style = text::Style { show, gate, colours: is_terminal && colours_wanted() };
     let rendered = text::render(&scan.report, &scan.sources, &style);
-    if to_stderr {
+    // A text that cannot be written must not keep the other outputs from being written.
+    let printed = if to_stderr {
         complain(&rendered);
+        Ok(())
     } else {
-        print(&rendered);
-    }
+        print(&rendered)
+    };
     for output in &arguments.write {
         let rendered = match output.format {
             Format::Json => json::render(&scan.report, &scan.sources),
             Format::Sarif => sarif::render(&scan.report, &scan.sources),
+            Format::Junit => junit::render(&scan.report, &scan.sources, gate),
+            Format::Evidence => {
+                let run = evidence::Run {
+                    command: command_given(),
+                    settings: settings::show(&settings, &command_line(arguments)),
+                    parameters: request.given.iter().cloned().collect(),
+                    inputs: inputs.clone(),
+                };
+                evidence::render(&scan.report, &scan.sources, gate, &run)
+            }
         };
         match &output.file {
-            None => print(&rendered),
+            None => print(&rendered)?,
             Some(file) => write_beside_and_rename(file, rendered.as_bytes())?,
         }
     }
+    printed?;
     Ok(scan.report.exit_code(gate))
+}
+
+/// The arguments of this run but the number of threads, which changes nothing.
+fn command_given() -> Vec<String> {
+    let mut given = Vec::new();
+    let mut arguments = std::env::args_os().skip(1).map(|argument| argument.to_string_lossy().into_owned());
+    while let Some(argument) = arguments.next() {
+        if argument == "--threads" {
+            arguments.next();
+        } else if !argument.starts_with("--threads=") {
+            given.push(argument);
+        }
+    }
+    given
 }
 
 /// Writes or prunes the ledger. An incomplete run records what it found, and drops nothing: what was not read is not gone.
@@ -92,7 +119,7 @@ fn ledger(command: &cli::Ledger) -> Result<u8, PathError> {
     check_output(place)?;
     let known = match command {
         cli::Ledger::Write(_) => None,
-        cli::Ledger::Prune(_) => Some(read_ledger(place)?),
+        cli::Ledger::Prune(_) => Some(read_ledger(place)?.0),
     };
     let request = request(&arguments.input, &settings);
     let mut scan = with_progress(|progress| stillwire::scan(&request, &environment, progress))?;
@@ -112,7 +139,7 @@ fn ledger(command: &cli::Ledger) -> Result<u8, PathError> {
         Some(known) => (known, format!("{file}: nothing dropped, because the run is incomplete\n")),
     };
     write_beside_and_rename(place, ledger.render().as_bytes())?;
-    print(&said);
+    print(&said)?;
     if !complete {
         complain("warning: part of the input was not analysed; run `stillwire scan` to see what\n");
     }
@@ -123,15 +150,16 @@ fn entries(count: usize) -> String {
     if count == 1 { "1 entry".to_string() } else { format!("{count} entries") }
 }
 
-fn read_ledger(file: &Path) -> Result<Ledger, PathError> {
+fn read_ledger(file: &Path) -> Result<(Ledger, input::Input), PathError> {
     let text = std::fs::read_to_string(file).map_err(|error| {
         let message = format!("the ledger `{}` cannot be read: {error}", file.display());
         PathError::new(message, "write it with `stillwire ledger write`, or check the path")
     })?;
-    Ledger::parse(&text).map_err(|problem| {
+    let ledger = Ledger::parse(&text).map_err(|problem| {
         let message = format!("the ledger `{}` is damaged: {problem}", file.display());
         PathError::new(message, "take it from version control, or write it anew with `stillwire ledger write`")
-    })
+    })?;
+    Ok((ledger, input::Input::read(InputRole::Ledger, file, text.as_bytes())))
 }
 
 fn flatten(arguments: &cli::Flatten) -> Result<u8, PathError> {
@@ -148,7 +176,7 @@ fn flatten(arguments: &cli::Flatten) -> Result<u8, PathError> {
         };
         complain(&text::render(&report, &sources, &style));
     }
-    print(&verilog);
+    print(&verilog)?;
     Ok(if report.complete() { 0 } else { INCOMPLETE })
 }
 
@@ -165,7 +193,7 @@ fn replay(arguments: &cli::Replay) -> Result<u8, PathError> {
     for (name, contents) in &replay.files {
         write_beside_and_rename(&folder.join(name), contents)?;
     }
-    print(&replay.summary);
+    print(&replay.summary)?;
     Ok(if replay.complete { 0 } else { INCOMPLETE })
 }
 
@@ -179,11 +207,11 @@ fn cure(arguments: &cli::Cure) -> Result<u8, PathError> {
     match cure {
         Cure::Patch { diff, proof } => {
             complain(&format!("{proof}\n"));
-            print(&diff);
+            print(&diff)?;
             Ok(0)
         }
         Cure::Terms { text } => {
-            print(&text);
+            print(&text)?;
             Ok(0)
         }
         Cure::Withheld { reason } => {
@@ -337,10 +365,16 @@ fn write_beside_and_rename(file: &Path, contents: &[u8]) -> Result<(), PathError
     })
 }
 
-/// A reader that goes away early (`| head`) is no error of ours.
-fn print(text: &str) {
+/// A reader that goes away early (`| head`) is no error of ours; a full disk behind the standard output is one.
+fn print(text: &str) -> Result<(), PathError> {
     let mut stdout = std::io::stdout().lock();
-    let _ = stdout.write_all(text.as_bytes()).and_then(|()| stdout.flush());
+    match stdout.write_all(text.as_bytes()).and_then(|()| stdout.flush()) {
+        Err(error) if error.kind() != std::io::ErrorKind::BrokenPipe => {
+            let message = format!("the standard output cannot be written: {error}");
+            Err(PathError::new(message, "what was written of it is not whole; check the space where it goes"))
+        }
+        _ => Ok(()),
+    }
 }
 
 fn complain(text: &str) {

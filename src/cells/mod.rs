@@ -13,6 +13,7 @@ mod model;
 use std::collections::BTreeMap;
 use std::path::PathBuf;
 
+use crate::input::{Input, InputRole};
 use crate::source::PathError;
 
 pub use declared::{Declaration, DeclaredPin, PinName, PinRole, Role};
@@ -28,6 +29,8 @@ pub struct Cells {
     /// Declared pins of modules without text.
     pins: BTreeMap<String, Declaration>,
     libraries: BTreeMap<String, Known>,
+    /// The files of the libraries.
+    pub inputs: Vec<Input>,
 }
 
 impl Cells {
@@ -42,6 +45,7 @@ impl Cells {
                 let message = format!("the library `{}` cannot be read: {error}", path.display());
                 PathError::new(message, "check the path")
             })?;
+            cells.inputs.push(Input::read(InputRole::Library, path, &bytes));
             for (name, known) in read_library(&String::from_utf8_lossy(&bytes), path)? {
                 cells.libraries.entry(name).or_insert(known);
             }

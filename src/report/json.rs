@@ -49,7 +49,7 @@ struct Document<'a> {
 }
 
 #[derive(Serialize)]
-struct LedgerOut<'a> {
+pub(super) struct LedgerOut<'a> {
     file: &'a str,
     remaining: usize,
     gone: &'a [ledger::Entry],
@@ -57,7 +57,7 @@ struct LedgerOut<'a> {
 
 /// 1-based; columns count characters; the end is the first character behind the place.
 #[derive(Serialize)]
-struct Place {
+pub(super) struct Place {
     file: String,
     line: usize,
     column: usize,
@@ -66,7 +66,7 @@ struct Place {
 }
 
 impl Place {
-    fn new(sources: &SourceSet, span: Span) -> Self {
+    pub(super) fn new(sources: &SourceSet, span: Span) -> Self {
         let position = sources.position(span);
         Self {
             file: position.file,
@@ -158,14 +158,14 @@ struct LoopOut<'a> {
 }
 
 #[derive(Serialize)]
-struct SignoffOut<'a> {
+pub(super) struct SignoffOut<'a> {
     reason: &'a str,
     by: Option<&'a str>,
     until: Option<&'a str>,
 }
 
 #[derive(Serialize)]
-struct MessageOut<'a> {
+pub(super) struct MessageOut<'a> {
     severity: &'static str,
     text: &'a str,
     at: Option<Place>,
@@ -174,7 +174,7 @@ struct MessageOut<'a> {
 }
 
 #[derive(Serialize)]
-struct CoverageOut<'a> {
+pub(super) struct CoverageOut<'a> {
     files: Files,
     modules: Modules,
     unsupported: Vec<UnsupportedOut<'a>>,
@@ -306,16 +306,17 @@ fn finding_out<'a>(finding: &'a Finding, place: &impl Fn(Option<Span>) -> Option
         notes: &finding.notes,
         fingerprint: &finding.fingerprint,
         family: &finding.family,
-        signoff: finding.signoff.as_ref().map(|signoff| SignoffOut {
-            reason: &signoff.reason,
-            by: signoff.by.as_deref(),
-            until: signoff.until.as_deref(),
-        }),
+        signoff: signoff_out(finding),
         known: finding.known,
     }
 }
 
-fn ledger_out(used: &ledger::Use) -> LedgerOut<'_> {
+pub(super) fn signoff_out(finding: &Finding) -> Option<SignoffOut<'_>> {
+    let signoff = finding.signoff.as_ref()?;
+    Some(SignoffOut { reason: &signoff.reason, by: signoff.by.as_deref(), until: signoff.until.as_deref() })
+}
+
+pub(super) fn ledger_out(used: &ledger::Use) -> LedgerOut<'_> {
     LedgerOut { file: &used.file, remaining: used.remaining, gone: &used.gone }
 }
 
@@ -323,7 +324,7 @@ fn values(values: &[(String, bool)]) -> BTreeMap<&str, u8> {
     values.iter().map(|(name, value)| (name.as_str(), u8::from(*value))).collect()
 }
 
-fn message_out<'a>(message: &'a Message, place: &impl Fn(Option<Span>) -> Option<Place>) -> MessageOut<'a> {
+pub(super) fn message_out<'a>(message: &'a Message, place: &impl Fn(Option<Span>) -> Option<Place>) -> MessageOut<'a> {
     MessageOut {
         severity: message.severity.name(),
         text: &message.text,
@@ -333,7 +334,7 @@ fn message_out<'a>(message: &'a Message, place: &impl Fn(Option<Span>) -> Option
     }
 }
 
-fn coverage_out<'a>(report: &'a Report, place: &impl Fn(Option<Span>) -> Option<Place>) -> CoverageOut<'a> {
+pub(super) fn coverage_out<'a>(report: &'a Report, place: &impl Fn(Option<Span>) -> Option<Place>) -> CoverageOut<'a> {
     let coverage = &report.coverage;
     let count = |kind: PinKind| {
         let NetCount { nets, clean, hazard, undecided } = coverage.pins.get(kind);

@@ -2,17 +2,21 @@
 //! [`Report`], already sorted; the formats only render. They return strings: nothing here prints, looks at a terminal or
 //! reads the environment. The same report always renders to the same bytes.
 
+pub mod evidence;
 pub mod flatten;
 mod held;
 pub mod json;
+pub mod junit;
 pub mod sarif;
 mod summary;
 pub mod text;
+mod told;
 mod waveform;
 
 use std::collections::BTreeMap;
 
 use crate::assumptions::Listed;
+use crate::input::Input;
 use crate::rules::{CellCount, CheckedNet, Finding, PinCoverage, Rule, Severity, Verdict};
 use crate::signoff::ledger;
 use crate::source::Span;
@@ -22,6 +26,8 @@ use crate::source::Span;
 pub struct Report {
     /// Names of the analysed top modules, sorted.
     pub tops: Vec<String>,
+    /// Every file that was read.
+    pub inputs: Vec<Input>,
     /// Sorted by [`crate::rules::sort`]; accepted findings are among them.
     pub findings: Vec<Finding>,
     /// Every net that was asked about, once per role, clean ones included.

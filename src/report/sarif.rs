@@ -3,9 +3,10 @@
 //! undecided question is a result of kind `open`; an incomplete analysis is an invocation that did not succeed. The
 //! witness and the cover are in the message, because that is what viewers show.
 
+use serde::{Serialize, Serializer};
 use serde_json::{Value, json};
 
-use super::{Message, Report};
+use super::{Message, Report, told};
 use crate::rules::{self, Finding, Rule, Severity, TraceStep, Verdict};
 use crate::source::{SourceSet, Span};
 
@@ -14,24 +15,56 @@ const SCHEMA: &str = "https://docs.oasis-open.org/sarif/sarif/v2.1.0/errata01/os
 /// The report as a SARIF log with one run, indented, with a final line end.
 pub fn render(report: &Report, sources: &SourceSet) -> String {
     let places = Places { sources };
-    let run = json!({
-        "tool": { "driver": {
-            "name": "Stillwire",
-            "version": env!("CARGO_PKG_VERSION"),
-            "semanticVersion": env!("CARGO_PKG_VERSION"),
-            "rules": Rule::ALL.map(rule).to_vec(),
-        }},
-        "columnKind": "unicodeCodePoints",
-        "invocations": [{
-            "executionSuccessful": report.complete(),
-            "toolExecutionNotifications": notifications(report, &places),
-        }],
-        "results": report.findings.iter().map(|finding| result(report, finding, &places)).collect::<Vec<_>>(),
+    let driver = json!({
+        "name": "Stillwire",
+        "version": env!("CARGO_PKG_VERSION"),
+        "semanticVersion": env!("CARGO_PKG_VERSION"),
+        "rules": Rule::ALL.map(rule).to_vec(),
     });
-    let log = json!({ "$schema": SCHEMA, "version": "2.1.0", "runs": [run] });
+    let invocation = json!({
+        "executionSuccessful": report.complete(),
+        "toolExecutionNotifications": notifications(report, &places),
+    });
+    let results = Results { report, places: &places };
+    let run = Run { tool: Tool { driver }, column_kind: "unicodeCodePoints", invocations: [invocation], results };
+    let log = Log { schema: SCHEMA, version: "2.1.0", runs: [run] };
     let mut text = serde_json::to_string_pretty(&log).unwrap_or_default();
     text.push('\n');
     text
+}
+
+#[derive(Serialize)]
+struct Log<'a> {
+    #[serde(rename = "$schema")]
+    schema: &'static str,
+    version: &'static str,
+    runs: [Run<'a>; 1],
+}
+
+#[derive(Serialize)]
+#[serde(rename_all = "camelCase")]
+struct Run<'a> {
+    tool: Tool,
+    column_kind: &'static str,
+    invocations: [Value; 1],
+    results: Results<'a>,
+}
+
+#[derive(Serialize)]
+struct Tool {
+    driver: Value,
+}
+
+/// The findings, each made when it is written: thousands of them as trees would take much more memory than as text.
+struct Results<'a> {
+    report: &'a Report,
+    places: &'a Places<'a>,
+}
+
+impl Serialize for Results<'_> {
+    fn serialize<S: Serializer>(&self, serializer: S) -> Result<S::Ok, S::Error> {
+        serializer.collect_seq(self.report.findings.iter().map(|finding| result(self.report, finding, self.places)))
+    }
 }
 
 /// A rule with its page as help.
@@ -64,7 +97,7 @@ fn result(report: &Report, finding: &Finding, places: &Places<'_>) -> Value {
         "kind": if open { "open" } else { "fail" },
         // A level says how bad a failure is; the standard wants none where there is no failure.
         "level": if open { "none" } else { level(finding.severity) },
-        "message": { "text": message(finding) },
+        "message": { "text": told::message(finding) },
         "locations": [location],
         "partialFingerprints": { "fingerprint/v1": finding.fingerprint, "family/v1": finding.family },
         "suppressions": suppressions(report, finding),
@@ -94,36 +127,11 @@ fn flow(finding: &Finding, way: Option<u8>, places: &Places<'_>) -> Option<Value
     (locations.len() > 1).then(flow)
 }
 
-/// The finding's sentence, its first witness, and what to do.
-fn message(finding: &Finding) -> String {
-    let mut text = format!("{}.", finding.message);
-    if let Some(lead) = finding.hazards.first() {
-        text.push_str(&format!("\n\n{}\n\neffect: {}", super::waveform::render(lead), lead.harm));
-    }
-    if let Some(cover) = &finding.cover {
-        let word = if cover.proven { "proven" } else { "not proven" };
-        text.push_str(&format!("\n\ncover ({word}): {}", cover.verilog));
-    }
-    for note in &finding.notes {
-        text.push_str(&format!("\n\n{note}"));
-    }
-    text
-}
-
 fn suppressions(report: &Report, finding: &Finding) -> Value {
-    let mut all = Vec::new();
-    if let Some(signoff) = &finding.signoff {
-        let by = signoff.by.as_ref().map_or(String::new(), |by| format!(", by {by}"));
-        let until = signoff.until.as_ref().map_or(String::new(), |until| format!(", until {until}"));
-        let justification = format!("{}{by}{until}", signoff.reason);
-        all.push(json!({ "kind": "inSource", "status": "accepted", "justification": justification }));
-    }
-    if finding.known {
-        let file = report.ledger.as_ref().map_or("", |ledger| &ledger.file);
-        let justification = format!("known when Stillwire was adopted: ledger {file}");
-        all.push(json!({ "kind": "external", "status": "accepted", "justification": justification }));
-    }
-    all.into()
+    let suppression = |kind: &str, justification: String| json!({ "kind": kind, "status": "accepted", "justification": justification });
+    let signoff = told::signoff(finding).map(|reason| suppression("inSource", reason));
+    let known = told::known(report, finding).map(|reason| suppression("external", reason));
+    signoff.into_iter().chain(known).collect::<Vec<_>>().into()
 }
 
 /// What the front end says, and that a run was incomplete.

@@ -12,7 +12,7 @@ use crate::signoff::ledger;
 /// The most names listed of black boxes, benches and the like.
 const SHOWN_NAMES: usize = 8;
 
-const CAUTION: &str =
+pub(super) const CAUTION: &str =
     "Delays, metastability, analogue effects and timing sign-off are out of scope; the responsible engineer decides.";
 
 pub(super) fn render(report: &Report, style: &Style) -> String {

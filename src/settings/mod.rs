@@ -16,6 +16,7 @@ use toml::de::{DeTable, DeValue};
 
 use crate::assumptions;
 use crate::cells;
+use crate::input::{Input, InputRole};
 use crate::rules::{Rule, Severity};
 use crate::source::PathError;
 use entry::{Entry, Text, entries};
@@ -68,6 +69,8 @@ pub struct Settings {
     pub folder: PathBuf,
     /// The file itself; `None` when there is none.
     pub file: Option<PathBuf>,
+    /// The same by its content.
+    pub input: Option<Input>,
     /// The line of each value: by key, and by position where the key has several.
     pub lines: BTreeMap<(&'static str, usize), usize>,
 }
@@ -94,7 +97,8 @@ pub fn read(path: &Path) -> Result<Settings, PathError> {
         let message = format!("the settings `{}` cannot be read: {error}", path.display());
         PathError::new(message, "check the path, or leave `--settings` away")
     })?;
-    parse(&text, path)
+    let settings = parse(&text, path)?;
+    Ok(Settings { input: Some(Input::read(InputRole::Settings, path, text.as_bytes())), ..settings })
 }
 
 /// The settings that a text holds; `path` is what messages call it, and paths in it are relative to its folder.

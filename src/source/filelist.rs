@@ -10,6 +10,7 @@
 use std::path::{Path, PathBuf};
 
 use super::PathError;
+use crate::input::{Input, InputRole};
 
 /// Looks up an environment variable.
 pub type Environment<'a> = &'a (dyn Fn(&str) -> Option<String> + Sync);
@@ -26,6 +27,8 @@ pub struct FileList {
     pub library_suffixes: Vec<String>,
     /// Options that mean nothing here, each with its list and line.
     pub ignored: Vec<String>,
+    /// The lists themselves, nested ones included.
+    pub inputs: Vec<Input>,
 }
 
 /// Lists that include lists deeper than this include each other.
@@ -55,6 +58,7 @@ impl FileList {
             let message = format!("the file list `{}` cannot be read: {error}", path.display());
             PathError::new(message, "check its path; `-f` wants a text file with one source per line")
         })?;
+        self.inputs.push(Input::read(InputRole::List, path, &bytes));
         let text = String::from_utf8_lossy(&bytes);
         let list = List { path, own_folder_first, environment };
         let mut words = list.words(&text)?.into_iter();

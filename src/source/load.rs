@@ -23,6 +23,7 @@ use super::regions::Region;
 use super::texts::Texts;
 use super::{FileId, SourceSet, Span, parse};
 use crate::diagnostic::{Diagnostic, Kind};
+use crate::input::Input;
 use crate::syntax::{ast, externs};
 
 /// What to read.
@@ -57,6 +58,8 @@ pub struct Loaded {
     pub files_failed: usize,
     /// Knows where missing things are.
     pub nearby: Nearby,
+    /// Every file that was read, file lists included.
+    pub inputs: Vec<Input>,
 }
 
 /// Reads everything that `request` names. `environment` answers the variables of file lists.
@@ -118,7 +121,7 @@ pub fn load(request: &Request, environment: Environment<'_>, progress: Progress<
     reader.parse(planned);
     reader.add_libraries(&list, &mut list_macros);
     reader.note_duplicates();
-    Ok(reader.finish())
+    Ok(reader.finish(list.inputs))
 }
 
 fn macros<'a>(defines: impl IntoIterator<Item = &'a (String, Option<String>)>) -> Macros {
@@ -267,7 +270,8 @@ impl Reader<'_> {
         }
     }
 
-    fn finish(mut self) -> Loaded {
+    fn finish(mut self, mut inputs: Vec<Input>) -> Loaded {
+        inputs.append(&mut self.texts.inputs);
         let mut diagnostics = std::mem::take(&mut self.texts.diagnostics);
         diagnostics.append(&mut self.diagnostics);
         let failing: BTreeSet<FileId> = self.failures.iter().map(|(file, _)| *file).collect();
@@ -287,6 +291,7 @@ impl Reader<'_> {
         self.nearby.hint(&mut diagnostics);
         self.texts.set.sort_macro_uses();
         Loaded {
+            inputs,
             files_read: self.texts.set.files.len(),
             files_failed: self.failed.len(),
             nearby: self.nearby,

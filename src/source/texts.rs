@@ -11,6 +11,7 @@ use std::sync::Arc;
 use super::regions::{self, Region};
 use super::{FileId, SourceSet, Span};
 use crate::diagnostic::{Diagnostic, Kind};
+use crate::input::{Input, InputRole};
 
 /// A file above this size is no RTL; spans are 32 bits wide.
 const MAX_FILE_BYTES: u64 = 256 << 20;
@@ -19,6 +20,8 @@ const MAX_FILE_BYTES: u64 = 256 << 20;
 #[derive(Default)]
 pub struct Texts {
     pub set: SourceSet,
+    /// One per file, in the order of reading.
+    pub inputs: Vec<Input>,
     /// Text of each file with the switched-off regions blanked.
     blanked: Vec<Arc<str>>,
     pub regions: Vec<Region>,
@@ -69,6 +72,7 @@ impl Texts {
         let bytes = given.map_or_else(|| read_bytes(path), |(_, text)| Ok(text.clone().into_bytes()));
         let (text, problem) = match bytes {
             Ok(bytes) => {
+                self.inputs.push(Input::read(InputRole::Source, path, &bytes));
                 let text = decode(bytes);
                 let problem = text.find('\0').map(|at| {
                     let message = format!("`{}` contains a NUL byte, so it is no Verilog text", path.display());
@@ -77,6 +81,7 @@ impl Texts {
                 (text, problem)
             }
             Err(error) => {
+                self.inputs.push(Input::unreadable(InputRole::Source, path));
                 let message = format!("`{}` cannot be read: {error}", path.display());
                 (String::new(), Some((0, message, "check that it is a readable text file")))
             }

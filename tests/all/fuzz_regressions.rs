@@ -28,7 +28,7 @@ fn run(path: &Path) -> Result<bool, String> {
     let text = String::from_utf8_lossy(&output.stderr);
     match output.status.code() {
         Some(0..=3) if !text.contains("panicked") => {
-            let json = serde_json::from_slice::<serde_json::Value>(&output.stdout);
+            let json = crate::outputs::kept("json", &output.stdout);
             Ok(json.is_ok_and(|json| json["complete"] == true))
         }
         _ => Err(format!("{}: {}: {}", path.display(), output.status, text.chars().take(1000).collect::<String>())),

@@ -114,7 +114,7 @@ fn run(text: &str) -> Result<(String, Value), String> {
     let flat = program("flatten", &["--top", "host"]);
     let scan = program("scan", &["--top", "host", "--show", "note", "--write", "json:-"]);
     let said = String::from_utf8_lossy(&scan.stderr).into_owned();
-    let json = serde_json::from_slice(&scan.stdout).map_err(|error| format!("{error}: {said}"))?;
+    let json = crate::outputs::kept("json", &scan.stdout).map_err(|error| format!("{error}: {said}"))?;
     if flat.status.code() != Some(0) || scan.status.code() != Some(0) {
         return Err(said);
     }

@@ -37,7 +37,7 @@ pub fn scan_in(environment: &[(&str, &Path)], paths: &[&Path], arguments: &[&str
         .expect("the program starts");
     let text = String::from_utf8_lossy(&output.stderr).into_owned();
     let exit = output.status.code().unwrap_or_else(|| panic!("ended by a signal: {text}"));
-    match serde_json::from_slice(&output.stdout) {
+    match crate::outputs::kept("json", &output.stdout) {
         Ok(json) => Scan { exit, json, text },
         Err(error) => panic!("exit {exit}, no JSON ({error}): {text}"),
     }

@@ -11,7 +11,6 @@ use std::path::{Path, PathBuf};
 use std::process::Command;
 
 use rayon::prelude::*;
-use serde_json::Value;
 
 use crate::outside::data;
 
@@ -226,7 +225,7 @@ fn check(path: &Path) -> (i32, Option<String>) {
         };
         return (exit, (!is_said).then(|| format!("nothing was analysed: {text}")));
     }
-    let Ok(json) = serde_json::from_slice::<Value>(&output.stdout) else {
+    let Ok(json) = crate::outputs::kept("json", &output.stdout) else {
         return (exit, Some(format!("no JSON: {text}")));
     };
     let complete = json["complete"] == true;

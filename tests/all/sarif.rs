@@ -5,6 +5,8 @@ use std::process::Command;
 
 use serde_json::Value;
 
+use crate::outputs::outputs;
+
 fn fixtures() -> PathBuf {
     Path::new(env!("CARGO_MANIFEST_DIR")).join("fixtures")
 }
@@ -12,16 +14,8 @@ fn fixtures() -> PathBuf {
 /// A run's SARIF and findings.
 #[track_caller]
 fn scan(path: &Path, arguments: &[&str]) -> (Value, Value) {
-    let folder = tempfile::tempdir().expect("a folder");
-    let (sarif, json) = (folder.path().join("out.sarif"), folder.path().join("out.json"));
-    let mut command = Command::new(env!("CARGO_BIN_EXE_stillwire"));
-    command.arg("scan").arg(path).args(arguments);
-    command.args(["--write", &format!("sarif:{}", sarif.display()), "--write", &format!("json:{}", json.display())]);
-    let output = command.output().expect("the program starts");
-    let read =
-        |file: &Path| std::fs::read(file).unwrap_or_else(|_| panic!("{}", String::from_utf8_lossy(&output.stderr)));
-    let parse = |file: &Path| serde_json::from_slice(&read(file)).expect("JSON");
-    (parse(&sarif), parse(&json))
+    let run = outputs(path, arguments);
+    (run.sarif, run.json)
 }
 
 fn list(value: &Value) -> &[Value] {

@@ -46,7 +46,7 @@ impl Tree {
 
     pub fn json(&self, arguments: &[&str]) -> Value {
         let output = self.run(&[arguments, &["--write", "json:-"]].concat());
-        serde_json::from_slice(&output.stdout).expect("JSON")
+        crate::outputs::kept("json", &output.stdout).expect("JSON")
     }
 
     pub fn read(&self, name: &str) -> String {
