@@ -25,7 +25,6 @@ pub fn request(paths: Vec<PathBuf>, threads: usize) -> Request {
         today: jiff::civil::date(2026, 1, 1),
         drawn: false,
         threads,
-        drawn: false,
     }
 }
 

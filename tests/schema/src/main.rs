@@ -25,7 +25,9 @@ fn run() -> Result<ExitCode, String> {
     let schema = paths.next().ok_or("usage: check-schema SCHEMA PATH...")?;
     let folder = schema.parent().unwrap_or(Path::new("")).to_path_buf();
     let options = jsonschema::options().with_retriever(Beside { folder });
-    let validator = options.build(&read(&schema)?).map_err(|error| format!("the schema is wrong: {error}"))?;
+    let mut schema = read(&schema)?;
+    escape_patterns(&mut schema);
+    let validator = options.build(&schema).map_err(|error| format!("the schema is wrong: {error}"))?;
     let mut code = ExitCode::SUCCESS;
     for path in paths {
         if !path.is_dir() {
@@ -53,6 +55,33 @@ fn run() -> Result<ExitCode, String> {
         println!("{}: {valid} valid", path.display());
     }
     Ok(code)
+}
+
+/// A `]` outside of a class stands for itself in ECMA 262, which JSON Schema refers to (the schema of SARIF has one), but
+/// the validator takes it only escaped.
+fn escape_patterns(schema: &mut Value) {
+    match schema {
+        Value::Object(fields) => {
+            if let Some(Value::String(pattern)) = fields.get_mut("pattern") {
+                let (mut escaped, mut text) = (false, String::new());
+                let mut in_class = false;
+                for letter in pattern.chars() {
+                    match letter {
+                        '[' if !escaped => in_class = true,
+                        ']' if !escaped && !in_class => text.push('\\'),
+                        ']' if !escaped => in_class = false,
+                        _ => {}
+                    }
+                    escaped = letter == '\\' && !escaped;
+                    text.push(letter);
+                }
+                *pattern = text;
+            }
+            fields.values_mut().for_each(escape_patterns);
+        }
+        Value::Array(values) => values.iter_mut().for_each(escape_patterns),
+        _ => {}
+    }
 }
 
 /// What is wrong with a file.
