@@ -16,10 +16,19 @@ pub struct Options {
     pub ignore_operators: bool,
     /// Stop at the first witness of each kind per target instead of listing every source.
     pub one_per_kind: bool,
+    /// Ask what one source can show when it changes alone, and nothing about launches; see [`super::launch`].
+    pub single_changes: bool,
 }
 
 impl Default for Options {
     fn default() -> Self {
-        Self { conflicts: 10_000, exhaustive_sources: 16, patterns: 4096, ignore_operators: false, one_per_kind: false }
+        Self {
+            conflicts: 10_000,
+            exhaustive_sources: 16,
+            patterns: 4096,
+            ignore_operators: false,
+            one_per_kind: false,
+            single_changes: false,
+        }
     }
 }

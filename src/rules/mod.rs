@@ -93,16 +93,18 @@ pub fn run(
 
     let pin_roots = [&pins.controls, &pins.clocks, &pins.enables].into_iter().flat_map(|nets| nets.keys().copied());
     let roots: BTreeSet<NodeId> = pin_roots.chain(watched.iter().map(|&(_, root)| root)).collect();
-    let launched: Vec<NodeId> =
-        roots.iter().copied().filter(|&root| pins::can_glitch_in_a_launch(graph, root)).collect();
-    let launcher = Launcher::new(graph, &launched, assumptions, &listing);
+    let launched = roots.iter().copied().filter(|&root| pins::can_glitch_in_a_launch(graph, root));
+    let launched: Vec<NodeId> = if options.single_changes { Vec::new() } else { launched.collect() };
+    let launcher = (!options.single_changes).then(|| Launcher::new(graph, &launched, assumptions, &listing));
     let mut verdicts = decided(graph, roots.iter().copied(), &listing);
-    let refined: Vec<TargetVerdict> = launched
-        .par_iter()
-        .map(|&root| launcher.refine(verdicts.get(&root).cloned().unwrap_or(TargetVerdict::clean(root))))
-        .collect();
-    verdicts.extend(refined.into_iter().map(|verdict| (verdict.target, verdict)));
-    let pin_context = &Context { options: &listing, launcher: Some(&launcher), cache };
+    if let Some(launcher) = &launcher {
+        let refined: Vec<TargetVerdict> = launched
+            .par_iter()
+            .map(|&root| launcher.refine(verdicts.get(&root).cloned().unwrap_or(TargetVerdict::clean(root))))
+            .collect();
+        verdicts.extend(refined.into_iter().map(|verdict| (verdict.target, verdict)));
+    }
+    let pin_context = &Context { options: &listing, launcher: launcher.as_ref(), cache };
     let outside_context = &Context { options: &outside, launcher: None, cache };
     verdicts.extend(roots.into_iter().filter(|&root| pins::is_undriven(graph, root)).map(pins::undriven));
     let bits = outputs.iter().flat_map(|port| &graph.nets[port.net.index()].bits);

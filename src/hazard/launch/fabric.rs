@@ -62,8 +62,8 @@ pub(super) struct Fabric<'a> {
 }
 
 impl<'a> Fabric<'a> {
-    /// `targets` are what will be asked about, besides the pins of cells.
-    pub(super) fn new(graph: &Graph, targets: &[NodeId], assumptions: &'a Assumptions) -> Self {
+    /// `targets` are what will be asked about, besides the pins of cells; `calm` takes arithmetic as clean.
+    pub(super) fn new(graph: &Graph, targets: &[NodeId], assumptions: &'a Assumptions, calm: bool) -> Self {
         let mut nodes: BTreeSet<NodeId> = targets.iter().copied().collect();
         for cell in &graph.cells {
             let pin = match cell.kind {
@@ -76,7 +76,7 @@ impl<'a> Fabric<'a> {
         let groups = [&assumptions.one_hot, &assumptions.exclusive, &assumptions.one_bit];
         nodes.extend(groups.into_iter().flatten().flatten().chain(&assumptions.fixed));
         let nodes: Vec<NodeId> = nodes.into_iter().collect();
-        let cone = Cone::new(graph, &nodes, false);
+        let cone = Cone::new(graph, &nodes, calm);
         let places: BTreeMap<NodeId, Edge> = nodes.iter().copied().zip(cone.roots.iter().copied()).collect();
 
         let mut fabric = Self {

@@ -42,7 +42,7 @@ pub struct Launcher<'a> {
 impl<'a> Launcher<'a> {
     /// `targets` are those that will be asked about.
     pub fn new(graph: &Graph, targets: &[NodeId], assumptions: &'a Assumptions, options: &Options) -> Self {
-        Self { fabric: Fabric::new(graph, targets, assumptions), options: *options }
+        Self { fabric: Fabric::new(graph, targets, assumptions, options.ignore_operators), options: *options }
     }
 
     /// The verdict under events, from that on single changes with every pair listed. What is shown from some state is

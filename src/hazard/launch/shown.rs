@@ -26,7 +26,7 @@ pub fn shown(
     assumptions: &Assumptions,
     options: &Options,
 ) -> (Vec<Shown>, Vec<OpenLaunch>) {
-    let fabric = Fabric::new(graph, &[target], assumptions);
+    let fabric = Fabric::new(graph, &[target], assumptions, options.ignore_operators);
     let (mut found, mut open) = (Vec::new(), Vec::new());
     let Some(net) = fabric.place(target) else { return (found, open) };
     let target = Target::plain(net);
