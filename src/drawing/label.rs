@@ -2,7 +2,7 @@
 //! for. The full name always goes along.
 
 use super::{End, Shape, original};
-use crate::graph::{GateKind, NodeId, NodeKind, SourceKind};
+use crate::graph::{NodeId, NodeKind, SourceKind};
 use crate::rules::{Finding, PinKind, names};
 
 use super::logic::Logic;
@@ -61,16 +61,7 @@ pub(super) fn shape(logic: &Logic<'_>, node: NodeId) -> Shape {
         NodeKind::Source(SourceKind::Latch) => Shape::Latch,
         NodeKind::Source(SourceKind::BlackBox) => Shape::BlackBox,
         NodeKind::Source(SourceKind::Memory) => Shape::Memory,
-        NodeKind::Gate(gate) => match gate {
-            GateKind::Buf => Shape::Buf,
-            GateKind::Not => Shape::Not,
-            GateKind::And => Shape::And,
-            GateKind::Nand => Shape::Nand,
-            GateKind::Or => Shape::Or,
-            GateKind::Nor => Shape::Nor,
-            GateKind::Xor => Shape::Xor,
-            GateKind::Xnor => Shape::Xnor,
-        },
+        NodeKind::Gate(kind) => Shape::Gate(kind),
         NodeKind::Table(_) => Shape::Table,
         NodeKind::OpIn(_) | NodeKind::OpOut(_) => Shape::Operator,
     }

@@ -9,6 +9,7 @@ use std::collections::BTreeMap;
 
 use super::route::{self, Column};
 use super::{Drawing, End, Pin, Shape, Symbol, Way, Wire};
+use crate::graph::GateKind;
 
 /// Between the borders of two neighbours in a layer.
 const GAP: i32 = 18;
@@ -104,8 +105,8 @@ fn size(symbol: &mut Symbol) {
     let tall = (count * PITCH).max(2 * PITCH);
     let text = text_width(&symbol.label);
     (symbol.width, symbol.height) = match symbol.shape {
-        Shape::And | Shape::Nand | Shape::Or | Shape::Nor | Shape::Xor | Shape::Xnor => (46, tall),
-        Shape::Not | Shape::Buf => (32, 26),
+        Shape::Gate(GateKind::Not | GateKind::Buf) => (32, 26),
+        Shape::Gate(_) => (46, tall),
         Shape::Mux => (34, 3 * PITCH + 4),
         Shape::Table | Shape::Operator => (text + 20, tall),
         Shape::Gap => (text + 20, 26),
@@ -125,15 +126,7 @@ fn size(symbol: &mut Symbol) {
 fn reserve(symbol: &Symbol) -> i32 {
     match symbol.shape {
         Shape::End(_) => 0,
-        Shape::And
-        | Shape::Nand
-        | Shape::Or
-        | Shape::Nor
-        | Shape::Xor
-        | Shape::Xnor
-        | Shape::Not
-        | Shape::Buf
-        | Shape::Mux => GLYPH.max(text_width(&symbol.label) + 6),
+        Shape::Gate(_) | Shape::Mux => GLYPH.max(text_width(&symbol.label) + 6),
         _ => GLYPH,
     }
 }

@@ -15,7 +15,7 @@ use std::collections::BTreeMap;
 
 use rayon::prelude::*;
 
-use crate::graph::{Graph, InstanceId, NodeId};
+use crate::graph::{GateKind, Graph, InstanceId, NodeId};
 use crate::hazard::Wave;
 use crate::replay::Cut;
 use crate::rules::{Finding, Transition};
@@ -111,14 +111,7 @@ impl Way {
 /// What a symbol stands for.
 #[derive(Clone, Copy, PartialEq, Eq, PartialOrd, Ord, Hash, Debug)]
 pub enum Shape {
-    Buf,
-    Not,
-    And,
-    Nand,
-    Or,
-    Nor,
-    Xor,
-    Xnor,
+    Gate(GateKind),
     /// A two-way selector through which no race runs; pins are the value for 1, the value for 0, the select.
     Mux,
     /// A user-defined primitive.
@@ -149,14 +142,7 @@ impl Shape {
     /// The name in the output.
     pub fn name(self) -> &'static str {
         match self {
-            Shape::Buf => "buf",
-            Shape::Not => "not",
-            Shape::And => "and",
-            Shape::Nand => "nand",
-            Shape::Or => "or",
-            Shape::Nor => "nor",
-            Shape::Xor => "xor",
-            Shape::Xnor => "xnor",
+            Shape::Gate(kind) => kind.name(),
             Shape::Mux => "mux",
             Shape::Table => "table",
             Shape::Operator => "operator",

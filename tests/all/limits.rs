@@ -6,10 +6,11 @@ use std::path::Path;
 use std::process::{Command, Stdio};
 use std::time::{Duration, Instant};
 
-use stillwire::report::{Report, evidence, json, junit, sarif, text};
+use stillwire::Request;
+use stillwire::report::{Report, evidence, html, json, junit, sarif, text};
 use stillwire::rules::Severity;
 
-use crate::checked::library_scan;
+use crate::checked::request;
 use crate::outputs::kept;
 use crate::tree::Tree;
 
@@ -53,8 +54,11 @@ fn thread_seconds() -> f64 {
 #[test]
 fn ten_thousand_findings_are_whole_in_every_format_and_capped_in_the_text() {
     let tree = Tree::new(&[("t.v", HAZARD)]);
-    let scan = library_scan(&tree.path("t.v"), 1);
+    let asked = Request { drawn: true, ..request(vec![tree.path("t.v")], 1) };
+    let scan = stillwire::scan(&asked, &|_| None, &|_| {}).unwrap_or_else(|error| panic!("{error}"));
     let report = many(&scan.report);
+    let drawn = scan.exhibits.iter().find(|exhibit| exhibit.drawing.is_some()).expect("the reset is drawn");
+    let exhibits = vec![drawn.clone(); MANY];
     let timed = |what: &str, render: &dyn Fn() -> String| {
         let start = thread_seconds();
         let text = render();
@@ -76,6 +80,8 @@ fn ten_thousand_findings_are_whole_in_every_format_and_capped_in_the_text() {
     assert_eq!((list(&record, "/findings"), list(&record, "/nets")), (MANY, MANY));
     let junit = timed("junit", &|| junit::render(&report, sources, Severity::Error));
     assert_eq!(junit.matches("<failure ").count(), MANY);
+    let page = timed("html", &|| html::render(&report, &exhibits, sources, Severity::Error));
+    assert_eq!(page.matches("<article ").count(), MANY);
     let text = timed("text", &|| text::render(&report, sources, &text::Style::default()));
     assert!(text.lines().count() < 5_000, "{} lines", text.lines().count());
     assert!(text.contains("... and 9900 more findings like these, not shown here"), "{text}");

@@ -53,6 +53,14 @@ function outline(shape, x, right, m, half) {
   }
 }
 
+// From the border to the body, where no wire of a way does it.
+function stubs(group, symbol, to) {
+  const [x, y] = symbol.at;
+  symbol.pins.forEach((pin, index) => {
+    if (!symbol.led.has(index)) group.append(path(`M${x},${y + pin[0]} H${to}`, "stub"));
+  });
+}
+
 function gate(group, symbol) {
   const [x, y, width, height] = symbol.at;
   const m = y + height / 2;
@@ -60,7 +68,7 @@ function gate(group, symbol) {
   const right = x + width - (INVERTING.has(symbol.shape) ? 2 * BUBBLE : 0);
   const half = Math.min(height / 2 - 1, GATES.has(symbol.shape) ? 19 : 12);
   const heights = symbol.pins.map((pin) => y + pin[0]);
-  for (const at of heights) group.append(path(`M${x},${at} H${left + (GATES.has(symbol.shape) ? 8 : 1)}`, "stub"));
+  stubs(group, symbol, left + (GATES.has(symbol.shape) ? 8 : 1));
   // A gate with many pins is a body with a bar for the pins.
   if (heights.length && Math.max(...heights) - Math.min(...heights) > 2 * half) {
     group.append(path(`M${left},${Math.min(...heights) - 6} V${Math.max(...heights) + 6}`, "bar"));
@@ -83,7 +91,7 @@ function mux(group, symbol) {
   const [x, y, width, height] = symbol.at;
   const left = x + INSET;
   const right = x + width;
-  for (const pin of symbol.pins) group.append(path(`M${x},${y + pin[0]} H${left}`, "stub"));
+  stubs(group, symbol, left);
   group.append(path(`M${left},${y} L${right},${y + 11} V${y + height - 11} L${left},${y + height} Z`, "body"));
   ["1", "0", "S"].forEach((name, index) => {
     if (symbol.pins[index]) group.append(words(left + 4, y + symbol.pins[index][0] + 4, name, "inside"));
@@ -143,7 +151,7 @@ function box(group, symbol) {
     case "end-control":
     case "end-enable": {
       const left = x + INSET;
-      group.append(path(`M${x},${m} H${left}`, "stub"));
+      stubs(group, symbol, left);
       group.append(path(`M${left},${y} H${x + width} V${y + height} H${left} Z`, "body"));
       if (symbol.shape === "end-clock") group.append(path(`M${left},${m - 7} l10,7 l-10,7`, "line"));
       else group.append(words(left + 4, m + 4, symbol.shape === "end-enable" ? "E" : symbol.label[0].toUpperCase(), "kind"));
@@ -151,7 +159,7 @@ function box(group, symbol) {
     }
     default: {
       const left = x + INSET;
-      for (const pin of symbol.pins) group.append(path(`M${x},${y + pin[0]} H${left}`, "stub"));
+      stubs(group, symbol, left);
       group.append(svg("rect", { x: left, y, width: width - INSET, height, rx: 2, class: "body" }));
       return text(left + (width - INSET) / 2, "middle");
     }
@@ -191,14 +199,15 @@ function symbolGroup(symbol) {
   return group;
 }
 
-// A number in a circle at the first piece of each way that has room for it.
-function badge(wire) {
-  const [, , , way, points] = wire;
+// A number in a circle at the longest piece of a way.
+function badge(way, wires) {
   let best = null;
-  for (let index = 1; index < points.length; index++) {
-    const [[x0, y0], [x1, y1]] = [points[index - 1], points[index]];
-    const length = Math.abs(x1 - x0) + Math.abs(y1 - y0);
-    if (!best || length > best.length) best = { length, x: (x0 + x1) / 2, y: (y0 + y1) / 2 };
+  for (const { 4: points } of wires) {
+    for (let index = 1; index < points.length; index++) {
+      const [[x0, y0], [x1, y1]] = [points[index - 1], points[index]];
+      const length = Math.abs(x1 - x0) + Math.abs(y1 - y0);
+      if (!best || length > best.length) best = { length, x: (x0 + x1) / 2, y: (y0 + y1) / 2 };
+    }
   }
   const group = svg("g", { class: `badge-way way-${way}` });
   group.append(svg("circle", { cx: best.x, cy: best.y, r: 8 }), words(best.x, best.y + 4, way, "number", "middle"));
@@ -215,19 +224,27 @@ function draw(drawing) {
     "aria-label": drawing.story,
     class: "drawing",
   });
+  for (const symbol of drawing.symbols) symbol.led = new Set();
   const plain = drawing.wires.filter((wire) => !wire[3]);
   const ways = drawing.wires.filter((wire) => wire[3]);
   for (const wire of plain.concat(ways)) {
-    const line = wire[4].map(([x, y]) => `${x},${y}`).join(" ");
+    // The wire of a way runs up to the body, which covers its end; a bubble stands in between.
+    const pin = drawing.symbols[wire[1]].pins[wire[2]];
+    const corners = wire[4].slice();
+    const [endX, endY] = corners[corners.length - 1];
+    if (wire[3] && !pin[1]) {
+      const besideBody = Math.abs(pin[0] - drawing.symbols[wire[1]].at[3] / 2) > 17;
+      corners.push([endX + INSET + (besideBody ? 0 : 6), endY]);
+      drawing.symbols[wire[1]].led.add(wire[2]);
+    }
+    const line = corners.map(([x, y]) => `${x},${y}`).join(" ");
     picture.append(svg("polyline", { points: line, class: marked("wire", wire[3] ? [wire[3]] : []) }));
   }
   for (const [cx, cy] of drawing.dots) picture.append(svg("circle", { cx, cy, r: 2.6, class: "dot" }));
   for (const symbol of drawing.symbols) picture.append(symbolGroup(symbol));
-  const first = new Set();
-  for (const wire of ways) {
-    if (!["1", "2"].includes(wire[3]) || first.has(wire[3])) continue;
-    first.add(wire[3]);
-    picture.append(badge(wire));
+  for (const way of ["1", "2"]) {
+    const own = ways.filter((wire) => wire[3] === way);
+    if (own.length) picture.append(badge(way, own));
   }
   return picture;
 }

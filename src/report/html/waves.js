@@ -40,7 +40,7 @@ function waveTable(hazard) {
       row.append(cell);
       table.append(row);
     }
-    const row = el("tr", last ? "pin" : said.startsWith("holds") ? "held" : "moves");
+    const row = el("tr", last ? "pin" : /^(holds|is fed back)/.test(said) ? "held" : "moves");
     const head = el("th", "", name);
     head.scope = "row";
     const picture = svg("svg", { width: 160, height: 24, viewBox: "0 0 160 24", "aria-hidden": "true" });
