@@ -8,9 +8,32 @@
 //! shift by a constant) is wiring and no operator. Nothing here panics: a missing bit counts as 0.
 
 use crate::graph::{GateKind, GraphBuilder, NodeId, OperatorId, Site};
+use crate::syntax::ast::BinaryOp;
 
 /// The gates of one `**` with a variable exponent beyond which [`pow`] gives up.
 const POWER_GATES: usize = 1 << 20;
+
+/// Gates of an adder, and of what is made of one, for each bit.
+pub const GATES_BY_BIT: usize = 8;
+
+/// About how many gates an operator takes on such operands.
+pub fn gates(builder: &GraphBuilder, op: BinaryOp, a: &[NodeId], b: &[NodeId]) -> usize {
+    let row = GATES_BY_BIT.saturating_mul(a.len());
+    let variable = b.iter().filter(|&&bit| builder.as_constant(bit).is_none()).count();
+    match op {
+        BinaryOp::Mul => {
+            let set = b.iter().filter(|&&bit| builder.as_constant(bit) != Some(false)).count();
+            row.saturating_mul(set)
+        }
+        BinaryOp::Div | BinaryOp::Mod => row.saturating_mul(a.len()),
+        BinaryOp::Shl | BinaryOp::ArithShl | BinaryOp::Shr | BinaryOp::ArithShr => {
+            let rows = variable.min(a.len().max(1).ilog2() as usize + 1);
+            a.len().saturating_mul(4).saturating_mul(rows)
+        }
+        // A power has a limit of its own.
+        _ => row,
+    }
+}
 
 /// The operator under construction: where its gates go and what marks its border.
 struct Blaster<'a> {

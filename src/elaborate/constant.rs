@@ -228,6 +228,7 @@ impl<'a> Elaborator<'a> {
         self.steps += 1;
         if self.steps & 63 == 0 {
             self.check_size(0, span)?;
+            self.afford(0, 0, span)?;
         }
         if self.steps > STEP_LIMIT {
             return Err(wrong(format!("a loop or function that does not end within {STEP_LIMIT} steps"), span));

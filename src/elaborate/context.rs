@@ -8,6 +8,7 @@ use std::rc::Rc;
 use super::bind::Bind;
 use super::bits::{Bit, Guarded};
 use super::drivers::{Driver, Pending};
+use super::effort::Effort;
 use super::environment::Environment;
 use super::hierarchy::Work;
 use super::library::Library;
@@ -126,6 +127,8 @@ pub(super) struct Elaborator<'a> {
     pub exhausted: bool,
     /// Statements and loop passes executed since the last process or constant began.
     pub steps: usize,
+    /// How much the text may still make.
+    pub effort: Effort,
     pub call_depth: usize,
     /// What jumps can leave, the innermost last.
     pub points: Vec<Point>,
@@ -169,6 +172,7 @@ impl<'a> Elaborator<'a> {
         let library = Library::new(units, &mut diagnostics);
         let tops = library.tops(&request.tops, &mut diagnostics);
         let mut this = Self::new(library, diagnostics, request);
+        this.effort = Effort::new(units);
         this.check_given(&request.given, &tops.tops);
         for unit in units {
             let outcome = this.declare_all(this.unit, &unit.items, Storage::Package);
@@ -262,6 +266,7 @@ impl<'a> Elaborator<'a> {
             depth: 0,
             exhausted: false,
             steps: 0,
+            effort: Effort::default(),
             call_depth: 0,
             points: Vec::new(),
             results: Vec::new(),

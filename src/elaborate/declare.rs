@@ -332,6 +332,7 @@ impl<'a> Elaborator<'a> {
             return Err(wrong(message, span));
         }
         self.check_size(ty.width, span)?;
+        self.draw_net(ty.width, span)?;
         let suffixes = ty.suffixes();
         let scalar = suffixes.first().is_some_and(String::is_empty);
         let label = self.unique_label(instance, label);

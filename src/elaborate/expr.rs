@@ -159,6 +159,7 @@ impl<'a> Elaborator<'a> {
 
     /// The bits in a context of `width` bits whose sign is `signed`.
     pub fn eval(&mut self, expr: &'a Expr, width: usize, signed: bool) -> Outcome<Vec<Bit>> {
+        self.afford(width, width, expr.span)?;
         let site = self.site(expr.span);
         let own = match &expr.kind {
             ExprKind::Number(literal) => match Value::from_literal_in(literal, width) {
@@ -360,6 +361,9 @@ impl<'a> Elaborator<'a> {
         }
         let a = self.nodes(a, site);
         let b = self.nodes(b, site);
+        if let Some(span) = site.span {
+            self.afford(0, blast::gates(&self.builder, op, &a, &b), span)?;
+        }
         let builder = &mut self.builder;
         let result = match op {
             BinaryOp::Add => blast::add(builder, &a, &b, site),
@@ -388,6 +392,7 @@ impl<'a> Elaborator<'a> {
         let (width, signed) = (left_width.max(right_width), left_signed && right_signed);
         let a = self.eval(left, width, signed)?;
         let b = self.eval(right, width, signed)?;
+        self.afford(0, blast::GATES_BY_BIT.saturating_mul(width), left.span)?;
         Ok(self.compare(op, &a, &b, signed, site))
     }
 

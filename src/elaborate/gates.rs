@@ -18,6 +18,7 @@ impl<'a> Elaborator<'a> {
         self.environment = Environment::default();
         self.steps = 0;
         self.points.clear();
+        self.begin_piece(work);
         match work {
             &Work::Assign { scope, target, value } => {
                 self.enter(scope);
@@ -57,6 +58,7 @@ impl<'a> Elaborator<'a> {
             Work::BlackBox(black_box) => self.black_box(black_box),
             Work::Cell(cell) => self.cell(cell),
         }
+        self.end_piece();
         self.check_side_effects();
     }
 

@@ -17,6 +17,7 @@ mod context;
 mod controls;
 mod declare;
 mod drivers;
+mod effort;
 mod environment;
 mod expr;
 mod gates;

@@ -158,7 +158,7 @@ impl<'a> Elaborator<'a> {
             Ok(exits) => return Ok(exits),
             Err(diagnostic) => diagnostic,
         };
-        if self.strict || self.steps > super::constant::STEP_LIMIT {
+        if self.strict || self.is_spent() {
             return Err(diagnostic);
         }
         self.report(*diagnostic);
@@ -630,7 +630,7 @@ impl<'a> Elaborator<'a> {
         };
         let value = match value {
             Ok(value) => value,
-            Err(diagnostic) if self.strict || self.steps > super::constant::STEP_LIMIT => return Err(diagnostic),
+            Err(diagnostic) if self.strict || self.is_spent() => return Err(diagnostic),
             Err(diagnostic) => {
                 self.report(*diagnostic);
                 (0..width).map(|_| Bit::Node(self.builder.source(SourceKind::BlackBox, site))).collect()

@@ -478,3 +478,40 @@ fn a_variable_of_a_package_is_not_taken_for_an_unknown() {
     );
     assert_eq!(scan.json["coverage"]["pins"]["reset"]["undecided"], 1, "{}", scan.text);
 }
+
+/// The values of a text that asks for far more gates than its length suggests become opaque, with one reason.
+#[track_caller]
+fn too_much(text: &str) {
+    let elaborated = run(text, &[]);
+    let said = "what is written here takes more gates and nets than a design with so little text is given";
+    assert!(elaborated.diagnostics.iter().any(|found| found.message == said), "{:?}", elaborated.diagnostics);
+    assert!(elaborated.diagnostics.iter().all(|found| found.kind != Kind::Note), "{:?}", elaborated.diagnostics);
+    assert!(elaborated.diagnostics.len() < 4, "one piece of text, one reason: {:?}", elaborated.diagnostics);
+}
+
+#[test]
+fn a_few_characters_cannot_ask_for_millions_of_gates() {
+    too_much("module m(input [65535:0] a, b, output [65535:0] y); assign y = a * b; endmodule");
+    too_much("module m(input [8191:0] a, b, output [8191:0] y); assign y = a / b; endmodule");
+    too_much("module m(input [262143:0] a, b, output y); assign y = a < b; endmodule");
+    too_much("module m(input [262143:0] a, input [17:0] b, output [262143:0] y); assign y = a >> b; endmodule");
+    too_much(
+        "module m(input clk, input [4095:0] a, input [11:0] b, output reg [4095:0] y); integer i; \
+         always @(posedge clk) for (i = 0; i < 4096; i = i + 1) y[i] <= a[b + i]; endmodule",
+    );
+    too_much(
+        "module m(output y); function int f(int n); logic [1048575:0] v; v = 1; \
+         for (int i = 0; i < 100000; i++) v = v + n; return v[31:0]; endfunction localparam P = f(3); assign y = P; \
+         endmodule",
+    );
+}
+
+/// Copies of a piece of text count less: large designs are made of them.
+#[test]
+fn copies_may_make_more_than_their_text_suggests() {
+    let text = "module part(input [127:0] a, b, output [127:0] y); assign y = a * b; endmodule \
+         module m(input [127:0] a [36], b, output [127:0] y [36]); \
+         for (genvar i = 0; i < 36; i++) part p(a[i], b, y[i]); endmodule";
+    let elaborated = clean(text);
+    assert!(elaborated.graph().len() > 1_700_000, "{}", elaborated.graph().len());
+}
