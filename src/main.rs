@@ -55,6 +55,14 @@ fn scan(arguments: &cli::Scan) -> Result<u8, PathError> {
     let mut request = request(&arguments.input, &settings);
     request.drawn = arguments.write.iter().any(|output| output.format == Format::Html);
     let mut scan = with_progress(|progress| stillwire::scan(&request, &environment, progress))?;
+    if let Some((folder, problem)) =
+        arguments.input.cache.as_ref().zip(request.source.cache.as_ref().and_then(Cache::problem))
+    {
+        complain(&format!(
+            "warning: the cache `{}` cannot be written: {problem}; the next run will be no faster\n",
+            folder.display()
+        ));
+    }
     let mut inputs: Vec<input::Input> = settings.input.iter().cloned().collect();
     if let Some((file, (ledger, read))) = ledger {
         inputs.push(read);

@@ -14,8 +14,8 @@ mod prune;
 use std::fs;
 use std::io::Write;
 use std::path::{Path, PathBuf};
-use std::sync::Arc;
 use std::sync::atomic::{AtomicU64, Ordering};
+use std::sync::{Arc, OnceLock};
 use std::time::SystemTime;
 
 use serde::Serialize;
@@ -41,6 +41,8 @@ struct Shared {
     next: AtomicU64,
     hits: AtomicU64,
     misses: AtomicU64,
+    /// Why something could not be written.
+    problem: OnceLock<String>,
 }
 
 /// How often a run found what it asked for.
@@ -60,6 +62,7 @@ impl Cache {
             next: counter(),
             hits: counter(),
             misses: counter(),
+            problem: OnceLock::new(),
         };
         Self { shared: Arc::new(shared) }
     }
@@ -96,7 +99,8 @@ impl Cache {
             Ok(()) => {
                 self.shared.written.fetch_add(bytes.len() as u64, Ordering::Relaxed);
             }
-            Err(_) => {
+            Err(error) => {
+                let _ = self.shared.problem.set(error.to_string());
                 let _ = fs::remove_file(&beside);
             }
         }
@@ -107,6 +111,11 @@ impl Cache {
         if self.shared.written.load(Ordering::Relaxed) > 0 {
             prune::prune(&self.shared.folder, limit);
         }
+    }
+
+    /// Why something could not be written, if that happened.
+    pub fn problem(&self) -> Option<&str> {
+        self.shared.problem.get().map(String::as_str)
     }
 
     pub fn used(&self) -> Use {

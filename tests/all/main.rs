@@ -3,6 +3,7 @@
 mod adopt;
 mod assumptions;
 mod browser;
+mod cache;
 mod catalogue;
 mod catalogue_explored;
 mod cells;
