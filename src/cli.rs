@@ -40,10 +40,13 @@ pub enum Command {
     Replay(Replay),
     /// Print the change that removes a finding as a unified diff, proven before it is printed.
     Cure(Cure),
+    /// Serve an editor by the Language Server Protocol over standard input and output; without a path the open folder is
+    /// scanned.
+    Serve(Serve),
 }
 
 /// What is read, and how.
-#[derive(Args, Debug)]
+#[derive(Args, Clone, Debug)]
 pub struct Input {
     /// Files and folders of Verilog and SystemVerilog [default: those in the settings, or the current folder]
     #[arg(value_name = "PATH")]
@@ -76,6 +79,12 @@ pub struct Input {
     /// Number of threads [default: one per core]
     #[arg(long, value_name = "N", value_parser = clap::value_parser!(u16).range(1..=1024))]
     pub threads: Option<u16>,
+}
+
+#[derive(Args, Debug)]
+pub struct Serve {
+    #[command(flatten)]
+    pub input: Input,
 }
 
 #[derive(Args, Debug)]

@@ -23,6 +23,7 @@ mod remembered;
 pub mod replay;
 pub mod report;
 pub mod rules;
+pub mod serve;
 pub mod settings;
 pub mod signoff;
 pub mod source;

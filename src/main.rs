@@ -4,11 +4,12 @@
 use std::io::{IsTerminal, Write};
 use std::path::{Path, PathBuf};
 use std::process::ExitCode;
-use std::sync::mpsc;
+use std::sync::{Arc, mpsc};
 use std::time::Duration;
 
 use clap::Parser;
 use indicatif::{ProgressBar, ProgressDrawTarget, ProgressStyle};
+use lsp_server::Connection;
 use stillwire::cache::Cache;
 use stillwire::cli::{self, Cli, Command, Format, Input, Output};
 use stillwire::cure::Cure;
@@ -35,6 +36,7 @@ fn main() -> ExitCode {
         Command::Ledger(command) => ledger(&command),
         Command::Replay(arguments) => replay(&arguments),
         Command::Cure(arguments) => cure(&arguments),
+        Command::Serve(arguments) => serve(arguments.input),
     };
     let code = result.unwrap_or_else(|error| {
         complain(&format!("error: {}\n  help: {}\n", error.message, error.help));
@@ -216,7 +218,7 @@ fn cure(arguments: &cli::Cure) -> Result<u8, PathError> {
     let fingerprint = &arguments.fingerprint;
     let cure = with_progress(|progress| stillwire::cure(&request, fingerprint, &folder, &environment, progress))?;
     match cure {
-        Cure::Patch { diff, proof } => {
+        Cure::Patch { diff, proof, .. } => {
             complain(&format!("{proof}\n"));
             print(&diff)?;
             Ok(0)
@@ -230,6 +232,31 @@ fn cure(arguments: &cli::Cure) -> Result<u8, PathError> {
             Ok(FOUND)
         }
     }
+}
+
+/// Standard input and output belong to the protocol. The settings are read anew for each scan.
+fn serve(input: Input) -> Result<u8, PathError> {
+    let current = std::env::current_dir().map_err(|error| {
+        PathError::new(format!("the current folder is gone: {error}"), "start in a folder that exists")
+    })?;
+    let prepare = move |root: &Path| {
+        let mut input = input.clone();
+        let named = !input.paths.is_empty() || !input.list.is_empty();
+        if !named {
+            input.paths.push(root.to_path_buf());
+        }
+        let settings = read_settings(&input)?;
+        if !named && !(settings.paths.is_empty() && settings.lists.is_empty()) {
+            input.paths.clear();
+        }
+        Ok(request(&input, &settings))
+    };
+    let (connection, threads) = Connection::stdio();
+    let in_order = stillwire::serve::serve(&connection, &current, environment, Arc::new(prepare));
+    drop(connection);
+    // What was answered last is still on its way.
+    let written = threads.join().is_ok();
+    Ok(if in_order && written { 0 } else { FOUND })
 }
 
 /// The settings that hold: those named, else those found upward from the first path.

@@ -21,12 +21,21 @@ const CONTEXT: usize = 3;
 /// What can be done about a finding.
 #[derive(Clone, PartialEq, Eq, Debug)]
 pub enum Cure {
-    /// The diff, and what was proven about it.
-    Patch { diff: String, proof: String },
+    /// The diff, what was proven about it, and the same as whole texts.
+    Patch { diff: String, proof: String, change: Box<Change> },
     /// No statement can be changed in place: the terms, with the reason.
     Terms { text: String },
     /// A change was made and did not hold what it promised.
     Withheld { reason: String },
+}
+
+/// A file before and after.
+#[derive(Clone, PartialEq, Eq, Debug)]
+pub struct Change {
+    /// As it was named when it was read.
+    pub file: PathBuf,
+    pub before: String,
+    pub after: String,
 }
 
 /// A changed file that waits for its proof.
@@ -122,7 +131,9 @@ pub(crate) fn judge(
         before.len(),
         after.len()
     );
-    Cure::Patch { diff: diff(proposal, folder), proof }
+    let change =
+        Change { file: proposal.file.clone(), before: proposal.original.clone(), after: proposal.text.clone() };
+    Cure::Patch { diff: diff(proposal, folder), proof, change: Box::new(change) }
 }
 
 /// The hazards of a finding. An output lists one source of several for each kind.

@@ -9,7 +9,7 @@ const WIDEST_BINARY: usize = 8;
 
 /// One held signal: a net, or consecutive bits of a vector.
 #[derive(Clone, PartialEq, Eq, Debug)]
-pub(super) struct Held {
+pub(crate) struct Held {
     /// `top.a`, `top.a[3]`, `top.a[7:4]`.
     pub name: String,
     /// The highest index first.
@@ -36,7 +36,7 @@ impl Held {
 }
 
 /// All signals that hold still, by name and with the higher bits of a vector first.
-pub(super) fn held(hazard: &Hazard) -> Vec<Held> {
+pub(crate) fn held(hazard: &Hazard) -> Vec<Held> {
     let mut bits: Vec<(&str, Option<u64>, bool)> = (hazard.before.iter())
         .filter(|(name, _)| !hazard.changes.contains(name))
         .map(|(name, value)| {

@@ -4,7 +4,7 @@
 
 pub mod evidence;
 pub mod flatten;
-mod held;
+pub(crate) mod held;
 pub mod html;
 pub mod json;
 pub mod junit;
