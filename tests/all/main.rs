@@ -58,6 +58,7 @@ mod robustness;
 mod rule_pages;
 mod sarif;
 mod schemas;
+mod serve;
 mod settings;
 mod signoff;
 mod simulator;
