@@ -246,7 +246,7 @@ fn serve(input: Input) -> Result<u8, PathError> {
             input.paths.push(root.to_path_buf());
         }
         let settings = read_settings(&input)?;
-        if !named && !(settings.paths.is_empty() && settings.lists.is_empty()) {
+        if !named && (!settings.paths.is_empty() || !settings.lists.is_empty()) {
             input.paths.clear();
         }
         Ok(request(&input, &settings))

@@ -200,7 +200,7 @@ fn changes_of_other_files_are_seen() {
         including.clone()
     });
     seen("one more file", root, &including, || {
-        write(&rtl.join("another.v"), "module another(input a, b, output y); assign y = a ? b : ~b; endmodule\n");
+        write(&rtl.join("another.v"), "module another(input a, b, c, output y); assign y = a ? b : c; endmodule\n");
         including.clone()
     });
     seen("a renamed file", root, &including, || {
