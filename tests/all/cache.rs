@@ -4,7 +4,6 @@
 //!
 //! That the cache was asked and had the answer is asserted too: a cache that never hits would pass everything else.
 
-use std::collections::BTreeMap;
 use std::path::{Path, PathBuf};
 use std::process::{Command, Stdio};
 
@@ -12,23 +11,15 @@ use jiff::civil::{Date, date};
 use stillwire::cache::{Cache, Key, Use};
 use stillwire::report::{json, sarif, text};
 use stillwire::rules::{Rule, Severity};
-use stillwire::{Request, assumptions, cells, settings, source};
+use stillwire::{Request, assumptions, cells, settings};
+
+use crate::checked;
 
 const TODAY: Date = date(2026, 12, 1);
 
 fn request(paths: &[&Path]) -> Request {
-    Request {
-        source: source::Request { paths: paths.iter().map(|path| path.to_path_buf()).collect(), ..Default::default() },
-        tops: Vec::new(),
-        given: Vec::new(),
-        libraries: Vec::new(),
-        cells: Vec::new(),
-        assumptions: Vec::new(),
-        severities: BTreeMap::new(),
-        today: TODAY,
-        drawn: false,
-        threads: 0,
-    }
+    let paths = paths.iter().map(|path| path.to_path_buf()).collect();
+    Request { today: TODAY, ..checked::request(paths, 0) }
 }
 
 /// Everything a run writes, or why it refuses to run.

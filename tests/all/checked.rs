@@ -5,17 +5,13 @@ use std::collections::{BTreeMap, BTreeSet};
 use std::path::{Path, PathBuf};
 
 use stillwire::rules::{NetState, PinKind};
-use stillwire::source::{self, Exclude};
+use stillwire::source;
 use stillwire::{Request, Scan};
 
 /// A request to the library for these paths and nothing else.
 pub fn request(paths: Vec<PathBuf>, threads: usize) -> Request {
     Request {
-        source: source::Request {
-            paths,
-            exclude: Exclude { root: PathBuf::new(), patterns: Vec::new() },
-            ..source::Request::default()
-        },
+        source: source::Request { paths, ..source::Request::default() },
         tops: Vec::new(),
         given: Vec::new(),
         libraries: Vec::new(),

@@ -1,28 +1,16 @@
 //! Ports as IEEE 1800-2017 clause 23.2.2 wants them: each listed once, each with one direction, none declared without
 //! being listed. What breaks this is reported and never called complete; what is unusual but legal is read.
 
-use std::collections::BTreeMap;
+use stillwire::Scan;
 
-use stillwire::{Request, Scan, source};
+use crate::checked::request;
 
 /// The flattened netlist of a text, and the scan without hazards that comes with it.
 fn flatten(text: &str) -> (String, Scan) {
     let folder = tempfile::tempdir().expect("a temporary folder");
     let file = folder.path().join("t.sv");
     std::fs::write(&file, text).expect("written");
-    let request = Request {
-        source: source::Request { paths: vec![file], ..source::Request::default() },
-        tops: Vec::new(),
-        given: Vec::new(),
-        libraries: Vec::new(),
-        cells: Vec::new(),
-        assumptions: Vec::new(),
-        severities: BTreeMap::new(),
-        today: jiff::civil::date(2026, 1, 1),
-        drawn: false,
-        threads: 1,
-    };
-    stillwire::flatten(&request, None, &|_| None, &|_| {}).expect("something to analyse")
+    stillwire::flatten(&request(vec![file], 1), None, &|_| None, &|_| {}).expect("something to analyse")
 }
 
 /// Reads a text that is incomplete for one reason, which is `message`.
