@@ -11,11 +11,11 @@ use clap::Parser;
 use indicatif::{ProgressBar, ProgressDrawTarget, ProgressStyle};
 use lsp_server::Connection;
 use stillwire::cache::Cache;
-use stillwire::cli::{self, Cli, Command, Format, Input, Output};
+use stillwire::cli::{self, Cli, Command, Format, Input, Output, manual};
 use stillwire::cure::Cure;
 use stillwire::input::{self, InputRole};
-use stillwire::report::{evidence, html, json, junit, sarif, text};
-use stillwire::rules::{self, Severity};
+use stillwire::report::{evidence, html, json, junit, page, sarif, text};
+use stillwire::rules::{self, Rule, Severity};
 use stillwire::settings::{self, Settings};
 use stillwire::signoff::ledger::{self, Ledger};
 use stillwire::source::{self, Exclude, PathError};
@@ -31,18 +31,30 @@ const INCOMPLETE: u8 = 3;
 fn main() -> ExitCode {
     let result = match Cli::parse().command {
         Command::Scan(arguments) => scan(&arguments),
-        Command::Explain { rule } => print(rules::page(rule)).map(|()| 0),
+        Command::Explain { rule } => explain(rule).map(|()| 0),
         Command::Flatten(arguments) => flatten(&arguments),
         Command::Ledger(command) => ledger(&command),
         Command::Replay(arguments) => replay(&arguments),
         Command::Cure(arguments) => cure(&arguments),
         Command::Serve(arguments) => serve(arguments.input),
+        Command::Completions { shell } => print(&manual::completions(shell)).map(|()| 0),
+        Command::Manual { to } => manual_pages(to.as_deref()).map(|()| 0),
     };
     let code = result.unwrap_or_else(|error| {
         complain(&format!("error: {}\n  help: {}\n", error.message, error.help));
         USAGE
     });
     ExitCode::from(code)
+}
+
+/// Laid out on a terminal, otherwise Markdown as it is, for other programs and for files.
+fn explain(rule: Rule) -> Result<(), PathError> {
+    let markdown = rules::page(rule);
+    if !std::io::stdout().is_terminal() {
+        return print(markdown);
+    }
+    let columns = terminal_size::terminal_size_of(std::io::stdout()).map_or(80, |(width, _)| usize::from(width.0));
+    print(&page::render(markdown, &page::Look { columns, colours: colours_wanted() }))
 }
 
 fn scan(arguments: &cli::Scan) -> Result<u8, PathError> {
@@ -199,10 +211,7 @@ fn replay(arguments: &cli::Replay) -> Result<u8, PathError> {
     let fingerprint = &arguments.fingerprint;
     let replay = with_progress(|progress| stillwire::replay(&request, fingerprint, &environment, progress))?;
     let folder = &arguments.to;
-    std::fs::create_dir_all(folder).map_err(|error| {
-        let message = format!("the folder `{}` cannot be made: {error}", folder.display());
-        PathError::new(message, "give another folder to --to")
-    })?;
+    make_folder(folder)?;
     for (name, contents) in &replay.files {
         write_beside_and_rename(&folder.join(name), contents)?;
     }
@@ -257,6 +266,21 @@ fn serve(input: Input) -> Result<u8, PathError> {
     // What was answered last is still on its way.
     let written = threads.join().is_ok();
     Ok(if in_order && written { 0 } else { FOUND })
+}
+
+/// The page of the program for a reader such as `man -l -`, or all pages as files.
+fn manual_pages(folder: Option<&Path>) -> Result<(), PathError> {
+    let pages = manual::pages();
+    let Some(folder) = folder else { return pages.first().map_or(Ok(()), |page| print(&page.text)) };
+    make_folder(folder)?;
+    pages.iter().try_for_each(|page| write_beside_and_rename(&folder.join(&page.file), page.text.as_bytes()))
+}
+
+fn make_folder(folder: &Path) -> Result<(), PathError> {
+    std::fs::create_dir_all(folder).map_err(|error| {
+        let message = format!("the folder `{}` cannot be made: {error}", folder.display());
+        PathError::new(message, "give another folder to --to")
+    })
 }
 
 /// The settings that hold: those named, else those found upward from the first path.

@@ -8,6 +8,7 @@ pub(crate) mod held;
 pub mod html;
 pub mod json;
 pub mod junit;
+pub mod page;
 pub mod sarif;
 mod shown;
 mod summary;

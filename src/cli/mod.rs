@@ -1,9 +1,14 @@
 //! The command line. Its words are fixed by the design: other people's scripts depend on them. This file turns arguments
 //! into data and knows nothing of what happens then.
 
+pub mod exit;
+pub mod manual;
+
 use std::path::PathBuf;
 
-use clap::{Args, Parser, Subcommand, ValueEnum};
+use clap::builder::PossibleValue;
+use clap::{Args, Parser, Subcommand, ValueEnum, ValueHint};
+use clap_complete::Shell;
 
 use crate::rules::{Rule, Severity};
 use crate::source::define;
@@ -11,11 +16,7 @@ use crate::source::define;
 /// Finds, before synthesis and with proof, the wires of an RTL design that must hold still and can glitch.
 #[derive(Parser, Debug)]
 #[command(name = "stillwire", version, arg_required_else_help = true)]
-#[command(after_help = "Exit codes of scan:\n  \
-    0  nothing at or above the gate, and the analysis is complete\n  \
-    1  findings at or above the gate\n  \
-    2  wrong usage, settings or paths; nothing was analysed\n  \
-    3  nothing to fail on, but part of the input could not be analysed")]
+#[command(after_help = exit::help("scan"))]
 pub struct Cli {
     #[command(subcommand)]
     pub command: Command,
@@ -24,25 +25,43 @@ pub struct Cli {
 #[derive(Subcommand, Debug)]
 pub enum Command {
     /// Analyse files and folders, and report every net that must hold still and can glitch.
+    #[command(after_help = exit::help("scan"))]
     Scan(Scan),
     /// Print the page of a rule: what it finds, why it matters, how to cure it.
+    #[command(after_help = exit::help("explain"))]
     Explain {
-        /// The rule's name, as the findings print it.
-        #[arg(value_parser = rule)]
+        /// The rule's name, as the findings print it
         rule: Rule,
     },
     /// Keep the file of the findings that were known when the tool was adopted; `scan --ledger` fails only on others.
     #[command(subcommand)]
     Ledger(Ledger),
     /// Write the gate graph, or the fan-in of one net, as structural Verilog on standard output.
+    #[command(after_help = exit::help("flatten"))]
     Flatten(Flatten),
     /// Write test benches that show the hazards of a finding in any simulator, and their waveforms.
+    #[command(after_help = exit::help("replay"))]
     Replay(Replay),
     /// Print the change that removes a finding as a unified diff, proven before it is printed.
+    #[command(after_help = exit::help("cure"))]
     Cure(Cure),
     /// Serve an editor by the Language Server Protocol over standard input and output; without a path the open folder is
     /// scanned.
+    #[command(after_help = exit::help("serve"))]
     Serve(Serve),
+    /// Print what makes a shell complete the commands and options of stillwire.
+    #[command(after_help = exit::help("completions"))]
+    Completions {
+        /// The shell that is to read it
+        shell: Shell,
+    },
+    /// Print the manual page, or write the pages of all commands as files.
+    #[command(after_help = exit::help("manual"))]
+    Manual {
+        /// The folder for one page per command (stillwire-scan.1, ...); it is made if it does not exist
+        #[arg(long, value_name = "DIR", value_hint = ValueHint::DirPath)]
+        to: Option<PathBuf>,
+    },
 }
 
 /// What is read, and how.
@@ -59,7 +78,7 @@ pub struct Input {
     #[arg(long, value_name = "NAME=VALUE", value_parser = parameter_value)]
     pub set: Vec<(String, String)>,
     /// A folder to look for included files in; may be repeated
-    #[arg(short = 'I', value_name = "DIR")]
+    #[arg(short = 'I', value_name = "DIR", value_hint = ValueHint::DirPath)]
     pub include: Vec<PathBuf>,
     /// Define a macro; without a value it is 1
     #[arg(short = 'D', value_name = "NAME[=VALUE]", value_parser = macro_definition)]
@@ -74,7 +93,7 @@ pub struct Input {
     #[arg(long, value_name = "FILE")]
     pub settings: Option<PathBuf>,
     /// Remember here what this run works out, and use what earlier runs did; never changes what is reported
-    #[arg(long, value_name = "DIR", value_parser = cache_folder)]
+    #[arg(long, value_name = "DIR", value_parser = cache_folder, value_hint = ValueHint::DirPath)]
     pub cache: Option<PathBuf>,
     /// Number of threads [default: one per core]
     #[arg(long, value_name = "N", value_parser = clap::value_parser!(u16).range(1..=1024))]
@@ -111,8 +130,10 @@ pub struct Scan {
 #[derive(Subcommand, Debug)]
 pub enum Ledger {
     /// Record today's findings, all but those that are signed off.
+    #[command(after_help = exit::help("ledger write"))]
     Write(LedgerRun),
     /// Drop the entries whose finding is gone; nothing is added.
+    #[command(after_help = exit::help("ledger prune"))]
     Prune(LedgerRun),
 }
 
@@ -142,7 +163,7 @@ pub struct Replay {
     #[command(flatten)]
     pub input: Input,
     /// The folder for the test benches (.v) and waveforms (.vcd); it is made if it does not exist
-    #[arg(long, value_name = "DIR")]
+    #[arg(long, value_name = "DIR", value_hint = ValueHint::DirPath)]
     pub to: PathBuf,
 }
 
@@ -169,6 +190,17 @@ impl From<Level> for Severity {
             Level::Warning => Severity::Warning,
             Level::Note => Severity::Note,
         }
+    }
+}
+
+/// By its name, so that help, errors and completions list the rules.
+impl ValueEnum for Rule {
+    fn value_variants<'a>() -> &'a [Rule] {
+        &Rule::ALL
+    }
+
+    fn to_possible_value(&self) -> Option<PossibleValue> {
+        Some(PossibleValue::new(self.name()))
     }
 }
 
@@ -226,13 +258,6 @@ fn fingerprint(text: &str) -> Result<String, String> {
     } else {
         Err("a fingerprint is made of hexadecimal digits, as scan prints it".to_string())
     }
-}
-
-fn rule(text: &str) -> Result<Rule, String> {
-    Rule::from_name(text).ok_or_else(|| {
-        let names: Vec<&str> = Rule::ALL.iter().map(|rule| rule.name()).collect();
-        format!("there is no such rule; the rules are {}", names.join(", "))
-    })
 }
 
 fn parameter_value(text: &str) -> Result<(String, String), String> {
