@@ -53,6 +53,7 @@ mod random_files;
 mod random_launches;
 mod random_modules;
 mod reading;
+mod recipes;
 mod registers;
 mod replay;
 mod report;
