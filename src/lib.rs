@@ -435,7 +435,12 @@ fn report_on_input<'a>(
     design: &elaborate::Design,
     diagnostics: impl IntoIterator<Item = &'a Diagnostic>,
 ) -> Report {
-    let mut report = Report { tops: design.tops.clone(), inputs: loaded.inputs.clone(), ..Report::default() };
+    let mut report = Report {
+        tops: design.tops.clone(),
+        parameters: design.parameters.clone(),
+        inputs: loaded.inputs.clone(),
+        ..Report::default()
+    };
     report.tops.sort();
     let mut coverage = Coverage {
         files_read: loaded.files_read,

@@ -264,8 +264,11 @@ fn serve(input: Input) -> Result<u8, PathError> {
     let in_order = stillwire::serve::serve(&connection, &current, environment, Arc::new(prepare));
     drop(connection);
     // What was answered last is still on its way.
-    let written = threads.join().is_ok();
-    Ok(if in_order && written { 0 } else { FOUND })
+    let written = threads.join();
+    if let Err(error) = &written {
+        complain(&format!("error: the session with the editor broke off: {error}\n"));
+    }
+    Ok(if in_order && written.is_ok() { 0 } else { FOUND })
 }
 
 /// The page of the program for a reader such as `man -l -`, or all pages as files.

@@ -191,6 +191,7 @@ impl<'a> Elaborator<'a> {
         this.report_left_out();
         this.make_cells();
         this.resolve_drivers();
+        let parameters = this.parameters_in_force();
         let mut diagnostics = this.diagnostics;
         let mut seen = HashSet::new();
         diagnostics.retain(|diagnostic| seen.insert(diagnostic.clone()));
@@ -198,6 +199,7 @@ impl<'a> Elaborator<'a> {
         let design = Design {
             graph: this.builder.freeze(),
             tops: tops.tops,
+            parameters,
             modules_elaborated: this.modules_elaborated.difference(&failed).count(),
             modules_failed: failed.len(),
             benches_left_out: tops.benches,

@@ -3,19 +3,21 @@
 //! is checked more strictly than an override in the text: nobody meant a value that the parameter cannot hold.
 //!
 //! A mistake here is one of usage, not of the design: nothing is analysed then.
+//!
+//! At the end all values that hold are listed, whoever set them: they are what the verdicts are about.
 
-use std::collections::BTreeSet;
+use std::collections::{BTreeMap, BTreeSet};
 use std::rc::Rc;
 
 use super::context::{Elaborator, Outcome, wrong};
 use super::hierarchy::Overrides;
-use super::scope::{Constant, ScopeId, is_typed};
+use super::scope::{Constant, ScopeId, Symbol, is_typed};
 use super::types::{Shape, Type};
 use super::value::{Logic, Value};
 use crate::diagnostic::Diagnostic;
 use crate::source::Given;
 use crate::spelling::nearest;
-use crate::syntax::ast::{Expr, ExprKind, ItemKind, Module, Param, ParamKind};
+use crate::syntax::ast::{DataTypeKind, Expr, ExprKind, ItemKind, Module, Param, ParamKind};
 
 /// A mistake in what the user set.
 #[derive(Clone, PartialEq, Eq, Debug)]
@@ -94,6 +96,33 @@ impl<'a> Elaborator<'a> {
         }
     }
 
+    /// All parameters of each top with the values that hold, local ones included. One that is used nowhere and cannot be
+    /// worked out is left out.
+    pub fn parameters_in_force(&mut self) -> ParametersInForce {
+        let mut all = ParametersInForce::new();
+        for (top, scope) in self.tops.clone() {
+            let module = self.library.modules.get(top.as_str()).copied();
+            let declared: Vec<&Param> = module.into_iter().flat_map(parameters).map(|(param, _)| param).collect();
+            let value = |param: &&Param| Some((param.name.name.clone(), self.value_in_force(scope, param)?));
+            all.insert(top, declared.iter().filter_map(value).collect());
+        }
+        all
+    }
+
+    fn value_in_force(&mut self, scope: ScopeId, param: &Param) -> Option<String> {
+        let Symbol::Lazy(id) = self.scope(scope).names.get(&param.name.name)?.clone() else { return None };
+        match &param.kind {
+            ParamKind::Value { ty, .. } => {
+                let is_text = ty.as_ref().is_some_and(|ty| matches!(ty.kind, DataTypeKind::String));
+                self.force_constant(id, param.span).ok().map(|constant| told(&constant, is_text))
+            }
+            ParamKind::Type { .. } => match self.force_type(id, param.span).ok()?.width {
+                1 => Some("a type of 1 bit".to_string()),
+                width => Some(format!("a type of {width} bits")),
+            },
+        }
+    }
+
     fn misused(&mut self, name: &str, given: &Expr, (problem, help): Mistake) -> Box<Diagnostic> {
         let text = self.given.iter().rev().find(|given| given.name == name).map_or("", |given| &given.text);
         let message = format!("`--set {name}={text}`: {problem}");
@@ -130,6 +159,25 @@ impl<'a> Elaborator<'a> {
             (Constant::Bits(value, _), Some(ty)) => holds(value, ty).map(|()| constant),
             _ => Ok(constant),
         }
+    }
+}
+
+/// By top, then by name.
+pub type ParametersInForce = BTreeMap<String, BTreeMap<String, String>>;
+
+/// A decimal where that is readable, else hexadecimal, or binary with bits that are not known.
+fn told(constant: &Constant, is_text: bool) -> String {
+    const MOST_DECIMAL: usize = 64;
+    match constant {
+        Constant::Real(number) => number.to_string(),
+        Constant::Bits(value, _) if is_text => format!("\"{}\"", value.to_text()),
+        Constant::Bits(value, _) => match value.to_bigint() {
+            Some(_) if value.width() > MOST_DECIMAL => {
+                let unsigned = value.as_ref().clone().with_sign(false).to_bigint().unwrap_or_default();
+                format!("{}'h{}", value.width(), unsigned.to_str_radix(16))
+            }
+            _ => value.to_string(),
+        },
     }
 }
 

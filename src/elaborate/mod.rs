@@ -47,7 +47,7 @@ use crate::graph::{Graph, GraphBuilder};
 use crate::source::Given;
 use crate::syntax::ast;
 
-pub use given::Misuse;
+pub use given::{Misuse, ParametersInForce};
 
 /// Expressions nest as deep as the source; the stack of the elaborating thread must hold that. The sizes are tried in
 /// order, in MiB, because a system with little address space refuses the larger ones.
@@ -70,6 +70,8 @@ pub struct Design {
     pub graph: Graph,
     /// The top modules, in the order asked for or in source order.
     pub tops: Vec<String>,
+    /// Parameters of the tops that were elaborated, with the values that hold.
+    pub parameters: ParametersInForce,
     /// Distinct modules reached from a top that were elaborated.
     pub modules_elaborated: usize,
     /// Distinct modules reached from a top that became black boxes because they could not be elaborated.
@@ -110,6 +112,7 @@ fn empty(request: &Request) -> Design {
     Design {
         graph: GraphBuilder::new().freeze(),
         tops: request.tops.clone(),
+        parameters: ParametersInForce::new(),
         modules_elaborated: 0,
         modules_failed: 0,
         benches_left_out: Vec::new(),

@@ -23,7 +23,7 @@ pub struct Run {
     pub command: Vec<String>,
     /// What `--show-settings` prints.
     pub settings: String,
-    /// Parameters of the tops that were set, by name; all others are as the sources say.
+    /// Parameters of the tops that were set, by name, as they were written.
     pub parameters: BTreeMap<String, String>,
     /// What was read besides the design: settings and ledger.
     pub inputs: Vec<Input>,
@@ -48,6 +48,7 @@ pub fn render(report: &Report, sources: &SourceSet, gate: Severity, run: &Run) -
         inputs: inputs.into_iter().map(input_out).collect(),
         tops: &report.tops,
         parameters: &run.parameters,
+        parameters_in_force: &report.parameters,
         result: ResultOut {
             gate: gate.name(),
             exit: report.exit_code(gate),
@@ -76,6 +77,7 @@ struct Record<'a> {
     inputs: Vec<InputOut<'a>>,
     tops: &'a [String],
     parameters: &'a BTreeMap<String, String>,
+    parameters_in_force: &'a BTreeMap<String, BTreeMap<String, String>>,
     result: ResultOut,
     claim: &'static str,
     caution: &'static str,

@@ -31,6 +31,8 @@ use crate::source::Span;
 pub struct Report {
     /// Names of the analysed top modules, sorted.
     pub tops: Vec<String>,
+    /// Their parameters with the values that hold, by top and name.
+    pub parameters: BTreeMap<String, BTreeMap<String, String>>,
     /// Every file that was read; never remembered, since other bytes may have led to the same.
     #[serde(skip)]
     pub inputs: Vec<Input>,

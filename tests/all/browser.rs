@@ -288,6 +288,11 @@ fn dark_light_and_paper() {
         "{ const theme = document.getElementById('theme'); theme.value = 'light'; theme.dispatchEvent(new Event('input')); }",
     );
     assert_eq!(browser.run(ground), light);
+    browser.call("Emulation.setEmulatedMedia", scheme("light"));
+    browser.run(
+        "{ const theme = document.getElementById('theme'); theme.value = 'dark'; theme.dispatchEvent(new Event('input')); }",
+    );
+    assert_eq!(browser.run(ground), dark);
     browser.run("document.getElementById('fold').click()");
     let folded = "[...document.querySelectorAll('.detail')].every((one) => one.hidden)";
     assert_eq!(browser.run(folded), true);

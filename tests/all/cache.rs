@@ -9,7 +9,7 @@ use std::process::{Command, Stdio};
 
 use jiff::civil::{Date, date};
 use stillwire::cache::{Cache, Key, Use};
-use stillwire::report::{json, sarif, text};
+use stillwire::report::{evidence, html, json, junit, sarif, text};
 use stillwire::rules::{Rule, Severity};
 use stillwire::{Request, assumptions, cells, settings};
 
@@ -29,8 +29,14 @@ fn outputs(request: &Request) -> String {
         Ok(scan) => {
             let style = text::Style { show: Severity::Note, gate: Severity::Error, colours: false };
             let text = text::render(&scan.report, &scan.sources, &style);
-            let json = json::render(&scan.report, &scan.sources);
-            [text, json, sarif::render(&scan.report, &scan.sources)].join("\n")
+            let (report, sources, gate) = (&scan.report, &scan.sources, Severity::Error);
+            let run = evidence::Run::default();
+            let mut all = vec![text, json::render(report, sources), sarif::render(report, sources)];
+            all.extend([junit::render(report, sources, gate), evidence::render(report, sources, gate, &run)]);
+            if request.drawn {
+                all.push(html::render(report, &scan.exhibits, sources, gate));
+            }
+            all.join("\n")
         }
     }
 }
@@ -96,6 +102,62 @@ fn all_fixtures_say_the_same_from_the_cache() {
     assert!(seen > 200, "{seen} fixtures");
     // Some fixtures refuse to be analysed, or miss something that is looked for nearby.
     assert!(whole_runs * 10 > seen * 9 && trees * 10 > seen * 9, "{whole_runs} and {trees} of {seen} were remembered");
+}
+
+/// The page needs the graph, so its run reads no whole run back, but trees and covers.
+#[test]
+fn the_page_is_the_same_from_the_cache() {
+    let fixtures = Path::new(env!("CARGO_MANIFEST_DIR")).join("fixtures");
+    for (path, files) in [("lock", 9), ("catalogue", 58)] {
+        let folder = temporary();
+        let cache = folder.path().join("cache");
+        let request = Request { drawn: true, ..request(&[&fixtures.join(path)]) };
+        let cold = outputs(&request);
+        assert!(cold.contains("\"symbols\":[{"), "{path}: something is drawn");
+        assert_eq!(cached(&request, &cache).0, cold, "{path}: filling the cache");
+        let (warm, used) = cached(&request, &cache);
+        assert!(warm == cold, "{path}: everything remembered");
+        assert!(used.misses == 0 && used.hits >= files, "{path}: {used:?}");
+        // What the page's run leaves serves the other outputs.
+        let plain = Request { drawn: false, ..request };
+        let (warm, used) = cached(&plain, &cache);
+        assert!(warm == outputs(&plain), "{path}: the other outputs");
+        assert_eq!(used.misses, 0, "{path}: the whole run is remembered");
+    }
+}
+
+/// The program itself, every format in one run: settings, ledger and command line are in some of them.
+#[test]
+fn every_format_is_the_same_from_the_cache() {
+    let folder = temporary();
+    let root = folder.path();
+    let signed = LANE.replace("wire clear_n", "// stillwire: signoff set-reset-hazard \"known\"\n    wire clear_n");
+    write(&root.join("rtl/signed.v"), &signed);
+    write(&root.join("rtl/lane.v"), &LANE.replace("module lane", "module lane_2"));
+    write(&root.join("stillwire.toml"), "paths = [\"rtl\"]\nledger = \"stillwire-ledger.toml\"\n");
+    let run = |arguments: &[&str]| {
+        let mut command = Command::new(env!("CARGO_BIN_EXE_stillwire"));
+        command.current_dir(root).args(arguments).output().expect("the program starts")
+    };
+    assert_eq!(run(&["ledger", "write"]).status.code(), Some(0));
+    write(&root.join("rtl/new.v"), &LANE.replace("module lane", "module lane_3"));
+    let formats = ["json", "sarif", "junit", "evidence", "html"];
+    let written = |cache: &str| {
+        let outputs = formats.map(|format| format!("{format}:out.{format}"));
+        let mut arguments = vec!["scan", "--cache", cache];
+        outputs.iter().for_each(|output| arguments.extend(["--write", output]));
+        let output = run(&arguments);
+        assert_eq!(output.status.code(), Some(1), "{}", String::from_utf8_lossy(&output.stderr));
+        let files = formats.map(|format| std::fs::read_to_string(root.join(format!("out.{format}"))).expect("written"));
+        (output.stdout, files)
+    };
+    let (cold_text, cold) = written("cache");
+    let (warm_text, warm) = written("cache");
+    assert!(cold_text == warm_text, "text");
+    for ((format, cold), warm) in formats.iter().zip(&cold).zip(&warm) {
+        assert!(cold == warm, "{format}");
+        assert!(cold.contains("lane_3") && cold.len() > 1000, "{format}: {cold}");
+    }
 }
 
 /// Deep trees are written and read back by recursion.

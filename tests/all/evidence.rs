@@ -93,6 +93,32 @@ fn every_file_that_was_read_is_there_with_its_digest() {
 }
 
 #[test]
+fn parameters_that_hold_are_listed() {
+    let tree = Tree::new(&[(
+        "t.sv",
+        "package p; typedef enum logic [1:0] {Slow, Fast = 2} speed_e; endpackage
+         module t import p::*; #(parameter int W = 4, localparam int Double = 2 * W, parameter speed_e S = Fast,
+             parameter string Name = \"a\", parameter type Data = logic [2:0], parameter logic [79:0] Wide = 80'hface_0000_0000_0000_0001,
+             parameter real Share = 0.5, parameter logic [1:0] Open = 2'b1x, parameter bit Unused = Nothing)
+           (input Data d, output Data q);
+           localparam Inside = W + 1;
+           assign q = d;
+         endmodule
+         module plain(input a, output y); assign y = a; endmodule
+         module other #(parameter W = 1) (input [W-1:0] a, output [W-1:0] y); assign y = a; endmodule",
+    )]);
+    tree.run(&["scan", "t.sv", "--set", "W=8'h5", "--write", "evidence:record.json"]);
+    let record = kept("evidence", tree.read("record.json").as_bytes()).expect("JSON");
+    let wanted = json!({
+        "other": { "W": "5" },
+        "plain": {},
+        "t": { "Data": "a type of 3 bits", "Double": "10", "Inside": "6", "Name": "\"a\"", "Open": "2'b1x", "S": "2",
+               "Share": "0.5", "W": "5", "Wide": "80'hface0000000000000001" },
+    });
+    assert_eq!(record["parameters_in_force"], wanted);
+}
+
+#[test]
 fn run_and_its_limits_are_told() {
     let (_, record) = record(&tree(), &["--set", "W=1", "--top", "core"]);
     assert_eq!(record["tool"]["version"], env!("CARGO_PKG_VERSION"));

@@ -5,9 +5,10 @@ use std::path::{Path, PathBuf};
 use std::process::Command;
 
 use serde_json::{Value, json};
-use stillwire::hazard::{AssumptionKind, HazardKind};
+use stillwire::graph::SourceKind;
+use stillwire::hazard::{AssumptionKind, HazardKind, Method};
 use stillwire::input::InputRole;
-use stillwire::rules::{PinKind, Rule, Severity, Verdict};
+use stillwire::rules::{Ground, PinKind, Rule, Severity, Verdict};
 
 use crate::outputs::{Outputs, outputs};
 use crate::outside::data;
@@ -48,6 +49,50 @@ fn schema_of_the_evidence_knows_every_word() {
     assert_eq!(schema["$defs"]["net"]["properties"]["role"]["enum"], json!(PinKind::ALL.map(PinKind::name)));
     let role = &schema["properties"]["inputs"]["items"]["properties"]["role"];
     assert_eq!(role["enum"], json!(InputRole::ALL.map(InputRole::name)));
+    let mut methods = grounds().map(Ground::name).to_vec();
+    methods.sort_unstable();
+    methods.dedup();
+    let schema = &schema["$defs"]["net"]["properties"]["method"]["oneOf"][0]["enum"];
+    let mut known: Vec<&str> = schema.as_array().expect("words").iter().filter_map(Value::as_str).collect();
+    known.sort_unstable();
+    assert_eq!(known, methods);
+}
+
+/// Everything that a clean net may rest on, as far as it has a word of its own. Whoever adds something to [`Ground`] or
+/// [`Method`] is led here by the compiler.
+fn grounds() -> [Ground; 9] {
+    let decided = |changes: Method| match changes {
+        Method::Structure | Method::Enumeration | Method::Solver | Method::Launches => {
+            Ground::Decided { changes, launches: None, reachable: false, assuming: false }
+        }
+    };
+    let ground = |ground: Ground| match ground {
+        Ground::Constant | Ground::Undriven | Ground::Source(_) | Ground::AssumedStatic | Ground::Decided { .. } => {
+            ground
+        }
+    };
+    [
+        ground(Ground::Constant),
+        Ground::Undriven,
+        Ground::Source(SourceKind::Input),
+        Ground::AssumedStatic,
+        decided(Method::Structure),
+        decided(Method::Enumeration),
+        decided(Method::Solver),
+        decided(Method::Launches),
+        Ground::Decided { changes: Method::Structure, launches: None, reachable: true, assuming: false },
+    ]
+}
+
+/// The table of the README and the schema name the same methods.
+#[test]
+fn readme_explains_every_method() {
+    let readme = std::fs::read_to_string(root().join("README.md")).expect("readable");
+    let (_, table) = readme.split_once("| `method` |").expect("the table");
+    let (table, _) = table.split_once("\n\n").expect("its end");
+    for ground in grounds() {
+        assert!(table.contains(&format!("`{}`", ground.name())), "{}\n{table}", ground.name());
+    }
 }
 
 /// Everything is closed: a field that the program writes and the schema does not know is an error.

@@ -313,3 +313,41 @@ fn a_client_that_goes_away_ends_it() {
     editor.to = None;
     assert_eq!(editor.child.wait().expect("it ends").code(), Some(1));
 }
+
+/// What is no message of the protocol ends the session, with a reason and without a panic: where one message ends is then
+/// not known.
+#[test]
+fn what_is_no_message_ends_it_with_a_reason() {
+    let framed = |text: &str| format!("Content-Length: {}\r\n\r\n{text}", text.len());
+    let start = framed(
+        &json!({ "jsonrpc": "2.0", "id": 1, "method": "initialize", "params": { "capabilities": {} } }).to_string(),
+    );
+    let ready = framed(&json!({ "jsonrpc": "2.0", "method": "initialized", "params": {} }).to_string());
+    let cut = "Content-Length: 50\r\n\r\n{\"jsonrpc\"".to_string();
+    for (what, bad) in [
+        ("no JSON", framed("{not json")),
+        ("JSON, but no message", framed("[1, 2]")),
+        ("no length", "Content-Type: text\r\n\r\n{}".to_string()),
+        ("a length that is none", "Content-Length: long\r\n\r\n{}".to_string()),
+        ("the end within a message", cut),
+    ] {
+        for begun in [false, true] {
+            let tree = Tree::new(&[("rtl/lane.v", LANE)]);
+            let mut child = Command::new(env!("CARGO_BIN_EXE_stillwire"))
+                .arg("serve")
+                .current_dir(tree.path(""))
+                .stdin(Stdio::piped())
+                .stdout(Stdio::piped())
+                .stderr(Stdio::piped())
+                .spawn()
+                .expect("the program starts");
+            let sent = if begun { format!("{start}{ready}{bad}") } else { bad.clone() };
+            child.stdin.take().expect("a pipe").write_all(sent.as_bytes()).expect("the server reads");
+            let output = child.wait_with_output().expect("it ends");
+            let said = String::from_utf8_lossy(&output.stderr);
+            assert_eq!(output.status.code(), Some(1), "{what}: {said}");
+            assert!(said.contains("error: the session with the editor broke off"), "{what}: {said}");
+            assert!(!said.contains("panicked"), "{what}: {said}");
+        }
+    }
+}
