@@ -92,7 +92,7 @@ impl<S: Solver> Clauses<S> {
         values
     }
 
-    fn gate(&mut self, kind: GateKind, pins: &[Literal]) -> Literal {
+    pub(super) fn gate(&mut self, kind: GateKind, pins: &[Literal]) -> Literal {
         let plain = match kind {
             GateKind::Buf | GateKind::Not | GateKind::And | GateKind::Nand => self.and(pins),
             GateKind::Or | GateKind::Nor => self.or(pins),

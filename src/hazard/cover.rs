@@ -14,6 +14,7 @@ use serde::{Deserialize, Serialize};
 
 use super::function::{Cube, Function};
 use super::launch::{Launcher, Unproven};
+use super::order::Order;
 use super::{Cause, Cover, HazardKind, Launch, Options, TargetVerdict, Undecided, Witness, decide};
 use crate::graph::cone::{Cone, FrozenCone};
 use crate::graph::{GateKind, Graph, NodeId, NodeKind};
@@ -85,6 +86,10 @@ pub fn cover(
         return Err(Withheld::Clean);
     }
     refuse_open(verdict)?;
+    // A cover is proven on feed-forward logic; terms in front of a loop move its states as well.
+    if Order::new(graph, &[verdict.target]).has_loop(graph) {
+        return Err(Withheld::Loop);
+    }
     let launched = || verdict.launches.iter().filter_map(|found| found.witness.launch.as_ref());
     if launched().any(|launch| launch.cause == Cause::Function) {
         return Err(Withheld::Function);
@@ -120,7 +125,7 @@ fn refuse_open(verdict: &TargetVerdict) -> Result<(), Withheld> {
     let mut reasons = verdict.pairs.iter().flat_map(|pair| &pair.undecided).map(|(_, reason)| *reason).chain(launches);
     match reasons.next() {
         None => Ok(()),
-        Some(Undecided::Loop) => Err(Withheld::Loop),
+        Some(Undecided::Loop | Undecided::Race) => Err(Withheld::Loop),
         Some(Undecided::Budget) if reasons.any(|reason| reason == Undecided::Loop) => Err(Withheld::Loop),
         Some(Undecided::Budget | Undecided::Undriven) => Err(Withheld::Undecided),
     }

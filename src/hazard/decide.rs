@@ -11,11 +11,11 @@ use rayon::prelude::*;
 use super::cone::{Cone, Edge, Op};
 use super::order::Order;
 use super::{HazardKind, Method, Options, Pair, TargetVerdict, Undecided, Witness};
-use super::{enumerate, search};
+use super::{enumerate, feedback, search};
 use crate::graph::{Graph, NodeId, NodeKind};
 
 /// The kinds in the order of the report.
-pub(super) const KINDS: [HazardKind; 3] = [HazardKind::Static0, HazardKind::Static1, HazardKind::Dynamic];
+pub(super) const KINDS: [HazardKind; 3] = HazardKind::ALL;
 
 /// A set of hazard kinds.
 #[derive(Clone, Copy, PartialEq, Eq, Default, Debug)]
@@ -97,7 +97,39 @@ pub fn decide(graph: &Graph, targets: &[NodeId], options: &Options) -> Vec<Targe
         .zip(answers.into_iter().zip(&extents).zip(methods))
         .map(|(&node, ((answers, extent), method))| TargetVerdict { method, ..extent.verdict(node, answers) })
         .collect();
+    let verdicts: Vec<TargetVerdict> = verdicts
+        .into_par_iter()
+        .zip(&extents)
+        .map(|(verdict, extent)| match extent.looped.as_slice() {
+            [] => verdict,
+            looped => feedback::decide(graph, &verdict, options).unwrap_or_else(|| restless(verdict, looped)),
+        })
+        .collect();
     targets.iter().map(|&target| TargetVerdict { target, ..verdicts[places[&graph.root(target)]].clone() }).collect()
+}
+
+/// Loops that could not be followed may move by themselves, whatever the sources do, and need not have the values that a
+/// witness supposes.
+fn restless(mut verdict: TargetVerdict, looped: &[NodeId]) -> TargetVerdict {
+    let is_looped = |node: &NodeId| looped.binary_search(node).is_ok();
+    if let Some(&first) = looped.first() {
+        let at = verdict.pairs.partition_point(|pair| pair.source < first);
+        if verdict.pairs.get(at).is_none_or(|pair| pair.source != first) {
+            verdict.pairs.insert(at, Pair { source: first, hazards: Vec::new(), undecided: Vec::new() });
+        }
+    }
+    for pair in &mut verdict.pairs {
+        let supposed =
+            |witness: &Witness| witness.holds.iter().chain(&witness.changes).any(|(node, _)| is_looped(node));
+        let open: Vec<HazardKind> =
+            pair.hazards.extract_if(.., |(_, witness)| supposed(witness)).map(|(kind, _)| kind).collect();
+        pair.undecided.extend(open.into_iter().map(|kind| (kind, Undecided::Loop)));
+        if is_looped(&pair.source) {
+            pair.undecided = KINDS.map(|kind| (kind, Undecided::Loop)).to_vec();
+        }
+        pair.undecided.sort_unstable();
+    }
+    verdict
 }
 
 /// The size of a root's cone.

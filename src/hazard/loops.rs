@@ -12,6 +12,7 @@ use rayon::prelude::*;
 use std::collections::BTreeSet;
 
 use self::cut::Cut;
+pub(super) use self::cut::cuts;
 use super::Options;
 use crate::graph::{Graph, NodeId, cycles};
 
@@ -72,6 +73,15 @@ pub struct StateLoss {
     pub source: NodeId,
     pub witness: super::Witness,
     pub cover: Option<super::Cover>,
+}
+
+/// Whether every loop has a stable state for every value of its inputs; false when that is not decided.
+pub(super) fn rest(graph: &Graph, components: &cycles::Components, options: &Options) -> bool {
+    let endpoints = BTreeSet::new();
+    (0..components.len()).all(|index| {
+        let cut = Cut::new(graph, components, index, &endpoints).filter(|cut| !cut.is_partial());
+        cut.is_some_and(|cut| search::rests(&cut, options))
+    })
 }
 
 /// The verdict on every combinational loop, in order of the smallest node.

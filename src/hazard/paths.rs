@@ -8,11 +8,57 @@ use std::collections::{BTreeMap, BTreeSet, VecDeque};
 use super::order::Order;
 use super::wave::{self, Wave};
 use super::{Path, PathStep, Paths, Witness};
+use crate::graph::cone::{Cone, FrozenCone};
 use crate::graph::{GateKind, Graph, NodeId, NodeKind};
 
 /// Traces a witness through the graph. Of several gates where a hazard arises, the one nearest to the target is taken;
 /// a hazard of the written logic goes before one inside an operator.
 pub fn paths(graph: &Graph, target: NodeId, witness: &Witness) -> Paths {
+    let looped = looped(graph, witness);
+    if looped.is_empty() {
+        return feed_forward(graph, target, witness);
+    }
+    let Some((cut, copy, within)) = held(graph, target, witness, &looped) else { return Paths::none(target) };
+    let mut paths = feed_forward(&cut.graph, copy, &within);
+    let back = |node: &mut NodeId| *node = cut.original(*node).unwrap_or(target);
+    let Paths { stem, meet, ways, tail } = &mut paths;
+    let steps = ways.iter_mut().flat_map(|way| &mut way.steps).map(|step| &mut step.node);
+    [stem, meet].into_iter().chain(tail).chain(steps).for_each(back);
+    paths
+}
+
+/// Whether the nets of loops that a witness gives values have to move for its hazard; false where there are none.
+pub fn moves_loops(graph: &Graph, target: NodeId, witness: &Witness) -> bool {
+    let looped = looped(graph, witness);
+    if looped.is_empty() {
+        return false;
+    }
+    let Some((cut, copy, within)) = held(graph, target, witness, &looped) else { return true };
+    let before: BTreeMap<NodeId, bool> = within.holds.iter().chain(&within.changes).copied().collect();
+    let after: BTreeMap<NodeId, bool> = within.changes.iter().map(|&(node, value)| (node, !value)).collect();
+    let wave = wave::waveform(&cut.graph, &before, &after, copy);
+    !wave.h || (wave.i, wave.f) != witness.target
+}
+
+/// Nets of loops that a witness gives values.
+fn looped(graph: &Graph, witness: &Witness) -> Vec<NodeId> {
+    let nodes = witness.holds.iter().map(|&(node, _)| node);
+    nodes.filter(|&node| !graph.is_static(node) && !graph.fanin(node).is_empty()).collect()
+}
+
+/// The logic in front of the target while nets of loops hold: their readers read the value, and what drives them is logic
+/// like any other. The target and the witness are those of the copy.
+fn held(graph: &Graph, target: NodeId, witness: &Witness, looped: &[NodeId]) -> Option<(FrozenCone, NodeId, Witness)> {
+    let cone = Cone::cut(graph, &[target], looped);
+    let read = |list: &[(NodeId, bool)]| -> Vec<(NodeId, bool)> {
+        list.iter().filter_map(|&(node, value)| Some((cone.read_of(node)?, value))).collect()
+    };
+    let within = Witness { changes: read(&witness.changes), holds: read(&witness.holds), ..witness.clone() };
+    let copy = cone.copy_of(target)?;
+    Some((cone.freeze(), copy, within))
+}
+
+fn feed_forward(graph: &Graph, target: NodeId, witness: &Witness) -> Paths {
     let order = Order::new(graph, &[target]);
     let mut before: BTreeMap<NodeId, bool> = witness.holds.iter().copied().collect();
     before.extend(witness.changes.iter().copied());
@@ -26,7 +72,13 @@ pub fn paths(graph: &Graph, target: NodeId, witness: &Witness) -> Paths {
     match trace.origin(target) {
         Some(tail) => trace.paths(tail),
         // Not a witness of this target: nothing to tell.
-        None => Paths { stem: target, meet: target, ways: Vec::new(), tail: vec![target] },
+        None => Paths::none(target),
+    }
+}
+
+impl Paths {
+    fn none(target: NodeId) -> Self {
+        Self { stem: target, meet: target, ways: Vec::new(), tail: vec![target] }
     }
 }
 

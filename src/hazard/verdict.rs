@@ -16,6 +16,8 @@ pub enum HazardKind {
 }
 
 impl HazardKind {
+    pub const ALL: [HazardKind; 3] = [HazardKind::Static0, HazardKind::Static1, HazardKind::Dynamic];
+
     /// The word used in every output.
     pub fn name(self) -> &'static str {
         match self {
@@ -130,8 +132,12 @@ pub struct OpenLaunch {
 pub enum Undecided {
     /// The solver used up its conflicts.
     Budget,
-    /// The change reaches the target through a combinational loop.
+    /// The change reaches the target through a combinational loop that could not be followed: it is too large, need not
+    /// rest, or several of its sources may change at once.
     Loop,
+    /// The change reaches the target through a combinational loop, and which state that comes to rest in, or whether it
+    /// does, depends on delays.
+    Race,
     /// Nothing drives the target: what it shows is not in the design. Said by whoever asks about a pin; the decision itself
     /// takes an undriven net as a constant.
     Undriven,
@@ -178,6 +184,9 @@ pub struct TargetVerdict {
     pub method: Method,
     /// How those about launches were; `None` where nobody asked about launches.
     pub launch_method: Option<Method>,
+    /// Whether combinational loops lie in front of the target and were followed from every stable state; loops that could
+    /// not be followed leave it undecided.
+    pub follows_loops: bool,
 }
 
 impl TargetVerdict {
@@ -192,6 +201,7 @@ impl TargetVerdict {
             reach: Reach::AnyState,
             method: Method::Structure,
             launch_method: None,
+            follows_loops: false,
         }
     }
 

@@ -174,6 +174,12 @@ impl Cut {
 }
 
 impl Circuit {
+    /// Elements that may read each other in loops; one step, at the end of which the target has the second of `ends`.
+    pub(super) fn closed(elements: Vec<Element>, target: usize, ends: (bool, bool)) -> Self {
+        let needed = usize::from(ends.0 != ends.1);
+        Self { elements, target, steps: 1, needed, ends, of_node: BTreeMap::new() }
+    }
+
     /// The logic behind the target of `transition`, and behind `also`; `guesses` are values that the witness does not say.
     pub(super) fn new(
         graph: &Graph,

@@ -9,13 +9,16 @@ mod circuit;
 mod delays;
 mod signal;
 mod vcd;
+mod walked;
 
 use bench::Head;
 use circuit::Circuit;
 pub(crate) use circuit::Cut;
 use delays::{Plan, Shown};
+use walked::Walk;
 
 use crate::graph::{Graph, NodeId};
+use crate::hazard::{self, HazardKind};
 use crate::rules::{Finding, Hazard, Verdict};
 use crate::source::PathError;
 
@@ -184,7 +187,11 @@ impl Subject<'_> {
             let terms = cover.cover.products.iter().chain(&cover.cover.sums);
             literals.extend(terms.flatten().map(|&(node, _)| node));
         }
-        let (circuit, plan, steps) = self.seen(&literals)?;
+        let (circuit, plan, steps) = match self.seen(&literals) {
+            Ok(seen) => seen,
+            Err(Refusal::NotSeen) => return self.walked().ok_or(Refusal::NotSeen),
+            Err(refusal) => return Err(refusal),
+        };
         let lengths: Vec<u64> = steps.iter().map(length).collect();
         let name = format!("{}-{}", self.number, self.hazard.kind);
         let mut files = Vec::new();
@@ -204,6 +211,30 @@ impl Subject<'_> {
             files.push((file.clone(), bench::random(&covered, &plan, ROUNDS, &head).into_bytes()));
         }
         Ok(files)
+    }
+
+    /// The files of a hazard for which the feedback of a loop moves.
+    fn walked(&self) -> Option<Vec<(String, Vec<u8>)>> {
+        let transition = &self.hazard.transition;
+        let kind = HazardKind::ALL.into_iter().find(|kind| kind.name() == self.hazard.kind)?;
+        let (target, witness) = (transition.target, &transition.witness);
+        let walked = hazard::moves(self.graph, target, witness, kind, transition.calm)?;
+        let walk = Walk::new(self.graph, target, witness, &walked)?;
+        let shown = walk.shown();
+        if !walk.is_seen(&shown) {
+            return None;
+        }
+        let name = format!("{}-{}", self.number, self.hazard.kind);
+        let file = format!("{name}.v");
+        let mut story = self.story();
+        story.pop();
+        story.push("Gates and wires have delays of their own, drawn up as the order in which they move.".to_string());
+        let module = format!("replay_{}_{}", self.finding.short_fingerprint(), self.number);
+        let head = Head { module: &module, story: &story, file: &file };
+        let bench = walk.bench(&head).into_bytes();
+        let length = length(&shown);
+        let dump = vcd::dump(&walk.circuit, &[shown], &[length]).ok()?;
+        Some(vec![(file, bench), (format!("{name}.vcd"), dump)])
     }
 
     /// The circuit with delays under which the pulse was seen.
@@ -247,9 +278,16 @@ impl Subject<'_> {
         let holds: Vec<String> = hazard
             .before
             .iter()
-            .filter(|(name, _)| !hazard.changes.contains(name))
+            .filter(|(name, _)| !hazard.changes.contains(name) && !hazard.moved.contains(name))
             .map(|(name, value)| format!("{name} = {}", u8::from(*value)))
             .collect();
+        let begins: Vec<String> = (hazard.before.iter())
+            .filter(|(name, _)| hazard.moved.contains(name))
+            .map(|(name, value)| format!("{name} = {}", u8::from(*value)))
+            .collect();
+        if !begins.is_empty() {
+            story.push(format!("The loop of gates rests with {} before.", begins.join(", ")));
+        }
         if !holds.is_empty() {
             story.push(format!("What holds and matters: {}; the rest may have any value.", holds.join(", ")));
         }

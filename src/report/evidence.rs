@@ -169,7 +169,8 @@ fn net_out(net: &CheckedNet, at: Option<Place>) -> NetOut<'_> {
 fn why(reason: Undecided) -> &'static str {
     match reason {
         Undecided::Budget => "no proof within the budget of the solver",
-        Undecided::Loop => "a change passes a combinational loop",
+        Undecided::Loop => "a change passes a combinational loop that could not be followed",
+        Undecided::Race => "which state a combinational loop settles in depends on delays",
         Undecided::Undriven => "nothing drives the net",
     }
 }

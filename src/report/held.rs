@@ -38,7 +38,7 @@ impl Held {
 /// All signals that hold still, by name and with the higher bits of a vector first.
 pub(crate) fn held(hazard: &Hazard) -> Vec<Held> {
     let mut bits: Vec<(&str, Option<u64>, bool)> = (hazard.before.iter())
-        .filter(|(name, _)| !hazard.changes.contains(name))
+        .filter(|(name, _)| !hazard.changes.contains(name) && !hazard.moved.contains(name))
         .map(|(name, value)| {
             // What a loop feeds back is told by itself, because it is the loop's own net.
             let (vector, index) = if *name == hazard.net { (name.as_str(), None) } else { split(name) };
@@ -81,6 +81,7 @@ mod tests {
             kind: "static-1",
             cause: "logic",
             changes: vec![changes.to_string()],
+            moved: Vec::new(),
             harm: String::new(),
             after: before.clone(),
             before,

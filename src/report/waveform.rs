@@ -25,6 +25,11 @@ pub(super) fn render(hazard: &Hazard) -> String {
 /// What changes, up to `most` of the signals that hold, and the net; and how many more hold.
 pub(super) fn rows(hazard: &Hazard, most: usize) -> (Vec<Row>, usize) {
     let mut rows: Vec<Row> = changes(hazard);
+    let moved = hazard.before.iter().filter(|(name, _)| hazard.moved.contains(name) && *name != hazard.net);
+    for (name, before) in moved {
+        let drawn = if *before { "~~~=======" } else { "___=======" };
+        rows.push((name.clone(), drawn, format!("begins at {} and moves", u8::from(*before))));
+    }
     let held = held(hazard);
     for signal in held.iter().take(most) {
         let drawn = match (signal.bits.contains(&false), signal.bits.contains(&true)) {

@@ -52,6 +52,8 @@ pub enum Ground {
         reachable: bool,
         /// Whether declared assumptions may be part of the proof.
         assuming: bool,
+        /// Whether combinational loops lie in front of it.
+        loops: bool,
     },
 }
 
@@ -108,7 +110,7 @@ impl Ground {
             Ground::Source(SourceKind::BlackBox) => "a module without text drives it directly",
             Ground::Source(SourceKind::Memory) => "a memory drives it directly",
             Ground::AssumedStatic => "it is declared static",
-            Ground::Decided { changes, launches, reachable, assuming } => {
+            Ground::Decided { changes, launches, reachable, assuming, loops } => {
                 let mut text = match changes {
                     Method::Structure => "single changes: no two ways of a change meet with opposite inversions",
                     Method::Enumeration => "single changes: every transition was simulated",
@@ -123,6 +125,9 @@ impl Ground {
                 });
                 if reachable {
                     text.push_str("; for the states that can be reached from reset");
+                }
+                if loops {
+                    text.push_str("; its loops of gates were followed from every stable state");
                 }
                 if assuming {
                     text.push_str("; declared assumptions may be part of the proof");
@@ -194,6 +199,7 @@ impl Checker<'_> {
                 launches: verdict.launch_method,
                 reachable: verdict.reach == Reach::ReachableStates,
                 assuming: self.assuming(root, verdict),
+                loops: verdict.follows_loops,
             },
         }
     }

@@ -8,7 +8,7 @@ use std::collections::BTreeSet;
 
 use super::cover_text;
 use super::finding::{CoverText, Finding, Hazard, Pin, Rule, Severity, TraceStep, Transition, Verdict};
-use super::{Context, fingerprint, launch_text, names, pins, remembered, words};
+use super::{Context, fingerprint, launch_text, loop_text, names, pins, remembered, words};
 use crate::graph::{Graph, InstanceId, NodeId, NodeKind};
 use crate::hazard::{
     self, Cause, HazardKind, LaunchHazard, Path, Paths, Reach, Step, TargetVerdict, Undecided, Witness,
@@ -81,9 +81,11 @@ pub(super) fn finding(
             None => {
                 let who = words::who(&names::name(graph, lead.source), sources.len());
                 finding.message = format!("{who} {can}");
-                finding.trace = trace(graph, root, lead.source, &paths, finding.at);
+                finding.trace = loop_text::trace(graph, root, lead.witness, lead.kind, finding.at)
+                    .unwrap_or_else(|| trace(graph, root, lead.source, &paths, finding.at));
             }
         }
+        finding.notes.extend(loop_text::note(graph, lead.witness));
         let (cover, note) = cover(graph, verdict, context);
         finding.cover = cover;
         finding.notes.extend(note);
@@ -200,8 +202,13 @@ pub(super) fn hazard_text(graph: &Graph, target: NodeId, kind: HazardKind, witne
             *value = last.map_or(*value, |&(_, before)| !before);
         }
     }
+    let ends = loop_text::moved(graph, target, kind, witness);
+    for (name, value) in &mut after {
+        *value = ends.get(name).copied().unwrap_or(*value);
+    }
     Hazard {
         net,
+        moved: ends.into_keys().collect(),
         kind: kind.name(),
         cause,
         changes,
@@ -218,7 +225,7 @@ pub(super) fn hazard_text(graph: &Graph, target: NodeId, kind: HazardKind, witne
 /// One sentence per reason why questions about this target stayed open.
 fn undecided(graph: &Graph, verdict: &TargetVerdict) -> Vec<String> {
     let mut notes = Vec::new();
-    for reason in [Undecided::Budget, Undecided::Loop, Undecided::Undriven] {
+    for reason in [Undecided::Budget, Undecided::Loop, Undecided::Race, Undecided::Undriven] {
         let open = |why: &(HazardKind, Undecided)| why.1 == reason;
         let pairs = verdict.pairs.iter().filter(|pair| pair.undecided.iter().any(open)).map(|pair| pair.source);
         let launches = verdict.open_launches.iter().filter(|open| open.reason == reason).map(|open| open.root);
@@ -235,8 +242,14 @@ fn undecided(graph: &Graph, verdict: &TargetVerdict) -> Vec<String> {
                  a flip-flop, or split the logic in front of it"
             ),
             Undecided::Loop => format!(
-                "undecided for {who}: the change passes a combinational loop, behind which nothing can be proven; this \
-                 is not a pass. Break the loop first (rule combinational-loop)"
+                "undecided for {who}: the change passes a combinational loop that could not be followed, because it is \
+                 too large, has no stable state for some inputs, or several of its inputs can change at once; this is \
+                 not a pass. Break the loop (rule combinational-loop), or use a latch cell"
+            ),
+            Undecided::Race => format!(
+                "undecided for {who}: from some stable state, which state a combinational loop settles in depends on \
+                 delays, so what this net ends at is not known; this is not a pass. Let each change have one outcome: \
+                 add the term that holds the state meanwhile, or use a latch cell (rule combinational-loop)"
             ),
             Undecided::Undriven => {
                 "undecided because nothing drives this net: it may float, and what it shows is not in \

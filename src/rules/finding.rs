@@ -185,6 +185,8 @@ pub struct Hazard {
     #[serde(deserialize_with = "known::word")]
     pub cause: Word,
     pub changes: Vec<String>,
+    /// Nets of loops of gates that move while the change is under way; they are among `before` and `after`. Sorted.
+    pub moved: Vec<String>,
     /// What it does to the cells on this pin, in words.
     pub harm: String,
     /// Every source that matters, sorted by name, with its value.

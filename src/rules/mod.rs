@@ -16,6 +16,7 @@ mod fingerprint;
 mod known;
 mod latch_enable_hazard;
 mod launch_text;
+mod loop_text;
 mod missing_module;
 pub(crate) mod names;
 mod pages;
@@ -95,12 +96,18 @@ pub fn run(
     let roots: BTreeSet<NodeId> = pin_roots.chain(watched.iter().map(|&(_, root)| root)).collect();
     let launched = roots.iter().copied().filter(|&root| pins::can_glitch_in_a_launch(graph, root));
     let launched: Vec<NodeId> = if options.single_changes { Vec::new() } else { launched.collect() };
+    let cells = hazard::Cells::new(graph);
     let launcher = (!options.single_changes).then(|| Launcher::new(graph, &launched, assumptions, &listing));
     let mut verdicts = decided(graph, roots.iter().copied(), &listing);
     if let Some(launcher) = &launcher {
         let refined: Vec<TargetVerdict> = launched
             .par_iter()
-            .map(|&root| launcher.refine(verdicts.get(&root).cloned().unwrap_or(TargetVerdict::clean(root))))
+            .map(|&root| match verdicts.get(&root).cloned().unwrap_or(TargetVerdict::clean(root)) {
+                verdict if verdict.follows_loops => {
+                    hazard::events_behind_loops(graph, &cells, assumptions, verdict, &listing)
+                }
+                verdict => launcher.refine(verdict),
+            })
             .collect();
         verdicts.extend(refined.into_iter().map(|verdict| (verdict.target, verdict)));
     }
@@ -181,7 +188,6 @@ pub fn run(
     let found: Vec<Option<Finding>> = tasks.par_iter().map(|task| task()).collect();
     let mut findings: Vec<Finding> = found.into_iter().flatten().collect();
     findings.extend(missing_module::findings(graph, &pins, &seen));
-    let cells = hazard::Cells::new(graph);
     findings.extend(set_reset_overlap::findings(graph, &cells, options));
     findings.extend(reset_release::findings(graph, &cells, &pins.controls, &verdicts, options));
     Outcome { findings, checked, pins: coverage, cells: CellCount::of(graph), loops: loops.len() }

@@ -63,7 +63,7 @@ fn schema_of_the_evidence_knows_every_word() {
 fn grounds() -> [Ground; 9] {
     let decided = |changes: Method| match changes {
         Method::Structure | Method::Enumeration | Method::Solver | Method::Launches => {
-            Ground::Decided { changes, launches: None, reachable: false, assuming: false }
+            Ground::Decided { changes, launches: None, reachable: false, assuming: false, loops: false }
         }
     };
     let ground = |ground: Ground| match ground {
@@ -80,7 +80,7 @@ fn grounds() -> [Ground; 9] {
         decided(Method::Enumeration),
         decided(Method::Solver),
         decided(Method::Launches),
-        Ground::Decided { changes: Method::Structure, launches: None, reachable: true, assuming: false },
+        Ground::Decided { changes: Method::Structure, launches: None, reachable: true, assuming: false, loops: false },
     ]
 }
 

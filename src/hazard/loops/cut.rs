@@ -105,6 +105,16 @@ fn border(graph: &Graph, components: &Components, index: usize) -> Vec<NodeId> {
     far.into_iter().collect()
 }
 
+/// The feedback nodes of a component.
+pub(in crate::hazard) fn cuts(
+    graph: &Graph,
+    components: &Components,
+    index: usize,
+    endpoints: &BTreeSet<NodeId>,
+) -> Option<Vec<NodeId>> {
+    feedback(graph, components.nodes(index), &border(graph, components, index), endpoints)
+}
+
 /// A small set of nodes that every cycle passes, greedily: in each remaining component the node that most pairs of
 /// edges meet in. Of equals one that is read outside the loop, because that is where a state is a state: cut at an inner
 /// gate, a latch would be judged by what that gate forgets; then a declared net, because the reader knows its name.

@@ -50,6 +50,12 @@ pub(super) fn behaviours(cut: &Cut, options: &Options) -> Vec<Behaviour> {
     found
 }
 
+/// Whether every value of the inputs has a stable state; false when that is open.
+pub(super) fn rests(cut: &Cut, options: &Options) -> bool {
+    let order = Order::new(&cut.graph, &cut.next).nodes;
+    matches!(oscillates(cut, &order, options), Outcome::No)
+}
+
 fn unresolved(cut: &Cut, order: &[NodeId], options: &Options) -> Outcome {
     let mut clauses: Clauses<Batsat> = Clauses::new();
     let inputs = variables(&mut clauses, cut.inputs.len());
