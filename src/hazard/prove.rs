@@ -144,7 +144,7 @@ impl Replay {
             if !matches!(cone.ops[node], Op::Free { .. }) {
                 continue;
             }
-            let seed = (cone.origin[node].index() as u64) << 24 | self.models << 2;
+            let seed = u64::from(member) << 24 | self.models << 2;
             let [a, b, c] = [1, 2, 3].map(|part| noise(!(seed | part)));
             let model = encoder.free(node).map(|literal| encoder.clauses.solver.value(literal));
             self.values[node] = match model {

@@ -160,6 +160,29 @@ fn every_format_is_the_same_from_the_cache() {
     }
 }
 
+/// Logic elsewhere moves the numbers of all nodes behind it, and changes neither the witnesses of a large cone nor what is
+/// remembered of its cover.
+#[test]
+fn a_change_elsewhere_leaves_the_covers_of_large_cones() {
+    let folder = temporary();
+    let root = folder.path();
+    write(&root.join("rtl/a_first.v"), "module a_first(input a, b, output y); assign y = a & b; endmodule\n");
+    let arms: Vec<String> = (0..20).map(|arm| format!("({{4'b0, s}} == 8'd{arm} ? d[{arm}] : 1'b0)")).collect();
+    write(
+        &root.join("rtl/wide.v"),
+        &format!("module wide(input [3:0] s, input [19:0] d, output y); assign y = {}; endmodule\n", arms.join(" | ")),
+    );
+    let request = request(&[&root.join("rtl")]);
+    let cache = root.join("cache");
+    assert!(cached(&request, &cache).0.contains("static-1"));
+    let more = "module a_first(input a, b, c, d, output y); wire w = a & b; assign y = w & c & d; endmodule\n";
+    write(&root.join("rtl/a_first.v"), more);
+    let (warm, used) = cached(&request, &cache);
+    assert_eq!(warm, outputs(&request));
+    // Missed are the run and the changed file; the other tree and its cover are there.
+    assert_eq!(used, Use { hits: 2, misses: 2 });
+}
+
 /// Deep trees are written and read back by recursion.
 #[test]
 fn the_deepest_trees_are_remembered() {
