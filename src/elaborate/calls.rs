@@ -227,6 +227,9 @@ impl<'a> Elaborator<'a> {
                 None => Some(index),
             };
             match place.and_then(|place| actuals.get_mut(place)) {
+                Some(Some(_)) => {
+                    return Err(wrong(format!("an argument of `{}` that is given twice", function.name.name), span));
+                }
                 Some(actual) => *actual = arg.value.as_ref(),
                 None if arg.value.is_none() => {}
                 None => {

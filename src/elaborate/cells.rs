@@ -12,6 +12,7 @@ use super::scope::ScopeId;
 use crate::cells::{Both, Direction, Function, Known, Model, State, StateKind};
 use crate::diagnostic::{Diagnostic, Kind};
 use crate::graph::{Cell, CellKind, Control, Edge, GateKind, InstanceId, NodeId, Site, SourceKind};
+use crate::source::Span;
 use crate::spelling::nearest;
 use crate::syntax::ast::{Connection, Ident, Instance};
 
@@ -25,6 +26,10 @@ pub(super) struct CellWork<'a> {
 }
 
 impl<'a> CellWork<'a> {
+    pub fn span(&self) -> Span {
+        self.instance.span
+    }
+
     pub fn new(scope: ScopeId, node: InstanceId, model: &'a Model, instance: &'a Instance, slot: Option<Slot>) -> Self {
         Self { scope, node, model, instance, slot }
     }

@@ -63,6 +63,7 @@ impl<'a> Elaborator<'a> {
         let package: &'a Package = package;
         let scope = self.inner_scope(self.unit, &name.name, self.instance, format!("{}::", name.name));
         self.packages.insert(name.name.clone(), scope);
+        self.check_package_names(&package.items);
         self.declare_all(scope, &package.items, Storage::Package)?;
         Ok(scope)
     }

@@ -1,8 +1,7 @@
 //! How much work the text may make. A few characters can ask for millions of gates, and that is seldom meant: `a * b` of
 //! two vectors of 65,536 bits, a loop around a wide assignment. Every piece of text (an assignment, a process, a
-//! declaration) draws what it makes from one pool, which grows with the length of the text. Copies of a piece, from
-//! generate loops and instances, draw a part only, since large designs are made of copies; what bounds those is
-//! [`super::declare::NODE_LIMIT`]. What is refused is reported and opaque, and what is small is never refused.
+//! declaration, a copy of one by a generate loop or an instance) draws what it makes from one pool, which grows with the
+//! length of the text. What is refused is reported and opaque; nothing small that stands in the text once is refused.
 //!
 //! Invariant: the pool depends on the sources alone, so the same input is always refused at the same place.
 
@@ -16,17 +15,17 @@ use crate::source::Span;
 use crate::syntax::ast;
 
 /// What any design may make, in gates and nets. One takes some 5 microseconds on its way through all stages.
-const POOL: usize = 1_600_000;
+const POOL: usize = 1_000_000;
 /// What each byte of its text adds.
-const BY_BYTE: usize = 16;
-/// A copy of a piece draws this part of what it makes.
-const COPY_SHARE: usize = 8;
-/// A piece may always make so many.
+const BY_BYTE: usize = 32;
+/// A piece that is no copy may always make so many.
 const ALWAYS: usize = 512;
+/// Inputs of gates that take as much work as one more gate.
+const INPUTS: usize = 8;
 /// Bits of constants that are worked on count like one gate.
 const CONSTANT_BITS: usize = 64;
 
-/// The pool, and the piece that draws from it now.
+/// What is left of the pool, and the piece that draws from it now.
 #[derive(Debug, Default)]
 pub(super) struct Effort {
     left: usize,
@@ -39,10 +38,9 @@ pub(super) struct Effort {
 
 #[derive(Clone, Copy, Debug)]
 struct Piece {
-    /// Nodes of the graph when it began.
+    /// The work in the graph when it began.
     start: usize,
     allowed: usize,
-    share: usize,
     exhausted: bool,
 }
 
@@ -53,43 +51,41 @@ impl Effort {
         Self { left: POOL.saturating_add(bytes.saturating_mul(BY_BYTE)), ..Self::default() }
     }
 
-    /// What a piece may make, and which part of it is drawn.
-    fn allowance(&mut self, at: Option<Span>) -> (usize, usize) {
-        let share = if at.is_some_and(|at| !self.seen.insert(at)) { COPY_SHARE } else { 1 };
-        (self.left.saturating_mul(share).max(ALWAYS), share)
+    /// What a piece may make.
+    fn allowance(&mut self, at: Option<Span>) -> usize {
+        let is_copy = at.is_some_and(|at| !self.seen.insert(at));
+        if is_copy { self.left } else { self.left.max(ALWAYS) }
     }
 }
 
 impl<'a> Elaborator<'a> {
     /// Begins a piece of work.
     pub fn begin_piece(&mut self, work: &Work<'a>) {
-        let at = match work {
-            Work::Assign { target, .. } => Some(target.span),
-            Work::NetInit { value, .. } | Work::VariableInit { value, .. } => Some(value.span),
-            Work::Process { span, .. } => Some(*span),
-            Work::Gate { instance, .. } => Some(instance.span),
-            _ => None,
-        };
-        let (allowed, share) = self.effort.allowance(at);
+        let allowed = self.effort.allowance(work.span());
         self.effort.constants = 0;
-        self.effort.current = Some(Piece { start: self.builder.len(), allowed, share, exhausted: false });
+        self.effort.current = Some(Piece { start: self.made(), allowed, exhausted: false });
     }
 
     /// Draws what the piece of work has made.
     pub fn end_piece(&mut self) {
         if let Some(piece) = self.effort.current.take() {
-            let made = self.builder.len() - piece.start + self.effort.constants / CONSTANT_BITS;
-            self.effort.left = self.effort.left.saturating_sub(made / piece.share);
+            let made = self.made() - piece.start + self.effort.constants / CONSTANT_BITS;
+            self.effort.left = self.effort.left.saturating_sub(made);
         }
+    }
+
+    /// The work that is in the graph.
+    fn made(&self) -> usize {
+        self.builder.len() + self.builder.links() / INPUTS
     }
 
     /// Draws a net or variable of so many bits.
     pub fn draw_net(&mut self, bits: usize, at: Span) -> Outcome<()> {
-        let (allowed, share) = self.effort.allowance(Some(at));
+        let allowed = self.effort.allowance(Some(at));
         if bits > allowed {
             return Err(too_much(at));
         }
-        self.effort.left = self.effort.left.saturating_sub(bits / share);
+        self.effort.left = self.effort.left.saturating_sub(bits);
         Ok(())
     }
 
@@ -101,7 +97,7 @@ impl<'a> Elaborator<'a> {
         }
         let constants = self.effort.constants / CONSTANT_BITS;
         let (made, allowed) = match &self.effort.current {
-            Some(piece) => (self.builder.len() - piece.start, piece.allowed),
+            Some(piece) => (self.made() - piece.start, piece.allowed),
             None => (0, self.effort.left.max(ALWAYS)),
         };
         if made.saturating_add(constants).saturating_add(ahead) <= allowed {

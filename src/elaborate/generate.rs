@@ -10,6 +10,7 @@ use super::context::{Elaborator, Outcome, Storage, wrong};
 use super::hierarchy::INSTANCE_LIMIT;
 use super::scope::{Constant, Instances, Lazy, ScopeId, Symbol};
 use super::value::Value;
+use crate::diagnostic::Diagnostic;
 use crate::source::Span;
 use crate::syntax::ast::{Assignment, Expr, GenBlock, GenvarInit, Item, ItemKind};
 
@@ -46,7 +47,9 @@ impl<'a> Elaborator<'a> {
             return self.remaining_items(scope, &block.items, generates);
         }
         let inner = self.generate_scope(scope, &name, &name, block.span)?;
-        self.declare(scope, &name, Symbol::Scope(inner));
+        if !self.declare(scope, &name, Symbol::Scope(inner)) {
+            self.report(taken(&name, block.label.as_ref().map_or(block.span, |label| label.span)));
+        }
         self.block_body(inner, block)
     }
 
@@ -154,7 +157,10 @@ impl<'a> Elaborator<'a> {
         let control = self.inner_scope(scope, "", self.scope(scope).instance, String::new());
         let lazy = self.add_lazy(control, Lazy::Constant(Constant::integer(value.into())));
         self.declare(control, &init.name.name, Symbol::Lazy(lazy));
-        self.declare(scope, &name, Symbol::Scopes(Rc::new(Instances { ascending: true, ..Instances::default() })));
+        let passes = Symbol::Scopes(Rc::new(Instances { ascending: true, ..Instances::default() }));
+        if !self.declare(scope, &name, passes) {
+            self.report(taken(&name, body.label.as_ref().map_or(body.span, |label| label.span)));
+        }
         let mut seen = BTreeSet::new();
         loop {
             if !self.in_scope(control, |this| this.generate_condition(cond))? {
@@ -195,4 +201,10 @@ impl<'a> Elaborator<'a> {
         };
         Ok(next as i32)
     }
+}
+
+/// A generate block that cannot be told from something else in its scope.
+fn taken(name: &str, span: Span) -> Diagnostic {
+    let message = format!("`{name}` is the name of something else in this scope, so names in this block are not found");
+    wrong(message, span).with_help("rename one of them")
 }

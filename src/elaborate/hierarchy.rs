@@ -67,6 +67,23 @@ pub(super) enum Work<'a> {
     Cell(CellWork<'a>),
 }
 
+impl Work<'_> {
+    /// The text that asks for this work; copies of it have the same.
+    pub fn span(&self) -> Option<Span> {
+        match self {
+            Work::Assign { target, .. } => Some(target.span),
+            Work::NetInit { value, .. } | Work::VariableInit { value, .. } => Some(value.span),
+            Work::Alias { nets, .. } => nets.first().map(|net| net.span),
+            Work::Process { span, .. } => Some(*span),
+            Work::Gate { instance, .. } => Some(instance.span),
+            Work::Primitive { instance, .. } => Some(instance.span),
+            Work::Connection(connection) => connection.span(),
+            Work::BlackBox(black_box) => Some(black_box.span()),
+            Work::Cell(cell) => Some(cell.span()),
+        }
+    }
+}
+
 /// Which of an array of instances: its position from the right end, and how many there are.
 #[derive(Clone, Copy, Debug)]
 pub(super) struct Slot {
@@ -154,6 +171,7 @@ impl<'a> Elaborator<'a> {
         }
         if !self.modules_elaborated.contains(&module.name.name) {
             self.check_header(module);
+            self.check_module_names(module);
         }
         self.import(scope, &module.imports)?;
         self.parameters(scope, module, outer, overrides)?;
@@ -276,7 +294,10 @@ impl<'a> Elaborator<'a> {
                 }
                 Connection::Named { name, value: Some(value) } => {
                     if body_names.contains(name.name.as_str()) || self.has_parameter(module, &name.name) {
-                        overrides.insert(&name.name, value);
+                        if overrides.insert(&name.name, value).is_some() {
+                            let message = format!("parameter `{}` is overridden twice here", name.name);
+                            self.report(*wrong(message, name.span));
+                        }
                     } else {
                         self.report(Diagnostic::new(
                             Kind::Note,

@@ -12,6 +12,7 @@ pub mod blast;
 mod calls;
 mod case;
 mod cells;
+mod clashes;
 mod constant;
 mod context;
 mod controls;

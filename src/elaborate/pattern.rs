@@ -47,6 +47,7 @@ impl<'a> Elaborator<'a> {
         let mut by_type: Vec<(Rc<Type>, &'a Expr)> = Vec::new();
         let mut position = 0;
         let place = |values: &mut Vec<Option<&'a Expr>>, at: usize, value: &'a Expr| match values.get_mut(at) {
+            Some(Some(_)) => Err(wrong("an item of an assignment pattern that is given twice", value.span)),
             Some(slot) => {
                 *slot = Some(value);
                 Ok(())

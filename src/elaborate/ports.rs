@@ -57,6 +57,16 @@ pub(super) struct ConnectionWork<'a> {
     slot: Option<Slot>,
 }
 
+impl ConnectionWork<'_> {
+    pub fn span(&self) -> Option<Span> {
+        match self.actual {
+            Actual::Expr(expr) => Some(expr.span),
+            Actual::Name(_, span) => Some(span),
+            Actual::Open => None,
+        }
+    }
+}
+
 #[derive(Clone, Debug)]
 pub(super) struct BlackBoxWork<'a> {
     scope: ScopeId,
@@ -69,6 +79,10 @@ pub(super) struct BlackBoxWork<'a> {
 }
 
 impl<'a> BlackBoxWork<'a> {
+    pub fn span(&self) -> Span {
+        self.instance.span
+    }
+
     pub fn missing(
         scope: ScopeId,
         node: InstanceId,
@@ -285,6 +299,12 @@ impl<'a> Elaborator<'a> {
                 }
             };
             match place {
+                Some(place) if actuals.iter().any(|&(taken, _)| taken == place) => self.report(Diagnostic::new(
+                    Kind::Incomplete,
+                    "port connection",
+                    format!("a second connection to the same port of `{}`, which is not taken", module.name.name),
+                    Some(span),
+                )),
                 Some(place) => actuals.push((place, actual)),
                 None => self.report(Diagnostic::new(
                     Kind::Incomplete,
@@ -575,7 +595,12 @@ impl<'a> Elaborator<'a> {
                 Connection::Ordered(value, _) => (value.as_ref().map(Actual::Expr), index.to_string()),
                 Connection::Named { name, value } => (value.as_ref().map(Actual::Expr), name.name.clone()),
                 Connection::Implicit(name) => (Some(Actual::Name(&name.name, name.span)), name.name.clone()),
-                Connection::All(_) => (None, String::new()),
+                Connection::All(span) => {
+                    if work.module.is_none() {
+                        self.report(connects_unknown(&work.name.name, *span));
+                    }
+                    (None, String::new())
+                }
             };
             let Some(actual) = actual else { continue };
             let known = work.module.and_then(|module| {
@@ -698,4 +723,11 @@ impl<'a> Elaborator<'a> {
                     || self.pending_wires.contains(wire)
             })
     }
+}
+
+/// `.*` at an instance whose ports nobody knows.
+fn connects_unknown(module: &str, span: Span) -> Diagnostic {
+    let message = format!("there is no text of module `{module}`, so which nets `.*` connects is unknown");
+    let help = "add the text of the module to the scan, or name the ports that are connected";
+    Diagnostic::new(Kind::Incomplete, "port connection", message, Some(span)).with_help(help)
 }

@@ -247,7 +247,7 @@ impl<'a> Elaborator<'a> {
                 return Some(symbol.clone());
             }
             for &package in &scope.wildcards {
-                if let Some(symbol) = self.find_in_package(package, name, 0) {
+                if let Some(symbol) = self.find_in_package(package, name) {
                     return Some(symbol);
                 }
             }
@@ -256,21 +256,26 @@ impl<'a> Elaborator<'a> {
         None
     }
 
-    /// What a package offers under a name: what it declares, and what it exports of its imports.
-    fn find_in_package(&self, package: ScopeId, name: &str, depth: usize) -> Option<Symbol<'a>> {
-        /// Packages that export each other in a circle are left here.
-        const EXPORT_DEPTH: usize = 16;
-        let scope = self.scope(package);
-        if let Some(symbol) = scope.names.get(name)
-            && (scope.exports_all || !scope.hidden.contains(name))
-        {
-            return Some(symbol.clone());
+    /// What a package offers under a name: what it declares, and what it exports of its imports. Packages may export each
+    /// other in a circle.
+    fn find_in_package(&self, package: ScopeId, name: &str) -> Option<Symbol<'a>> {
+        let mut seen = HashSet::new();
+        let mut ahead = vec![package];
+        while let Some(package) = ahead.pop() {
+            if !seen.insert(package) {
+                continue;
+            }
+            let scope = self.scope(package);
+            if let Some(symbol) = scope.names.get(name)
+                && (scope.exports_all || !scope.hidden.contains(name))
+            {
+                return Some(symbol.clone());
+            }
+            let more = if scope.exports_all { scope.wildcards.as_slice() } else { &[] };
+            // The first export is looked at first, with all that it leads to.
+            ahead.extend(scope.exports.iter().chain(more).rev());
         }
-        if depth >= EXPORT_DEPTH {
-            return None;
-        }
-        let more = if scope.exports_all { scope.wildcards.as_slice() } else { &[] };
-        scope.exports.iter().chain(more).find_map(|&inner| self.find_in_package(inner, name, depth + 1))
+        None
     }
 
     /// The nearest function or task of that name, looking past the variable that a function's name is inside it.
@@ -311,7 +316,7 @@ impl<'a> Elaborator<'a> {
 
     pub fn look_up_in_package(&mut self, package: &Ident, name: &Ident) -> Outcome<Symbol<'a>> {
         let scope = if package.name == "$unit" { self.unit } else { self.package(package)? };
-        self.find_in_package(scope, &name.name, 0)
+        self.find_in_package(scope, &name.name)
             .ok_or_else(|| wrong(format!("package `{}` has no `{}`", package.name, name.name), name.span))
     }
 

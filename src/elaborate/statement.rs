@@ -17,7 +17,7 @@ use crate::syntax::ast::{
 };
 
 /// How many passes a loop may take whose end depends on signals.
-const VARIABLE_PASSES: usize = 4_096;
+const VARIABLE_PASSES: usize = 1_024;
 
 /// Something that a jump can leave.
 #[derive(Clone, PartialEq, Eq, Debug)]

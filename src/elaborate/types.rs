@@ -2,6 +2,7 @@
 //! significant first; the right end of a range and the last member of a structure lie at the low end, for unpacked types
 //! too, so that copying between arrays goes by position.
 
+use std::collections::HashSet;
 use std::rc::Rc;
 
 use super::bits::Bit;
@@ -295,6 +296,15 @@ impl<'a> Elaborator<'a> {
     ) -> Outcome<Rc<Type>> {
         let mut fields = Vec::with_capacity(members.len());
         let mut width = 0usize;
+        let mut names = HashSet::new();
+        for member in members {
+            if !names.insert(member.name.name.as_str()) {
+                return Err(wrong(
+                    format!("`{}` is a member of this type already", member.name.name),
+                    member.name.span,
+                ));
+            }
+        }
         for member in members.iter().rev() {
             let ty = self.data_type(&member.ty)?;
             let ty = self.with_dims(ty, &member.dims, false, member.name.span)?;

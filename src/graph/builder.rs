@@ -1,7 +1,9 @@
 //! Builds a graph node by node. Its only rewriting is the folding of literal constants; sharing happens only between
 //! nodes of the same kind, fan-in and source place, which cannot change any of the three bits of a waveform.
 
-use std::collections::HashMap;
+use std::hash::BuildHasher;
+
+use hashbrown::{DefaultHashBuilder, HashTable};
 
 use super::node::{
     BlackBox, Cell, CellId, GateKind, Instance, InstanceId, Net, NetId, NodeId, NodeKind, Operator, OperatorId, Port,
@@ -22,6 +24,7 @@ pub struct Site {
 pub struct GraphBuilder {
     kinds: Vec<NodeKind>,
     fanins: Vec<Vec<NodeId>>,
+    links: usize,
     sites: Vec<Site>,
     names: Vec<Option<NodeName>>,
     instances: Vec<Instance>,
@@ -32,7 +35,9 @@ pub struct GraphBuilder {
     ports: Vec<Port>,
     black_boxes: Vec<BlackBox>,
     clock_gates: Vec<CellId>,
-    shared: HashMap<(NodeKind, Vec<NodeId>, Site), NodeId>,
+    /// Nodes that the next of the same kind, fan-in and place share, found by these three.
+    shared: HashTable<NodeId>,
+    hasher: DefaultHashBuilder,
     constants: [Option<NodeId>; 2],
 }
 
@@ -44,6 +49,7 @@ impl GraphBuilder {
     fn push(&mut self, kind: NodeKind, fanin: Vec<NodeId>, site: Site) -> NodeId {
         let id = NodeId::new(self.kinds.len());
         self.kinds.push(kind);
+        self.links += fanin.len();
         self.fanins.push(fanin);
         self.sites.push(site);
         self.names.push(None);
@@ -51,11 +57,21 @@ impl GraphBuilder {
     }
 
     fn shared(&mut self, kind: NodeKind, fanin: Vec<NodeId>, site: Site) -> NodeId {
-        if let Some(&id) = self.shared.get(&(kind, fanin.clone(), site)) {
+        let Self { kinds, fanins, sites, shared, hasher, .. } = &*self;
+        let hash = hasher.hash_one((kind, &fanin, site));
+        let same = |&id: &NodeId| {
+            let at = id.index();
+            kinds[at] == kind && fanins[at] == fanin && sites[at] == site
+        };
+        if let Some(&id) = shared.find(hash, same) {
             return id;
         }
-        let id = self.push(kind, fanin.clone(), site);
-        self.shared.insert((kind, fanin, site), id);
+        let id = self.push(kind, fanin, site);
+        let Self { kinds, fanins, sites, shared, hasher, .. } = self;
+        shared.insert_unique(hash, id, |&id| {
+            let at = id.index();
+            hasher.hash_one((kinds[at], &fanins[at], sites[at]))
+        });
         id
     }
 
@@ -132,6 +148,7 @@ impl GraphBuilder {
     pub fn drive(&mut self, wire: NodeId, driver: NodeId) {
         assert_eq!(self.kinds[wire.index()], NodeKind::Wire, "only wires are driven");
         assert!(self.fanins[wire.index()].is_empty(), "a wire has one driver");
+        self.links += 1;
         self.fanins[wire.index()].push(driver);
     }
 
@@ -151,6 +168,11 @@ impl GraphBuilder {
     /// The number of nodes so far.
     pub fn len(&self) -> usize {
         self.kinds.len()
+    }
+
+    /// The number of fan-in links so far.
+    pub fn links(&self) -> usize {
+        self.links
     }
 
     pub fn is_empty(&self) -> bool {

@@ -8,6 +8,7 @@ mod catalogue;
 mod catalogue_explored;
 mod cells;
 mod checked;
+mod clashes;
 mod construct_page;
 mod constructs;
 mod controls;

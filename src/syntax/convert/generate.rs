@@ -100,6 +100,9 @@ impl Converter<'_> {
                             let labels = labels.contents().into_iter().map(|label| self.constant_expression(label));
                             arms.push((labels.collect(), self.generate_block(block)));
                         }
+                        sv::CaseGenerateItem::Default(_) if default.is_some() => {
+                            return self.unsupported("case generate with more than one default", self.span(construct));
+                        }
                         sv::CaseGenerateItem::Default(x) => default = Some(self.generate_block(&x.nodes.2)),
                     }
                 }

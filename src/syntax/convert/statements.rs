@@ -263,6 +263,7 @@ impl Converter<'_> {
     fn case(&self, statement: &sv::CaseStatement) -> StmtKind {
         let mut arms = Vec::new();
         let mut default = None;
+        let mut defaults = 0;
         let case = match statement {
             sv::CaseStatement::Normal(x) => {
                 let (unique, keyword, subject, first, more, _) = &x.nodes;
@@ -277,7 +278,10 @@ impl Converter<'_> {
                                 span: self.span(&**x),
                             });
                         }
-                        sv::CaseItem::Default(x) => default = Some(Box::new(self.statement_or_null(&x.nodes.2))),
+                        sv::CaseItem::Default(x) => {
+                            default = Some(Box::new(self.statement_or_null(&x.nodes.2)));
+                            defaults += 1;
+                        }
                     }
                 }
                 let kind = match keyword {
@@ -300,7 +304,10 @@ impl Converter<'_> {
                                 span: self.span(&**x),
                             });
                         }
-                        sv::CaseInsideItem::Default(x) => default = Some(Box::new(self.statement_or_null(&x.nodes.2))),
+                        sv::CaseInsideItem::Default(x) => {
+                            default = Some(Box::new(self.statement_or_null(&x.nodes.2)));
+                            defaults += 1;
+                        }
                     }
                 }
                 let subject = self.subject(subject);
@@ -308,7 +315,10 @@ impl Converter<'_> {
             }
             sv::CaseStatement::Matches(_) => return StmtKind::Unsupported("case matches".to_string()),
         };
-        StmtKind::Case(case)
+        match defaults {
+            0 | 1 => StmtKind::Case(case),
+            _ => StmtKind::Unsupported("case with more than one default".to_string()),
+        }
     }
 
     fn loop_statement(&self, statement: &sv::LoopStatement) -> StmtKind {
