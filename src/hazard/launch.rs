@@ -12,6 +12,7 @@ mod encode;
 mod exact;
 mod fabric;
 mod launcher;
+mod outputs;
 mod reach;
 mod region;
 mod shown;

@@ -178,6 +178,9 @@ pub struct TargetVerdict {
     pub launches: Vec<LaunchHazard>,
     /// Launches that stayed undecided; sorted.
     pub open_launches: Vec<OpenLaunch>,
+    /// Kinds among the pairs of which it stayed open whether any event shows them: a source that changes alone does. Only
+    /// of targets whose kinds are confirmed one by one; sorted.
+    pub alone: Vec<HazardKind>,
     /// What the verdict as a whole rests on.
     pub reach: Reach,
     /// How the questions about changes of single sources were answered.
@@ -198,6 +201,7 @@ impl TargetVerdict {
             pairs: Vec::new(),
             launches: Vec::new(),
             open_launches: Vec::new(),
+            alone: Vec::new(),
             reach: Reach::AnyState,
             method: Method::Structure,
             launch_method: None,

@@ -36,7 +36,7 @@ use rayon::prelude::*;
 use checked::Checker;
 
 use crate::cache::Cache;
-use crate::graph::{Graph, NetId, NodeId, PortDirection};
+use crate::graph::{Graph, NetId, NodeId, Port, PortDirection};
 use crate::hazard::launch::{Assumptions, Launcher};
 use crate::hazard::{self, Options, TargetVerdict};
 use crate::source::Span;
@@ -90,7 +90,7 @@ pub fn run(
         .iter()
         .flat_map(|watch| graph.nets[watch.net.index()].bits.iter().map(move |&bit| (watch, graph.root(bit))))
         .collect();
-    let outputs: Vec<_> = graph.ports.iter().filter(|port| port.direction != PortDirection::Input).collect();
+    let outputs: Vec<&Port> = graph.ports.iter().filter(|port| port.direction != PortDirection::Input).collect();
 
     let pin_roots = [&pins.controls, &pins.clocks, &pins.enables].into_iter().flat_map(|nets| nets.keys().copied());
     let roots: BTreeSet<NodeId> = pin_roots.chain(watched.iter().map(|&(_, root)| root)).collect();
@@ -112,10 +112,20 @@ pub fn run(
         verdicts.extend(refined.into_iter().map(|verdict| (verdict.target, verdict)));
     }
     let pin_context = &Context { options: &listing, launcher: launcher.as_ref(), cache };
-    let outside_context = &Context { options: &outside, launcher: None, cache };
     verdicts.extend(roots.into_iter().filter(|&root| pins::is_undriven(graph, root)).map(pins::undriven));
     let bits = outputs.iter().flat_map(|port| &graph.nets[port.net.index()].bits);
-    let outside_verdicts = decided(graph, bits.map(|&bit| graph.root(bit)), &outside);
+    let mut outside_verdicts = decided(graph, bits.map(|&bit| graph.root(bit)), &outside);
+    let suspects: Vec<Vec<NodeId>> = suspects(graph, &outputs, &outside_verdicts);
+    let asked = suspects.concat();
+    let outside_launcher =
+        (!options.single_changes && !asked.is_empty()).then(|| Launcher::new(graph, &asked, assumptions, &outside));
+    if let Some(launcher) = &outside_launcher {
+        let of = |root: &NodeId| outside_verdicts.get(root).cloned();
+        let confirmed: Vec<Vec<TargetVerdict>> =
+            suspects.par_iter().map(|roots| launcher.confirm(roots.iter().filter_map(of).collect())).collect();
+        outside_verdicts.extend(confirmed.into_iter().flatten().map(|verdict| (verdict.target, verdict)));
+    }
+    let outside_context = &Context { options: &outside, launcher: outside_launcher.as_ref(), cache };
     let loops = hazard::loops(graph, options);
 
     let checker = Checker { graph, assumptions };
@@ -203,6 +213,18 @@ struct Context<'a> {
     /// Absent where only single changes were looked at.
     launcher: Option<&'a Launcher<'a>>,
     cache: Option<&'a Cache>,
+}
+
+/// The bits of each output that can show anything, each under the first port that has it. Those behind loops of gates are
+/// told by changes of one source.
+fn suspects(graph: &Graph, outputs: &[&Port], verdicts: &pins::Verdicts) -> Vec<Vec<NodeId>> {
+    let mut seen: BTreeSet<NodeId> = BTreeSet::new();
+    let mut suspect = |&bit: &NodeId| {
+        let root = graph.root(bit);
+        let suspect = verdicts.get(&root).is_some_and(|verdict| !verdict.is_clean() && !verdict.follows_loops);
+        (suspect && seen.insert(root)).then_some(root)
+    };
+    outputs.iter().map(|port| graph.nets[port.net.index()].bits.iter().filter_map(&mut suspect).collect()).collect()
 }
 
 /// Decides each root that logic drives once.

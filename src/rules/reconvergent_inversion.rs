@@ -1,7 +1,9 @@
 //! `reconvergent-inversion`: two ways of one change that meet with opposite inversions, on nets that have no cell behind
 //! them to judge by: nets under `// stillwire: watch` (error, every pair listed), and combinational outputs of a top
 //! module (warning, one finding per port; a hazard that only an arithmetic operator causes is no finding there, since
-//! every implementation has it).
+//! every implementation has it). What an output shows by a change of one source counts only when some event shows it.
+
+use std::collections::BTreeSet;
 
 use super::evidence::{self, Subject};
 use super::finding::{Finding, Pin, PinKind, Rule, Severity};
@@ -29,13 +31,14 @@ pub(super) fn output(graph: &Graph, port: &Port, verdicts: &Verdicts, context: &
     let net = &graph.nets[port.net.index()];
     let path = &graph.instances[port.instance.index()].path;
     let of_bit = |bit: NodeId| verdicts.get(&graph.root(bit)).filter(|verdict| !verdict.is_clean());
-    let proven = |verdict: &&TargetVerdict| verdict.pairs.iter().any(|pair| !pair.hazards.is_empty());
+    let proven = |verdict: &&TargetVerdict| {
+        verdict.pairs.iter().any(|pair| !pair.hazards.is_empty()) || !verdict.launches.is_empty()
+    };
     let bits: Vec<usize> =
         (0..net.bits.len()).filter(|&bit| of_bit(net.bits[bit]).as_ref().is_some_and(proven)).collect();
-    let shown = match bits.first() {
-        Some(&first) => of_bit(net.bits[first])?,
-        None => net.bits.iter().find_map(|&bit| of_bit(bit))?,
-    };
+    let verdicts = told(bits.iter().filter_map(|&bit| of_bit(net.bits[bit])));
+    let open = || net.bits.iter().find_map(|&bit| of_bit(bit));
+    let shown = verdicts.first().or_else(open)?;
     let name = format!("{path}.{}", net.name);
     let what = match (net.bits.iter().position(|&bit| graph.root(bit) == shown.target), port.range) {
         (Some(bit), Some(range)) => format!("bit {} of the combinational output `{name}`", index(range, bit)),
@@ -44,6 +47,9 @@ pub(super) fn output(graph: &Graph, port: &Port, verdicts: &Verdicts, context: &
     let judge = |_: HazardKind| (Severity::Warning, "whatever reads the output outside sees the pulse".to_string());
     let pin = pin(PinKind::Output);
     let subject = Subject { rule: Rule::ReconvergentInversion, pin, what, judge: &judge, cure: CURE_OUTPUT };
+    // A cover speaks of launches only where one is among the hazards.
+    let launcher = context.launcher.filter(|_| !shown.launches.is_empty());
+    let context = &Context { launcher, ..*context };
     let mut finding = evidence::finding(graph, shown, &subject, context)?;
     if let (Some(&low), Some(&high), Some(range)) = (bits.first(), bits.last(), port.range) {
         let ends = [index(range, low), index(range, high)];
@@ -54,18 +60,50 @@ pub(super) fn output(graph: &Graph, port: &Port, verdicts: &Verdicts, context: &
     (finding.fingerprint, finding.family) = (identity.fingerprint, identity.family);
     finding.instance = path.clone();
     finding.net = name;
-    for verdict in bits.iter().filter_map(|&bit| of_bit(net.bits[bit])) {
+    for verdict in &verdicts {
         for hazard in evidence::hazards(graph, verdict, &judge, context) {
             if finding.hazards.iter().all(|known| known.kind != hazard.kind) {
                 finding.hazards.push(hazard);
             }
         }
     }
+    let alone: BTreeSet<HazardKind> = verdicts.iter().flat_map(|verdict| verdict.alone.iter().copied()).collect();
+    if !alone.is_empty() {
+        let kinds: Vec<&str> = alone.iter().map(|kind| kind.name()).collect();
+        finding.notes.push(format!(
+            "{} by a change of one signal alone: whether any edge of the design makes that change, or another that shows \
+             the same, stayed undecided",
+            kinds.join(" and ")
+        ));
+    }
     if bits.len() > 1 {
         let all = words::count(net.bits.len(), "bit");
         finding.notes.insert(0, format!("{} of {all} of this port can glitch; one is shown", bits.len()));
     }
     Some(finding)
+}
+
+/// The verdicts on the bits of a port as they are told, the one to be shown first: a kind that is confirmed on one bit is
+/// not told of another where that stayed open.
+fn told<'a>(bits: impl Iterator<Item = &'a TargetVerdict>) -> Vec<TargetVerdict> {
+    let mut verdicts: Vec<TargetVerdict> = bits.cloned().collect();
+    let kinds = |verdict: &TargetVerdict| -> BTreeSet<HazardKind> {
+        let pairs = verdict.pairs.iter().flat_map(|pair| &pair.hazards).map(|&(kind, _)| kind);
+        pairs
+            .filter(|kind| !verdict.alone.contains(kind))
+            .chain(verdict.launches.iter().map(|found| found.kind))
+            .collect()
+    };
+    let confirmed: BTreeSet<HazardKind> = verdicts.iter().flat_map(kinds).collect();
+    for verdict in &mut verdicts {
+        let told = |kind: &HazardKind| !verdict.alone.contains(kind) || !confirmed.contains(kind);
+        verdict.pairs.iter_mut().for_each(|pair| pair.hazards.retain(|(kind, _)| told(kind)));
+        verdict.alone.retain(|kind| !confirmed.contains(kind));
+        verdict.pairs.retain(|pair| !pair.hazards.is_empty() || !pair.undecided.is_empty());
+    }
+    verdicts.retain(|verdict| !verdict.is_clean());
+    verdicts.sort_by_key(|verdict| kinds(verdict).is_empty());
+    verdicts
 }
 
 /// The declared index of a bit, counted from the least significant one.

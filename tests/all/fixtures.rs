@@ -109,6 +109,7 @@ fixtures! {
     latch_ring
     loops
     missing_module
+    output_events
     reset_release
     reset_synchronised
     selection

@@ -10,7 +10,7 @@ use std::collections::{BTreeMap, BTreeSet};
 use std::fmt::Write;
 
 use stillwire::graph::NodeId;
-use stillwire::hazard::{Options, Step, launch};
+use stillwire::hazard::{self, Options, Step, TargetVerdict, launch};
 
 use crate::explorer::Op;
 use crate::launch_explorer::{Cell, Control, Explorer, Machine, Net, Shown, Trigger, When};
@@ -502,6 +502,63 @@ fn the_engine_shows_exactly_what_the_launch_explorer_shows() {
     }
     assert!(failures.is_empty(), "{} nets differ, first:\n{}", failures.len(), failures.join("\n"));
     assert!(hazards > 700, "{hazards} hazards compared");
+}
+
+/// What single changes show of a net, kept as far as events show it: nets one by one, where every kind is decided, and
+/// all gates of a circuit as if they were the bits of a port, where each kind is confirmed once and each net once.
+#[test]
+fn confirmed_kinds_are_those_that_the_launch_explorer_shows() {
+    const CONFIRMED: u64 = 150;
+    let (mut kept, mut dropped, mut launched) = (0, 0, 0);
+    for seed in FIRST_SEED..FIRST_SEED + CONFIRMED {
+        let machine = machine(seed);
+        let text = module("t", &machine);
+        let folder = tempfile::tempdir().expect("a temporary folder");
+        let file = folder.path().join("t.v");
+        std::fs::write(&file, &text).expect("the file is written");
+        let graph = graph(&file, "t");
+        let nets: Vec<Net> = (0..machine.gates.len()).map(Net::Gate).collect();
+        let nodes: Vec<NodeId> = nets.iter().map(|&net| driver(&graph, &format!("t.{}", name(net)))).collect();
+        let options = Options { one_per_kind: true, ..Options::default() };
+        let alone = hazard::decide(&graph, &nodes, &options);
+        let mut explorer = Explorer::new(&machine);
+        let real: Vec<BTreeSet<&str>> = nets
+            .iter()
+            .map(|&net| explorer.shown(net, |_, _| true).iter().map(|one| one.kind.name()).collect())
+            .collect();
+        let assumptions = launch::Assumptions::default();
+        let launcher = launch::Launcher::new(&graph, &nodes, &assumptions, &options);
+        for ((verdict, real), &net) in alone.iter().zip(&real).zip(&nets) {
+            let before = told(verdict);
+            let after = launcher.confirm(vec![verdict.clone()]).pop().expect("one verdict");
+            assert!(after.alone.is_empty(), "seed {seed}, {}: {after:?}\n{text}", name(net));
+            let expected: BTreeSet<&str> = before.intersection(real).copied().collect();
+            assert_eq!(told(&after), expected, "seed {seed}, {}: {verdict:?}\n{text}", name(net));
+            kept += expected.len();
+            dropped += before.len() - expected.len();
+            launched += after.launches.len();
+        }
+        let together = launcher.confirm(alone.clone());
+        let mut union: BTreeSet<&str> = BTreeSet::new();
+        let mut expected: BTreeSet<&str> = BTreeSet::new();
+        for (((one, verdict), real), &net) in together.iter().zip(&alone).zip(&real).zip(&nets) {
+            let open: BTreeSet<&str> = one.alone.iter().map(|kind| kind.name()).collect();
+            let confirmed: BTreeSet<&str> = told(one).difference(&open).copied().collect();
+            let possible: BTreeSet<&str> = told(verdict).intersection(real).copied().collect();
+            assert!(confirmed.is_subset(&possible), "seed {seed}, {}: {one:?}\n{text}", name(net));
+            assert_eq!(confirmed.is_empty(), possible.is_empty(), "seed {seed}, {}: {one:?}\n{text}", name(net));
+            union.extend(confirmed);
+            expected.extend(possible);
+        }
+        assert_eq!(union, expected, "seed {seed}\n{text}");
+    }
+    assert!(kept > 100 && dropped > 10 && launched > 5, "{kept} kinds kept, {dropped} dropped, {launched} by launches");
+}
+
+/// The kinds that a verdict shows.
+fn told(verdict: &TargetVerdict) -> BTreeSet<&'static str> {
+    let pairs = verdict.pairs.iter().flat_map(|pair| &pair.hazards).map(|(kind, _)| kind.name());
+    pairs.chain(verdict.launches.iter().map(|found| found.kind.name())).collect()
 }
 
 fn step(step: Step) -> When {

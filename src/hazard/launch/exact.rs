@@ -39,6 +39,11 @@ impl Target {
         Self { net: Some(net), products: Vec::new(), sums: Vec::new() }
     }
 
+    /// The node of a net as it stands, without a cover.
+    pub(super) fn plain_node(&self) -> Option<usize> {
+        self.net.filter(|_| self.products.is_empty() && self.sums.is_empty()).map(Edge::node)
+    }
+
     /// The nodes that it is made of.
     pub(super) fn nodes(&self) -> Vec<usize> {
         let terms = self.products.iter().chain(&self.sums).flatten();
@@ -56,6 +61,8 @@ pub(super) struct Inquiry<'a> {
     pub(super) second: Move,
     bounds: Bounds<'a>,
     conflicts: u64,
+    /// What may still be spent: each look at a model costs what the encoder holds, and so does each conflict.
+    pub(super) effort: u64,
     /// Whether a ring of open latches was met: its data is bound to nothing, so no model tells anything any more.
     looped: bool,
     /// Whether an answer leans on the reachable states.
@@ -87,7 +94,20 @@ impl<'a> Inquiry<'a> {
         let first = encoder.target(Layer::First, target)?;
         let second = encoder.target(Layer::Second, target)?;
         encoder.assume(target)?;
-        Ok(Self { encoder, first, second, bounds, conflicts, looped: false, leans: false })
+        Ok(Self { encoder, first, second, bounds, conflicts, effort: u64::MAX, looped: false, leans: false })
+    }
+
+    /// Asks about another target from here on. What was written down for the ones before stays, so that an event which is
+    /// found is one, but "impossible" may be due to a cell that only they depend on.
+    ///
+    /// # Errors
+    /// As [`Self::new`]; the inquiry then is good for nothing more.
+    pub(super) fn aim(&mut self, target: &Target, bounds: Bounds<'a>, conflicts: u64) -> Result<(), Looped> {
+        self.first = self.encoder.target(Layer::First, target)?;
+        self.second = self.encoder.target(Layer::Second, target)?;
+        self.encoder.assume(target)?;
+        (self.bounds, self.conflicts) = (bounds, conflicts);
+        Ok(())
     }
 
     /// Whether the target can do more in either step than hold still or change cleanly once.
@@ -102,13 +122,16 @@ impl<'a> Inquiry<'a> {
             return Err(Undecided::Loop);
         }
         for _ in 0..ROUNDS {
-            if self.encoder.size() > SIZE {
+            let size = self.encoder.size();
+            if size > SIZE || self.effort == 0 {
                 return Err(Undecided::Budget);
             }
             let solver = &mut self.encoder.clauses.solver;
             let before = solver.conflicts();
             let answer = solver.solve(wanted, self.conflicts);
-            self.conflicts = self.conflicts.saturating_sub(solver.conflicts() - before);
+            let conflicts = solver.conflicts() - before;
+            self.conflicts = self.conflicts.saturating_sub(conflicts);
+            self.effort = self.effort.saturating_sub((conflicts + 1).saturating_mul(size as u64));
             match answer {
                 Answer::Unsatisfiable => return Ok(false),
                 Answer::Open => return Err(Undecided::Budget),
@@ -305,5 +328,41 @@ impl Snapshot<'_, '_> {
             Some(enable) if self.value(enable) => self.value(cell.data) == output,
             _ => true,
         }
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::super::Assumptions;
+    use super::*;
+    use crate::graph::text;
+
+    /// The bound is on what is done, not on time, so that every run gives the same answers.
+    #[test]
+    fn an_inquiry_stops_when_its_effort_is_spent() {
+        let design = "
+s = input
+a = input
+b = input
+ns = not s
+u = and s a
+v = and ns b
+t = or u v
+";
+        let parsed = text::parse(design).unwrap_or_else(|error| panic!("{error}"));
+        let node = |label: &str| parsed.node(label).unwrap_or_else(|| panic!("no {label}"));
+        let assumptions = Assumptions::default();
+        let fabric = Fabric::new(&parsed.graph, &[node("t")], &assumptions, false);
+        let place = |label: &str| fabric.place(node(label)).unwrap_or_else(|| panic!("no place"));
+        let event = Event { root: place("s").node(), rises: true };
+        let target = Target::plain(place("t"));
+        let inquiry = Inquiry::new(&fabric, event, &target, Bounds::default(), 100);
+        let Ok(mut inquiry) = inquiry else { panic!("there is no loop") };
+        let hazard = inquiry.first.wave.h.unwrap_or_else(|| panic!("it is suspect"));
+        inquiry.effort = 1;
+        assert_eq!(inquiry.ask(&[hazard]), Ok(true), "what was begun is finished");
+        assert_eq!(inquiry.ask(&[hazard]), Err(Undecided::Budget));
+        inquiry.effort = u64::MAX;
+        assert_eq!(inquiry.ask(&[hazard]), Ok(true));
     }
 }

@@ -7,6 +7,7 @@ use super::Assumptions;
 use crate::graph::{self, CellKind, Graph, NodeId, NodeKind};
 use crate::hazard::cone::{Cone, Edge, Op};
 use crate::hazard::order::Order;
+use crate::hazard::parity::Region;
 
 /// What a free node of the cone is.
 #[derive(Clone, Copy, PartialEq, Eq, Debug)]
@@ -247,21 +248,40 @@ impl<'a> Fabric<'a> {
         self.roots_of_pin.get(&pin).map_or(&[], Vec::as_slice)
     }
 
-    /// The roots whose events can move a target: those it depends on within a step, and those that make the cells among
-    /// what it depends on take new values; ascending.
-    pub(super) fn roots(&self, nodes: &[usize]) -> Vec<usize> {
-        let mut roots: BTreeSet<usize> = BTreeSet::new();
-        for node in self.expanded(nodes) {
-            if self.is_root(node) {
-                roots.insert(node);
-            }
+    /// The roots whose events can show anything at a target, ascending: those that make the cells among what it depends on
+    /// within a step do something, and those that may show a hazard of their own there. `net` is the target where it is a
+    /// net as it stands, without a cover.
+    pub(super) fn roots(&self, nodes: &[usize], net: Option<usize>) -> Vec<usize> {
+        let expanded = self.expanded(nodes);
+        let mut moving: BTreeSet<usize> = BTreeSet::new();
+        for &node in &expanded {
             let Some(cell) = self.cell(node) else { continue };
             let values = cell.controls.iter().map(|control| control.value);
-            for pin in cell.pins().chain(values) {
-                roots.extend(self.roots_of(pin.node()));
+            let data = cell.enable.map(|_| cell.data);
+            for pin in cell.pins().chain(values).chain(data) {
+                moving.extend(self.roots_of(pin.node()));
             }
         }
-        roots.into_iter().collect()
+        let looped = expanded.iter().any(|&node| matches!(self.role(node), Role::Looped(_)));
+        let own: Vec<usize> = expanded.into_iter().filter(|&node| self.is_root(node)).collect();
+        if looped {
+            moving.extend(own);
+            return moving.into_iter().collect();
+        }
+        // What moves no cell only passes through gates, and as the root of an event a cell is not judged there.
+        let live = net.map(|net| {
+            let mut live = vec![false; self.cone.len()];
+            self.cone.closure(std::iter::once(net), |_| true).into_iter().for_each(|node| live[node as usize] = true);
+            (net, live)
+        });
+        for root in own.into_iter().filter(|&root| self.role(root) == Role::Outside) {
+            let suspect =
+                |(net, live): &(usize, Vec<bool>)| Region::new(&self.cone, root, live).suspect(*net).is_some();
+            if !moving.contains(&root) && live.as_ref().is_none_or(suspect) {
+                moving.insert(root);
+            }
+        }
+        moving.into_iter().collect()
     }
 
     /// The cells in the transitive fan-in of a target, through every pin; `None` when there are more than `most`.
@@ -294,5 +314,44 @@ impl Cell {
     pub(super) fn pins(&self) -> impl Iterator<Item = Edge> + '_ {
         let clocks = self.clocks.iter().map(|&(clock, _)| clock);
         clocks.chain(self.enable).chain(self.controls.iter().map(|control| control.net))
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::graph::text;
+
+    /// A decode of registers resets a flip-flop, so that each of them starts events of its own; none of these can make the
+    /// decode do anything but follow. Of the inputs, only one splits into ways that meet again.
+    #[test]
+    fn only_events_that_can_show_something_are_asked_about() {
+        let design = "
+clk = input
+d = input
+s = input
+e = input
+a = flip-flop
+b = flip-flop
+o = flip-flop
+na = not a
+ns = not s
+u = and s a
+v = and ns b
+t = or u v e
+c0 = cell a data d posedge clk
+c1 = cell b data na posedge clk
+c2 = cell o data d posedge clk control t 1 d
+";
+        let parsed = text::parse(design).unwrap_or_else(|error| panic!("{error}"));
+        let node = |label: &str| parsed.node(label).unwrap_or_else(|| panic!("no {label}"));
+        let assumptions = Assumptions::default();
+        let fabric = Fabric::new(&parsed.graph, &[node("t")], &assumptions, false);
+        let net = fabric.place(node("t")).unwrap_or_else(|| panic!("no place")).node();
+        let names = |roots: Vec<usize>| -> Vec<NodeId> { roots.iter().map(|&root| fabric.cone.origin[root]).collect() };
+        assert!(fabric.cells.iter().filter(|cell| cell.is_root).count() >= 2, "the registers are roots");
+        assert_eq!(names(fabric.roots(&[net], Some(net))), [node("clk"), node("s")]);
+        // Behind a cover, an input may show something that it does not show at the net.
+        assert_eq!(names(fabric.roots(&[net], None)), [node("clk"), node("s"), node("e")]);
     }
 }

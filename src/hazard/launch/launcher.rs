@@ -6,7 +6,7 @@ use std::collections::BTreeSet;
 
 use super::Assumptions;
 use super::describe::describe;
-use super::encode::{Event, Layer, Looped};
+use super::encode::{Event, Layer};
 use super::exact::{Bounds, Inquiry, Target, WHOLE};
 use super::fabric::{Fabric, Role};
 use super::reach::Reachable;
@@ -25,6 +25,9 @@ const FEWER: usize = 32;
 /// Literals and waveforms of all events of a target that are kept from pass to pass.
 const KEPT: usize = 1_000_000;
 
+/// What all answers about one target may cost; see [`Inquiry::effort`]. Some seconds of one core.
+const EFFORT: u64 = 100_000_000;
+
 /// Why a cover does not hold under launches.
 #[derive(Clone, Copy, PartialEq, Eq, Debug)]
 pub(in crate::hazard) enum Unproven {
@@ -35,8 +38,8 @@ pub(in crate::hazard) enum Unproven {
 
 /// The design, ready for questions about many targets; see the module documentation.
 pub struct Launcher<'a> {
-    fabric: Fabric<'a>,
-    options: Options,
+    pub(super) fabric: Fabric<'a>,
+    pub(super) options: Options,
 }
 
 impl<'a> Launcher<'a> {
@@ -79,9 +82,11 @@ impl<'a> Launcher<'a> {
         let leans = verdict.reach == Reach::ReachableStates;
         let reachable = if leans { self.reachable(net) } else { None };
         let bounds = Bounds { whole: whole.as_deref(), reachable: reachable.as_ref() };
+        let mut effort = EFFORT;
         for event in self.events(&covered) {
             let inquiry = Inquiry::new(&self.fabric, event, &covered, bounds, self.options.conflicts);
             let mut inquiry = inquiry.map_err(|_| Unproven::Open)?;
+            inquiry.effort = effort.saturating_sub(inquiry.encoder.size() as u64);
             for (step, _, wanted) in questions(&inquiry) {
                 match inquiry.ask(&wanted) {
                     Ok(false) => {}
@@ -93,12 +98,16 @@ impl<'a> Launcher<'a> {
                     }
                 }
             }
+            effort = inquiry.effort;
+            if effort == 0 {
+                return Err(Unproven::Open);
+            }
         }
         Ok(())
     }
 
-    fn events(&self, target: &Target) -> Vec<Event> {
-        let roots = self.fabric.roots(&target.nodes());
+    pub(super) fn events(&self, target: &Target) -> Vec<Event> {
+        let roots = self.fabric.roots(&target.nodes(), target.plain_node());
         roots.into_iter().flat_map(|root| [false, true].map(|rises| Event { root, rises })).collect()
     }
 }
@@ -109,15 +118,24 @@ struct Events<'a, 'b> {
     bounds: Bounds<'b>,
     target: Target,
     events: Vec<(Event, Option<Inquiry<'b>>)>,
-    looped: Vec<Event>,
+    /// The events that some question was not asked of, and why.
+    left: Vec<(Event, Undecided)>,
+    effort: u64,
     /// Whether some answer leaned on the reachable states.
     lean: bool,
 }
 
 impl<'a, 'b> Events<'a, 'b> {
     fn new(launcher: &'b Launcher<'a>, bounds: Bounds<'b>, target: &Target) -> Self {
-        let mut this =
-            Self { launcher, bounds, target: target.clone(), events: Vec::new(), looped: Vec::new(), lean: false };
+        let mut this = Self {
+            launcher,
+            bounds,
+            target: target.clone(),
+            events: Vec::new(),
+            left: Vec::new(),
+            effort: EFFORT,
+            lean: false,
+        };
         let mut kept = 0;
         for event in launcher.events(target) {
             match this.inquiry(event) {
@@ -126,20 +144,21 @@ impl<'a, 'b> Events<'a, 'b> {
                     this.events.push((event, (kept < KEPT).then_some(inquiry)));
                 }
                 Ok(_) => {}
-                Err(_) => this.looped.push(event),
+                Err(reason) => this.left.push((event, reason)),
             }
         }
         this
     }
 
-    fn inquiry(&self, event: Event) -> Result<Inquiry<'b>, Looped> {
+    fn inquiry(&mut self, event: Event) -> Result<Inquiry<'b>, Undecided> {
+        if self.effort == 0 {
+            return Err(Undecided::Budget);
+        }
         let conflicts = self.launcher.options.conflicts;
-        Inquiry::new(&self.launcher.fabric, event, &self.target, self.bounds, conflicts)
-    }
-
-    /// The events that need a loop.
-    fn looped(&mut self) -> Vec<Event> {
-        std::mem::take(&mut self.looped)
+        let inquiry = Inquiry::new(&self.launcher.fabric, event, &self.target, self.bounds, conflicts);
+        let inquiry = inquiry.map_err(|_| Undecided::Loop)?;
+        self.effort = self.effort.saturating_sub(inquiry.encoder.size() as u64);
+        Ok(inquiry)
     }
 
     fn each(&mut self, mut work: impl FnMut(&mut Inquiry<'b>)) {
@@ -148,13 +167,17 @@ impl<'a, 'b> Events<'a, 'b> {
             let mut made = None;
             let inquiry = match kept {
                 Some(inquiry) => inquiry,
-                // It could be made before.
                 None => match self.inquiry(*event) {
                     Ok(inquiry) => made.insert(inquiry),
-                    Err(_) => continue,
+                    Err(reason) => {
+                        self.left.push((*event, reason));
+                        continue;
+                    }
                 },
             };
+            inquiry.effort = self.effort;
             work(inquiry);
+            self.effort = inquiry.effort;
             self.lean |= inquiry.leans;
         }
         self.events = events;
@@ -162,20 +185,20 @@ impl<'a, 'b> Events<'a, 'b> {
 }
 
 /// A (source, kind) pair that a single change could show.
-struct Candidate {
-    source: NodeId,
+pub(super) struct Candidate {
+    pub(super) source: NodeId,
     /// A free node.
-    node: usize,
-    kind: HazardKind,
-    supposed: Result<Witness, Undecided>,
-    found: Option<Witness>,
+    pub(super) node: usize,
+    pub(super) kind: HazardKind,
+    pub(super) supposed: Result<Witness, Undecided>,
+    pub(super) found: Option<Witness>,
     /// Why some event that could show it stayed open.
-    open: Option<Undecided>,
+    pub(super) open: Option<Undecided>,
 }
 
 /// What a candidate's event must be like, in the order in which they are looked for.
 #[derive(Clone, Copy, PartialEq, Eq, Debug)]
-enum Fit {
+pub(super) enum Fit {
     /// The witness that is known, which was made to be read, happens in it.
     Supposed,
     /// The source changes once.
@@ -185,23 +208,23 @@ enum Fit {
 }
 
 /// One target being worked on.
-struct Refinement<'a, 'b> {
+pub(super) struct Refinement<'a, 'b> {
     launcher: &'b Launcher<'a>,
-    net: Edge,
-    target: Target,
-    verdict: TargetVerdict,
+    pub(super) net: Edge,
+    pub(super) target: Target,
+    pub(super) verdict: TargetVerdict,
     /// The free nodes of the target's combinational cone.
     frees: Vec<usize>,
     /// Whether latches are among them.
     has_latches: bool,
-    candidates: Vec<Candidate>,
+    pub(super) candidates: Vec<Candidate>,
     /// Pairs that no event is asked about: what a combinational loop leaves open.
-    kept: Vec<Pair>,
+    pub(super) kept: Vec<Pair>,
     open: BTreeSet<OpenLaunch>,
 }
 
 impl<'a, 'b> Refinement<'a, 'b> {
-    fn new(launcher: &'b Launcher<'a>, net: Edge, mut verdict: TargetVerdict) -> Self {
+    pub(super) fn new(launcher: &'b Launcher<'a>, net: Edge, mut verdict: TargetVerdict) -> Self {
         let fabric = &launcher.fabric;
         let frees = fabric.frees(&[net.node()]);
         let latch = |&node: &usize| fabric.cell(node).is_some_and(|cell| cell.enable.is_some());
@@ -236,14 +259,6 @@ impl<'a, 'b> Refinement<'a, 'b> {
         let whole = fabric.closure(&self.target.nodes(), WHOLE);
         let bounds = Bounds { whole: whole.as_deref(), reachable };
         let mut events = Events::new(self.launcher, bounds, &self.target);
-        for event in events.looped() {
-            for candidate in &mut self.candidates {
-                if fabric.role(candidate.node) != Role::Outside || candidate.node == event.root {
-                    candidate.open = Some(Undecided::Loop);
-                }
-            }
-            self.leave_open(event, Undecided::Loop);
-        }
         // A witness that is known already was made to be read; it is kept where it fits some event.
         events.each(|inquiry| self.confirm(inquiry, Fit::Supposed));
         events.each(|inquiry| self.confirm(inquiry, Fit::Clean));
@@ -254,6 +269,14 @@ impl<'a, 'b> Refinement<'a, 'b> {
         let mut launches = Vec::new();
         events.each(|inquiry| self.launches(inquiry, &mut launches));
         launches.sort_by_key(|found: &LaunchHazard| found.witness.changes.len());
+        for (event, reason) in std::mem::take(&mut events.left) {
+            for candidate in &mut self.candidates {
+                if fabric.role(candidate.node) != Role::Outside || candidate.node == event.root {
+                    candidate.open = Some(reason);
+                }
+            }
+            self.leave_open(event, reason);
+        }
         let leans = events.lean;
         if !self.candidates.is_empty() {
             self.verdict.method = Method::Launches;
@@ -274,7 +297,7 @@ impl<'a, 'b> Refinement<'a, 'b> {
     }
 
     /// Looks for the candidates in one event: each pair's source alone may move in the step that shows it.
-    fn confirm(&mut self, inquiry: &mut Inquiry<'_>, fit: Fit) {
+    pub(super) fn confirm(&mut self, inquiry: &mut Inquiry<'_>, fit: Fit) {
         for index in 0..self.candidates.len() {
             let candidate = &self.candidates[index];
             if candidate.found.is_some() {
@@ -403,7 +426,10 @@ impl<'a, 'b> Refinement<'a, 'b> {
             let explained = self.candidates.iter().any(|one| one.kind == kind && one.found.is_some());
             match inquiry.ask(&wanted) {
                 Ok(true) => {
-                    self.move_fewer(inquiry, step, wanted);
+                    if !self.move_fewer(inquiry, step, wanted) {
+                        self.leave_open(inquiry.encoder.event, Undecided::Budget);
+                        continue;
+                    }
                     let witness = describe(inquiry, self.net, step);
                     let cause = witness.launch.as_ref().map(|launch| launch.cause);
                     if !explained || cause == Some(Cause::Function) {
@@ -418,8 +444,9 @@ impl<'a, 'b> Refinement<'a, 'b> {
         }
     }
 
-    /// Asks again with ever more sources held still; the last model is one that fits.
-    fn move_fewer(&self, inquiry: &mut Inquiry<'_>, step: Step, mut wanted: Vec<Literal>) {
+    /// Asks again with ever more sources held still; the last model is one that fits, unless the effort was spent, which
+    /// gives false.
+    pub(super) fn move_fewer(&self, inquiry: &mut Inquiry<'_>, step: Step, mut wanted: Vec<Literal>) -> bool {
         let mut stale = false;
         let layers: &[Layer] = if step == Step::Both { &[Layer::First, Layer::Second] } else { &[Layer::Second] };
         let mut tried = 0;
@@ -434,10 +461,8 @@ impl<'a, 'b> Refinement<'a, 'b> {
                 }
             }
         }
-        if stale {
-            // What was possible before is so again.
-            let _ = inquiry.ask(&wanted);
-        }
+        // What was possible before is so again.
+        !stale || inquiry.ask(&wanted) == Ok(true)
     }
 
     fn finish(mut self, launches: Vec<LaunchHazard>) -> TargetVerdict {

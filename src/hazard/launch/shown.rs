@@ -31,7 +31,7 @@ pub fn shown(
     let Some(net) = fabric.place(target) else { return (found, open) };
     let target = Target::plain(net);
     let whole = fabric.closure(&target.nodes(), WHOLE);
-    for root in fabric.roots(&target.nodes()) {
+    for root in fabric.roots(&target.nodes(), target.plain_node()) {
         for rises in [false, true] {
             let event = Event { root, rises };
             let origin = fabric.cone.origin[root];
