@@ -18,11 +18,11 @@ use crate::hazard::solver::Literal;
 use crate::hazard::{HazardKind, Launch, LaunchHazard, Method, Pair, Reach, Step, TargetVerdict, Undecided, Witness};
 
 /// What all answers about the nets of one call may cost; see [`Inquiry::effort`].
-const EFFORT: u64 = 16_000_000;
+const EFFORT: u64 = 10_000_000;
 
 /// What of it may go to the question whether a kind is shown by its source alone, because a witness that is easy to read
 /// is worth less than an answer.
-const READABLE: u64 = 1_000_000;
+const READABLE: u64 = 250_000;
 
 /// Literals and waveforms beyond which a new inquiry is begun.
 const SHARED: usize = 100_000;
@@ -125,6 +125,10 @@ impl<'a, 'b> Group<'a, 'b> {
                 open.insert(kind);
                 continue;
             }
+            if self.effort == 0 {
+                open.insert(kind);
+                continue;
+            }
             self.alone(&mut asked, kind);
             if !confirmed(&asked.candidates).contains(&kind) {
                 match self.any(&asked, kind, bounds) {
@@ -151,11 +155,14 @@ impl<'a, 'b> Group<'a, 'b> {
         asked.candidates = wanted;
         let mut readable = self.effort.min(READABLE);
         for event in events {
+            if readable == 0 {
+                break;
+            }
             let Some(inquiry) = self.shared(event, asked.net) else { continue };
             inquiry.effort = readable;
             asked.confirm(inquiry, Fit::Clean);
             let left = inquiry.effort;
-            self.effort -= readable - left;
+            self.effort = self.effort.saturating_sub(readable - left);
             readable = left;
         }
         for candidate in &mut asked.candidates {
