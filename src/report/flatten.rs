@@ -316,9 +316,13 @@ impl<'g> Writer<'g> {
         }
         connections.sort();
         let connections: Vec<String> = connections.into_iter().map(|(_, text)| text).collect();
-        let path = &self.graph.instances[item.instance.index()].path;
+        // Instances need no name in some texts, and two of them then have the same.
+        let mut name = self.graph.instances[item.instance.index()].path.clone();
+        while !self.taken.insert(name.clone()) {
+            name.push('$');
+        }
         let module = identifier(&item.module);
-        self.line(format!("  {module} \\{path}  ({});", connections.join(", ")));
+        self.line(format!("  {module} \\{name}  ({});", connections.join(", ")));
     }
 
     /// The tables that some node of `nodes` uses, as primitive declarations.
