@@ -136,7 +136,11 @@ fn pins(report: &Report, text: &mut String) {
     text.push_str(
         "  asked of each: whether a change of one signal, or an edge with all that it launches, can glitch it",
     );
-    text.push_str(if pins.get(PinKind::Output).nets > 0 { "; of outputs: one signal only\n" } else { "\n" });
+    text.push_str(if pins.get(PinKind::Output).nets > 0 {
+        "; of outputs: one signal, where some event makes the change\n"
+    } else {
+        "\n"
+    });
     if pins.clean_if_reached > 0 {
         let _ = writeln!(text, "  of the clean, only in the states reachable from reset: {}", pins.clean_if_reached);
     }

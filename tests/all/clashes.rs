@@ -140,3 +140,15 @@ fn what_only_looks_like_a_clash_is_read() {
          for (genvar i = 0; i < 1; i++) begin : h wire z = a; end endmodule",
     );
 }
+
+/// Found by the fuzzer: two instances that the text gives no name had one name in the flattened netlist.
+#[test]
+fn instances_without_a_name_are_told_apart_when_flattened() {
+    let folder = tempfile::tempdir().expect("a temporary folder");
+    let file = folder.path().join("t.v");
+    std::fs::write(&file, "module t(input c, output z); g(z, c); h(z, c); endmodule").expect("written");
+    let (netlist, _) = stillwire::flatten(&request(vec![file], 1), None, &|_| None, &|_| {}).expect("read");
+    let (findings, _) = scan(&netlist);
+    assert!(netlist.contains("  g ") && netlist.contains("  h "), "{netlist}");
+    assert!(!findings.iter().any(|finding| finding.contains("twice")), "{findings:?}\n{netlist}");
+}

@@ -9,7 +9,7 @@
 use std::collections::{BTreeMap, BTreeSet};
 use std::fmt::Write;
 
-use stillwire::graph::NodeId;
+use stillwire::graph::{Graph, NodeId};
 use stillwire::hazard::{self, Options, Step, TargetVerdict, launch};
 
 use crate::explorer::Op;
@@ -459,6 +459,13 @@ fn the_program_finds_exactly_what_the_launch_explorer_finds() {
     assert!(10 * exact > 9 * nets, "one answer is possible for {exact} of {nets} nets only");
 }
 
+fn graph_of(text: &str) -> Graph {
+    let folder = tempfile::tempdir().expect("a temporary folder");
+    let file = folder.path().join("t.v");
+    std::fs::write(&file, text).expect("the file is written");
+    graph(&file, "t")
+}
+
 /// The whole relation of root, direction, step and kind, net by net, as the library tells it before anything is selected
 /// for a report. It is about any state: reset values have no part in it.
 #[test]
@@ -468,10 +475,7 @@ fn the_engine_shows_exactly_what_the_launch_explorer_shows() {
     for seed in FIRST_SEED..FIRST_SEED + CIRCUITS {
         let machine = machine(seed);
         let text = module("t", &machine);
-        let folder = tempfile::tempdir().expect("a temporary folder");
-        let file = folder.path().join("t.v");
-        std::fs::write(&file, &text).expect("the file is written");
-        let graph = graph(&file, "t");
+        let graph = graph_of(&text);
         let names = (0..machine.sources()).map(|source| source_name(&machine, source));
         let names: BTreeMap<NodeId, String> = names.map(|name| (driver(&graph, &format!("t.{name}")), name)).collect();
         let mut explorer = Explorer::new(&machine);
@@ -513,10 +517,7 @@ fn confirmed_kinds_are_those_that_the_launch_explorer_shows() {
     for seed in FIRST_SEED..FIRST_SEED + CONFIRMED {
         let machine = machine(seed);
         let text = module("t", &machine);
-        let folder = tempfile::tempdir().expect("a temporary folder");
-        let file = folder.path().join("t.v");
-        std::fs::write(&file, &text).expect("the file is written");
-        let graph = graph(&file, "t");
+        let graph = graph_of(&text);
         let nets: Vec<Net> = (0..machine.gates.len()).map(Net::Gate).collect();
         let nodes: Vec<NodeId> = nets.iter().map(|&net| driver(&graph, &format!("t.{}", name(net)))).collect();
         let options = Options { one_per_kind: true, ..Options::default() };

@@ -88,7 +88,11 @@ fn pins(report: &Report, page: &mut String) {
     }
     row("together", pins.total());
     page.push_str("</table>\n<p>Asked of each: whether a change of one signal, or an edge with all that it launches, can glitch it");
-    page.push_str(if pins.get(PinKind::Output).nets > 0 { "; of outputs: one signal only." } else { "." });
+    page.push_str(if pins.get(PinKind::Output).nets > 0 {
+        "; of outputs: one signal, where some event makes the change."
+    } else {
+        "."
+    });
     if pins.clean_if_reached > 0 {
         let _ = write!(page, " Of the clean, only in the states reachable from reset: {}.", pins.clean_if_reached);
     }
